@@ -1,0 +1,1 @@
+"""One module a verb: a scenario in, one labelled result out."""

@@ -1,0 +1,1 @@
+"""Results drawn: the same names as in `analysis`, result -> chart."""

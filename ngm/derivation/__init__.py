@@ -1,0 +1,1 @@
+"""From flows to F and V: symbols and templates, no numbers of a particular scenario."""

@@ -1,0 +1,1 @@
+"""Arrays in, arrays out: the numerical linear algebra of non-negative matrices."""

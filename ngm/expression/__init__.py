@@ -1,0 +1,1 @@
+"""Text <-> tree <-> sympy. Has never heard of a compartment."""

@@ -1,0 +1,1 @@
+"""A model as typed in: read, checked, edited, written back."""
