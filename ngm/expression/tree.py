@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from fractions import Fraction
-from typing import Literal
+from typing import Literal, TypeVar
 
 __all__ = [
     "FUNCTIONS",
@@ -25,6 +25,7 @@ __all__ = [
     "Power",
     "Total",
     "children",
+    "fold",
     "names",
     "rebuild",
     "replace_names",
@@ -33,6 +34,8 @@ __all__ = [
 
 #: name -> number of arguments; `sum` is not here: it is `Total`, and takes a dimension.
 FUNCTIONS: dict[str, int] = {"exp": 1, "log": 1, "sqrt": 1, "max": 2, "min": 2}
+
+T = TypeVar("T")
 
 FunctionName = Literal["exp", "log", "sqrt", "max", "min"]
 
@@ -169,6 +172,22 @@ def walk(node: Node) -> Iterator[Node]:
         here = stack.pop()
         yield here
         stack.extend(reversed(children(here)))
+
+
+def fold(node: Node, combine: Callable[[Node, list[T]], T]) -> T:
+    """Return what `combine` gives for the node from what it gave for the node's direct sub-expressions, in order.
+
+    Works from the leaves up without recursion, so that the depth of a tree does not matter.
+    """
+    done: list[T] = []
+    # Read backwards, the order of `walk` has every sub-expression before its parent, the last one first.
+    for here in reversed(list(walk(node))):
+        count = len(children(here))
+        parts = done[: -count - 1 : -1] if count else []
+        if count:
+            del done[-count:]
+        done.append(combine(here, parts))
+    return done[0]
 
 
 def names(node: Node) -> set[str]:
