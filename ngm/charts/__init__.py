@@ -1,1 +1,1 @@
-"""Results drawn: the same names as in `analysis`, result -> chart."""
+"""Pictures of results: charts as Altair objects, diagrams as DOT text. Each says in words what it shows."""

@@ -1,0 +1,156 @@
+"""Diagrams of arrows as DOT text: the flows of a model, and who infects whom.
+
+Names and labels are the user's text. They occur in quoted strings only, with backslashes and quotes escaped, and never
+as the identifier of a node, so that no label can end its string or become an attribute.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from ngm.charts.style import Ink, ink, short
+from ngm.results import Solution
+
+__all__ = ["Arrow", "Graph", "Stage", "flow_diagram", "quoted", "who_infects_whom"]
+
+#: Past these a diagram is a ball of wool: a table is better.
+MOST_NODES = 60
+MOST_EDGES = 250
+
+
+@dataclass(frozen=True, slots=True)
+class Stage:
+    """A compartment to draw. `infected` None: not said yet."""
+
+    name: str
+    label: str = ""
+    infected: bool | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Arrow:
+    """A flow to draw; `source` or `target` empty: from or to the outside. `kind` may be unknown text."""
+
+    source: str
+    target: str
+    kind: str
+    rate: str
+    label: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Graph:
+    """A diagram as DOT text, with the words for who cannot see it."""
+
+    dot: str
+    alt: str
+
+
+def quoted(text: str, most: int = 40) -> str:
+    """Return text as a DOT string: cut to `most` characters, white space to blanks, quotes and backslashes escaped."""
+    plain = " ".join("".join(c if c.isprintable() else " " for c in text).split())
+    if len(plain) > most:
+        plain = plain[: most - 1] + "…"
+    return '"' + plain.replace("\\", "\\\\").replace('"', '\\"') + '"'
+
+
+def flow_diagram(stages: Sequence[Stage], arrows: Sequence[Arrow], *, dark: bool = False) -> Graph | None:
+    """Draw the compartments and flows of a model, finished or not.
+
+    Transmission: thick, dashed, labelled "transmission". Transition: thin and solid. An infected compartment has a
+    double border. None where there is nothing to draw or too much.
+    """
+    # A name that only a flow mentions is drawn too, dotted: the diagram shows what is typed.
+    known = {stage.name for stage in stages}
+    mentioned = dict.fromkeys(n for arrow in arrows for n in (arrow.source, arrow.target) if n and n not in known)
+    if not known or len(known) + len(mentioned) > MOST_NODES or len(arrows) > MOST_EDGES:
+        return None
+    colours = ink(dark)
+    lines = _head(colours)
+    ids = {name: f"n{k}" for k, name in enumerate([*(stage.name for stage in stages), *mentioned])}
+    for stage in stages:
+        caption = stage.name if not stage.label else f"{stage.name}: {stage.label}"
+        border = "peripheries=2" if stage.infected else "peripheries=1"
+        lines.append(f"{ids[stage.name]} [label={quoted(caption)} {border}]")
+    lines += [f'{ids[name]} [label={quoted(name + " ?")} style="dotted,rounded"]' for name in mentioned]
+    for k, arrow in enumerate(arrows):
+        lines += _arrow(k, arrow, ids, colours)
+    infected = [stage.name for stage in stages if stage.infected]
+    told = "; ".join(
+        f"{arrow.source or 'outside'} to {arrow.target or 'outside'}, {arrow.kind or 'kind not given'}"
+        for arrow in arrows[:40]
+    )
+    alt = (
+        f"Flow diagram. Compartments: {', '.join(stage.name for stage in stages)}. "
+        f"Infected: {', '.join(infected) or 'none'}. Flows: {told or 'none'}."
+    )
+    return Graph("\n".join([*lines, "}"]), alt)
+
+
+def who_infects_whom(solution: Solution, *, dark: bool = False) -> Graph | None:
+    """Draw K as a graph: an arrow from the type that infects to the type infected, with the entry of K; a box a class.
+
+    None where there is no K, or it is too large to draw.
+    """
+    K, structure, types = solution.K, solution.structure, solution.types_at_infection
+    if K is None or structure is None or not types or len(types) > MOST_NODES:
+        return None
+    edges = [(j, i, K[i][j]) for i in range(len(types)) for j in range(len(types)) if K[i][j] != 0]
+    if len(edges) > MOST_EDGES:
+        return None
+    colours = ink(dark)
+    lines = _head(colours)
+    position = {name: k for k, name in enumerate(types)}
+    for k, group in enumerate(structure.classes):
+        attains = solution.R0 is not None and solution.R0 > 0 and group.R0 == solution.R0
+        title = f"class {k + 1}, R0 = {short(group.R0)}" + (" (the largest)" if attains else "")
+        lines.append(f"subgraph cluster_{k} {{")
+        lines.append(
+            f'label={quoted(title, 60)} labeljust="l" fontcolor="{colours.text}" color="{colours.faint}" '
+            f'style="{"bold" if attains else "dashed"},rounded"'
+        )
+        for name in group.types:
+            caption = solution.type_labels.get(name, name)
+            caption = name if caption == name else f"{name}: {caption}"
+            lines.append(f"t{position[name]} [label={quoted(caption)}]")
+        lines.append("}")
+    for j, i, value in edges:
+        lines.append(f'  t{j} -> t{i} [label={quoted(" " + short(value, 3))} color="{colours.first}"]')
+    told = "; ".join(f"{types[j]} infects {short(value, 3)} {types[i]}" for j, i, value in edges[:40])
+    alt = f"Who infects whom, {len(structure.classes)} class(es). One case of {told or 'no type infects anyone'}."
+    return Graph("\n".join([*lines, "}"]), alt)
+
+
+def _head(colours: Ink) -> list[str]:
+    font = f'fontname="Helvetica,Arial,sans-serif" fontcolor="{colours.text}"'
+    return [
+        "digraph {",
+        'rankdir="LR" bgcolor="transparent" pad="0.2" nodesep="0.35" ranksep="0.7"',
+        f'graph [{font} fontsize="12"]',
+        f'node [shape="box" style="filled,rounded" fillcolor="{colours.fill}" color="{colours.text}" {font} fontsize="13"]',
+        f'edge [color="{colours.text}" {font} fontsize="11"]',
+    ]
+
+
+def _arrow(k: int, arrow: Arrow, ids: dict[str, str], colours: Ink) -> list[str]:
+    lines: list[str] = []
+    ends: list[str] = []
+    for side, name in (("a", arrow.source), ("b", arrow.target)):
+        if name:
+            ends.append(ids[name])
+        else:
+            # Outside has no box: a small point of its own for each flow keeps the lines apart.
+            ends.append(f"o{k}{side}")
+            lines.append(f'o{k}{side} [shape="point" width="0.06" label="" color="{colours.faint}"]')
+    words = arrow.label or arrow.rate
+    if arrow.kind == "transmission":
+        look = f'style="dashed" penwidth="2.4" color="{colours.strong}" arrowhead="normal"'
+        words = f"transmission: {words}"
+    elif arrow.kind == "transition":
+        look = 'style="solid" penwidth="1.1" arrowhead="vee"'
+    else:
+        look = f'style="dotted" penwidth="1.1" color="{colours.faint}" arrowhead="odot"'
+        words = f"kind? {words}"
+    lines.append(f"{ends[0]} -> {ends[1]} [label={quoted(' ' + words)} {look}]")
+    return lines

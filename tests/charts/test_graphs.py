@@ -1,0 +1,91 @@
+"""Diagrams as DOT text, hostile labels included."""
+
+from __future__ import annotations
+
+import re
+from dataclasses import replace
+
+import pytest
+
+from ngm.charts.graphs import MOST_NODES, Arrow, Stage, flow_diagram, quoted, who_infects_whom
+from tests.charts.samples import TWO_CLASSES, VECTOR_BORNE
+
+HOSTILE = [
+    'a"] ; n9 [URL="http://evil.example"',
+    "back\\slash\\",
+    '\\"',
+    "line\nbreak\r\n\tand tab",
+    "<b>html</b>",
+    "nul\x00 and bell\x07",
+    "\u202eturned",
+    "x" * 5000,
+]
+
+
+def strings(dot):
+    """Return the strings of DOT text, and what is left of it without them."""
+    pattern = r'"((?:[^"\\]|\\.)*)"'
+    return re.findall(pattern, dot), re.sub(pattern, "", dot)
+
+
+@pytest.mark.parametrize("text", HOSTILE)
+def test_a_quoted_label_is_one_short_string(text):
+    found, rest = strings(quoted(text))
+    assert len(found) == 1
+    assert rest == ""
+    assert len(found[0]) <= 80
+    assert found[0].isprintable()
+
+
+@pytest.mark.parametrize("text", HOSTILE)
+def test_hostile_names_stay_inside_their_strings(text):
+    graph = flow_diagram(
+        [Stage(text, text, True)], [Arrow(text, "", text, text, text), Arrow("", text, "transmission", text)]
+    )
+    _, rest = strings(graph.dot)
+    calm = flow_diagram(
+        [Stage("S", "x", True)], [Arrow("S", "", "kind", "r", "l"), Arrow("", "S", "transmission", "r")]
+    )
+    assert rest == strings(calm.dot)[1]  # the same structure whatever the names are
+
+
+def test_kinds_of_flow_differ_by_line_and_word_as_well_as_colour():
+    graph = flow_diagram(
+        [Stage("S", "", False), Stage("I", "", True)],
+        [
+            Arrow("S", "I", "transmission", "beta*S*I"),
+            Arrow("I", "", "transition", "gamma*I"),
+            Arrow("I", "S", "", "x"),
+            Arrow("I", "Q", "transition", "q*I"),
+        ],
+    )
+    infection, recovery, unknown = re.findall(r"^.*-> .*$", graph.dot, re.MULTILINE)[:3]
+    assert 'style="dashed"' in infection
+    assert "transmission: beta*S*I" in infection
+    assert 'style="solid"' in recovery
+    assert "transmission" not in recovery
+    assert "kind?" in unknown
+    assert graph.dot.count("peripheries=2") == 1  # I alone is infected
+    assert '"Q ?"' in graph.dot  # mentioned and nowhere defined
+    assert "Infected: I" in graph.alt
+
+
+def test_nothing_and_too_much_are_not_drawn():
+    assert flow_diagram([], []) is None
+    assert flow_diagram([Stage(f"c{k}") for k in range(MOST_NODES + 1)], []) is None
+    assert who_infects_whom(replace(VECTOR_BORNE, K=None)) is None
+
+
+def test_who_infects_whom_points_from_the_infecting_type():
+    graph = who_infects_whom(VECTOR_BORNE)
+    # K[0][1] = 2: one vector infects 2 hosts.
+    assert re.search(r't1 -> t0 \[label="2"', graph.dot)
+    assert re.search(r't0 -> t1 \[label="3"', graph.dot)
+    assert "One case of I_v infects 2 I_h" in graph.alt
+
+
+def test_classes_are_boxes_and_the_largest_is_said():
+    graph = who_infects_whom(TWO_CLASSES)
+    assert graph.dot.count("subgraph cluster_") == 2
+    assert "class 1, R0 = 2 (the largest)" in graph.dot
+    assert "class 2, R0 = 0.5" in graph.dot
