@@ -1,0 +1,173 @@
+"""Who may import whom, as data: the layers stay apart only if something looks."""
+
+from __future__ import annotations
+
+import ast
+import subprocess
+import sys
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).parents[1]
+PACKAGE = ROOT / "ngm"
+
+#: layer -> the layers it may import besides itself; `ngm` stands for the public names of `ngm/__init__.py`
+MAY_IMPORT: dict[str, set[str]] = {
+    "errors": set(),
+    "results": set(),
+    "engine": set(),
+    "expression": {"errors"},
+    "scenario": {"errors", "expression"},
+    "derivation": {"errors", "expression", "scenario", "results"},
+    "analysis": {"errors", "expression", "scenario", "derivation", "engine", "results"},
+    "charts": {"results"},
+    "screens": {"ngm", "errors", "results", "charts", "scenario.edit", "scenario.file", "expression.typeset"},
+    "__main__": {"ngm", "errors", "results", "charts", "expression.typeset"},
+    "__init__": {"errors", "results", "scenario", "analysis"},
+}
+
+#: modules of a layer that the layer's own rule leaves out
+NOT_FOR: dict[str, set[str]] = {"scenario": {"expression.symbolic"}}
+
+#: library -> the only places that may import it
+ONLY_IN: dict[str, set[str]] = {
+    "sympy": {"expression.symbolic", "expression.from_symbols", "derivation"},
+    "scipy": {"engine"},
+    "flint": {"engine"},
+    "altair": {"charts"},
+    "streamlit": {"screens", "app"},
+    "tomlkit": {"scenario"},
+}
+
+
+def sources() -> list[Path]:
+    return [*sorted(PACKAGE.rglob("*.py")), ROOT / "app.py"]
+
+
+def dotted(path: Path) -> str:
+    """Return a file's place below ngm in dots: `scenario.file`, `engine` for a package's own file, `app`."""
+    if path == ROOT / "app.py":
+        return "app"
+    parts = list(path.relative_to(PACKAGE).with_suffix("").parts)
+    if parts[-1] == "__init__" and len(parts) > 1:
+        parts.pop()
+    return ".".join(parts)
+
+
+def imported(path: Path) -> Iterator[tuple[str, int]]:
+    """Yield the full name of everything that a file imports, wherever it does so, with the line."""
+    here = ["ngm", *dotted(path).split(".")] if path != ROOT / "app.py" else ["app"]
+    package = here if path.name == "__init__.py" else here[:-1]
+    for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+        if isinstance(node, ast.Import):
+            for alias in node.names:
+                yield alias.name, node.lineno
+        elif isinstance(node, ast.ImportFrom):
+            base = package[: len(package) - node.level + 1] if node.level else []
+            module = ".".join([*base, *([node.module] if node.module else [])])
+            for alias in node.names:
+                yield f"{module}.{alias.name}", node.lineno
+
+
+def starts_with(name: str, prefix: str) -> bool:
+    return name == prefix or name.startswith(prefix + ".")
+
+
+def is_own(name: str) -> bool:
+    """Return whether the name leads to a file of ours, and not to a name that `ngm/__init__.py` offers."""
+    parts = name.split(".")
+    return (
+        parts[0] == "ngm"
+        and len(parts) > 1
+        and ((PACKAGE / parts[1]).is_dir() or (PACKAGE / f"{parts[1]}.py").is_file())
+    )
+
+
+def layer(place: str) -> str:
+    return place.split(".")[0]
+
+
+def test_every_layer_has_a_rule():
+    places = {layer(dotted(path)) for path in sources()} - {"app"}
+    assert places == set(MAY_IMPORT)
+
+
+@pytest.mark.parametrize("path", sources(), ids=dotted)
+def test_imports_run_one_way(path):
+    place = dotted(path)
+    allowed = {"ngm", "screens"} if place == "app" else MAY_IMPORT[layer(place)] | {layer(place)}
+    for name, line in imported(path):
+        where = f"{path.relative_to(ROOT)}, line {line}: {name}"
+        if not starts_with(name, "ngm"):
+            continue
+        if not is_own(name):
+            assert "ngm" in allowed, f"{where}: this layer may not use the public names"
+            continue
+        target = name.removeprefix("ngm.")
+        assert any(starts_with(target, permitted) for permitted in allowed), f"{where} is not allowed"
+        assert not any(starts_with(target, refused) for refused in NOT_FOR.get(layer(place), ())), where
+
+
+@pytest.mark.parametrize("path", sources(), ids=dotted)
+def test_libraries_stay_in_their_places(path):
+    for name, line in imported(path):
+        library = name.split(".")[0]
+        if library in ONLY_IN:
+            assert any(starts_with(dotted(path), place) for place in ONLY_IN[library]), (
+                f"{path.relative_to(ROOT)}, line {line}: {library} belongs in {sorted(ONLY_IN[library])}"
+            )
+
+
+@pytest.mark.parametrize("path", sources(), ids=dotted)
+def test_no_text_is_executed(path):
+    # A user's text is parsed by our own parser only. Names of functions that would run it must not even occur.
+    tree = ast.parse(path.read_text(encoding="utf-8"))
+    for node in ast.walk(tree):
+        if isinstance(node, ast.Call):
+            name = node.func.id if isinstance(node.func, ast.Name) else getattr(node.func, "attr", "")
+            assert name not in {"eval", "exec", "sympify", "parse_expr", "lambdify", "parse_latex", "__import__"}, (
+                f"{path.relative_to(ROOT)}, line {node.lineno}: {name}"
+            )
+
+
+@pytest.mark.parametrize("path", sources(), ids=dotted)
+def test_files_stay_short(path):
+    assert len(path.read_text(encoding="utf-8").splitlines()) <= 460
+
+
+def loaded_after(statement: str) -> set[str]:
+    code = f"import sys\n{statement}\nprint(*sorted(sys.modules))"
+    done = subprocess.run([sys.executable, "-c", code], cwd=ROOT, capture_output=True, text=True, check=True)
+    return set(done.stdout.split())
+
+
+def test_importing_the_package_is_light():
+    loaded = loaded_after("import ngm")
+    assert "ngm" in loaded
+    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy", "tomlkit"}
+
+
+def test_reading_a_scenario_is_light():
+    path = next((ROOT / "scenarios").glob("*.toml"))
+    loaded = loaded_after(f"import ngm; ngm.load({str(path)!r})")
+    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy", "tomlkit"}
+
+
+def test_solving_needs_no_page_and_no_chart():
+    path = next((ROOT / "scenarios").glob("*.toml"))
+    loaded = loaded_after(f"import ngm; ngm.solve(ngm.load({str(path)!r}))")
+    assert not loaded & {"streamlit", "altair"}
+
+
+def test_public_names():
+    import ngm
+
+    assert sorted(ngm.__all__) == list(ngm.__all__)
+    for name in ngm.__all__:
+        assert hasattr(ngm, name)
+    assert {"Scenario", "control", "load", "loads", "solve"} <= set(ngm.__all__)
+    public = {name for name in vars(ngm) if not name.startswith("_")}
+    modules = {name for name in public if (PACKAGE / name).is_dir() or (PACKAGE / f"{name}.py").is_file()}
+    assert public - modules <= {*ngm.__all__, "annotations"}
