@@ -12,7 +12,7 @@ from decimal import Decimal
 from fractions import Fraction
 from typing import Literal
 
-from ngm.expression.tree import Node, Number, names
+from ngm.expression.tree import Apply, Name, Node, Number, Total, walk
 
 __all__ = [
     "Change",
@@ -31,6 +31,7 @@ __all__ = [
 ]
 
 Kind = Literal["transmission", "transition"]
+DistributionName = Literal["uniform", "triangular", "normal", "lognormal", "gamma", "beta"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,8 +43,10 @@ class Expression:
 
     @property
     def is_number(self) -> bool:
-        """True where no name occurs: ``"1/7"`` is a number in every respect."""
-        return not names(self.tree)
+        """True where neither a name, a sum over groups nor a matrix occurs: ``"1/7"`` is a number in every respect."""
+        if isinstance(self.tree, Number):
+            return True
+        return not any(isinstance(node, Name | Total | Apply) for node in walk(self.tree))
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,7 +92,7 @@ class Unit:
 class Distribution:
     """A distribution by its moments or bounds, in the parameter's own unit: `name` and the keys of the contract."""
 
-    name: Literal["uniform", "triangular", "normal", "lognormal", "gamma", "beta"]
+    name: DistributionName
     arguments: Mapping[str, float]
 
 
@@ -157,7 +160,7 @@ class Matrix:
     population: Expression | None = None
     reciprocal: bool = False
     within: str | None = None
-    file: str | None = None
+    file: str | tuple[str, ...] | None = None
     label: str | None = None
     source: str | None = None
 

@@ -1,0 +1,79 @@
+"""The only reader and writer of scenario files.
+
+`loads` and `load` check everything and raise one error with every problem found. The edits take the text of a file and
+return it with one thing changed: comments, order and spacing stay, so that one edit is one line of difference.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from ngm.errors import ScenarioError
+from ngm.scenario.check import check
+from ngm.scenario.document import read_text, to_data
+from ngm.scenario.draft import Draft
+from ngm.scenario.model import Scenario
+from ngm.scenario.read import read
+
+__all__ = ["load", "loads"]
+
+
+def load(path: str | Path) -> Scenario:
+    """Return the scenario of a file.
+
+    Parameters
+    ----------
+    path : str or Path
+        A ``.toml`` file in UTF-8, at most 16 MB. Matrix files are looked for in its folder.
+
+    Raises
+    ------
+    ScenarioError
+        With every problem found (`problems`).
+    """
+    return loads(read_text(path), folder=str(Path(path).resolve().parent))
+
+
+def loads(text: str, folder: str | None = None) -> Scenario:
+    """Return the scenario that a text holds.
+
+    Parameters
+    ----------
+    text : str
+        The content of a scenario file.
+    folder : str, optional
+        Where matrix files are looked for; without it, a scenario that names one is refused.
+
+    Raises
+    ------
+    ScenarioError
+        With every problem found (`problems`).
+    """
+    draft = read(to_data(text), folder)
+    check(draft)
+    if draft.found.problems:
+        raise ScenarioError(draft.found.problems)
+    return _scenario(draft, text, folder)
+
+
+def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
+    return Scenario(
+        title=draft.title,
+        time_unit=draft.time_unit,
+        compartments=draft.compartments,
+        parameters=draft.parameters,
+        definitions=draft.definitions,
+        flows=tuple(flow for flow, _ in draft.flows),
+        dimensions=draft.dimensions,
+        matrices=draft.matrices,
+        movements=tuple(draft.movements),
+        infection_free={
+            name: tuple(placed.expression for placed in entries) for name, entries in draft.infection_free.items()
+        },
+        interventions=tuple(draft.interventions),
+        report=draft.report,
+        summary=draft.summary,
+        warnings=tuple(draft.found.warnings),
+        text=text,
+        folder=folder,
+    )
