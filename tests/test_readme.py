@@ -1,4 +1,4 @@
-"""The README's examples give what it prints, and every scenario that comes with the program works and says what it is."""
+"""The examples of the README give what it prints; every scenario that comes with the program works and is explained."""
 
 from __future__ import annotations
 

@@ -1,7 +1,7 @@
 """Growth rates against R = 1/M(-r), by staged models.
 
-Wallinga & Lipsitch (2007) Proc. R. Soc. B 274:599-604, doi:10.1098/rspb.2006.3754 (abstract read). With x latent stages of
-rate b1 and y infectious ones of rate b2: R = (1 + r/b1)^x y/sum_{i=1..y} (1 + r/b2)^-i.
+Wallinga & Lipsitch (2007) Proc. R. Soc. B 274:599-604, doi:10.1098/rspb.2006.3754 (abstract read). With x latent
+stages of rate b1 and y infectious ones of rate b2: R = (1 + r/b1)^x y/sum_{i=1..y} (1 + r/b2)^-i.
 """
 
 from __future__ import annotations

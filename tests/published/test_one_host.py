@@ -97,8 +97,8 @@ TWO_INFECTIOUS = Model(
     "Two latent and two infectious classes",
     "E1 E2 I1 I2",
     "S R",
-    "0->S x: Lambda; S->E1 t: p*L*S; S->E2 t: (1-p)*L*S; E1->I1 x: n1*E1; E2->I2 x: n2*E2; I1->R x: g1*I1; I2->R x: g2*I2"
-    + deaths("S E1 E2 I1 I2 R", "mu"),
+    "0->S x: Lambda; S->E1 t: p*L*S; S->E2 t: (1-p)*L*S; E1->I1 x: n1*E1; E2->I2 x: n2*E2"
+    "; I1->R x: g1*I1; I2->R x: g2*I2" + deaths("S E1 E2 I1 I2 R", "mu"),
     {"Lambda": 3.0, "beta1": 0.6, "beta2": 0.15, "p": 0.3, "n1": 0.5, "n2": 0.05, "g1": 0.2, "g2": 0.08, "mu": 0.01},
     {"N": "S + E1 + E2 + I1 + I2 + R", "L": "(beta1*I1 + beta2*I2)/N"},
     shares="p",
