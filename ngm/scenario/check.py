@@ -137,8 +137,7 @@ def _circles(draft: Draft) -> list[str]:
         key: Key = (sections[role], draft.typed[turned[0]])
         advice = "" if role == "definition" else " Leave one of them out, or write it in parameters."
         draft.found.add(sections[role], f"{arrows(turned)} goes in a circle.{advice}", key)
-    ordered_parameters, circles = parameter_order(draft.parameters)
-    for circle in circles:
+    for circle in parameter_order(draft.parameters)[1]:
         key = ("parameters", draft.typed[circle[0]])
         draft.found.add("parameters", f"{arrows(circle)} goes in a circle. Give one of them a number.", key)
     return [name for name in ordered if name in draft.definitions]
@@ -190,12 +189,9 @@ def _size(draft: Draft, ordered: list[str]) -> None:
             if size > MOST_NODES and not any(written.get(other, 0) > MOST_NODES for t in trees for other in names(t)):
                 message = f"written out, it has more than {MOST_NODES:,} names, numbers and operations. {advice}"
                 draft.found.add(f"{kind}.{name}", message, key)
-            if kind == "definitions":
-                written[name] = size
-            else:
-                # followed parameters stay names in every formula: only chains of them are written out
-                written[name] = size
+            written[name] = size
     for name in draft.parameters:
+        # in a formula a parameter stays a name, also where it follows others
         written.pop(name, None)
     if all(size <= MOST_NODES for size in written.values()):
         total = sum(fold(placed.expression.tree, count) for placed in _used(draft) if not placed.expression.is_number)
@@ -239,8 +235,9 @@ def _groups(draft: Draft, ordered: list[str]) -> None:
         matrix = draft.matrices[name]
         allowed = frozenset({matrix.by} if matrix.within is None else {matrix.by, matrix.within})
         check_within(draft, placed, varies(draft, placed, lookup), allowed, lookup, f"the matrix {name} has")
+    typed_parameters: dict[str | int, str] = {draft.typed[name]: name for name in draft.parameters}
     for placed in _parameter_values(draft):
-        name = next(name for name, typed in draft.typed.items() if typed == placed.key[1] and name in draft.parameters)
+        name = typed_parameters[placed.key[1]]
         allowed = frozenset(draft.parameters[name].by)
         has = varies(draft, placed, lookup)
         if has is not None and has - allowed:

@@ -1,7 +1,7 @@
 """The text of a scenario file as plain Python data: TOML, with a limit on everything that could run away.
 
-Decimals stay decimals (`Decimal`), because bounds speak about the numbers of the file. What goes wrong here is told with
-the line of the file; what the data means is decided in `read`.
+Decimals stay decimals (`Decimal`), because bounds speak about the numbers of the file. What goes wrong here is told
+with the line of the file; what the data means is decided in `read`.
 """
 
 from __future__ import annotations
@@ -140,7 +140,7 @@ def _syntax(text: str, told: str) -> NoReturn:
 def _advice(what: str, line: str) -> str:
     if what.startswith(("Cannot overwrite", "Duplicate inline table key")):
         return "this key stands twice in its table. Keep one of the two."
-    if what.startswith("Cannot declare") or what.startswith("Cannot mutate"):
+    if what.startswith(("Cannot declare", "Cannot mutate")):
         return "this table stands twice in the file. Put its lines under one heading."
     foreign = _FOREIGN_KEY.match(line)
     if what == "Invalid statement" and foreign is not None and not foreign.group(1).isascii():

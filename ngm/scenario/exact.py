@@ -75,7 +75,7 @@ def evaluate(node: Node, lookup: Callable[[Name], Value] | None = None) -> Value
         Division by 0, a root or logarithm of a negative number, 0 to a negative power, or past 1e300.
     """
     value = _checked(_evaluate(node, lookup), node)
-    if abs(value) >= LARGEST:
+    if value >= LARGEST or -value >= LARGEST:
         raise NoValueError("the result is too large. Numbers stay below 1e300 in size.", node.position)
     return value
 
@@ -157,10 +157,10 @@ def _power(base: Value, exponent: Value, node: Node) -> Value:
         return Fraction(1)
     if isinstance(base, Fraction) and whole:
         bits = max(base.numerator.bit_length(), base.denominator.bit_length())
-        if abs(exponent) * bits <= _MOST_BITS:
-            return base ** int(exponent)
+        if abs(int(exponent)) * bits <= _MOST_BITS:
+            return Fraction(base ** int(exponent))
     try:
-        size = _float(abs(base), node) ** _float(exponent, node)
+        size = float(_float(base if base > 0 else -base, node) ** _float(exponent, node))
     except OverflowError:
         raise NoValueError("the result is too large. Numbers stay below 1e300 in size.", node.position) from None
     return -size if base < 0 and int(exponent) % 2 else size

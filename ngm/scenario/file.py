@@ -12,10 +12,11 @@ from ngm.errors import ScenarioError
 from ngm.scenario.check import check
 from ngm.scenario.document import read_text, to_data
 from ngm.scenario.draft import Draft
+from ngm.scenario.edit import delete, insert, move, rename, set_value
 from ngm.scenario.model import Scenario
 from ngm.scenario.read import read
 
-__all__ = ["load", "loads"]
+__all__ = ["delete", "insert", "load", "loads", "move", "rename", "set_value"]
 
 
 def load(path: str | Path) -> Scenario:

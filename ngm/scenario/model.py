@@ -241,6 +241,19 @@ class Scenario:
     text: str = ""
     folder: str | None = None
 
+    @property
+    def digest(self) -> str:
+        """The first 16 hexadecimal characters of the SHA-256 of `text`: which content a result belongs to."""
+        from hashlib import sha256
+
+        return sha256(self.text.encode()).hexdigest()[:16]
+
+    def with_values(self, **values: object) -> Scenario:
+        """Return the scenario with other values for some parameters; see `ngm.scenario.values.with_values`."""
+        from ngm.scenario.values import with_values
+
+        return with_values(self, values)
+
     def copies(self, by: tuple[str, ...]) -> tuple[tuple[str, ...], ...]:
         """Return the groups of each copy of something grouped `by` these dimensions, the last one fastest."""
         out: tuple[tuple[str, ...], ...] = ((),)

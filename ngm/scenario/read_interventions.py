@@ -195,6 +195,7 @@ def _labels(draft: Draft, table: Table, field: str, dimension: str) -> tuple[str
 
 def _check_labels(draft: Draft, table: Table, field: str, dimension: str, raw: object) -> tuple[str, ...] | None:
     groups = draft.dimensions[dimension].groups
+    known = frozenset(groups)
     if not isinstance(raw, list):
         table.problem(field, f"expected a group of {dimension} in quotes, or a list of them, not {describe(raw)}.")
         return None
@@ -204,13 +205,16 @@ def _check_labels(draft: Draft, table: Table, field: str, dimension: str, raw: o
         )
         return None
     good = True
+    seen: set[str] = set()
     for label in raw:
-        if not isinstance(label, str) or label not in groups:
+        if not isinstance(label, str) or label not in known:
             what = f"'{short(label)}'" if isinstance(label, str) else describe(label)
             hint = closest(label, groups) if isinstance(label, str) else ""
             table.problem(field, f"{what} is not a group of {dimension} ({listed(groups)}).{hint}")
             good = False
-        elif raw.count(label) > 1:
+        elif label in seen:
             table.problem(field, f"'{short(label)}' stands twice. Name each group once.")
-            return None
+            good = False
+        else:
+            seen.add(label)
     return tuple(raw) if good else None

@@ -44,7 +44,7 @@ def _matrix(draft: Draft, name: str, table: Table, folder: str | None) -> Matrix
         draft.found.add(table.where, f"has {what}. Write one of the two.", table.key)
         return None
     broken_within = table.has("within") and within not in draft.dimensions
-    if by not in draft.dimensions or by is None or broken_within:
+    if by is None or by not in draft.dimensions or broken_within:
         return None
     if table.has("values"):
         blocks, file = _values(draft, table, by, within), None

@@ -61,11 +61,12 @@ def _parameter(draft: Draft, name: str, table: Table) -> Parameter | None:
     values = _values(draft, table, by, any_sign) if by is not None and table.has("value") else None
     follows = values is not None and not all(exact.is_closed(value.tree) for value in values)
     unit = _unit(draft, table, unit_text, follows)
+    bounds: tuple[float, float] | None = None
+    distributions: tuple[Distribution, ...] = ()
     if follows:
         for extra in ("range", "distribution"):
             if table.has(extra):
                 table.problem(extra, "a parameter that follows others takes none. Give it to those that it follows.")
-        bounds, distributions = None, ()
     else:
         bounds = _range(table, any_sign)
         distributions = _distributions(draft, table, by, unit, any_sign)
