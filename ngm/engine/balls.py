@@ -128,18 +128,27 @@ def nearest(number: arb) -> float:
 
 def is_sharp(number: arb) -> bool:
     """Return whether all of the ball rounds to one double (so that `nearest` is right to the last bit)."""
-    return bool(number.is_finite()) and float(number.lower()) == float(number.upper())
+    if not number.is_finite():
+        return False
+    below, above = _ends(number)
+    return float(below) == float(above)
 
 
 def outward(number: arb) -> tuple[float, float]:
     """Return the largest double below and the smallest above the ball: (low, high) enclose all of it."""
-    below, above = number.lower(), number.upper()
+    below, above = _ends(number)
     low, high = float(below), float(above)
     if arb(low) > below:
         low = math.nextafter(low, -math.inf)
     if arb(high) < above:
         high = math.nextafter(high, math.inf)
     return low, high
+
+
+def _ends(number: arb) -> tuple[arb, arb]:
+    """Return both ends of the ball, not widened by a working precision below that of the ball."""
+    with precision(2 * MOST_PRECISION):
+        return number.lower(), number.upper()
 
 
 def is_zero(number: arb) -> bool:

@@ -13,6 +13,7 @@ import numpy as np
 import numpy.typing as npt
 from flint import arb
 from scipy.linalg import matrix_balance
+from scipy.linalg.lapack import dgetrf, dgetrs
 
 from ngm.engine.balls import Array, FloatArray, is_balls
 
@@ -131,14 +132,24 @@ def perron_vector(matrix: FloatArray, most_steps: int = 60) -> FloatArray:
             idle += 1
         if gap <= 4 * size**0.5 * _UNIT or idle > 12 or (idle > 3 and best_gap < 1e-12):
             break
-        try:
-            y = np.linalg.solve(high * (1 + 2 * _UNIT) * np.eye(size) - matrix, x)
-        except np.linalg.LinAlgError:
-            break
+        y = x * _dominant_solve(high * (1 + 2 * _UNIT) * np.eye(size) - matrix * x[None, :] / x[:, None])
         if not np.all(np.isfinite(y)) or not np.all(y > 0):
             break
         x = np.maximum(y / y.max(), 1e-290)
     return np.asarray(best)
+
+
+def _dominant_solve(matrix: FloatArray) -> FloatArray:
+    """Return x with matrix x = 1 for a matrix whose diagonal outweighs the rest of each row.
+
+    The transpose is factored: there the largest entry of a column is its diagonal one, so that no rows are exchanged
+    and an M-matrix is eliminated without cancellation off the diagonal. Small entries of x keep their digits.
+    """
+    factors, order, failed = dgetrf(matrix.T)
+    if failed:
+        return np.full(len(matrix), np.nan)
+    solution, _ = dgetrs(factors, order, np.ones(len(matrix)), trans=1)
+    return np.asarray(solution)
 
 
 def float_bounds(scaling: Scaled, x: FloatArray) -> tuple[float, float]:
