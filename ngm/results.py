@@ -176,11 +176,8 @@ class Solution:
             },
             "perron": (
                 None
-                if self.R0 is None
-                else {
-                    "right": None if self.right is None else list(self.right),
-                    "left": None if self.left is None else list(self.left),
-                }
+                if self.right is None or self.left is None
+                else {"right": list(self.right), "left": list(self.left)}
             ),
             "structure": (
                 None

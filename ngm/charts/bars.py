@@ -14,8 +14,9 @@ __all__ = ["MOST_BARS", "efforts", "reproductive_values", "stable_distribution"]
 #: More bars than this are no picture; the table beside it has them all.
 MOST_BARS = 60
 
-#: Height of one bar with its gap, pixels.
+#: Height of one bar with its gap, and of the axis with its title (the height given to a page includes it), pixels.
 STEP = 30
+AXIS = 62
 
 
 def stable_distribution(solution: Solution, *, dark: bool = False) -> alt.LayerChart | None:
@@ -95,7 +96,9 @@ def _bars(rows: list[dict[str, Any]], axis: str, title: str, dark: bool, top: fl
         layers = (marks, texts)
     spoken = "; ".join(f"{row['type']} {row['shown']}" for row in rows[:20])
     more = f"; and {len(rows) - 20} more" if len(rows) > 20 else ""
-    return alt.layer(*layers).properties(height=STEP * len(rows) + 10, description=f"{title}, {axis}: {spoken}{more}.")
+    return alt.layer(*layers).properties(
+        height=STEP * len(rows) + AXIS, description=f"{title}, {axis}: {spoken}{more}."
+    )
 
 
 def _largest(rows: list[dict[str, Any]]) -> float:

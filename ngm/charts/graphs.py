@@ -6,6 +6,7 @@ as the identifier of a node, so that no label can end its string or become an at
 
 from __future__ import annotations
 
+import textwrap
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -17,6 +18,9 @@ __all__ = ["Arrow", "Graph", "Stage", "flow_diagram", "quoted", "who_infects_who
 #: Past these a diagram is a ball of wool: a table is better.
 MOST_NODES = 60
 MOST_EDGES = 250
+
+#: A label is cut to this many letters.
+MOST_LETTERS = 66
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,9 +74,8 @@ def flow_diagram(stages: Sequence[Stage], arrows: Sequence[Arrow], *, dark: bool
     lines = _head(colours)
     ids = {name: f"n{k}" for k, name in enumerate([*(stage.name for stage in stages), *mentioned])}
     for stage in stages:
-        caption = stage.name if not stage.label else f"{stage.name}: {stage.label}"
         border = "peripheries=2" if stage.infected else "peripheries=1"
-        lines.append(f"{ids[stage.name]} [label={quoted(caption)} {border}]")
+        lines.append(f"{ids[stage.name]} [label={_caption(stage.name, stage.label)} {border}]")
     lines += [f'{ids[name]} [label={quoted(name + " ?")} style="dotted,rounded"]' for name in mentioned]
     for k, arrow in enumerate(arrows):
         lines += _arrow(k, arrow, ids, colours)
@@ -111,9 +114,8 @@ def who_infects_whom(solution: Solution, *, dark: bool = False) -> Graph | None:
             f'style="{"bold" if attains else "dashed"},rounded"'
         )
         for name in group.types:
-            caption = solution.type_labels.get(name, name)
-            caption = name if caption == name else f"{name}: {caption}"
-            lines.append(f"t{position[name]} [label={quoted(caption)}]")
+            caption = _caption(name, solution.type_labels.get(name, ""))
+            lines.append(f"t{position[name]} [label={caption}]")
         lines.append("}")
     for j, i, value in edges:
         lines.append(f'  t{j} -> t{i} [label={quoted(" " + short(value, 3))} color="{colours.first}"]')
@@ -122,35 +124,53 @@ def who_infects_whom(solution: Solution, *, dark: bool = False) -> Graph | None:
     return Graph("\n".join([*lines, "}"]), alt)
 
 
+def _caption(name: str, label: str) -> str:
+    """Return the name, and its label on lines of their own, so that boxes stay narrow."""
+    return _lines([name, *_wrapped(label, 18)] if label and label != name else [name])
+
+
+def _wrapped(text: str, width: int) -> list[str]:
+    return textwrap.wrap(text[:MOST_LETTERS], width)
+
+
+def _lines(texts: Sequence[str]) -> str:
+    """Return texts, one below the other, as one DOT string; each is escaped by itself, after it was wrapped."""
+    return '"' + "\\n".join(quoted(text)[1:-1] for text in texts) + '"'
+
+
 def _head(colours: Ink) -> list[str]:
     font = f'fontname="Helvetica,Arial,sans-serif" fontcolor="{colours.text}"'
     return [
         "digraph {",
-        'rankdir="LR" bgcolor="transparent" pad="0.2" nodesep="0.35" ranksep="0.7"',
-        f'graph [{font} fontsize="12"]',
-        f'node [shape="box" style="filled,rounded" fillcolor="{colours.fill}" color="{colours.text}" {font} fontsize="13"]',
-        f'edge [color="{colours.text}" {font} fontsize="11"]',
+        'rankdir="LR" bgcolor="transparent" pad="0.2" nodesep="0.3" ranksep="0.35"',
+        f'graph [{font} fontsize="13"]',
+        f'node [shape="box" style="filled,rounded" fillcolor="{colours.fill}" color="{colours.text}" {font} '
+        'fontsize="15"]',
+        f'edge [color="{colours.text}" {font} fontsize="13"]',
     ]
 
 
 def _arrow(k: int, arrow: Arrow, ids: dict[str, str], colours: Ink) -> list[str]:
     lines: list[str] = []
     ends: list[str] = []
-    for side, name in (("a", arrow.source), ("b", arrow.target)):
+    for side, name, other in (("a", arrow.source, arrow.target), ("b", arrow.target, arrow.source)):
         if name:
             ends.append(ids[name])
-        else:
-            # Outside has no box: a small point of its own for each flow keeps the lines apart.
-            ends.append(f"o{k}{side}")
-            lines.append(f'o{k}{side} [shape="point" width="0.06" label="" color="{colours.faint}"]')
-    words = arrow.label or arrow.rate
+            continue
+        # Outside has no box: a small point of its own for each flow, above or below the compartment.
+        outside = f"o{k}{side}"
+        ends.append(outside)
+        lines.append(f'{outside} [shape="point" width="0.07" label="" color="{colours.faint}"]')
+        if other:
+            lines.append(f"{{ rank=same; {ids[other]}; {outside} }}")
+    words = _wrapped(arrow.label or arrow.rate, 20)
     if arrow.kind == "transmission":
         look = f'style="dashed" penwidth="2.4" color="{colours.strong}" arrowhead="normal"'
-        words = f"transmission: {words}"
+        words = ["transmission:", *words]
     elif arrow.kind == "transition":
         look = 'style="solid" penwidth="1.1" arrowhead="vee"'
     else:
         look = f'style="dotted" penwidth="1.1" color="{colours.faint}" arrowhead="odot"'
-        words = f"kind? {words}"
-    lines.append(f"{ends[0]} -> {ends[1]} [label={quoted(' ' + words)} {look}]")
+        words = ["kind?", *words]
+    lines.append(f"{ends[0]} -> {ends[1]} [label={_lines(words)} {look}]")
     return lines

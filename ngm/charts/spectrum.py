@@ -67,12 +67,12 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
             y=y,
             order="order:Q",
             strokeDash=alt.StrokeDash(
-                "circle:N", scale=alt.Scale(domain=names, range=[[1, 0], [5, 4]]), legend=_legend("Circle", 0)
+                "circle:N", scale=alt.Scale(domain=names, range=[[1, 0], [5, 4]]), legend=_legend("Circle")
             ),
             color=alt.Color(
                 "circle:N",
                 scale=alt.Scale(domain=names, range=[colours.first, colours.faint]),
-                legend=_legend("Circle", 0),
+                legend=_legend("Circle"),
             ),
         )
     )
@@ -85,25 +85,21 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
             shape=alt.Shape(
                 "what:N",
                 scale=alt.Scale(domain=kinds, range=["diamond", "square", "circle"]),
-                legend=_legend("Eigenvalue", 1),
+                legend=_legend("Eigenvalue"),
             ),
             fill=alt.Fill(
                 "what:N",
                 scale=alt.Scale(domain=kinds, range=[colours.strong, colours.first, colours.faint]),
-                legend=_legend("Eigenvalue", 1),
+                legend=_legend("Eigenvalue"),
             ),
             tooltip=["eigenvalue:N", "modulus:N", "what:N"],
         )
     )
-    return (
-        alt.layer(rings, marks)
-        .resolve_scale(color="independent", fill="independent", shape="independent")
-        .properties(
-            width=size,
-            height=size,
-            autosize=alt.AutoSizeParams(type="pad", contains="content"),
-            description=_alt(solution),
-        )
+    return alt.layer(rings, marks).properties(
+        width=size,
+        height=size,
+        autosize=alt.AutoSizeParams(type="pad", contains="content"),
+        description=_alt(solution),
     )
 
 
@@ -132,7 +128,7 @@ def _complex(re: float, im: float) -> str:
     return f"{short(re)} {'+' if im > 0 else '-'} {short(abs(im))} i"
 
 
-def _legend(title: str, _order: int) -> alt.Legend:
+def _legend(title: str) -> alt.Legend:
     return alt.Legend(title=title, orient="bottom", direction="vertical", symbolLimit=4, labelLimit=260)
 
 
@@ -142,5 +138,6 @@ def _alt(solution: Solution) -> str:
     tail = f" and {more} more" if more > 0 else ""
     return (
         f"Complex plane with the {len(solution.eigenvalues)} eigenvalues of K: {listed}{tail}. "
-        f"All lie on or inside the circle of radius R0 = {short(solution.R0)}; the circle of radius 1 is drawn for comparison."
+        f"All lie on or inside the circle of radius R0 = {short(solution.R0)}; "
+        "the circle of radius 1 is drawn for comparison."
     )

@@ -114,8 +114,11 @@ def spectrum(K: Array, vectors: bool = True) -> Spectrum:
         members, shape = groups[leading[0]], shapes[leading[0]]
         assert shape is not None
         try:
-            right = _right_vector(K, there, members, root, shape)
-            left = _right_vector(K.T, there.T, members, root, None)
+            other = perron_root_and_vector(K[np.ix_(members, members)].T)[1]
+            # The type that weighs most in R0 is fixed to 1: without it the others are furthest from sustaining themselves.
+            fixed = int(np.argmax(shape * other))
+            right = _right_vector(K, there, members, root, shape, fixed)
+            left = _right_vector(K.T, there.T, members, root, other, fixed)
         except ZeroDivisionError:
             right = left = None
             decided = False
@@ -137,13 +140,11 @@ def spectrum(K: Array, vectors: bool = True) -> Spectrum:
     )
 
 
-def _right_vector(K: Array, there: BoolArray, members: IntArray, root: arb, shape: Array | None) -> Array:
+def _right_vector(K: Array, there: BoolArray, members: IntArray, root: arb, shape: Array, fixed: int) -> Array:
     """Return the right Perron vector of one class, carried on to all that it leads to; its scale is left open."""
     result = zeros((len(K),), K)
     block = K[np.ix_(members, members)]
-    if shape is None:
-        shape = perron_root_and_vector(block)[1]
-    result[members] = _class_vector(block, root, shape) if is_balls(K) else shape
+    result[members] = _class_vector(block, root, shape, fixed) if is_balls(K) else shape
     further = np.nonzero(reachable(there, members))[0]
     further = further[~np.isin(further, members)]
     if len(further):
@@ -152,20 +153,20 @@ def _right_vector(K: Array, there: BoolArray, members: IntArray, root: arb, shap
     return result
 
 
-def _class_vector(block: Array, root: arb, shape: Array) -> Array:
+def _class_vector(block: Array, root: arb, shape: Array, fixed: int) -> Array:
     """Return balls around the Perron vector of an irreducible matrix, given one near it and a ball around the root.
 
-    With one entry fixed, the others solve (root I - B_rr) w = B_rk, a non-singular M-matrix for the exact root.
+    With the entry k = `fixed` kept, the others solve (root I - B_rr) w = B_rk, a non-singular M-matrix for the exact root.
     Scaled by `shape`, its rows sum to about B_ik: nothing is lost to the sizes of the entries.
     """
     size = len(block)
     if size == 1:
         return shape
     near = block * shape[None, :] / shape[:, None]
-    rest = np.arange(1, size)
+    rest = np.delete(np.arange(size), fixed)
     with precision(ctx.prec + 64):
         system = root * identity(size - 1, block) - near[np.ix_(rest, rest)]
-        relative = solve(system, near[rest, 0])
+        relative = solve(system, near[rest, fixed])
     result = shape.copy()
     result[rest] = shape[rest] * relative
     return result

@@ -63,13 +63,12 @@ class _Token:
     position: int
     groups: tuple[str, ...] = ()
 
-    @property
     def is_end(self) -> bool:
         return self.kind == "end"
 
     @property
     def shown(self) -> str:
-        return "the end" if self.is_end else quoted(self.text)
+        return "the end" if self.is_end() else quoted(self.text)
 
 
 def parse(
@@ -138,12 +137,12 @@ class _Parser:
             message = f"the expression has {len(self.text):,} characters; at most {most:,} are read."
             raise ExpressionError(Problem(self.where, message, key=self.key))
         self.token = self.read()
-        if self.token.is_end:
+        if self.token.is_end():
             raise ExpressionError(
                 Problem(self.where, "the expression is empty. Write a number or a formula.", key=self.key)
             )
         node = self.sum()
-        if not self.token.is_end:
+        if not self.token.is_end():
             self.unexpected()
         return node
 
@@ -314,13 +313,13 @@ class _Parser:
             self.close(token)
             return inner
         after = f" after {self.before.shown}" if self.before else " at the start"
-        found = "nothing" if token.is_end else token.shown
+        found = "nothing" if token.is_end() else token.shown
         raise self.error(token.position, f"expected a number, a name or '('{after}, found {found}")
 
     def close(self, opened: _Token) -> None:
         """Read the ')' that belongs to an opened '('."""
         token = self.token
-        if token.is_end:
+        if token.is_end():
             raise self.error(opened.position, "this '(' is not closed", "Add the ')'.")
         if token.text != ")":
             self.unexpected()

@@ -89,7 +89,7 @@ def _names(draft: Draft) -> bool:
         for node in walk(placed.expression.tree):
             if isinstance(node, Name) and node.name not in told:
                 role = draft.roles.get(node.name)
-                if role in ("compartment", "parameter", "definition"):
+                if role in ("compartment", "parameter", "definition") or node.name in draft.clashing:
                     continue
                 told.add(node.name)
                 message = _unknown(draft, node.name, role, quantities)
@@ -209,12 +209,13 @@ def _groups(draft: Draft, ordered: list[str]) -> None:
     """Find over which dimensions each expression varies, and refuse what its place has no groups for."""
     over: dict[str, Varies] = {name: frozenset(item.by) for name, item in draft.compartments.items()}
     over |= {name: frozenset(item.by) for name, item in draft.parameters.items()}
+    over |= dict.fromkeys(draft.clashing)
 
     def lookup(name: str) -> Varies:
         return over.get(name)
 
     for name in ordered:
-        over[name] = varies(draft, _definition(draft, name), lookup)
+        over[name] = None if name in draft.clashing else varies(draft, _definition(draft, name), lookup)
         own = over[name]
         if own is not None:
             by = tuple(dimension for dimension in draft.dimensions if dimension in own)

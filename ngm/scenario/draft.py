@@ -51,6 +51,8 @@ class Draft:
 
     found: Findings
     roles: dict[str, Role] = field(default_factory=dict)
+    #: names that stand for two things: refused once, and nothing is concluded from them
+    clashing: set[str] = field(default_factory=set)
     #: name as it stands in the file, for messages and for the keys of problems
     typed: dict[str, str] = field(default_factory=dict)
     title: str = ""
@@ -85,6 +87,8 @@ class Draft:
         name = canonical(text)
         if name is not None and self.roles.get(name) == role:
             return name
+        if name in self.clashing:
+            return None
         other = self.roles.get(name) if name is not None else None
         if other is not None:
             self.found.add(where, f"'{short(text)}' is {ARTICLE[other]}, not {ARTICLE[role]}.{self.choice(role)}", key)

@@ -112,6 +112,7 @@ def _declare(draft: Draft, section: str, raw: Mapping[str, Any]) -> dict[str, An
             draft.found.add(where, f"'{name}' is the name of a function. Take another name.", key)
             continue
         if name in draft.roles:
+            draft.clashing.add(name)
             before = draft.typed[name]
             spelt = "" if before == typed else f", which is the same name as '{typed}'"
             other = ARTICLE[draft.roles[name]]
@@ -144,7 +145,8 @@ def _scenario(draft: Draft, data: Mapping[str, Any]) -> None:
         word = units.time_unit_name(time_unit.strip())
         if word is None and not units.is_word(time_unit.strip()):
             table.problem("time_unit", f"'{short(time_unit)}' is not one unit of time. Write one word, such as day.")
-        draft.time_unit = word or time_unit.strip()
+        else:
+            draft.time_unit = word or time_unit.strip()
     if table.has("format"):
         version = table.raw["format"]
         if isinstance(version, bool) or not isinstance(version, int):
@@ -211,6 +213,8 @@ def _compartments(draft: Draft, members: Mapping[str, Any], *, required: bool) -
         example = f'{draft.typed[name]} = {{ label = "…", infected = false }}'
         table = Table(found, raw, where, key, ("label", "infected", "by", "unit"), example=example)
         if not table.is_table:
+            # whether it is infected is not known: nothing is to be concluded from that
+            draft.infected.add(name)
             continue
         infected = table.flag("infected", required="Write infected = true or infected = false.")
         if infected is not False:

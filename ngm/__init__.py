@@ -1,0 +1,51 @@
+"""From compartments and flows to R0: the next-generation matrix of an infection, derived, bounded and explained.
+
+>>> import ngm
+>>> scenario = ngm.load("scenarios/…toml")        # doctest: +SKIP
+>>> ngm.solve(scenario).R0                         # doctest: +SKIP
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
+
+if TYPE_CHECKING:
+    from ngm.analysis.control import control
+    from ngm.analysis.solve import solve
+    from ngm.scenario.file import load, loads
+    from ngm.scenario.model import Scenario
+
+__all__ = [
+    "DerivationError",
+    "ExpressionError",
+    "NgmError",
+    "Scenario",
+    "ScenarioError",
+    "control",
+    "load",
+    "loads",
+    "solve",
+]
+
+#: Where each public name is made. Loaded when first used: numpy and scipy take half a second that an import must not cost.
+_HOMES = {
+    "Scenario": "ngm.scenario.model",
+    "control": "ngm.analysis.control",
+    "load": "ngm.scenario.file",
+    "loads": "ngm.scenario.file",
+    "solve": "ngm.analysis.solve",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name in _HOMES:
+        from importlib import import_module
+
+        return getattr(import_module(_HOMES[name]), name)
+    raise AttributeError(f"module 'ngm' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted(set(globals()) | set(__all__))

@@ -1,0 +1,105 @@
+"""The command line: ``python -m ngm VERB FILE [options]``.
+
+Prints the result to standard output, and what is wrong to standard error. Exit code 0: done; 2: the input is wrong; 1:
+anything else.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import sys
+from collections.abc import Sequence
+
+from ngm.errors import NgmError, Problem, ScenarioError
+
+__all__ = ["main"]
+
+VERBS = {
+    "solve": "derive F, V and K from the flows; R0 with bounds, structure, growth",
+    "control": "type, target and state reproduction numbers, and the share to remove",
+}
+
+
+class _Parser(argparse.ArgumentParser):
+    """A parser whose complaints are short and go to standard error with exit code 2."""
+
+    def error(self, message: str) -> None:  # type: ignore[override]
+        self.exit(2, f"{message[:1500]}\nusage: python -m ngm {{{','.join(VERBS)}}} FILE [--set NAME=VALUE] [--json]\n")
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = _Parser(prog="python -m ngm", description="From compartments and flows to R0.", allow_abbrev=False)
+    verbs = parser.add_subparsers(dest="verb", required=True, metavar="VERB", parser_class=_Parser)
+    for verb, what in VERBS.items():
+        sub = verbs.add_parser(verb, help=what, description=what, allow_abbrev=False)
+        sub.add_argument("file", metavar="FILE", help="a scenario file")
+        sub.add_argument(
+            "--set",
+            dest="values",
+            metavar="NAME=VALUE",
+            action="append",
+            default=[],
+            help="another value for a parameter, in its own unit; may be given more than once",
+        )
+        sub.add_argument("--json", action="store_true", help="print one JSON object")
+    return parser
+
+
+def _values(given: Sequence[str]) -> dict[str, str]:
+    out: dict[str, str] = {}
+    problems = []
+    for item in given:
+        name, sign, value = item.partition("=")
+        if not sign or not name.strip() or not value.strip():
+            problems.append(Problem("--set", f"expected NAME=VALUE, for example --set beta=0.3, not {item[:80]!r}."))
+        else:
+            out[name.strip()] = value.strip()
+    if problems:
+        raise ScenarioError(problems)
+    return out
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one verb and return the exit code."""
+    options = _parser().parse_args(arguments)
+    try:
+        text = _run(options)
+    except NgmError as error:
+        print(error, file=sys.stderr)
+        return 2
+    try:
+        print(text)
+        sys.stdout.flush()
+    except BrokenPipeError:
+        sys.stderr.close()
+        return 1
+    return 0
+
+
+def _run(options: argparse.Namespace) -> str:
+    from ngm import worker
+    from ngm.scenario.file import load
+    from ngm.scenario.values import with_values
+
+    values = _values(options.values)
+    scenario = load(options.file)
+    if options.verb == "solve":
+        worker.warm()  # the child imports sympy while this process reads on
+    if values:
+        scenario = with_values(scenario, values, rewrite=False)
+    if options.verb == "solve":
+        from ngm.analysis.solve import solve
+        from ngm.console import solve_text
+
+        result = solve(scenario)
+        return json.dumps(result.to_json(), ensure_ascii=False) if options.json else solve_text(result)
+    from ngm.analysis.control import control
+    from ngm.console import control_text
+
+    found = control(scenario)
+    return json.dumps(found.to_json(), ensure_ascii=False) if options.json else control_text(found)
+
+
+if __name__ == "__main__":
+    sys.exit(main())

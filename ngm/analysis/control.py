@@ -1,0 +1,119 @@
+"""Which types, entries and states control can act on, and how much is needed."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from itertools import combinations
+
+import numpy as np
+
+from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.solve import Numbers
+from ngm.engine.balls import PRECISION, nearest, precision
+from ngm.engine.control import (
+    ReproductionNumber,
+    all_single_types,
+    state_reproduction_numbers,
+    target_reproduction_number,
+    type_reproduction_number,
+)
+from ngm.engine.linear import pattern
+from ngm.results import ControlResult, StateNumber, TargetNumber, TypeNumber
+from ngm.scenario.model import Scenario
+
+__all__ = ["control"]
+
+#: Types at infection up to which every set of types is listed, and every entry of K.
+MOST_FOR_SETS = 6
+MOST_FOR_ENTRIES = 10
+
+
+def control(scenario: Scenario) -> ControlResult:
+    """Return type-, target- and state-reproduction numbers of a scenario, with the share to remove.
+
+    The share to remove is 1 - 1/T where T > 1 and 0 where T <= 1; where what is left alone sustains the infection by
+    itself there is no T, and the reason is given.
+
+    Raises
+    ------
+    ngm.DerivationError
+        As `ngm.solve`.
+
+    References
+    ----------
+    Roberts & Heesterbeek (2003) Proc. R. Soc. B 270:1359, doi:10.1098/rspb.2003.2339; Shuai, Heesterbeek & van den
+    Driessche (2013) J. Math. Biol. 67:1067; Lewis, Shuai & van den Driessche (2019) J. Math. Biol. 78:2317
+    """
+    with precision(PRECISION):
+        found = Numbers(scenario)
+        return _control(found)
+
+
+def _control(found: Numbers) -> ControlResult:
+    scenario, types = found.scenario, found.template.types
+    at = [types[k] for k in found.at]
+    warnings = list(dict.fromkeys([*scenario.warnings, *found.point.warnings]))
+    kinds: list[TypeNumber] = []
+    targets: list[TargetNumber] = []
+    states: list[StateNumber] = []
+    R0: float | None = None
+    if found.no_R0 is not None:
+        warnings.append(f"No R0: {found.no_R0}")
+    elif found.spectrum is None:
+        R0 = 0.0
+        warnings.append("No flow makes new infections near the infection-free state: there is nothing to control.")
+    else:
+        R0 = nearest(found.spectrum.root)
+        if len(types) > MOST_WRITTEN:
+            warnings.append(f"{len(types)} types: the numbers of single types and states are not listed.")
+        else:
+            kinds = _types(found, at)
+            targets = _targets(found, at, warnings)
+            states = [
+                StateNumber(types[k], number.T, number.critical_effort, _why(number, f"the infectivity of {types[k]}"))
+                for k, number in state_reproduction_numbers(found.F, found.V)
+            ]
+    return ControlResult(
+        scenario.title, scenario.digest, R0, found.no_R0, tuple(kinds), tuple(targets), tuple(states), tuple(warnings)
+    )
+
+
+def _types(found: Numbers, at: Sequence[str]) -> list[TypeNumber]:
+    m = len(at)
+    single = all_single_types(found.K)
+    out = [
+        TypeNumber((at[k],), number.T, number.critical_effort, _why(number, at[k])) for k, number in enumerate(single)
+    ]
+    if m > MOST_FOR_SETS:
+        return out
+    for size in range(2, m + 1):
+        for members in combinations(range(m), size):
+            mask = np.zeros(m, dtype=bool)
+            mask[list(members)] = True
+            number = type_reproduction_number(found.K, mask)
+            named = tuple(at[k] for k in members)
+            out.append(TypeNumber(named, number.T, number.critical_effort, _why(number, ", ".join(named))))
+    return out
+
+
+def _targets(found: Numbers, at: Sequence[str], warnings: list[str]) -> list[TargetNumber]:
+    m = len(at)
+    if m > MOST_FOR_ENTRIES:
+        warnings.append(
+            f"{m} types at infection: the numbers of single entries of K are listed for up to {MOST_FOR_ENTRIES}."
+        )
+        return []
+    out = []
+    for i, j in np.argwhere(pattern(found.K)):
+        mask = np.zeros((m, m), dtype=bool)
+        mask[i, j] = True
+        number = target_reproduction_number(found.K, mask)
+        why = _why(number, f"infection of {at[i]} by {at[j]}")
+        out.append(TargetNumber((at[i], at[j]), number.T, number.critical_effort, why))
+    return out
+
+
+def _why(number: ReproductionNumber, target: str) -> str | None:
+    if number.T is not None:
+        return None
+    return f"T({target}) does not exist: without it the infection sustains itself (rho = {number.rest:.4g})."

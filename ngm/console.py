@@ -1,0 +1,192 @@
+"""Results as text for a terminal: words and numbers only, nothing computed."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from ngm.results import ControlResult, Solution
+
+__all__ = ["CAUTION", "control_text", "solve_text"]
+
+CAUTION = (
+    "A model's number is no forecast, and says nothing of speed or severity. It holds for this model, at these values, near "
+    "the infection-free state. Decisions belong to the responsible authority under local rules and licensed practice."
+)
+#: Types up to which matrices are printed.
+MOST_PRINTED = 12
+WIDTH = 110
+
+
+def figure(value: float | None) -> str:
+    """Return a number as people read it: six significant digits."""
+    return "-" if value is None else f"{value:.6g}"
+
+
+def table(rows: Sequence[Sequence[str]], head: Sequence[str]) -> list[str]:
+    """Return lines of right-aligned columns, the first one left-aligned."""
+    widths = [max(len(row[k]) for row in [head, *rows]) for k in range(len(head))]
+    lines = []
+    for row in [head, *rows]:
+        cells = [row[0].ljust(widths[0]), *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True))]
+        lines.append("  " + "  ".join(cells).rstrip())
+    return lines
+
+
+def _matrix(name: str, values: Sequence[Sequence[float]] | None, labels: Sequence[str]) -> list[str]:
+    if values is None or not labels:
+        return []
+    if len(labels) > MOST_PRINTED:
+        return [f"{name}: {len(labels)} x {len(labels)}; use --json for the numbers."]
+    rows = [[label, *(figure(v) for v in row)] for label, row in zip(labels, values, strict=True)]
+    return [f"{name} (row: the type infected or entered; column: the type that causes it)", *table(rows, ["", *labels])]
+
+
+def _symbolic(name: str, entries: Sequence[Sequence[str]] | None, labels: Sequence[str]) -> list[str]:
+    if entries is None:
+        return []
+    lines = [f"{name}, entry by entry"]
+    for row, label in zip(entries, labels, strict=True):
+        for entry, column in zip(row, labels, strict=True):
+            if entry != "0":
+                lines.append(f"  {name}[{label}, {column}] = {entry}")
+    return lines if len(lines) <= 60 else [f"{name}: {len(lines) - 1} entries; use --json to see them."]
+
+
+def solve_text(result: Solution) -> str:
+    """Return the derivation and the numbers of `ngm.solve` as text."""
+    unit = result.time_unit
+    lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
+    if result.R0 is None:
+        lines.append(f"No R0: {result.no_R0}")
+    else:
+        assert result.R0_bounds is not None
+        low, high = result.R0_bounds
+        lines.append(f"R0 = {figure(result.R0)}   proven: {low!r} <= R0 <= {high!r}")
+        if result.closed_form is not None:
+            lines.append(f"   = {result.closed_form}")
+        else:
+            lines.append("   no closed form worth printing; the number is certified by its bounds")
+        period = result.structure.period if result.structure is not None else None
+        if result.per_cycle is not None and result.per_cycle != result.R0 and result.R0 > 0:
+            lines.append(
+                f"R0 per cycle = {figure(result.per_cycle)} (R0 is per generation; a cycle takes {period or 'several'})"
+            )
+        elif result.per_cycle is None:
+            lines.append("R0 per cycle: classes of different periods attain R0, so there is no one number per cycle")
+    lines.append(f"growth rate = {figure(result.growth_rate)} per {unit}")
+    if result.doubling_time is not None:
+        lines.append(f"doubling time = {figure(result.doubling_time)} {unit}")
+    lines += ["", "Infection-free state"]
+    symbolic = result.symbolic.infection_free or {}
+    shown = list(result.infection_free.items())
+    for name, value in shown[:40]:
+        formula = symbolic.get(name)
+        tail = f" = {formula}" if formula is not None and not _is_number(formula) else ""
+        lines.append(f"  {name}{tail} = {figure(value)}")
+    if len(shown) > 40:
+        lines.append(f"  … and {len(shown) - 40} more; use --json.")
+    lines += ["", "What F and V are made of"]
+    for term in result.terms[:80]:
+        sign = "+" if term.sign > 0 else "-"
+        source = f"flow {term.flow} " if term.flow is not None else ""
+        lines.append(f"  {term.matrix}[{term.row}, {term.column}]  {sign} {term.share}   ({source}{term.label})")
+    if len(result.terms) > 80:
+        lines.append(f"  … and {len(result.terms) - 80} more; use --json.")
+    for name, values in (("F", result.F), ("V", result.V)):
+        lines += ["", *_matrix(name, values, result.types)]
+    lines += ["", *_symbolic("K", result.symbolic.K, result.types_at_infection)]
+    if result.symbolic.abbreviations:
+        lines += ["", "where"]
+        lines += [f"  {name} = {line}" for name, line in list(result.symbolic.abbreviations.items())[:80]]
+    lines += ["", *_matrix("K", result.K, result.types_at_infection)]
+    if result.symbolic.characteristic_polynomial is not None:
+        name = result.symbolic.polynomial_variable
+        lines += ["", f"det({name} I - K) = {result.symbolic.characteristic_polynomial}"]
+    lines += _structure(result)
+    lines += ["", "Conditions (van den Driessche & Watmough 2002)"]
+    lines += [f"  {c.name} {'holds' if c.holds else 'DOES NOT HOLD'}: {c.detail}" for c in result.conditions]
+    lines += _closing(result.warnings)
+    return _squeezed(lines)
+
+
+def _structure(result: Solution) -> list[str]:
+    structure = result.structure
+    if structure is None or not structure.classes:
+        return []
+    lines = ["", "Structure of K"]
+    if structure.irreducible:
+        lines.append(f"  irreducible: every type leads to every other; period {structure.period}")
+    else:
+        lines.append(f"  reducible: {len(structure.classes)} classes, a class before those that it infects")
+    rows = [
+        [
+            ", ".join(c.types[:8]) + (", …" if len(c.types) > 8 else ""),
+            figure(c.R0),
+            "-" if c.period is None else str(c.period),
+            figure(c.growth_rate),
+        ]
+        for c in structure.classes[:40]
+    ]
+    lines += table(rows, ["class", "R0", "period", f"growth per {result.time_unit}"])
+    if result.right is not None and result.left is not None and len(result.right) <= 40:
+        rows = [
+            [name, figure(share), figure(value)]
+            for name, share, value in zip(result.types_at_infection, result.right, result.left, strict=True)
+        ]
+        lines += ["", *table(rows, ["type", "share of new infections", "reproductive value"])]
+    return lines
+
+
+def control_text(result: ControlResult) -> str:
+    """Return the numbers of `ngm.control` as text."""
+    lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
+    lines.append(f"No R0: {result.no_R0}" if result.R0 is None else f"R0 = {figure(result.R0)}")
+    lines.append("The share to remove is 1 - 1/T where T > 1; 1 - 1/R0 is it only where all types are treated alike.")
+    reasons: list[str] = []
+    for title, rows in (
+        ("Types", [(", ".join(t.types), t) for t in result.type_reproduction]),
+        (
+            "Entries of K (who infects <- by whom)",
+            [(f"{t.entry[0]} <- {t.entry[1]}", t) for t in result.target_reproduction],
+        ),
+        ("Infectivity of states", [(t.state, t) for t in result.state_reproduction]),
+    ):
+        if not rows:
+            continue
+        cells = []
+        for name, item in rows:
+            effort = "cannot work alone" if item.T is None else figure(item.critical_effort)
+            cells.append([name, figure(item.T), effort])
+            if item.why is not None:
+                reasons.append(item.why)
+        lines += ["", title, *table(cells[:80], ["acts on", "T", "share to remove"])]
+        if len(cells) > 80:
+            lines.append(f"  … and {len(cells) - 80} more; use --json.")
+    if reasons:
+        lines += ["", *(f"  {why}" for why in reasons[:20])]
+    lines += _closing(result.warnings)
+    return _squeezed(lines)
+
+
+def _closing(warnings: Sequence[str]) -> list[str]:
+    lines: list[str] = []
+    if warnings:
+        lines += ["", "Warnings", *(f"  ! {warning}" for warning in warnings)]
+    return [*lines, "", CAUTION]
+
+
+def _is_number(text: str) -> bool:
+    try:
+        float(text)
+    except ValueError:
+        return False
+    return True
+
+
+def _squeezed(lines: Sequence[str]) -> str:
+    """Return the lines as text, without two blank ones in a row."""
+    out: list[str] = []
+    for line in lines:
+        if line or (out and out[-1]):
+            out.append(line)
+    return "\n".join(out)

@@ -1,0 +1,197 @@
+"""Symbolic work in a process of its own, with a limit on time and memory.
+
+Symbols can take any time, and a thread cannot be stopped. So a derivation in symbols is sent to a child process, which is
+killed when its limit is over, and its memory comes back. One idle child is kept warm between jobs; it ends by itself when
+the parent does, since its input ends. The child runs `python -m ngm.worker`: requests come in on its standard input and
+results go out on its standard output, each as a length and a pickled object, between two processes of one program.
+"""
+
+from __future__ import annotations
+
+import atexit
+import contextlib
+import os
+import pickle
+import struct
+import subprocess
+import sys
+import threading
+from collections.abc import Mapping
+from pathlib import Path
+from typing import IO, Any
+
+from ngm.results import Symbolic
+from ngm.scenario.model import Scenario
+
+__all__ = ["LIMIT", "WorkerFailed", "symbols", "warm"]
+
+#: Seconds for the symbols of one scenario.
+LIMIT = 10.0
+#: Bytes of address space of a child.
+MEMORY = 4 * 2**30
+
+_HEADER = struct.Struct(">Q")
+
+
+class WorkerFailed(Exception):  # noqa: N818
+    """No symbols: `str()` says why, in words for a warning."""
+
+
+class _Child:
+    """One child process that has answered everything it was asked so far."""
+
+    def __init__(self) -> None:
+        environment = dict(os.environ)
+        root = str(Path(__file__).resolve().parent.parent)
+        old = environment.get("PYTHONPATH")
+        environment["PYTHONPATH"] = root if not old else root + os.pathsep + old
+        # Nothing is read from the folder the user happens to stand in.
+        self.process = subprocess.Popen(
+            [sys.executable, "-m", "ngm.worker"],
+            stdin=subprocess.PIPE,
+            stdout=subprocess.PIPE,
+            stderr=subprocess.DEVNULL,
+            env=environment,
+            cwd=root,
+        )
+
+    def ask(self, request: object, limit: float) -> Any:
+        """Return the answer; kill the child and raise WorkerFailed when it takes longer than `limit` seconds."""
+        assert self.process.stdin is not None
+        assert self.process.stdout is not None
+        late = threading.Event()
+
+        def stop() -> None:
+            late.set()
+            self.kill()
+
+        timer = threading.Timer(limit, stop)
+        timer.daemon = True
+        timer.start()
+        try:
+            _send(self.process.stdin, request)
+            return _receive(self.process.stdout)
+        except (OSError, EOFError, pickle.UnpicklingError, struct.error):
+            self.kill()
+            if late.is_set():
+                raise WorkerFailed(
+                    f"the formulas took longer than {limit:g} s and were stopped; the numbers stand by themselves."
+                ) from None
+            raise WorkerFailed(
+                "the formulas needed more memory than is allowed; the numbers stand by themselves."
+            ) from None
+        finally:
+            timer.cancel()
+
+    def kill(self) -> None:
+        """End the child at once."""
+        self.process.kill()
+        self.process.wait()
+        for pipe in (self.process.stdin, self.process.stdout):
+            if pipe is not None:
+                with contextlib.suppress(OSError):
+                    pipe.close()
+
+
+_idle: list[_Child] = []
+_lock = threading.Lock()
+
+
+def warm() -> None:
+    """Start a child if none is idle, so that the next question finds one."""
+    with _lock:
+        if not _idle:
+            with contextlib.suppress(OSError):
+                _idle.append(_Child())
+
+
+def symbols(
+    scenario: Scenario,
+    state: Mapping[str, float],
+    values: Mapping[str, float],
+    branches: Mapping[str, list[int]],
+    limit: float = LIMIT,
+) -> Symbolic:
+    """Return `ngm.derivation.symbols.derive_symbols` of the same arguments, computed in a child within `limit` seconds.
+
+    Raises
+    ------
+    WorkerFailed
+        The limit on time or memory was reached, or no process could be started.
+    """
+    with _lock:
+        child = _idle.pop() if _idle else None
+    try:
+        if child is None or child.process.poll() is not None:
+            child = _Child()
+    except OSError as error:
+        raise WorkerFailed(f"no process for the formulas could be started ({error.strerror}).") from None
+    answer = child.ask((scenario, dict(state), dict(values), dict(branches)), limit)
+    with _lock:
+        if len(_idle) < 2:
+            _idle.append(child)
+            child = None
+    if child is not None:
+        child.kill()
+    if isinstance(answer, Symbolic):
+        return answer
+    raise WorkerFailed(str(answer))
+
+
+@atexit.register
+def _end() -> None:
+    while _idle:
+        _idle.pop().kill()
+
+
+def _send(pipe: IO[bytes], thing: object) -> None:
+    data = pickle.dumps(thing)
+    pipe.write(_HEADER.pack(len(data)) + data)
+    pipe.flush()
+
+
+def _receive(pipe: IO[bytes]) -> Any:
+    header = pipe.read(_HEADER.size)
+    if len(header) < _HEADER.size:
+        raise EOFError
+    (size,) = _HEADER.unpack(header)
+    data = pipe.read(size)
+    if len(data) < size:
+        raise EOFError
+    return pickle.loads(data)  # noqa: S301 - the other end is this program
+
+
+def serve() -> None:
+    """Answer requests until the input ends. What anybody prints goes to standard error, not among the answers."""
+    answers = os.fdopen(os.dup(sys.stdout.fileno()), "wb")
+    os.dup2(sys.stderr.fileno(), sys.stdout.fileno())
+    with contextlib.suppress(ImportError, ValueError, OSError):
+        import resource
+
+        resource.setrlimit(resource.RLIMIT_AS, (MEMORY, MEMORY))
+    with contextlib.suppress(OSError, AttributeError):
+        os.nice(5)
+    from ngm.derivation.symbols import derive_symbols
+    from ngm.errors import NgmError
+
+    while True:
+        try:
+            scenario, state, values, branches = _receive(sys.stdin.buffer)
+        except (EOFError, OSError):
+            os._exit(0)
+        try:
+            answer: object = derive_symbols(scenario, state, values, branches)
+        except NgmError as error:
+            answer = f"the formulas could not be written ({error.problems[0].message})"
+        except RecursionError:
+            answer = "the formulas are too deep to be written out; the numbers stand by themselves."
+        except MemoryError:
+            os._exit(3)
+        except Exception as error:  # the numbers do not depend on this, so a fault here must not lose them
+            print(repr(error), file=sys.stderr)
+            answer = f"the formulas could not be written ({type(error).__name__}); the numbers stand by themselves."
+        _send(answers, answer)
+
+
+if __name__ == "__main__":
+    serve()
