@@ -80,7 +80,7 @@ def _rows(solution: Solution, vector: tuple[float, ...]) -> list[dict[str, Any]]
 def _bars(rows: list[dict[str, Any]], axis: str, title: str, dark: bool, top: float | None = None) -> alt.LayerChart:
     colours = ink(dark)
     scale = alt.Scale(domain=[0, top]) if top is not None else alt.Scale(domain=[0, 1.15 * _largest(rows)], nice=False)
-    base = alt.Chart(alt.Data(values=rows)).encode(
+    base = alt.Chart(alt.InlineData(values=rows)).encode(
         y=alt.Y("type:N", sort=None, title=None, axis=alt.Axis(labelLimit=190)),
         x=alt.X("value:Q", scale=scale, title=axis, axis=alt.Axis(tickCount=5)),
         tooltip=[alt.Tooltip("type:N", title="type"), alt.Tooltip("shown:N", title="value")],
@@ -96,7 +96,7 @@ def _bars(rows: list[dict[str, Any]], axis: str, title: str, dark: bool, top: fl
         layers = (marks, texts)
     spoken = "; ".join(f"{row['type']} {row['shown']}" for row in rows[:20])
     more = f"; and {len(rows) - 20} more" if len(rows) > 20 else ""
-    return alt.layer(*layers).properties(
+    return alt.LayerChart(layer=list(layers)).properties(
         height=STEP * len(rows) + AXIS, description=f"{title}, {axis}: {spoken}{more}."
     )
 

@@ -60,7 +60,7 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
     ]
     kinds = ["R0 itself", "on the circle", "inside"]
     rings = (
-        alt.Chart(alt.Data(values=circles))
+        alt.Chart(alt.InlineData(values=circles))
         .mark_line(strokeWidth=1.8)
         .encode(
             x=x,
@@ -77,7 +77,7 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
         )
     )
     marks = (
-        alt.Chart(alt.Data(values=points))
+        alt.Chart(alt.InlineData(values=points))
         .mark_point(size=110, filled=True, opacity=1, stroke=colours.text, strokeWidth=0.8)
         .encode(
             x=x,
@@ -95,7 +95,7 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
             tooltip=["eigenvalue:N", "modulus:N", "what:N"],
         )
     )
-    return alt.layer(rings, marks).properties(
+    return alt.LayerChart(layer=[rings, marks]).properties(
         width=size,
         height=size,
         autosize=alt.AutoSizeParams(type="pad", contains="content"),

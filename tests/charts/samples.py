@@ -78,7 +78,7 @@ TWO_CLASSES = Solution(
     eigenvalues=((2.0, 0.0), (0.5, 0.0)),
 )
 
-#: Control of the vector-borne sample: T = 6 for either type and either entry, effort 5/6, by hand; one target that fails.
+#: Control of the vector-borne sample: T = 6 and effort 5/6, by hand; one target fails (made up, to be drawn).
 CONTROL = ControlResult(
     title="Hosts and vectors",
     digest="0",

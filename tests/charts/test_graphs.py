@@ -61,7 +61,7 @@ def test_kinds_of_flow_differ_by_line_and_word_as_well_as_colour():
     )
     infection, recovery, unknown = re.findall(r"^.*-> .*$", graph.dot, re.MULTILINE)[:3]
     assert 'style="dashed"' in infection
-    assert "transmission: beta*S*I" in infection
+    assert "transmission:\\nbeta*S*I" in infection
     assert 'style="solid"' in recovery
     assert "transmission" not in recovery
     assert "kind?" in unknown

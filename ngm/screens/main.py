@@ -1,0 +1,23 @@
+"""The router: builds the menu from the registry, runs the chosen page, then shows in the side bar how things stand."""
+
+from __future__ import annotations
+
+import streamlit as st
+
+from ngm.screens import parts
+from ngm.screens.registry import PAGES
+
+
+def main() -> None:
+    """Run one page."""
+    # The icon is an emoji: a named one would be fetched from another server.
+    st.set_page_config(page_title="Next-generation matrices", page_icon="🧮", layout="wide")
+    page = st.navigation([st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES])
+    status = st.sidebar.container()
+    page.run()
+    # After the page, so that the side bar speaks of the text as the page has just left it.
+    with status:
+        parts.status()
+
+
+main()

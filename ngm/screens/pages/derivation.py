@@ -1,0 +1,30 @@
+"""The derivation, step by step: infection-free state, F and V, conditions, K, closed form."""
+
+from __future__ import annotations
+
+import streamlit as st
+
+from ngm.screens import parts, steps
+
+
+def page() -> None:
+    """Show the page."""
+    st.title("Derivation")
+    shown = parts.results()
+    if shown is None:
+        return
+    write = parts.digits("derivation")
+    solution = shown.solution
+    parts.headline(solution, write)
+    steps.types(solution)
+    steps.infection_free(solution, write)
+    steps.transmission_and_transition(solution, write)
+    steps.conditions(solution)
+    steps.residence(solution)
+    steps.next_generation(solution, write)
+    steps.root(solution)
+    parts.warnings_box(solution.warnings)
+    parts.cautions()
+
+
+page()

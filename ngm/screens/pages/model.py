@@ -1,0 +1,96 @@
+"""Edit the model in tables, with its flow diagram and the problems beside what causes them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import streamlit as st
+from streamlit.delta_generator import DeltaGenerator
+
+from ngm.charts.graphs import flow_diagram
+from ngm.errors import Problem
+from ngm.screens import cache, editors, forms, parts, sketch, state
+from ngm.screens.forms import TABLES, Edit
+
+WORDS = {
+    "compartments": "The stages of the course of infection, in matrix order. The last, empty row adds one.",
+    "parameters": "Values are typed as text: 0.4, 1e-3, 1/7, or an expression in other parameters.",
+    "definitions": "Abbreviations, usable in every expression: N for S + I + R.",
+    "flow": "One row an arrow. The rate is the whole rate, not the rate per head: gamma * I.",
+    "infection_free": "Optional: what is left out is solved for. A population without births needs it.",
+    "dimensions": "Ways in which hosts are grouped, such as age or region.",
+    "matrices": "Contacts between groups, or rates of moving between them.",
+    "movement": "Members of these compartments change group by a matrix and keep their compartment.",
+}
+PLAIN = ("compartments", "parameters", "flow", "definitions", "infection_free")
+GROUPED = ("dimensions", "matrices", "movement")
+
+
+def tables(names: tuple[str, ...], document: Mapping[str, Any], boxes: dict[str, DeltaGenerator]) -> list[Edit]:
+    """Place tables, each with room below for its problems; return the edits that they ask for."""
+    edits: list[Edit] = []
+    for name in names:
+        st.subheader(TABLES[name].title)
+        st.caption(WORDS[name])
+        edits += editors.table_editor(TABLES[name], document)
+        boxes[name] = st.container()
+        if name == "matrices":
+            for matrix in forms.matrix_names(document):
+                st.markdown(f"Entries of **{parts.plain(matrix)}**: row, from; column, with or to")
+                edits += editors.matrix_editor(matrix, document)
+    return edits
+
+
+def overview(document: Mapping[str, Any]) -> None:
+    """Draw the flow diagram."""
+    graph = flow_diagram(sketch.stages(document), sketch.arrows(document), dark=parts.dark())
+    if graph is None:
+        st.caption("The flow diagram appears here (for up to 60 compartments).")
+        return
+    st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
+    st.caption(
+        "Thick dashed arrows marked “transmission” are new infections (F); thin solid ones are transitions (V). "
+        "Infected compartments have a double border; a dot is the outside."
+    )
+
+
+def sort_out(problems: tuple[Problem, ...], boxes: dict[str, DeltaGenerator]) -> list[Problem]:
+    """Put each problem below the table that causes it; return the rest."""
+    for name, box in boxes.items():
+        with box:
+            parts.problem_box([p for p in problems if p.key and p.key[0] == name], "in this table")
+    return [p for p in problems if not p.key or p.key[0] not in boxes]
+
+
+def page() -> None:
+    """Show the page."""
+    st.title("Model")
+    now = state.current().now
+    if now is None:
+        parts.nothing_open()
+        return
+    document = forms.document(now.text)
+    if document is None:
+        parts.problem_box(cache.problems(now.text, now.folder), "in the text")
+        st.info("The tables need a text that is TOML. Put it right on the page **Scenario**, or undo the last change.")
+        return
+    top = st.container()
+    boxes: dict[str, DeltaGenerator] = {}
+    edits = tables(PLAIN, document, boxes)
+    with st.expander("Groups, matrices and movements", expanded=any(document.get(name) for name in GROUPED)):
+        edits += tables(GROUPED, document, boxes)
+    text = parts.applied(now.text, edits)
+    state.edit(text)
+    outcome = cache.solve(text, now.folder)
+    rest = sort_out(outcome.problems, boxes)
+    with top:
+        overview(forms.document(text) or document)
+        if outcome.solution is not None:
+            parts.headline(outcome.solution)
+        else:
+            parts.problem_box(rest, "besides those at the tables" if len(rest) < len(outcome.problems) else "")
+            parts.earlier_result()
+
+
+page()

@@ -1,0 +1,31 @@
+"""R0 and what belongs to it: bounds, growth, who infects whom, what control has to reach."""
+
+from __future__ import annotations
+
+import streamlit as st
+
+from ngm.screens import cache, panels, parts
+
+
+def page() -> None:
+    """Show the page."""
+    st.title("Reproduction numbers")
+    shown = parts.results()
+    if shown is None:
+        return
+    write = parts.digits("numbers")
+    solution = shown.solution
+    panels.figures(solution, write)
+    parts.cautions()
+    parts.warnings_box(solution.warnings)
+    if not shown.stale:
+        panels.change_a_value(shown, write)
+    if solution.R0 is None:
+        return
+    panels.who_infects_whom(solution, write)
+    panels.spectrum(solution)
+    panels.vectors(solution, write)
+    panels.control(cache.control(shown.text, shown.folder), write)
+
+
+page()

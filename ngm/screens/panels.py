@@ -1,0 +1,198 @@
+"""The sections of the page of reproduction numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+import streamlit as st
+
+from ngm.charts import bars, graphs
+from ngm.charts.spectrum import eigenvalues
+from ngm.results import ControlResult, Solution
+from ngm.screens import cache, forms, parts, state
+from ngm.screens.forms import TABLES
+from ngm.screens.parts import Shown, plain
+
+__all__ = ["change_a_value", "control", "figures", "spectrum", "vectors", "who_infects_whom"]
+
+Write = Callable[[float | None], str]
+
+
+def figures(solution: Solution, write: Write) -> None:
+    """Show R0, per generation and per cycle, and how fast the infection grows."""
+    first, second, third = st.columns(3)
+    with first:
+        parts.headline(solution, write, "stretch")
+        if solution.R0 is not None:
+            st.caption("Cases caused by one typical case, per generation, where nobody is infected yet.")
+    period = solution.structure.period if solution.structure is not None else None
+    with second:
+        if period is not None and period > 1:
+            st.metric("R0 per cycle", write(solution.per_cycle), border=True)
+            st.caption(
+                f"An infection comes back to where it began every {period} generations (host to vector to host, say). "
+                f"Per cycle it multiplies by R0 to the power of {period}. Both numbers pass 1 together; "
+                "say which one you quote."
+            )
+        elif solution.R0 is not None:
+            st.metric("R0 per cycle", write(solution.per_cycle), border=True)
+            st.caption(
+                "A cycle is one generation here: the number is R0 itself."
+                if period == 1
+                else "Of the class with the largest R0; a dash where classes of different periods tie."
+            )
+    with third:
+        unit = plain(solution.time_unit)
+        st.metric(f"Growth rate, per {unit}", write(solution.growth_rate), border=True)
+        st.caption(
+            f"Early growth, exponential. Doubling time: {plain(write(solution.doubling_time))} {unit}s."
+            if solution.doubling_time is not None
+            else "It does not grow: there is no doubling time."
+        )
+
+
+def change_a_value(shown: Shown, write: Write) -> None:
+    """Try other values of parameters beside those in force, and take them over."""
+    st.subheader("Change a value")
+    document = forms.document(shown.text) or {}
+    rows = {row[0]: row for row in forms.rows(TABLES["parameters"], document)}
+    held = [name for name in state.recall("numbers.chosen").split() if name in rows]
+    chosen = st.multiselect("Parameters to change", list(rows), default=held, key="numbers.chosen")
+    state.remember("numbers.chosen", " ".join(chosen))
+    if not chosen:
+        st.caption("Choose a parameter, type another value, and see the new R0 beside the old one.")
+        return
+    edits: list[forms.Edit] = []
+    for name, place in zip(chosen, _columns(len(chosen)), strict=True):
+        value, unit = rows[name][1], rows[name][2]
+        field = f"numbers.value.{name}"
+        label = f"{plain(name)} ({plain(unit)}), now {plain(value)}" if unit else f"{plain(name)}, now {plain(value)}"
+        typed = place.text_input(label, value=state.recall(field, value), key=field)
+        state.remember(field, typed)
+        edits += forms.field_edit("parameters", (name, "value"), value, typed, "value")
+    text = parts.applied(shown.text, edits)
+    outcome = cache.solve(text, shown.folder)
+    if outcome.solution is None:
+        parts.problem_box(outcome.problems, "with these values")
+        return
+    old, new = st.columns(2)
+    with old:
+        st.metric("R0 now", write(shown.solution.R0), border=True)
+    with new:
+        st.metric("R0 with these values", write(outcome.solution.R0), border=True)
+        if outcome.solution.no_R0:
+            st.error(plain(outcome.solution.no_R0))
+    if st.button("Take over into the scenario", key="numbers.apply", disabled=text == shown.text):
+        state.edit(text)
+        st.rerun()
+
+
+def who_infects_whom(solution: Solution, write: Write) -> None:
+    """Show K as a graph with its classes, and as a table."""
+    st.subheader("Who infects whom")
+    graph = graphs.who_infects_whom(solution, dark=parts.dark())
+    if graph is not None:
+        st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
+        st.caption(
+            "An arrow leads from the type that infects to the type infected; beside it, the infections that one case "
+            "causes. A box is a class: within it each type leads to each. That with the largest R0 has a solid box."
+        )
+    structure = solution.structure
+    if structure is not None:
+        rows = [
+            (str(k), ", ".join(c.types), write(c.R0), "–" if c.period is None else str(c.period), write(c.growth_rate))
+            for k, c in enumerate(structure.classes, 1)
+        ]
+        _table(["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"], rows)
+        if not structure.irreducible:
+            st.caption("There are several classes, or none that sustains itself: R0 is the largest of theirs.")
+    if solution.K is not None:
+        with st.expander("K in numbers: row infected, column infecting"):
+            parts.numbers_table(solution.K, solution.types_at_infection, write, "K")
+
+
+def spectrum(solution: Solution) -> None:
+    """Show the eigenvalues of K in the complex plane."""
+    st.subheader("Eigenvalues of K")
+    chart = eigenvalues(solution, dark=parts.dark())
+    if chart is None:
+        st.caption("K is too large for its eigenvalues to be listed.")
+        return
+    st.altair_chart(chart, width="content")
+    st.caption("R0 is the largest eigenvalue in size. Others on the same circle mean a period, or classes that tie.")
+
+
+def vectors(solution: Solution, write: Write) -> None:
+    """Show the two Perron vectors."""
+    st.subheader("Case mix and reproductive values")
+    right, left = solution.right, solution.left
+    if right is None and left is None:
+        st.caption("They are not unique here, because classes tie, or not defined.")
+        return
+    first, second = st.columns(2)
+    with first:
+        st.markdown("**Stable distribution**: the mix of new infections, once it has settled")
+        chart = bars.stable_distribution(solution, dark=parts.dark())
+        if chart is not None:
+            st.altair_chart(chart)
+    with second:
+        st.markdown("**Reproductive value**: what one case of a type counts for all later generations")
+        chart = bars.reproductive_values(solution, dark=parts.dark())
+        if chart is not None:
+            st.altair_chart(chart)
+    with st.expander("Both as a table"):
+        rows = [
+            (t, write(right[k] if right else None), write(left[k] if left else None))
+            for k, t in enumerate(solution.types_at_infection)
+        ]
+        _table(["type", "share of new infections", "reproductive value"], rows)
+
+
+def control(result: ControlResult, write: Write) -> None:
+    """Show what control has to reach, target by target."""
+    st.subheader("What control has to reach")
+    st.markdown(
+        "T counts the infections that control of the target must undo; the critical effort 1 - 1/T is the share of "
+        "them to prevent for the infection to die out. It equals 1 - 1/R0 only where all types are treated alike. "
+        "Where T does not exist, no effort on that target alone is enough."
+    )
+    chart = bars.efforts(result, dark=parts.dark())
+    if chart is not None:
+        st.altair_chart(chart)
+    heads = ["target", "T", "critical effort", "why there is none"]
+    groups: list[tuple[str, list[tuple[str, ...]]]] = [
+        (
+            "Types: infections of these types prevented",
+            [(", ".join(t.types), write(t.T), write(t.critical_effort), t.why or "") for t in result.type_reproduction],
+        ),
+        (
+            "Entries: infections of one type by another prevented",
+            [
+                (f"{t.entry[1]} infecting {t.entry[0]}", write(t.T), write(t.critical_effort), t.why or "")
+                for t in result.target_reproduction
+            ],
+        ),
+        (
+            "States: infectivity in one state removed",
+            [(t.state, write(t.T), write(t.critical_effort), t.why or "") for t in result.state_reproduction],
+        ),
+    ]
+    for title, rows in groups:
+        st.markdown(f"**{title}**")
+        if rows:
+            _table(heads, rows)
+        else:
+            st.caption("None listed.")
+    parts.warnings_box(result.warnings)
+
+
+def _columns(count: int) -> list[st.delta_generator.DeltaGenerator]:
+    width = min(count, 3)
+    columns = st.columns(width)
+    return [columns[k % width] for k in range(count)]
+
+
+def _table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    import pandas
+
+    st.dataframe(pandas.DataFrame(rows, columns=list(heads)), hide_index=True, alt=", ".join(heads))

@@ -1,0 +1,198 @@
+"""The sections of the derivation page, each one step."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+import streamlit as st
+
+from ngm.results import Matrix, Solution, TextMatrix
+from ngm.screens import parts
+from ngm.screens.parts import latex, plain
+
+__all__ = [
+    "conditions",
+    "infection_free",
+    "next_generation",
+    "residence",
+    "root",
+    "transmission_and_transition",
+    "types",
+]
+
+Write = Callable[[float | None], str]
+
+#: More lines than this are shown as a table, not typeset.
+MOST_LINES = 40
+MOST_TERMS = 80
+
+
+def types(solution: Solution) -> None:
+    """Say which the types are, and which of them are types at infection."""
+    st.subheader("1. Types")
+    listed = solution.types[:MOST_LINES]
+    names = [
+        f"{plain(t)} ({plain(solution.type_labels[t])})" if solution.type_labels.get(t, t) != t else plain(t)
+        for t in listed
+    ]
+    more = f" and {len(solution.types) - len(listed)} more" if len(solution.types) > len(listed) else ""
+    st.markdown(f"The infected types, in the order of the matrices: {', '.join(names)}{more}.")
+    born = [plain(t) for t in solution.types_at_infection[:MOST_LINES]]
+    st.markdown(f"Types at infection, those that new infections enter: {', '.join(born) or 'none'}.")
+
+
+def infection_free(solution: Solution, write: Write) -> None:
+    """Show the infection-free state and how near to rest it is."""
+    st.subheader("2. Infection-free state")
+    st.markdown("All infected compartments are empty, and every other one is at rest.")
+    written = solution.symbolic.infection_free or {}
+    if not solution.infection_free:
+        st.markdown("The model has no uninfected compartment.")
+    elif len(solution.infection_free) > MOST_LINES:
+        _plain_table(["compartment", "value"], [(k, write(v)) for k, v in solution.infection_free.items()])
+    else:
+        for name, value in solution.infection_free.items():
+            middle = f" = {latex(written[name])}" if name in written and written[name] != write(value) else ""
+            st.latex(f"{latex(name)}^{{*}}{middle} = {_number(write(value))}")
+    st.caption(
+        "Checked: the largest net flow, as a share of the gross flow of its compartment, is "
+        f"{plain(write(solution.residual))}."
+    )
+
+
+def transmission_and_transition(solution: Solution, write: Write) -> None:
+    """Show F and V, and the flows behind each entry."""
+    st.subheader("3. Transmission F and transition V")
+    st.markdown(
+        f"Rates per {plain(solution.time_unit)} at the infection-free state. Row: the type that is gained or lost; "
+        "column: the type that causes it. F counts new infections; V counts everything else, with its sign turned."
+    )
+    _matrix("F", solution.symbolic.F, solution.F, solution.types, write)
+    _matrix("V", solution.symbolic.V, solution.V, solution.types, write)
+    with st.expander("Entry by entry: the flows behind F and V"):
+        if len(solution.terms) > MOST_TERMS:
+            rows = [
+                (f"{t.matrix}[{t.row}, {t.column}]", "+" if t.sign > 0 else "-", t.share, _flow(t.flow, t.label))
+                for t in solution.terms
+            ]
+            _plain_table(["entry", "sign", "share", "flow"], rows)
+        else:
+            _terms(solution)
+
+
+def conditions(solution: Solution) -> None:
+    """Show how the conditions turned out."""
+    st.subheader("4. Conditions")
+    st.markdown("R0 is a threshold where these hold (van den Driessche and Watmough 2002).")
+    parts.conditions_table(solution)
+
+
+def residence(solution: Solution) -> None:
+    """Show the elimination that leads to the inverse of V."""
+    steps = [step for step in solution.symbolic.steps if step.kind in ("elimination", "residence")]
+    st.subheader("5. Mean stays: the inverse of V")
+    if not steps and not solution.symbolic.abbreviations:
+        st.markdown("Nothing is written out here: the inverse of V needs no abbreviation, or is known in numbers only.")
+        return
+    st.markdown(
+        "Entry (i, j) of the inverse of V is the mean time spent in state i by one who enters at j. States are taken "
+        "out one after the other; what would be too long to repeat gets a name."
+    )
+    named = {step.name for step in steps if step.kind == "elimination"}
+    for name, text in solution.symbolic.abbreviations.items():
+        if name not in named:
+            st.latex(f"{latex(name)} = {latex(text)}")
+    for step in steps[:MOST_LINES]:
+        if step.kind == "elimination":
+            st.markdown(plain(step.about))
+            parts.formula(latex(step.name), step.formula)
+        else:
+            st.markdown(f"Mean stay in {plain(step.name)} of one who enters at {plain(step.about)}:")
+            parts.formula(rf"\tau_{{{latex(step.name)},\,{latex(step.about)}}}", step.formula)
+    if len(steps) > MOST_LINES:
+        with st.expander(f"{len(steps) - MOST_LINES} further lines"):
+            rows = [(s.name, s.formula or "", s.about) for s in steps[MOST_LINES:]]
+            _plain_table(["name", "formula", "about"], rows)
+
+
+def next_generation(solution: Solution, write: Write) -> None:
+    """Show K."""
+    st.subheader("6. Next-generation matrix K")
+    if solution.K is None and solution.no_R0:
+        st.markdown("There is none at these values.")
+        return
+    st.markdown(
+        "K = F V⁻¹, kept to the types at infection. Entry (i, j): the infections of type i that one case of type j "
+        "causes over its whole course."
+    )
+    _matrix("K", solution.symbolic.K, solution.K, solution.types_at_infection, write)
+
+
+def root(solution: Solution) -> None:
+    """Show the characteristic polynomial, the classes and the closed form, or say that there is none."""
+    st.subheader("7. R0, the spectral radius of K")
+    if solution.R0 is None:
+        st.markdown("There is none at these values.")
+        return
+    symbolic = solution.symbolic
+    if symbolic.characteristic_polynomial is not None and len(symbolic.characteristic_polynomial) < MOST_TERMS * 40:
+        st.markdown("Characteristic polynomial of K:")
+        st.latex(f"{latex(symbolic.characteristic_polynomial)} = 0")
+    for step in symbolic.steps:
+        if step.kind == "class":
+            st.markdown(f"Class of {plain(step.name)}: {plain(step.about)}.")
+            if step.formula is not None:
+                st.latex(latex(step.formula))
+    if solution.closed_form is not None:
+        st.markdown("Closed form, for all values of the parameters:")
+        st.latex(rf"\mathcal{{R}}_0 = {latex(solution.closed_form)}")
+        with st.expander("The closed form as text"):
+            st.code(solution.closed_form, language=None, wrap_lines=True)
+    else:
+        st.markdown("There is no closed form worth printing: R0 is the number above, within its proven bounds.")
+
+
+def _matrix(name: str, text: TextMatrix | None, numbers: Matrix | None, labels: Sequence[str], write: Write) -> None:
+    """Show a matrix typeset where it is written out and small enough, and its numbers."""
+    typeset = parts.latex_matrix(text, labels) if text is not None else None
+    if typeset is not None:
+        st.latex(f"{name} = {typeset}")
+    if numbers is None:
+        if typeset is None:
+            st.caption(f"{name} is too large to be shown.")
+        return
+    if typeset is None:
+        st.caption(f"{name} is too large to typeset; here are its numbers.")
+        parts.numbers_table(numbers, labels, write, name)
+    else:
+        with st.expander(f"{name} in numbers"):
+            parts.numbers_table(numbers, labels, write, name)
+
+
+def _terms(solution: Solution) -> None:
+    entries = dict.fromkeys((t.matrix, t.row, t.column) for t in solution.terms)
+    for matrix, row, column in entries:
+        here = [t for t in solution.terms if (t.matrix, t.row, t.column) == (matrix, row, column)]
+        flows = "; ".join(_flow(t.flow, t.label) for t in here)
+        st.markdown(f"**{matrix}**, row {plain(row)}, column {plain(column)}: {plain(flows)}")
+        total = " ".join(f"{'-' if t.sign < 0 else '+'} {_grouped(latex(t.share), len(here) > 1)}" for t in here)
+        st.latex(total.removeprefix("+ "))
+
+
+def _grouped(share: str, several: bool) -> str:
+    return rf"\left({share}\right)" if several and (" + " in share or " - " in share) else share
+
+
+def _flow(number: int | None, label: str) -> str:
+    return label if number is None else f"flow {number}, {label}" if label else f"flow {number}"
+
+
+def _number(text: str) -> str:
+    head, mark, tail = text.partition("e")
+    return rf"{head} \times 10^{{{tail}}}" if mark else text.replace(",", r"\,")
+
+
+def _plain_table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    import pandas
+
+    st.dataframe(pandas.DataFrame(rows, columns=list(heads)), hide_index=True, alt=", ".join(heads))
