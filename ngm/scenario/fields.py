@@ -19,12 +19,20 @@ from ngm.expression.tree import Negate, Node, Number
 from ngm.scenario import exact
 from ngm.scenario.model import Expression
 
-__all__ = ["Findings", "Key", "Table", "closest", "describe", "listed", "number_node", "to_expression"]
+__all__ = ["EnoughError", "Findings", "Key", "Table", "closest", "describe", "listed", "number_node", "to_expression"]
 
 Key = tuple[str | int, ...]
 
 #: power of ten below which a number counts as 0, as in expressions
 _SMALLEST_EXPONENT = -300
+
+
+#: a file with more problems than this is not read further: finding suggestions for 100,000 names takes minutes
+MOST_PROBLEMS = 200
+
+
+class EnoughError(Exception):
+    """More problems have been found than anybody will read."""
 
 
 @dataclass(slots=True)
@@ -40,6 +48,8 @@ class Findings:
     ) -> None:
         """Note a problem."""
         self.problems.append(Problem(where, message, text, position, key))
+        if len(self.problems) >= MOST_PROBLEMS:
+            raise EnoughError
 
     def warn(self, where: str, message: str) -> None:
         """Note a doubt."""
@@ -50,7 +60,8 @@ class Findings:
         try:
             return Expression(text, parse.parse(text, where=where, matrices=self.matrices, key=key))
         except ExpressionError as error:
-            self.problems.extend(error.problems)
+            for problem in error.problems:
+                self.add(problem.where, problem.message, problem.key, problem.text, problem.position)
             return None
 
     def quantity(self, raw: object, where: str, key: Key, *, what: str = "a number") -> Expression | None:

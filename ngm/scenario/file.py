@@ -6,6 +6,7 @@ return it with one thing changed: comments, order and spacing stay, so that one 
 
 from __future__ import annotations
 
+from contextlib import suppress
 from pathlib import Path
 
 from ngm.errors import ScenarioError
@@ -13,6 +14,7 @@ from ngm.scenario.check import check
 from ngm.scenario.document import read_text, to_data
 from ngm.scenario.draft import Draft
 from ngm.scenario.edit import delete, insert, move, rename, set_value
+from ngm.scenario.fields import EnoughError, Findings
 from ngm.scenario.model import Scenario
 from ngm.scenario.read import read
 
@@ -50,8 +52,11 @@ def loads(text: str, folder: str | None = None) -> Scenario:
     ScenarioError
         With every problem found (`problems`).
     """
-    draft = read(to_data(text), folder)
-    check(draft)
+    data = to_data(text)
+    draft = Draft(Findings())
+    with suppress(EnoughError):
+        read(draft, data, folder)
+        check(draft)
     if draft.found.problems:
         raise ScenarioError(draft.found.problems)
     return _scenario(draft, text, folder)

@@ -11,7 +11,7 @@ from typing import Any
 from ngm.expression.names import canonical, is_reserved
 from ngm.scenario import units
 from ngm.scenario.draft import ARTICLE, MOST_TYPES, Draft, Placed
-from ngm.scenario.fields import Findings, Key, Table, closest, describe, listed, number_trouble, short
+from ngm.scenario.fields import Key, Table, closest, describe, listed, number_trouble, short
 from ngm.scenario.model import Compartment, Definition, Dimension, Flow, Kind, Movement
 from ngm.scenario.read_interventions import read_interventions
 from ngm.scenario.read_matrices import read_matrices
@@ -37,17 +37,18 @@ _REPORT_TEXTS = ("question", "audience", "place", "date", "author", "reviewer", 
 _REPORT_LISTS = ("assumptions", "limits", "changes")
 
 
-def read(data: Mapping[str, Any], folder: str | None) -> Draft:
-    """Read every section. The problems are in the `found` of what is returned.
+def read(draft: Draft, data: Mapping[str, Any], folder: str | None) -> None:
+    """Read every section into the draft; the problems are in its `found`.
 
     Parameters
     ----------
+    draft : Draft
+        An empty one.
     data : mapping
         The TOML document, see `document.to_data`.
     folder : str or None
         Where matrix files are looked for; None: there is no folder.
     """
-    draft = Draft(Findings())
     found = draft.found
     for name in data:
         if name in _LATER:
@@ -73,7 +74,6 @@ def read(data: Mapping[str, Any], folder: str | None) -> Draft:
     _infection_free(draft, data)
     read_interventions(draft, entries(draft, data, "intervention"))
     _report(draft, data)
-    return draft
 
 
 def entries(draft: Draft, data: Mapping[str, Any], name: str) -> list[Any]:
