@@ -20,11 +20,14 @@ MAY_IMPORT: dict[str, set[str]] = {
     "engine": set(),
     "expression": {"errors"},
     "scenario": {"errors", "expression"},
-    "derivation": {"errors", "expression", "scenario", "results"},
-    "analysis": {"errors", "expression", "scenario", "derivation", "engine", "results"},
+    # The classes of a graph are arrays in, arrays out: the one thing of the engine that symbols need too.
+    "derivation": {"errors", "expression", "scenario", "results", "engine.structure"},
+    "worker": {"errors", "results", "scenario", "derivation"},
+    "analysis": {"errors", "expression", "scenario", "derivation", "engine", "results", "worker"},
     "charts": {"results"},
     "screens": {"ngm", "errors", "results", "charts", "scenario.edit", "scenario.file", "expression.typeset"},
-    "__main__": {"ngm", "errors", "results", "charts", "expression.typeset"},
+    "console": {"errors", "results"},
+    "__main__": {"ngm", "errors", "results", "charts", "console", "worker"},
     "__init__": {"errors", "results", "scenario", "analysis"},
 }
 
@@ -33,7 +36,7 @@ NOT_FOR: dict[str, set[str]] = {"scenario": {"expression.symbolic"}}
 
 #: library -> the only places that may import it
 ONLY_IN: dict[str, set[str]] = {
-    "sympy": {"expression.symbolic", "expression.from_symbols", "derivation"},
+    "sympy": {"expression.symbolic", "derivation"},
     "scipy": {"engine"},
     "flint": {"engine"},
     "altair": {"charts"},
@@ -170,4 +173,4 @@ def test_public_names():
     assert {"Scenario", "control", "load", "loads", "solve"} <= set(ngm.__all__)
     public = {name for name in vars(ngm) if not name.startswith("_")}
     modules = {name for name in public if (PACKAGE / name).is_dir() or (PACKAGE / f"{name}.py").is_file()}
-    assert public - modules <= {*ngm.__all__, "annotations"}
+    assert public - modules - set(ngm.__all__) <= {"annotations", "Any", "TYPE_CHECKING"}

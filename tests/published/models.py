@@ -215,7 +215,7 @@ def check_laws(solution: Solution, point: Mapping[str, float]) -> None:
     assert solution.R0_bounds is not None
     low, high = solution.R0_bounds
     assert low <= solution.R0 <= high
-    assert high - low <= 1e-13 * max(1.0, high)
+    assert high - low <= 1e-12 * max(1.0, high)
     if abs(solution.R0 - 1) > 1e-9:
         assert (solution.R0 > 1) == (solution.growth_rate > 0)
     symbolic = solution.symbolic

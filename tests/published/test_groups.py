@@ -120,7 +120,7 @@ def test_type_numbers(K, R0, expected):
             assert found.why
             continue
         assert found.T == close(T)
-        assert found.critical_effort == close(1 - 1 / T)
+        assert found.critical_effort == pytest.approx(1 - 1 / T, abs=1e-9)
         # The meaning of T: divide the rows of the targeted types by it, and R0 is 1.
         rows = [[k / T if str(i + 1) in members else k for k in row] for i, row in enumerate(K)]
         assert given_matrix(rows).solve().R0 == pytest.approx(1, rel=1e-9)

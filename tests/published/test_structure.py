@@ -43,7 +43,8 @@ def test_vectors_of_a_class_that_others_lead_to():
 def test_a_tie_has_no_vectors():
     solution = given_matrix([[1.2, 0], [1, 1.2]]).solve()
     assert solution.R0 == close(1.2)
-    assert solution.to_json()["perron"] == {"right": None, "left": None}
+    assert (solution.right, solution.left) == (None, None)
+    assert solution.to_json()["perron"] is None
 
 
 def test_a_type_that_infects_nobody_has_no_period():
