@@ -20,10 +20,11 @@ from ngm.derivation.network import Network
 
 __all__ = ["Program", "residence_times"]
 
-#: Components of up to this many states are written out in one formula, also when everybody moves everywhere; with few
-#: moves (a single loop, say) up to `LOOP` states are. Larger ones get an abbreviation for each step.
+#: Components of up to this many states are eliminated in one formula. Up to `LOOP` states with few moves among them (a
+#: loop or two) are solved by cofactors, which people write: one determinant, "product of the losses - loops". Larger
+#: ones get an abbreviation for each step.
 WRITTEN_OUT = 2
-LOOP = 5
+LOOP = 4
 
 ZERO = sympy.Integer(0)
 
@@ -140,7 +141,9 @@ def _eliminate(
 ) -> dict[int, dict[int, sympy.Expr]]:
     """Solve one strongly connected component for every column; `rates[j][i]`: from j to i."""
     moves = sum(len(row) for row in rates.values())
-    short = not (len(block) <= WRITTEN_OUT or (len(block) <= LOOP and moves <= len(block) + 1))
+    if WRITTEN_OUT < len(block) <= LOOP and moves <= len(block) + 1:
+        return _by_cofactors(block, rates, leaving, entering, tidy)
+    short = len(block) > WRITTEN_OUT
     rates = {j: dict(row) for j, row in rates.items()}
     leaving = dict(leaving)
     entering = {j: dict(start) for j, start in entering.items()}
@@ -196,5 +199,42 @@ def _eliminate(
                 stays[k] = keep(amount / total[k], f"time spent in {labels[k]} by one who enters at {labels[j]}")
         if not short:
             stays = {k: tidy(stay) for k, stay in stays.items()}
+        out[j] = stays
+    return out
+
+
+def _by_cofactors(
+    block: list[int],
+    rates: dict[int, dict[int, sympy.Expr]],
+    leaving: dict[int, sympy.Expr],
+    entering: dict[int, dict[int, sympy.Expr]],
+    tidy: Callable[[sympy.Expr], sympy.Expr],
+) -> dict[int, dict[int, sympy.Expr]]:
+    """Solve a small loop of states by Cramer's rule, with one symbol for each loss and each move while it is worked out."""
+    meaning: dict[sympy.Symbol, sympy.Expr] = {}
+
+    def opaque(name: str, expression: sympy.Expr) -> sympy.Symbol:
+        symbol = sympy.Dummy(name, positive=True)
+        meaning[symbol] = expression
+        return symbol
+
+    place = {k: n for n, k in enumerate(block)}
+    matrix = sympy.zeros(len(block), len(block))
+    for j in block:
+        matrix[place[j], place[j]] = opaque(f"D{j}", sympy.Add(leaving[j], *rates[j].values()))
+        for i, rate in rates[j].items():
+            matrix[place[i], place[j]] = -opaque(f"q{i}_{j}", rate)
+    determinant = sympy.factor(matrix.det(method="berkowitz")).xreplace(meaning)
+    out: dict[int, dict[int, sympy.Expr]] = {}
+    for j, start in entering.items():
+        stays = {}
+        for k in block:
+            parts = [
+                sympy.factor(matrix.cofactor(place[i], place[k], method="berkowitz")).xreplace(meaning) * amount
+                for i, amount in start.items()
+            ]
+            total = sympy.Add(*parts)
+            if total != 0:
+                stays[k] = tidy(total) / determinant
         out[j] = stays
     return out

@@ -33,6 +33,8 @@ __all__ = ["MOST_TYPES_WRITTEN", "derive_symbols"]
 MOST_TYPES_WRITTEN = 12
 #: Plain models are written out up to this many.
 MOST_PLAIN_TYPES = 120
+#: Operations from which a part gets an abbreviation rather than being repeated.
+MOST_REPEATED = 20
 #: The longest text that is given for one formula: what the expression reader still reads.
 MOST_CHARACTERS = 10_000
 
@@ -122,16 +124,12 @@ class _Derivation:
         names, matrices = self.parameters(), self.matrices()
         solved = solve_rest(template, names, matrices, self.state, self.values, self.program)
         known = solved is not None
+        infection_free = None
+        if solved is not None:
+            infection_free, solved = self._state_in_words(solved)
         evaluator = self._evaluator(solved, names, matrices)
         F, V = assemble(template, evaluator)
         F, V = _each(F, tidy), _each(V, tidy)
-        infection_free = None
-        if known:
-            infection_free = {}
-            for name in template.uninfected:
-                flat = template.space.flatten(evaluator.names[name], template.by(name))[:, 0]
-                for label, value in zip(scenario.items(name, template.by(name)), flat, strict=True):
-                    infection_free[label] = text(tidy(value))
         out: dict[str, Any] = {"F": _texts(F), "V": _texts(V), "infection_free": infection_free}
         net = network(template, evaluator, template.arrows, template.infected)
         at = list(template.at_infection)
@@ -156,6 +154,22 @@ class _Derivation:
             steps=(*eliminated, *self.steps),
         )
 
+    def _state_in_words(self, solved: Mapping[str, Array]) -> tuple[dict[str, str], dict[str, Array]]:
+        """Return the state as texts, and as expressions in which long ones are abbreviated."""
+        template, written, short = self.template, {}, {}
+        for name in template.uninfected:
+            by = template.by(name)
+            flat = template.space.flatten(solved[name], by)[:, 0]
+            items = template.scenario.items(name, by)
+            values = [tidy(value) for value in flat]
+            named = np.empty((len(values), 1), dtype=object)
+            for k, (item, value) in enumerate(zip(items, values, strict=True)):
+                named[k, 0] = self.program.name(value, f"{item} without infection", least=MOST_REPEATED)
+                whole = _short(value)
+                written[item] = str(named[k, 0]) if whole is None else whole
+            short[name] = template.space.spread(named, by)
+        return written, short
+
     def _evaluator(
         self, solved: Mapping[str, Array] | None, names: Mapping[str, Array], matrices: Mapping[str, Array]
     ) -> Evaluator:
@@ -170,7 +184,8 @@ class _Derivation:
         evaluator = template.evaluator(SYMBOLS, solved, names=names, matrices=matrices)
         for name in template.scenario.definitions:
             value = evaluator.name(name)
-            evaluator.names[name] = _each(value, tidy)
+            about = f"{name} without infection"
+            evaluator.names[name] = _each(value, lambda e, about=about: self._named(tidy(e), about))
         _ = template.arrows
         for selector in template.at_rest.selectors:
             flags = self.branches.get(selector.name, [1])
@@ -180,11 +195,18 @@ class _Derivation:
             evaluator.names[selector.name] = array
         return evaluator
 
+    def _named(self, expression: sympy.Expr, about: str) -> sympy.Expr:
+        return self.program.name(expression, about, least=MOST_REPEATED)
+
     def _next_generation(self, out: dict[str, Any], F: Array, net: Network, at: list[int], known: bool) -> None:
         template = self.template
         # Rates per head enter the elimination in their short form, as they stand in V.
         net = replace(net, moves=_each(net.moves, tidy), sources=_each(net.sources, tidy), exits=_each(net.exits, tidy))
         stays = residence_times(net, at, self.program, template.types, tidy)
+        for j in at:
+            for row, stay in stays[j].items():
+                about = f"time spent in {template.types[row]} by one who enters at {template.types[j]}"
+                stays[j][row] = self._named(stay, about)
         K = [
             [tidy(sympy.Add(*(F[i, s] * stay for s, stay in stays[j].items() if F[i, s] != 0))) for j in at] for i in at
         ]

@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import sympy
 
 __all__ = ["tidy"]
 
 #: Operations up to which an expression is factored over its polynomials.
-MOST_FACTORED = 70
+MOST_FACTORED = 50
 #: Operations up to which common factors of a sum are taken out.
 MOST_COLLECTED = 1500
 
 
+@lru_cache(maxsize=4096)
 def tidy(expression: sympy.Expr) -> sympy.Expr:
     """Return the shortest of a few equal forms: as it is, common factors taken out, factored.
 
@@ -23,22 +26,38 @@ def tidy(expression: sympy.Expr) -> sympy.Expr:
     size = int(sympy.count_ops(expression))
     if size > MOST_COLLECTED:
         return expression
-    best, least = expression, size
+    best, least = expression, _length(expression)
     if expression.has(sympy.Add):
         for form in _forms(expression, size):
-            count = int(sympy.count_ops(form))
-            if count < least:
-                best, least = form, count
+            length = _length(form)
+            if length < least:
+                best, least = form, length
     return best
+
+
+def _length(expression: sympy.Expr) -> int:
+    """Return the operations, with something added for each product inside a long sum: an expanded product reads badly."""
+    length = int(sympy.count_ops(expression))
+    for total in expression.atoms(sympy.Add):
+        products = sum(1 for term in total.args if len([f for f in sympy.Mul.make_args(term) if not f.is_Number]) > 1 or term.is_Pow)
+        if products > 3:
+            length += 4 * products
+    return length
 
 
 def _forms(expression: sympy.Expr, size: int) -> list[sympy.Expr]:
     out = []
     if expression.is_Add or size <= MOST_FACTORED:
         out.append(sympy.factor_terms(expression))
-    if size <= MOST_FACTORED and len(expression.free_symbols) <= 12:
+    # Only where a sum stands both above and below a fraction can something cancel that sympy has not cancelled by itself.
+    if size <= MOST_FACTORED and len(expression.free_symbols) <= 12 and _may_cancel(expression):
         try:
             out.append(sympy.factor(expression))
         except sympy.PolynomialError:
             pass
     return out
+
+
+def _may_cancel(expression: sympy.Expr) -> bool:
+    below = [power for power in expression.atoms(sympy.Pow) if power.exp.is_negative and power.base.is_Add]
+    return bool(below) and len(expression.atoms(sympy.Add)) > len({power.base for power in below})

@@ -245,7 +245,7 @@ class _Search:
             step = _solve_balls(slope, _middle((entering - leaving)[members, 0]))
             if step is None:
                 return None
-            new = _middle(x[members] + step)
+            new = _middle(x[members] - step)
             done = all(abs(a - b) <= abs(a) * arb(2) ** -90 for a, b in zip(new, x[members], strict=True))
             x[members] = new
             if done:
