@@ -80,7 +80,6 @@ class Draft:
 
     def resolve(self, text: object, role: Role, where: str, key: Key) -> str | None:
         """Return the canonical name of a dimension, compartment, … that a text names; None with the problem noted."""
-        known = self.of_role(role)
         if not isinstance(text, str):
             self.found.add(where, f"expected the name of {ARTICLE[role]} in quotes.", key)
             return None
@@ -93,7 +92,7 @@ class Draft:
         if other is not None:
             self.found.add(where, f"'{short(text)}' is {ARTICLE[other]}, not {ARTICLE[role]}.{self.choice(role)}", key)
             return None
-        hint = closest(name or text, known) or self.choice(role)
+        hint = closest(name or text, self.of_role(role)) or self.choice(role)
         self.found.add(where, f"'{short(text)}' is not {ARTICLE[role]} of this file.{hint}", key)
         return None
 

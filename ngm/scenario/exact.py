@@ -10,7 +10,21 @@ import math
 from collections.abc import Callable
 from fractions import Fraction
 
-from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total, children, walk
+from ngm.expression.tree import (
+    Add,
+    Apply,
+    Call,
+    Multiply,
+    Name,
+    Negate,
+    Node,
+    Number,
+    Power,
+    Total,
+    children,
+    fold,
+    walk,
+)
 
 __all__ = ["LARGEST", "NoValueError", "Value", "closed_parts", "evaluate", "is_closed"]
 
@@ -36,22 +50,22 @@ def is_closed(node: Node) -> bool:
 
 
 def closed_parts(node: Node) -> list[Node]:
-    """Return the largest parts of an expression that are numbers and more than a literal."""
+    """Return the largest parts of an expression that are numbers and more than a literal, in the order of the text."""
     out: list[Node] = []
 
-    def visit(here: Node) -> bool:
+    def step(here: Node, below: list[bool]) -> bool:
         if isinstance(here, Name):
             return False
-        below = children(here)
-        closed = [visit(child) for child in below]
-        if all(closed) and not isinstance(here, Total | Apply):
+        if all(below) and not isinstance(here, Total | Apply):
             return True
-        out.extend(child for child, good in zip(below, closed, strict=True) if good and not isinstance(child, Number))
+        out.extend(
+            child for child, good in zip(children(here), below, strict=True) if good and not isinstance(child, Number)
+        )
         return False
 
-    if visit(node) and not isinstance(node, Number):
+    if fold(node, step) and not isinstance(node, Number):
         out.append(node)
-    return out
+    return sorted(out, key=lambda part: part.position)
 
 
 def evaluate(node: Node, lookup: Callable[[Name], Value] | None = None) -> Value:
@@ -74,7 +88,7 @@ def evaluate(node: Node, lookup: Callable[[Name], Value] | None = None) -> Value
     NoValueError
         Division by 0, a root or logarithm of a negative number, 0 to a negative power, or past 1e300.
     """
-    value = _checked(_evaluate(node, lookup), node)
+    value = fold(node, lambda here, parts: _checked(_step(here, parts, lookup), here))
     if value >= LARGEST or -value >= LARGEST:
         raise NoValueError("the result is too large. Numbers stay below 1e300 in size.", node.position)
     return value
@@ -97,7 +111,8 @@ def _float(value: Value, node: Node) -> float:
         raise NoValueError("the result is too large. Numbers stay below 1e300 in size.", node.position) from None
 
 
-def _evaluate(node: Node, lookup: Callable[[Name], Value] | None) -> Value:
+def _step(node: Node, parts: list[Value], lookup: Callable[[Name], Value] | None) -> Value:
+    """Return the value of a node from those of its parts; nothing recurses, so a tree may have any depth."""
     match node:
         case Number(value=value):
             return value
@@ -105,21 +120,20 @@ def _evaluate(node: Node, lookup: Callable[[Name], Value] | None) -> Value:
             return lookup(node)
         case Add(terms=terms):
             total: Value = Fraction(0)
-            for sign, term in terms:
-                part = _evaluate(term, lookup)
+            for (sign, _), part in zip(terms, parts, strict=True):
                 total = _checked(_plus(total, part if sign > 0 else -part, node), node)
             return total
         case Multiply(factors=factors):
             product: Value = Fraction(1)
-            for sign, factor in factors:
-                product = _checked(_times(product, _evaluate(factor, lookup), sign, factor), node)
+            for (sign, factor), part in zip(factors, parts, strict=True):
+                product = _checked(_times(product, part, sign, factor), node)
             return product
-        case Negate(operand=operand):
-            return -_evaluate(operand, lookup)
-        case Power(base=base, exponent=exponent):
-            return _checked(_power(_evaluate(base, lookup), _evaluate(exponent, lookup), node), node)
-        case Call(function=function, arguments=arguments):
-            return _checked(_call(function, [_evaluate(item, lookup) for item in arguments], node), node)
+        case Negate():
+            return -parts[0]
+        case Power():
+            return _power(parts[0], parts[1], node)
+        case Call(function=function):
+            return _call(function, parts, node)
         case _:
             raise NoValueError("expected an expression in numbers and parameters only.", node.position)
 

@@ -23,9 +23,12 @@ def parameter_order(parameters: Mapping[str, Parameter]) -> tuple[list[str], lis
     needs: dict[str, set[str]] = {}
     for name, parameter in parameters.items():
         needs[name] = set()
-        for value in set(parameter.values) if len(parameter.values) < 1000 else parameter.values:
-            if not value.is_number:
+        last: Expression | None = None
+        for value in parameter.values:
+            # a value for all groups is one object: it is looked at once
+            if value is not last and not value.is_number:
                 needs[name] |= names(value.tree)
+            last = value
     return order({name: sorted(needed) for name, needed in needs.items()})
 
 

@@ -10,6 +10,7 @@ import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 
 from ngm.scenario.model import Unit
 
@@ -79,6 +80,7 @@ class UnitReading:
     warning: str | None = None
 
 
+@lru_cache(maxsize=1024)
 def read_unit(text: str, time_unit: str) -> UnitReading:
     """Read a unit.
 

@@ -237,9 +237,10 @@ def _combined(value: Expression, change: Change) -> Expression:
         return change.amount
     old, amount = value.tree, change.amount.tree
     if change.action == "multiply":
-        tree: Node = Multiply(((1, old), (1, amount)))
+        before = old.factors if isinstance(old, Multiply) else ((1, old),)
+        tree: Node = Multiply((*before, (1, amount)))
     else:
-        tree = Add(((1, old), (1, amount)))
+        tree = Add((*(old.terms if isinstance(old, Add) else ((1, old),)), (1, amount)))
     if exact.is_closed(tree):
         result = exact.evaluate(tree)
         if isinstance(result, Fraction):
