@@ -37,6 +37,7 @@ NOT_FOR: dict[str, set[str]] = {"scenario": {"expression.symbolic"}}
 #: library -> the only places that may import it
 ONLY_IN: dict[str, set[str]] = {
     "sympy": {"expression.symbolic", "derivation"},
+    "mpmath": {"derivation"},
     "scipy": {"engine"},
     "flint": {"engine"},
     "altair": {"charts"},
@@ -121,6 +122,13 @@ def test_libraries_stay_in_their_places(path):
             assert any(starts_with(dotted(path), place) for place in ONLY_IN[library]), (
                 f"{path.relative_to(ROOT)}, line {line}: {library} belongs in {sorted(ONLY_IN[library])}"
             )
+
+
+def test_every_library_is_pinned():
+    pinned = {line.partition("==")[0] for line in (ROOT / "requirements.txt").read_text(encoding="utf-8").splitlines()}
+    modules = {{"python-flint": "flint"}.get(name, name) for name in pinned}
+    used = {name.split(".")[0] for path in sources() for name, _ in imported(path)}
+    assert used - set(sys.stdlib_module_names) - {"ngm"} <= modules
 
 
 @pytest.mark.parametrize("path", sources(), ids=dotted)

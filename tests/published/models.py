@@ -113,7 +113,12 @@ class Model:
                 out[name] = float(value)
             else:
                 out |= {f"{name}[{group}]": float(v) for group, v in zip(self.groups, value, strict=True)}
-        for name, rows in self.matrices.items():
+        for name, given in self.matrices.items():
+            rows = given
+            if "reciprocal" in self.matrix_keys:  # results speak of the matrix in force; n: sizes of the groups
+                n = [out[f"n[{group}]"] for group in self.groups]
+                count = range(len(n))
+                rows = [[(given[i][j] * n[i] + given[j][i] * n[j]) / (2 * n[i]) for j in count] for i in count]
             for i, row in zip(self.groups, rows, strict=True):
                 out |= {f"{name}[{i},{j}]": float(v) for j, v in zip(self.groups, row, strict=True)}
         return out
