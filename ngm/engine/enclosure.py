@@ -18,7 +18,16 @@ from ngm.engine.linear import below_zero, leaf_inverse, matmul, pattern, possibl
 from ngm.engine.noda import Scaled, float_bounds, perron_vector, scaled
 from ngm.engine.structure import IntArray, classes
 
-__all__ = ["MMatrix", "check_sign", "inverse", "m_matrix", "perron_root", "perron_root_and_vector", "spectral_radius"]
+__all__ = [
+    "MMatrix",
+    "check_sign",
+    "inverse",
+    "m_matrix",
+    "metzler_root",
+    "perron_root",
+    "perron_root_and_vector",
+    "spectral_radius",
+]
 
 #: Steps of Noda's iteration in balls that a class may take; past this size a step costs seconds.
 _STEPS, _FEW_STEPS, _MANY_TYPES = 60, 4, 120
@@ -86,7 +95,9 @@ def _refined(matrix: BallArray, scaling: Scaled, start: FloatArray) -> tuple[arb
         x = [arb(float(v)) * g for v, g in zip(start, grid, strict=True)]
         low, high = arb(0), arb.pos_inf()
         steps = _STEPS if size <= _MANY_TYPES else _FEW_STEPS
-        last, newton, solver = arb.pos_inf(), True, None
+        last, newton = arb.pos_inf(), True
+        solver: _Correction | None = None
+        before: list[arb] | None = None
         for _ in range(200):
             images = (exact * arb_mat(size, 1, x)).entries()
             quotients = [y / v for y, v in zip(images, x, strict=True)]
@@ -98,20 +109,22 @@ def _refined(matrix: BallArray, scaling: Scaled, start: FloatArray) -> tuple[arb
             noise = max((q.rad() for q in quotients), key=_middle)
             if spread <= 2 * noise or spread <= abs(high) * arb(2) ** -bits:
                 break
-            if newton and spread > last * arb(2) ** -6:
-                newton, solver = False, None
+            if newton and before is not None and not spread < last * arb(2) ** -6:
+                # The correction was no good: back to the vector that it was to improve.
+                newton, solver, x, before = False, None, before, None
+                continue
             better = None
             if newton and spread < abs(high) * arb(2) ** -8:
                 solver = solver or _Correction(scaling, x, grid)
                 better = solver.apply(x, middles)
                 newton = better is not None
+                before = x
             last = spread
             if better is None:
                 if steps == 0:
                     break
                 steps -= 1
-                better, newton, last = _noda_step(middle, x, top, bits), True, arb.pos_inf()
-                solver = None
+                better, newton, before, solver = _noda_step(middle, x, top, bits), True, None, None
                 if better is None:
                     break
             x = better
@@ -175,18 +188,19 @@ class _Correction:
 def _noda_step(middle: arb_mat, x: list[arb], top: arb, bits: int) -> list[arb] | None:
     """Return the solution of (top I - B) y = x, scaled; None where it is not positive."""
     size = len(x)
-    with precision(2 * bits + 128):
-        shifted = arb_mat(size, size, [-v for v in middle.entries()])
-        for i in range(size):
-            shifted[i, i] = shifted[i, i] + top
-        try:
-            solution = shifted.solve(arb_mat(size, 1, x), algorithm="approx").entries()
-        except ZeroDivisionError:
-            return None
-    if not all(v > 0 for v in solution):
-        return None
-    largest = max(solution, key=_middle)
-    return [(v / largest).mid() for v in solution]
+    for more in (2, 8, 32) if size <= _MANY_TYPES else (2,):
+        with precision(more * bits + 128):
+            shifted = arb_mat(size, size, [-v for v in middle.entries()])
+            for i in range(size):
+                shifted[i, i] = shifted[i, i] + top
+            try:
+                solution = shifted.solve(arb_mat(size, 1, x), algorithm="approx").entries()
+            except ZeroDivisionError:
+                continue
+            if all(v > 0 for v in solution):
+                largest = max(solution, key=_middle)
+                return [(v / largest).mid() for v in solution]
+    return None
 
 
 def spectral_radius(matrix: Array) -> arb:

@@ -16,6 +16,7 @@ from scipy.linalg import matrix_balance
 from scipy.linalg.lapack import dgetrf, dgetrs
 
 from ngm.engine.balls import Array, FloatArray, is_balls
+from ngm.engine.structure import classes
 
 __all__ = ["Scaled", "float_bounds", "perron_vector", "scaled"]
 
@@ -62,9 +63,9 @@ def parts(matrix: Array) -> tuple[FloatArray, IntArray]:
 def scaled(matrix: Array) -> Scaled:
     """Return an irreducible non-negative matrix scaled so that its row sums are near its root.
 
-    With m the largest geometric mean of the entries along a cycle (Karp's algorithm) and d the longest path from the
-    first type in log2(B) - m, every entry of the scaled matrix is at most 2^m up to rounding, which is at most the
-    root; so the root lies between 2^m and n 2^m.
+    With m the largest geometric mean of the entries along a cycle (Karp's algorithm) and d the longest paths from
+    such a cycle in log2(B) - m, the largest entry of every row of the scaled matrix is 2^m up to rounding, which is
+    at most the root; so the row sums and the root lie between 2^m and n 2^m.
 
     References
     ----------
@@ -92,20 +93,37 @@ def scaled(matrix: Array) -> Scaled:
 
 
 def _longest_paths(logs: FloatArray) -> tuple[float, FloatArray]:
-    """Return the largest mean over cycles, and the longest path from the first type once it is taken off each arrow."""
+    """Return the largest mean over cycles, and the longest paths once it is taken off each arrow.
+
+    The paths start on a cycle that attains the mean: then each type is reached by an arrow of full weight, the first
+    too.
+    """
     size = len(logs)
-    walks = np.full((size + 1, size), -np.inf)
-    walks[0, 0] = 0.0
-    for step in range(size):
-        np.max(logs + walks[step][None, :], axis=1, out=walks[step + 1])
+    walks = _walks(logs, 0)
     left = (size - np.arange(size))[:, None]
     with np.errstate(invalid="ignore"):
         means = (walks[size][None, :] - walks[:size]) / left
     means[~np.isfinite(walks[:size])] = np.inf
     lowest = means.min(axis=0)
     mean = float(lowest[np.isfinite(lowest)].max())
-    path = (walks[:size] - mean * np.arange(size)[:, None]).max(axis=0)
-    return mean, path
+    lengths = mean * np.arange(size)[:, None]
+    path = (walks[:size] - lengths).max(axis=0)
+    tight = logs - mean + path[None, :] - path[:, None] > -1e-7
+    for members in classes(tight):
+        first = int(members[0])
+        if len(members) > 1 or tight[first, first]:
+            return mean, np.asarray((_walks(logs, first)[:size] - lengths).max(axis=0))
+    return mean, np.asarray(path)
+
+
+def _walks(logs: FloatArray, start: int) -> FloatArray:
+    """Return [k, i]: the largest weight of a walk of k arrows from `start` to i."""
+    size = len(logs)
+    walks = np.full((size + 1, size), -np.inf)
+    walks[0, start] = 0.0
+    for step in range(size):
+        np.max(logs + walks[step][None, :], axis=1, out=walks[step + 1])
+    return walks
 
 
 def perron_vector(matrix: FloatArray, most_steps: int = 60) -> FloatArray:
@@ -119,7 +137,7 @@ def perron_vector(matrix: FloatArray, most_steps: int = 60) -> FloatArray:
     Noda (1971) Numer. Math. 17:382-386; Elsner (1976) Linear Algebra Appl. 15:235-242 (from memory).
     """
     size = len(matrix)
-    x = np.ones(size)
+    x = _power_steps(matrix)
     best, best_gap, idle = x, math.inf, 0
     for _ in range(most_steps):
         quotients = (matrix @ x) / x
@@ -137,6 +155,23 @@ def perron_vector(matrix: FloatArray, most_steps: int = 60) -> FloatArray:
             break
         x = np.maximum(y / y.max(), 1e-290)
     return np.asarray(best)
+
+
+def _power_steps(matrix: FloatArray, most_steps: int = 40) -> FloatArray:
+    """Return the vector after some steps of B + c I, as long as each narrows the quotients by a third."""
+    x = np.ones(len(matrix))
+    last = math.inf
+    for _ in range(most_steps):
+        images = matrix @ x
+        quotients = images / x
+        high = float(quotients.max())
+        gap = high - float(quotients.min())
+        if not 0 < gap < 0.7 * last:
+            break
+        last = gap
+        x = images + 0.1 * high * x
+        x = np.maximum(x / x.max(), 1e-290)
+    return x
 
 
 def _dominant_solve(matrix: FloatArray) -> FloatArray:

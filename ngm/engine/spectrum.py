@@ -9,7 +9,7 @@ from flint import arb, ctx
 
 from ngm.engine.balls import Array, is_balls, precision
 from ngm.engine.enclosure import check_sign, perron_root_and_vector
-from ngm.engine.linear import identity, matmul, pattern, possible, solve, square, zeros
+from ngm.engine.linear import dominant_solve, identity, matmul, pattern, possible, solve, square, zeros
 from ngm.engine.structure import BoolArray, IntArray, classes, period, reachable
 
 __all__ = ["Spectrum", "spectrum"]
@@ -115,7 +115,7 @@ def spectrum(K: Array, vectors: bool = True) -> Spectrum:
         assert shape is not None
         try:
             other = perron_root_and_vector(K[np.ix_(members, members)].T)[1]
-            # The type that weighs most in R0 is fixed to 1: without it the others are furthest from sustaining themselves.
+            # The type that weighs most in R0 is kept: without it the others are furthest from sustaining themselves.
             fixed = int(np.argmax(shape * other))
             right = _right_vector(K, there, members, root, shape, fixed)
             left = _right_vector(K.T, there.T, members, root, other, fixed)
@@ -156,8 +156,8 @@ def _right_vector(K: Array, there: BoolArray, members: IntArray, root: arb, shap
 def _class_vector(block: Array, root: arb, shape: Array, fixed: int) -> Array:
     """Return balls around the Perron vector of an irreducible matrix, given one near it and a ball around the root.
 
-    With the entry k = `fixed` kept, the others solve (root I - B_rr) w = B_rk, a non-singular M-matrix for the exact root.
-    Scaled by `shape`, its rows sum to about B_ik: nothing is lost to the sizes of the entries.
+    With the entry k = `fixed` kept, the others solve (root I - B_rr) w = B_rk, a non-singular M-matrix for the exact
+    root. Scaled by `shape`, its rows sum to about B_ik: nothing is lost to the sizes of the entries.
     """
     size = len(block)
     if size == 1:
@@ -166,7 +166,7 @@ def _class_vector(block: Array, root: arb, shape: Array, fixed: int) -> Array:
     rest = np.delete(np.arange(size), fixed)
     with precision(ctx.prec + 64):
         system = root * identity(size - 1, block) - near[np.ix_(rest, rest)]
-        relative = solve(system, near[rest, fixed])
+        relative = dominant_solve(system, near[rest, fixed])
     result = shape.copy()
     result[rest] = shape[rest] * relative
     return result

@@ -92,6 +92,21 @@ def test_more_bits_narrow_the_root():
     assert widths[0] < widths[1] - 50 < widths[2] - 150
 
 
+# By hand: a loop of 1 and a cycle around it whose product is 1e-180: root 1 + 1e-180 to first order.
+def test_loop_with_a_cycle_far_below_it():
+    size = 6
+    rows = [["0"] * size for _ in range(size)]
+    for j in range(size):
+        rows[(j + 1) % size][j] = ["1e-30", "1e20", "1e-90", "1e-20", "1e-60", "1"][j]
+    rows[2][2] = "1"
+    with b.precision(128):
+        assert perron_root(decimals(rows)).rel_accuracy_bits() > 120
+    with b.precision(900):
+        excess = perron_root(decimals(rows)) - 1
+        assert excess > b.ball("9.99e-181")
+        assert excess < b.ball("1.01e-180")
+
+
 @pytest.mark.parametrize("size", [30, 150])
 def test_large_matrix_of_mixed_sizes_is_narrow(size):
     rng = np.random.default_rng(7)

@@ -10,6 +10,7 @@ from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from ngm.engine import balls as b
+from ngm.engine.linear import dominant_solve, solve
 from ngm.engine.perron import bounds, reproduction_number, reproductive_value, stable_distribution
 from ngm.engine.spectrum import spectrum
 from tests.engine.matrices import decimals, floats, nonnegative
@@ -159,6 +160,35 @@ def test_entry_that_may_be_zero_is_told():
         found = spectrum(b.balls([[1, doubtful], [1, 1]]))
     assert len(found.classes) == 2
     assert not found.decided
+
+
+@pytest.mark.parametrize("size", [10, 90])
+def test_vectors_of_larger_matrices(size):
+    rng = np.random.default_rng(size)
+    rows = rng.random((size, size)) * 10.0 ** rng.uniform(-9, 9, (size, size)) * (rng.random((size, size)) < 0.3)
+    with b.precision(128):
+        K = b.balls(rows)
+        found = spectrum(K)
+        assert found.right is not None
+        for vector, matrix in ((found.right, K), (found.left, K.T)):
+            image = b.from_mat(b.to_mat(matrix) * b.to_mat(vector))[:, 0]
+            assert all(y.overlaps(found.root * x) for y, x in zip(image, vector, strict=True))
+            assert all(x.is_zero() or x.rel_accuracy_bits() > 60 for x in vector)
+        assert (found.left * found.right).sum().overlaps(b.arb(1))
+
+
+# Second route: FLINT's own solver in balls throughout.
+def test_system_solved_by_refinement():
+    rng = np.random.default_rng(5)
+    size = 60
+    coupling = rng.random((size, size)) / size
+    with b.precision(128):
+        system = b.balls(np.eye(size) * 1.01 - coupling / coupling.sum(axis=1)[:, None])
+        right = b.balls(rng.random(size))
+        found, direct = dominant_solve(system, right), solve(system, right)
+        assert all(x.overlaps(y) and x.rel_accuracy_bits() > 100 for x, y in zip(found, direct, strict=True))
+    with pytest.raises(ZeroDivisionError):
+        dominant_solve(b.balls(np.eye(size) - 1 / size), right)
 
 
 def test_large_matrices_of_doubles():
