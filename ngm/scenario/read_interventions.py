@@ -101,10 +101,10 @@ def _change(draft: Draft, parent: Table, number: int, raw: dict[str, Any]) -> Ch
 def _amount(draft: Draft, table: Table, form: What, name: str | None) -> tuple[Action, Expression] | None:
     actions = [action for action in _ACTIONS if table.has(action)]
     allowed = _ALLOWED[form]
-    choice = " or ".join(f"{action} = …" for action in allowed)
+    choice = ", ".join(f"{action} = …" for action in allowed[:-1]) + " or " * (len(allowed) > 1) + f"{allowed[-1]} = …"
     if len(actions) != 1:
         what = f"has {' and '.join(actions)}" if actions else "does not say by how much"
-        draft.found.add(table.where, f"{what}. Write {'' if len(allowed) == 1 else 'one of '}{choice}.", table.key)
+        draft.found.add(table.where, f"{what}. Write {choice}.", table.key)
         return None
     action = actions[0]
     if action not in allowed:

@@ -72,6 +72,8 @@ def _parameter(draft: Draft, name: str, table: Table) -> Parameter | None:
         distributions = _distributions(draft, table, by, unit, any_sign)
     if values is None or by is None:
         return None
+    if bounds is not None:
+        _warn_outside(table, values, bounds)
     return Parameter(name, values, by, unit, label, source, bounds, distributions, any_sign)
 
 
@@ -115,7 +117,9 @@ def _values(draft: Draft, table: Table, by: tuple[str, ...], any_sign: bool) -> 
             continue
         if exact.is_closed(expression.tree):
             value = found.value(expression, place, key)
-            if value is not None and value < 0 and not any_sign:
+            if value is None:
+                continue
+            if value < 0 and not any_sign:
                 message = f'{short(expression.text)} is negative. Write sign = "any" if {table.key[-1]} may be.'
                 found.add(place, message, key)
         elif not _only_parameters(draft, expression, place, key):
@@ -171,6 +175,15 @@ def _range(table: Table, any_sign: bool) -> tuple[float, float] | None:
         table.problem("range", f'{low_text.text} is negative. Write sign = "any" if {table.key[-1]} may be.')
         return None
     return float(low), float(high)
+
+
+def _warn_outside(table: Table, values: tuple[Expression, ...], bounds: tuple[float, float]) -> None:
+    for value in dict.fromkeys(values):
+        number = float(exact.evaluate(value.tree))
+        if not bounds[0] <= number <= bounds[1]:
+            range_text = f"{bounds[0]:g} to {bounds[1]:g}"
+            table.found.warn(table.at("range"), f"the value {short(value.text)} lies outside the range {range_text}.")
+            return
 
 
 def _distributions(

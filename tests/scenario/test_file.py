@@ -169,3 +169,8 @@ def test_digest_is_of_the_text() -> None:
 
     assert loads(PLAIN).digest == sha256(PLAIN.encode()).hexdigest()[:16]
     assert loads(PLAIN + "# x\n").digest != loads(PLAIN).digest
+
+
+def test_a_value_outside_its_range_warns() -> None:
+    (warning,) = loads(changed(PLAIN, "range = [0.2, 0.6]", "range = [0.5, 0.6]")).warnings
+    assert warning == "parameters.beta, range: the value 0.4 lies outside the range 0.5 to 0.6."
