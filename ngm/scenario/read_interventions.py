@@ -167,6 +167,8 @@ def _groups(
         example = f'group = {{ {by[0]} = "{draft.dimensions[by[0]].groups[0]}" }}'
         table.problem("group", f"expected a table such as {example}, not {describe(raw)}.")
         return {}, rows, columns
+    if not raw:
+        table.problem("group", f"names no group. Name some of {draft.groups_of(by[0])}, or leave group out for all.")
     groups: dict[str, tuple[str, ...]] = {}
     for typed, value in raw.items():
         dimension = canonical(typed)

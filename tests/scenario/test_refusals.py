@@ -330,6 +330,7 @@ ON_GROUPED: list[tuple[str, str, tuple[str, ...]]] = [
     ('group = { age = "old" }', 'group = { region = "North" }', ("'region' is not a dimension of sus",)),
     ('group = { age = "old" }', 'group = "old"', ("expected a table such as group = { age",)),
     ('group = { age = "old" }', "group = { age = [] }", ("names no group",)),
+    ('group = { age = "old" }', "group = { }", ("names no group",)),
     ('group = { age = "old" }', "group = { age = 3 }", ("expected a group of age in quotes",)),
     ('group = { age = "old" }', 'group = { age = ["old", "old"] }', ("'old' stands twice",)),
     ('rows = ["old"]', 'rows = ["odl"]', ("rows: 'odl' is not a group of age",)),
