@@ -119,9 +119,9 @@ def suggest(name: str, known: Iterable[str]) -> str | None:
     ('beta', 'I_h', None)
     """
     wanted = (canonical(name) or name)[: _LONGEST_COMPARED + 1]
-    others = [other for other in known if other != name]
     if len(wanted) > _LONGEST_COMPARED:
         return None
+    others = [other for other in known if other != wanted]
     folded = _folded(wanted)
     for other in others:
         if len(other) <= 2 * _LONGEST_COMPARED and _folded(other) == folded:

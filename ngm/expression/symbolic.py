@@ -154,9 +154,12 @@ def _power(base: sympy.Expr, exponent: sympy.Expr, position: int) -> sympy.Expr:
     if _is_zero(base) and exponent.is_number and exponent.is_negative:
         raise _Refusal("this divides by 0: 0 has no negative power.", position)
     if base.is_number and base.is_negative and exponent.is_number and not exponent.is_integer:
-        raise _Refusal("a root or broken power of a negative number is no real number.", position)
+        raise _Refusal("a root or broken power of what is negative is no real number.", position)
     _check_power(base, exponent, position)
-    return base**exponent
+    made = base**exponent
+    if not exponent.is_integer and made.has(sympy.I):
+        raise _Refusal("a root or broken power of what is negative is no real number.", position)
+    return made
 
 
 def _exponential(argument: sympy.Expr, position: int) -> sympy.Expr:
