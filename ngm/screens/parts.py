@@ -131,7 +131,7 @@ def cautions() -> None:
 def nothing_open() -> None:
     """Say that no scenario is open, and where to open one."""
     st.info("No scenario is open yet. Open one, upload one or start a new one on the page **Scenario**.")
-    st.page_link("pages/scenario.py", label="Go to Scenario")
+    st.page_link("views/scenario.py", label="Go to Scenario")
 
 
 def results() -> Shown | None:

@@ -1,4 +1,8 @@
-"""The pages, in the order of the menu. The router and the tests read this list, and nothing else names a page."""
+"""The pages, in the order of the menu. The router and the tests read this list, and nothing else names a page.
+
+Their folder is not called `pages`: Streamlit takes a folder of that name beside the main script for a menu of its own,
+and then runs a page that is asked for by its address without the router, until somebody has come by the router.
+"""
 
 from __future__ import annotations
 
@@ -9,7 +13,7 @@ __all__ = ["PAGES", "Page"]
 
 @dataclass(frozen=True, slots=True)
 class Page:
-    """One page: its file in `pages/`, its address, its title."""
+    """One page: its file in `views/`, its address, its title."""
 
     name: str
     title: str
@@ -17,7 +21,7 @@ class Page:
     @property
     def path(self) -> str:
         """The file, from the folder of the router."""
-        return f"pages/{self.name}.py"
+        return f"views/{self.name}.py"
 
 
 PAGES = (

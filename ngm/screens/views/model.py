@@ -23,7 +23,7 @@ WORDS = {
     "matrices": "Contacts between groups, or rates of moving between them.",
     "movement": "Members of these compartments change group by a matrix and keep their compartment.",
 }
-PLAIN = ("compartments", "parameters", "flow", "definitions", "infection_free")
+PLAIN = ("compartments", "flow", "parameters", "definitions", "infection_free")
 GROUPED = ("dimensions", "matrices", "movement")
 
 
