@@ -3,7 +3,7 @@ from __future__ import annotations
 import mpmath
 import pytest
 import sympy
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from ngm.errors import ExpressionError
@@ -94,6 +94,7 @@ def test_roots_of_squares_and_their_slope_stay_in_the_syntax() -> None:
     assert text(sympy.diff(root, x)) == "x/sqrt(x^2)"
 
 
+@settings(deadline=None)
 @given(
     tree=formulas(),
     any_sign=st.booleans(),

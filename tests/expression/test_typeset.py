@@ -3,7 +3,7 @@ from __future__ import annotations
 import re
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 
 from ngm.errors import ExpressionError
 from ngm.expression.parse import parse
@@ -32,6 +32,8 @@ GREEK_COMMANDS = {f"\\{name}" for name in f"{LOWER} {UPPER}".split()}
         ("(a + b)/c", r"\frac{a + b}{c}"),
         ("-a/b", r"-\frac{a}{b}"),
         ("-x^2", r"-x^{2}"),
+        ("-(a + b)", r"-\left(a + b\right)"),
+        ("--a", r"-\left(-a\right)"),
         ("(-x)^2", r"\left(-x\right)^{2}"),
         ("(a/b)^c^d", r"\left(\frac{a}{b}\right)^{c^{d}}"),
         ("(a^b)^c", r"\left(a^{b}\right)^{c}"),
@@ -102,16 +104,19 @@ def _check(shown: str) -> None:
     assert len(shown.splitlines()) == 1
 
 
+@settings(deadline=None)
 @given(tree=expressions())
 def test_every_expression_is_sound_tex(tree: Node) -> None:
     _check(latex(tree))
 
 
+@settings(deadline=None)
 @given(label=labels)
 def test_every_label_is_sound_tex(label: str) -> None:
     _check(latex(Name("S", (label, label))))
 
 
+@settings(deadline=None)
 @given(number=program_numbers)
 def test_every_number_is_sound_tex(number: Node) -> None:
     _check(latex(number))

@@ -3,7 +3,7 @@ from __future__ import annotations
 from fractions import Fraction
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 
 from ngm.errors import ExpressionError
 from ngm.expression.decimals import decimal_text, exact_value, fraction_texts
@@ -24,11 +24,13 @@ def test_every_kind_of_node_has_a_strategy() -> None:
     assert set(STRATEGIES) == set(KINDS)
 
 
+@settings(deadline=None)
 @given(tree=expressions())
 def test_what_is_written_reads_as_the_same_tree(tree: Node) -> None:
     assert parse(write(tree), items=True, matrices=_matrices(tree)) == tree
 
 
+@settings(deadline=None)
 @given(tree=expressions(max_leaves=6))
 def test_no_pair_of_parentheses_can_be_left_out(tree: Node) -> None:
     text = write(tree)
@@ -116,6 +118,7 @@ def test_programs_trees_are_written(tree: Node, written: str) -> None:
     assert write(tree) == written
 
 
+@settings(deadline=None)
 @given(number=program_numbers)
 def test_programs_numbers_keep_their_value(number: Number) -> None:
     for tree in (number, Power(number, Number(Fraction(2))), Multiply(((1, number), (-1, Number(Fraction(7)))))):
