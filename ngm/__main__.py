@@ -12,6 +12,7 @@ import sys
 from collections.abc import Sequence
 
 from ngm.errors import NgmError, Problem, ScenarioError
+from ngm.results import Solution
 
 __all__ = ["main"]
 
@@ -78,27 +79,17 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _run(options: argparse.Namespace) -> str:
-    from ngm import worker
-    from ngm.scenario.file import load
-    from ngm.scenario.values import with_values
+    import ngm
+    from ngm.console import control_text, solve_text
 
     values = _values(options.values)
-    scenario = load(options.file)
-    if options.verb == "solve":
-        worker.warm()  # the child imports sympy while this process reads on
+    scenario = ngm.load(options.file)
     if values:
-        scenario = with_values(scenario, values, rewrite=False)
-    if options.verb == "solve":
-        from ngm.analysis.solve import solve
-        from ngm.console import solve_text
-
-        result = solve(scenario)
-        return json.dumps(result.to_json(), ensure_ascii=False) if options.json else solve_text(result)
-    from ngm.analysis.control import control
-    from ngm.console import control_text
-
-    found = control(scenario)
-    return json.dumps(found.to_json(), ensure_ascii=False) if options.json else control_text(found)
+        scenario = scenario.with_values(**values)
+    result = ngm.solve(scenario) if options.verb == "solve" else ngm.control(scenario)
+    if options.json:
+        return json.dumps(result.to_json(), ensure_ascii=False)
+    return solve_text(result) if isinstance(result, Solution) else control_text(result)
 
 
 if __name__ == "__main__":

@@ -63,7 +63,10 @@ def excerpt(text: str, position: int, width: int = 72) -> tuple[str, str]:
     line = text[start : stop if stop >= 0 else len(text)]
     column = position - start
     left = max(0, column - width // 2) if len(line) > width else 0
-    shown = line[left : left + width].replace("\t", " ")
+    # Only what can be printed goes to a terminal: each other character is shown as one box, so the caret stays in place.
+    shown = "".join(
+        c if c.isprintable() else " " if c == "\t" else "\N{REPLACEMENT CHARACTER}" for c in line[left : left + width]
+    )
     lead = "…" if left else ""
     tail = "…" if left + width < len(line) else ""
     return lead + shown + tail, " " * (len(lead) + column - left) + "^"

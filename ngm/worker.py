@@ -158,7 +158,7 @@ def _receive(pipe: IO[bytes]) -> Any:
     data = pipe.read(size)
     if len(data) < size:
         raise EOFError
-    return pickle.loads(data)  # noqa: S301 - the other end is this program
+    return pickle.loads(data)
 
 
 def serve() -> None:

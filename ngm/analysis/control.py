@@ -8,8 +8,8 @@ from itertools import combinations
 import numpy as np
 
 from ngm.analysis.point import MOST_WRITTEN
-from ngm.analysis.solve import Numbers
-from ngm.engine.balls import PRECISION, nearest, precision
+from ngm.analysis.solve import Numbers, decided_numbers
+from ngm.engine.balls import nearest, precision
 from ngm.engine.control import (
     ReproductionNumber,
     all_single_types,
@@ -44,8 +44,8 @@ def control(scenario: Scenario) -> ControlResult:
     Roberts & Heesterbeek (2003) Proc. R. Soc. B 270:1359, doi:10.1098/rspb.2003.2339; Shuai, Heesterbeek & van den
     Driessche (2013) J. Math. Biol. 67:1067; Lewis, Shuai & van den Driessche (2019) J. Math. Biol. 78:2317
     """
-    with precision(PRECISION):
-        found = Numbers(scenario)
+    found = decided_numbers(scenario)
+    with precision(found.bits):
         return _control(found)
 
 

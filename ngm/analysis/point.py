@@ -228,7 +228,7 @@ class Point:
             array = space.flatten(np.asarray(state[name]), template.by(name))[:, 0]
             labels = self.scenario.items(name, template.by(name))
             for label, value in zip(labels, array, strict=True):
-                if is_balls(array) and not value.is_finite() or not is_balls(array) and not np.isfinite(value):
+                if (is_balls(array) and not value.is_finite()) or (not is_balls(array) and not np.isfinite(value)):
                     problems.append(
                         Problem(
                             f"infection_free.{name}",
@@ -310,17 +310,7 @@ class Point:
                 block = self.template.chain(arrow.rate.terms, column, self.evaluator)
                 if block is not None and not is_finite(block):
                     where = arrow.label if arrow.number is None else flow_name(self.scenario, arrow.number)
-                    zero = (
-                        [
-                            name
-                            for name in names(self.scenario.flows[arrow.number - 1].rate.tree)
-                            | set(self.template.definitions)
-                            if arrow.number is not None and not self._is_parameter(name) and self._vanishes(name)
-                        ]
-                        if arrow.number is not None
-                        else []
-                    )
-                    hint = f" ({', '.join(sorted(zero))} = 0 there)" if zero else ""
+                    hint = self._divisors(arrow.number)
                     problems.append(
                         Problem(
                             f"{where}, rate",
@@ -332,8 +322,20 @@ class Point:
                     break
         return DerivationError(problems or [Problem("derivation", "F or V is not finite at these values.")])
 
-    def _is_parameter(self, name: str) -> bool:
-        return name in self.scenario.parameters or name in self.template.infected
+    def _divisors(self, number: int | None) -> str:
+        """Return which names in the rate of a flow are 0 without infection, in words; empty where none is."""
+        if number is None:
+            return ""
+        used: set[str] = set()
+        todo = names(self.scenario.flows[number - 1].rate.tree)
+        while todo:
+            name = todo.pop()
+            used.add(name)
+            if name in self.template.definitions:
+                todo |= names(self.template.definitions[name]) - used
+        known = set(self.scenario.parameters) | set(self.template.infected)
+        zero = [name for name in sorted(used - known) if self._vanishes(name)]
+        return f" ({', '.join(zero)} = 0 there)" if zero else ""
 
     def _vanishes(self, name: str) -> bool:
         value = self.evaluator.name(name)

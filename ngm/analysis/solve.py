@@ -16,16 +16,22 @@ from ngm.engine.linear import matmul, possible
 from ngm.engine.spectrum import Spectrum, spectrum
 from ngm.results import Class, Matrix, Solution, Structure, Symbolic, Vector
 from ngm.scenario.model import Scenario
-from ngm.worker import LIMIT, WorkerFailed, symbols
+from ngm.worker import LIMIT, WorkerFailed, symbols, warm
 
-__all__ = ["Numbers", "numbers", "solve"]
+__all__ = ["Numbers", "decided_numbers", "solve"]
 
+#: Bits tried in turn until every zero, sign and tie is decided; a tie that outlasts them all is a tie.
+PRECISIONS = (PRECISION, 4 * PRECISION, 16 * PRECISION)
+#: Types up to which more bits are tried.
+MOST_REFINED = 60
 #: Types at infection up to which the eigenvalues of K are listed.
 MOST_EIGENVALUES = 500
 
 
 class Numbers:
-    """F, V, K and R0 of one scenario at its values, as arrays of the engine."""
+    """F, V, K and R0 of one scenario at its values, as arrays of the engine, computed with `bits` bits."""
+
+    bits = PRECISION
 
     def __init__(self, scenario: Scenario) -> None:
         self.scenario = scenario
@@ -43,6 +49,13 @@ class Numbers:
         self.K: Any = None
         self.spectrum: Spectrum | None = None
         self._reproduce()
+
+    @property
+    def decided(self) -> bool:
+        """False where more bits could change the classes, the vectors, or whether V is an M-matrix."""
+        if self.broken is not None:
+            return self.broken.decided
+        return self.spectrum is None or self.spectrum.decided
 
     def _reproduce(self) -> None:
         types = self.template.types
@@ -88,6 +101,17 @@ class Numbers:
         )
 
 
+def decided_numbers(scenario: Scenario) -> Numbers:
+    """Return the numbers with as many bits as it takes to decide every zero, sign and tie, up to a limit."""
+    for bits in PRECISIONS:
+        with precision(bits):
+            found = Numbers(scenario)
+        found.bits = bits
+        if found.decided or len(found.template.types) > MOST_REFINED:
+            break
+    return found
+
+
 def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     """Return the derivation and the numbers of a scenario: F, V, K, R0 with bounds, structure, growth.
 
@@ -108,8 +132,10 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     Diekmann, Heesterbeek & Roberts (2010) J. R. Soc. Interface 7:873-885; van den Driessche & Watmough (2002) Math.
     Biosci. 180:29-48
     """
-    with precision(PRECISION):
-        found = Numbers(scenario)
+    if limit > 0:
+        warm()  # the child gets ready while the numbers are computed
+    found = decided_numbers(scenario)
+    with precision(found.bits):
         out = _numbers(found)
     symbolic, more = _symbols(found, limit)
     out["warnings"] += more
@@ -239,7 +265,8 @@ def _symbols(found: Numbers, limit: float) -> tuple[Symbolic, list[str]]:
 
 
 def _state(found: Numbers) -> dict[str, float]:
-    template, out = found.template, {}
+    template = found.template
+    out: dict[str, float] = {}
     for name in template.uninfected:
         flat = _plain(template.space.flatten(np.asarray(found.point.state[name]), template.by(name)))[:, 0]
         out.update(zip(found.scenario.items(name, template.by(name)), flat.tolist(), strict=True))

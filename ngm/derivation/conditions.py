@@ -18,7 +18,7 @@ from ngm.errors import DerivationError, Problem
 from ngm.expression.tree import Add, Call, Multiply, Name, Negate, Node, Number, Power, children, names
 from ngm.results import Condition
 
-__all__ = ["check_arrivals", "check_exits", "first_conditions", "fifth_condition"]
+__all__ = ["check_arrivals", "check_exits", "fifth_condition", "first_conditions"]
 
 TRIALS = 24
 

@@ -14,6 +14,7 @@ from typing import Protocol
 
 import numpy as np
 
+from ngm.derivation.linearise import definitions_in_order
 from ngm.derivation.space import Array, Space
 from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total
 
@@ -33,23 +34,23 @@ class Algebra(Protocol):
         ...
 
     def add(self, a: Array, b: Array) -> Array:
-        """a + b."""
+        """Return a + b."""
         ...
 
     def subtract(self, a: Array, b: Array) -> Array:
-        """A - b."""
+        """Return a - b."""
         ...
 
     def multiply(self, a: Array, b: Array) -> Array:
-        """A * b."""
+        """Return a * b."""
         ...
 
     def divide(self, a: Array, b: Array) -> Array:
-        """A / b; an entry that cannot be divided by is the algebra's own "not a number", or an error."""
+        """Return a / b; an entry that cannot be divided by is the algebra's own "not a number", or an error."""
         ...
 
     def power(self, a: Array, b: Array) -> Array:
-        """A to the power of b."""
+        """Return a to the power of b."""
         ...
 
     def call(self, function: str, arguments: tuple[Array, ...]) -> Array:
@@ -157,7 +158,7 @@ class Evaluator:
 
     def scalar(self, value: object) -> Array:
         """Return one number as an array over the space."""
-        out = np.empty((1,) * (len(self.space.sizes) + 1), dtype=self.algebra.dtype)
+        out: Array = np.empty((1,) * (len(self.space.sizes) + 1), dtype=self.algebra.dtype)
         out[...] = value
         return out
 
@@ -210,6 +211,10 @@ class Evaluator:
             if name in self.lists:
                 self.names[name] = self._list(*self.lists[name])
             else:
+                # What it uses comes first: a chain of definitions is then not followed by recursion.
+                for inner in definitions_in_order(self.definitions[name], self.definitions):
+                    if inner not in self.names:
+                        self.names[inner] = self.value(self.definitions[inner])
                 self.names[name] = self.value(self.definitions[name])
         return self.names[name]
 
@@ -219,7 +224,7 @@ class Evaluator:
             array = self.value(trees[0])
             return np.broadcast_to(array, (*self.space.shape(by), array.shape[-1]))
         if all(isinstance(tree, Number) for tree in trees):
-            flat = np.empty((len(trees), 1), dtype=self.algebra.dtype)
+            flat: Array = np.empty((len(trees), 1), dtype=self.algebra.dtype)
             flat[:, 0] = [self.algebra.number(tree.value) for tree in trees if isinstance(tree, Number)]
             return self.space.spread(flat, by)
         seen: dict[Node, Array] = {}
@@ -238,7 +243,7 @@ class Evaluator:
                 if self.algebra.dtype is not bool:
                     array = self.algebra.multiply(array, self.scalar(self.algebra.number(Fraction(size))))
             elif self.algebra.dtype is bool:
-                array = array.any(axis=axis, keepdims=True)
+                array = np.asarray(array.any(axis=axis, keepdims=True))
             else:
                 array = array.sum(axis=axis, keepdims=True)
         return array

@@ -23,7 +23,7 @@ __all__ = ["ArrowBlock", "arrow_blocks", "assemble", "blank", "net_flow", "slope
 
 def blank(evaluator: Evaluator, rows: int, columns: int) -> Array:
     """Return a matrix of zeros of the evaluator's kind."""
-    out = np.empty((rows, columns), dtype=evaluator.algebra.dtype)
+    out: Array = np.empty((rows, columns), dtype=evaluator.algebra.dtype)
     out[...] = evaluator.algebra.number(Fraction(0))
     return out
 
@@ -79,8 +79,8 @@ def slopes(
 
 def net_flow(
     template: Template, evaluator: Evaluator, arrows: tuple[Arrow, ...], compartments: tuple[str, ...]
-) -> tuple[Array, Array, Array]:
-    """Return what enters and what leaves each copy of these compartments, and which arrows do not vanish, as (n,), (n,), list."""
+) -> tuple[Array, Array]:
+    """Return what enters and what leaves each copy of these compartments, (n, k) each, k the evaluator's last axis."""
     at = template.offsets(compartments)
     n = sum(template.space.count(template.by(name)) for name in compartments)
     values = [evaluator.value(arrow.rate.value) for arrow in arrows]

@@ -17,10 +17,21 @@ from dataclasses import dataclass, field
 from fractions import Fraction
 
 from ngm.errors import DerivationError, Problem
-from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total
+from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total, names
 from ngm.expression.write import write
 
-__all__ = ["ONE", "ZERO", "Applied", "Linear", "Lineariser", "Selector", "Summed", "Term", "product"]
+__all__ = [
+    "ONE",
+    "ZERO",
+    "Applied",
+    "Linear",
+    "Lineariser",
+    "Selector",
+    "Summed",
+    "Term",
+    "definitions_in_order",
+    "product",
+]
 
 ZERO = Number(Fraction(0), "0")
 ONE = Number(Fraction(1), "1")
@@ -92,6 +103,22 @@ class Selector:
     by_structure: bool
 
 
+def definitions_in_order(node: Node, definitions: Mapping[str, Node]) -> list[str]:
+    """Return the definitions that an expression needs, each after those that it uses itself."""
+    order: list[str] = []
+    seen: set[str] = set()
+    stack = [(name, False) for name in sorted(names(node) & set(definitions))]
+    while stack:
+        name, ready = stack.pop()
+        if ready:
+            order.append(name)
+        elif name not in seen:
+            seen.add(name)
+            stack.append((name, True))
+            stack.extend((inner, False) for inner in sorted(names(definitions[name]) & set(definitions)))
+    return order
+
+
 def is_zero(node: Node) -> bool:
     """Return True for a literal 0."""
     return isinstance(node, Number) and node.value == 0
@@ -157,6 +184,9 @@ class Lineariser:
     def at(self, node: Node, where: str) -> Linear:
         """Return value and slope of an expression; `where` names it in a refusal."""
         self.where = where
+        # Definitions first, each after those it uses: fifty of them, fifty levels deep each, are not walked in one go.
+        for name in definitions_in_order(node, self.definitions):
+            self._name(Name(name), name)
         return self.walk(node)
 
     def walk(self, node: Node) -> Linear:

@@ -6,6 +6,8 @@ flow, with where they arrive, so that the exits are known as sums of flows and n
 
 from __future__ import annotations
 
+import operator
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -55,9 +57,9 @@ class Network:
         out = []
         moves, sources, exits = nonzero(self.moves), nonzero(self.sources), nonzero(self.exits)
         for members in self.blocks():
-            inside = np.ix_(members, members)
+            inside = np.ix_(np.array(members), np.array(members))
             outside = np.setdiff1d(np.arange(len(exits)), members)
-            if exits[members].any() or moves[np.ix_(outside, members)].any() or sources[inside].any():
+            if exits[members].any() or moves[np.ix_(outside, np.array(members))].any() or sources[inside].any():
                 continue
             out.append(members)
         return out
@@ -79,7 +81,7 @@ def network(
     n = sum(template.space.count(template.by(name)) for name in compartments)
     moves, sources, stray = (blank(evaluator, n, n) for _ in range(3))
     exits = blank(evaluator, n, 1)[:, 0]
-    add = (lambda a, b: a | b) if evaluator.algebra.dtype is bool else (lambda a, b: a + b)
+    add: Callable[[Any, Any], Any] = operator.or_ if evaluator.algebra.dtype is bool else operator.add
     for piece in arrow_blocks(template, evaluator, arrows, compartments):
         arrow, first = piece.arrow, at[piece.column]
         for copy, column in zip(*np.nonzero(nonzero(piece.block)), strict=True):

@@ -29,7 +29,7 @@ def choose_branches(evaluator: Evaluator, selectors: list[Selector]) -> None:
     algebra = evaluator.algebra
     for selector in selectors:
         difference = algebra.subtract(evaluator.value(selector.larger), evaluator.value(selector.smaller))
-        chosen = np.empty(difference.shape, dtype=algebra.dtype)
+        chosen: Array = np.empty(difference.shape, dtype=algebra.dtype)
         for index, item in np.ndenumerate(difference):
             if not (item > 0 or item < 0):
                 raise DerivationError(

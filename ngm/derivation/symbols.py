@@ -35,8 +35,8 @@ MOST_TYPES_WRITTEN = 12
 MOST_PLAIN_TYPES = 120
 #: Operations from which a part gets an abbreviation rather than being repeated.
 MOST_REPEATED = 20
-#: The longest text that is given for one formula: what the expression reader still reads.
-MOST_CHARACTERS = 10_000
+#: The longest text that is given for one formula.
+MOST_CHARACTERS = 20_000
 
 
 def derive_symbols(
@@ -120,7 +120,7 @@ class _Derivation:
     # --- the steps ----------------------------------------------------------------------------------------------------
 
     def run(self) -> Symbolic:
-        template, scenario = self.template, self.template.scenario
+        template = self.template
         names, matrices = self.parameters(), self.matrices()
         solved = solve_rest(template, names, matrices, self.state, self.values, self.program)
         known = solved is not None

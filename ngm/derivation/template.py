@@ -168,7 +168,7 @@ class Template:
             if values is None:
                 if name not in self.depended_on:
                     out[name] = ZERO
-            elif len(set(value.tree for value in values)) == 1:
+            elif len({value.tree for value in values}) == 1:
                 out[name] = ZERO if is_zero(values[0].tree) else values[0].tree
             else:
                 parts = [
@@ -316,7 +316,7 @@ class Template:
             if name in state:
                 values[name] = state[name]
             elif name in self.infected or name in self.empty:
-                flat = np.empty((space.count(self.by(name)), 1), dtype=algebra.dtype)
+                flat: Array = np.empty((space.count(self.by(name)), 1), dtype=algebra.dtype)
                 flat[...] = zero
                 values[name] = space.spread(flat, self.by(name))
         for name, (by, k) in self.masks.items():
@@ -336,7 +336,7 @@ class Template:
         for term in terms:
             if term.column != column:
                 continue
-            eye = np.empty((n, n), dtype=algebra.dtype)
+            eye: Array = np.empty((n, n), dtype=algebra.dtype)
             eye[...] = algebra.number(Fraction(0))
             np.fill_diagonal(eye, algebra.number(Fraction(1)))
             array = self.space.spread(eye, by)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from contextlib import suppress
 from functools import lru_cache
 
 import sympy
@@ -39,7 +40,11 @@ def _length(expression: sympy.Expr) -> int:
     """Return the operations, with something added for each product inside a long sum: an expanded product reads badly."""
     length = int(sympy.count_ops(expression))
     for total in expression.atoms(sympy.Add):
-        products = sum(1 for term in total.args if len([f for f in sympy.Mul.make_args(term) if not f.is_Number]) > 1 or term.is_Pow)
+        products = sum(
+            1
+            for term in total.args
+            if len([f for f in sympy.Mul.make_args(term) if not f.is_Number]) > 1 or term.is_Pow
+        )
         if products > 3:
             length += 4 * products
     return length
@@ -51,10 +56,8 @@ def _forms(expression: sympy.Expr, size: int) -> list[sympy.Expr]:
         out.append(sympy.factor_terms(expression))
     # Only where a sum stands both above and below a fraction can something cancel that sympy has not cancelled by itself.
     if size <= MOST_FACTORED and len(expression.free_symbols) <= 12 and _may_cancel(expression):
-        try:
+        with suppress(sympy.PolynomialError):
             out.append(sympy.factor(expression))
-        except sympy.PolynomialError:
-            pass
     return out
 
 

@@ -18,7 +18,7 @@ import numpy as np
 from scipy.linalg import lu_factor, lu_solve
 from scipy.optimize import brentq
 
-from ngm.engine.balls import BallArray, FloatArray, arb, balls, contains_zero, is_zero, precision, to_floats
+from ngm.engine.balls import BallArray, FloatArray, arb, balls, contains_zero, is_finite, is_zero, precision, to_floats
 from ngm.engine.linear import matmul, solve
 from ngm.engine.structure import classes
 
@@ -110,10 +110,7 @@ class _Search:
 
     def run(self) -> RestStates:
         blocks = classes(self.pattern | np.eye(self.n, dtype=bool))
-        if not self.curved.any():
-            states = [self._affine(blocks)]
-        else:
-            states = self._follow(blocks)
+        states = self._follow(blocks) if self.curved.any() else [self._affine(blocks)]
         nonnegative, stable = [], []
         for x in states:
             numbers = to_floats(x) if x.dtype == object else x
@@ -122,36 +119,46 @@ class _Search:
             stable.append(bool(np.all(np.isfinite(slope))) and is_stable(slope))
         return RestStates(tuple(states), tuple(nonnegative), tuple(stable))
 
-    # --- affine systems -----------------------------------------------------------------------------------------------
+    # --- affine systems ---------------------------------------------------------------------------
 
     def _affine(self, blocks: list[Any]) -> Any:
         if self.exact is None:
             slope = np.asarray(self._slope(np.zeros(self.n)))
             constant = self._net(np.zeros(self.n))[:, 0]
-            x = np.zeros(self.n)
+            plain = np.zeros(self.n)
             for block in blocks:
-                right = constant[block] + slope[block] @ x
-                x[block] = self._solve_floats(slope[np.ix_(block, block)], -right, block)
-            return x
+                right = constant[block] + slope[block] @ plain
+                plain[block] = self._solve_floats(slope[np.ix_(block, block)], -right, block)
+            return plain
+        free: list[int] = []
         for bits in BITS:
             with precision(bits):
-                zero = balls(np.zeros(self.n))
-                slope = self.exact.slope(zero)
-                entering, leaving = self.exact.flow(zero)
-                constant = (entering - leaving)[:, 0]
+                slope, constant = self._affine_parts()
                 x = balls(np.zeros(self.n))
-                failed: Any = None
+                free = []
                 for block in blocks:
                     right = _plus(constant[block], slope[block], x)
                     solved = _solve_balls(slope[np.ix_(block, block)], right)
                     if solved is None:
-                        failed = block
-                        break
-                    x[block] = solved
-                if failed is None:
+                        free += [int(k) for k in block]
+                    else:
+                        x[block] = solved
+                if not free:
                     return x
-        assert failed is not None
-        raise FreeStates(tuple(int(k) for k in failed))
+        raise FreeStates(tuple(sorted(free)))
+
+    def _affine_parts(self) -> tuple[BallArray, BallArray]:
+        """Return slope and constant of an affine net flow, from its value at 0 or, where it has none there, at 1."""
+        assert self.exact is not None
+        for start in (np.zeros(self.n), np.ones(self.n)):
+            x = balls(start)
+            slope = self.exact.slope(x)
+            entering, leaving = self.exact.flow(x)
+            net = (entering - leaving)[:, 0]
+            if is_finite(net) and is_finite(slope):
+                break
+        constant = net if not start.any() else net - slope.sum(axis=1)
+        return slope, constant
 
     def _solve_floats(self, matrix: FloatArray, right: FloatArray, block: Any) -> FloatArray:
         scale = float(np.max(np.abs(matrix), initial=0.0))
@@ -161,7 +168,7 @@ class _Search:
             raise FreeStates(tuple(int(k) for k in block))
         return np.asarray(lu_solve(lu_factor(matrix), right))
 
-    # --- other systems: block by block, following every solution ----------------------------------------------------------
+    # --- other systems: block by block, following every solution ----------------------------------
 
     def _follow(self, blocks: list[Any]) -> list[Any]:
         states = [np.zeros(self.n)]
@@ -182,12 +189,13 @@ class _Search:
         def net(y: FloatArray) -> FloatArray:
             full = np.repeat(x.reshape(-1, 1), y.shape[1], axis=1)
             full[block] = y
-            return np.broadcast_to(np.asarray(self._net(full)), (self.n, y.shape[1]))[block]
+            rates: FloatArray = np.broadcast_to(np.asarray(self._net(full)), (self.n, y.shape[1]))
+            return np.asarray(rates[block])
 
         def slope(y: FloatArray) -> FloatArray:
             full = x.copy()
             full[block] = y
-            return np.asarray(self._slope(full))[np.ix_(block, block)]
+            return np.asarray(np.asarray(self._slope(full))[np.ix_(block, block)])
 
         size = len(block)
         if not self.curved[np.ix_(block, block)].any():
@@ -212,7 +220,7 @@ class _Search:
                 found.append(solution)
         return found
 
-    # --- enclosures -------------------------------------------------------------------------------------------------------
+    # --- enclosures -------------------------------------------------------------------------------
 
     def _enclose(self, start: FloatArray) -> BallArray | None:
         """Return balls around the exact solution next to `start`, None where its slope is singular."""
