@@ -128,3 +128,20 @@ def test_singular_by_structure_is_refused():
     with pytest.raises(NgmError, match="I") as caught:
         ngm.solve(Model("No way out", "I", "S", "S->I t: beta*S*I; 0->S x: 1; S->0 x: S", {"beta": 0.3}).scenario)
     assert "singular" in str(caught.value)
+
+
+# By hand: hosts S eaten by predators P are at rest at 0, at k alone, and at S = d/a, P = r(1 - d/(a k))/a together;
+# with a k > d the last is the stable one. Symbols and numbers must speak of the same state: `solve` here compares
+# them.
+@pytest.mark.parametrize(("a", "S"), [(0.2, 2.5), (0.04, 10.0)])
+def test_of_several_states_symbols_and_numbers_take_the_same(a, S):
+    model = Model(
+        "Hosts and their predators",
+        "I",
+        "S P",
+        "0->S x: r*S; S->0 x: r*S*S/k; S->P x: a*S*P; P->0 x: d*P; S->I t: beta*S*I; I->0 x: g*I",
+        {"r": 1.0, "k": 10.0, "a": a, "d": 0.5, "beta": 0.3, "g": 0.4},
+    )
+    solution = model.solve()
+    assert solution.infection_free["S"] == close(S)
+    assert solution.R0 == close(0.3 * S / 0.4)
