@@ -225,6 +225,8 @@ def check_laws(solution: Solution, point: Mapping[str, float]) -> None:
         assert (solution.R0 > 1) == (solution.growth_rate > 0)
     symbolic = solution.symbolic
     values = dict(point)
+    if symbolic.infection_free is None:  # then F, V and K are written with the state's own names
+        values |= solution.infection_free
     for name, text in symbolic.abbreviations.items():
         values[name] = evaluate(text, values)
     for texts, numbers in ((symbolic.F, solution.F), (symbolic.V, solution.V), (symbolic.K, solution.K)):
