@@ -52,7 +52,7 @@ def control(scenario: Scenario) -> ControlResult:
 def _control(found: Numbers) -> ControlResult:
     scenario, types = found.scenario, found.template.types
     at = [types[k] for k in found.at]
-    warnings = list(dict.fromkeys([*scenario.warnings, *found.point.warnings]))
+    warnings = list(dict.fromkeys([*scenario.warnings, *found.point.infection_free.warnings]))
     kinds: list[TypeNumber] = []
     targets: list[TargetNumber] = []
     states: list[StateNumber] = []

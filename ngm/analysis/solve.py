@@ -15,7 +15,7 @@ from ngm.engine.growth import class_growth_rate, doubling_time, growth_rate
 from ngm.engine.linear import matmul, possible
 from ngm.engine.spectrum import Spectrum, spectrum
 from ngm.results import Class, Matrix, Solution, Structure, Symbolic, Vector
-from ngm.scenario.model import Scenario
+from ngm.scenario.model import Intervention, Scenario
 from ngm.worker import LIMIT, WorkerFailed, symbols, warm
 
 __all__ = ["Numbers", "decided_numbers", "solve"]
@@ -33,9 +33,9 @@ class Numbers:
 
     bits = PRECISION
 
-    def __init__(self, scenario: Scenario) -> None:
+    def __init__(self, scenario: Scenario, intervention: Intervention | None = None) -> None:
         self.scenario = scenario
-        self.point = Point(scenario)
+        self.point = Point(scenario, intervention)
         template = self.template = self.point.template
         floats = self.point.plain_tables
         check_arrivals(template, floats)
@@ -101,11 +101,11 @@ class Numbers:
         )
 
 
-def decided_numbers(scenario: Scenario) -> Numbers:
-    """Return the numbers with as many bits as it takes to decide every zero, sign and tie, up to a limit."""
+def decided_numbers(scenario: Scenario, intervention: Intervention | None = None) -> Numbers:
+    """Return the numbers, computed with as many bits as it takes to decide every zero, sign and tie, up to a limit."""
     for bits in PRECISIONS:
         with precision(bits):
-            found = Numbers(scenario)
+            found = Numbers(scenario, intervention)
         found.bits = bits
         if found.decided or len(found.template.types) > MOST_REFINED:
             break
@@ -148,7 +148,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
     scenario, template, point = found.scenario, found.template, found.point
     F, V = found.F, found.V
     small = len(template.types) <= MOST_WRITTEN
-    warnings = [*scenario.warnings, *point.warnings, *point.check_reciprocity()]
+    warnings = [*scenario.warnings, *point.infection_free.warnings, *point.reciprocity_warnings()]
     if not small:
         warnings.append(
             f"{len(template.types)} types: matrices are not written out, and the bounds are those of the matrix as rounded."
@@ -197,7 +197,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
             for item in scenario.items(name, template.by(name))
         },
         "infection_free": _state(found),
-        "residual": point.residual,
+        "residual": point.infection_free.residual,
         "F": _matrix(F) if small else None,
         "V": _matrix(V) if small else None,
         "K_large": _matrix(found.K_large) if small and found.K_large is not None else None,

@@ -1,0 +1,200 @@
+"""The infection-free state at the values in force: solved, chosen among several, and checked where it is given."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from ngm.analysis.matrices import as_floats
+from ngm.derivation.evaluate import FLOATS, Algebra
+from ngm.derivation.expand import net_flow
+from ngm.derivation.rest import RestSystem
+from ngm.derivation.space import Array
+from ngm.derivation.template import Template
+from ngm.engine.balls import is_balls
+from ngm.engine.rest import FreeStates, RestStates, find_rest
+from ngm.errors import DerivationError, Problem
+from ngm.expression.tree import Apply, walk
+
+__all__ = ["InfectionFree", "infection_free"]
+
+#: Net flow over gross flow up to which a given state counts as at rest.
+AT_REST = 1e-9
+
+
+@dataclass(frozen=True)
+class InfectionFree:
+    """The state without infection: every uninfected compartment as an array over the space.
+
+    `residual`: the largest net flow over gross flow of a compartment. `warnings`: what was accepted all the same.
+    """
+
+    state: dict[str, Array]
+    residual: float
+    warnings: tuple[str, ...]
+
+
+def infection_free(template: Template, algebra: Algebra, matrices: Mapping[str, Array]) -> InfectionFree:
+    """Return the infection-free state of a scenario at its values.
+
+    Parameters
+    ----------
+    matrices : mapping of str to Array
+        Those that are known before the state is.
+
+    Raises
+    ------
+    DerivationError
+        A given state is negative or not at rest; nothing fixes a compartment; several states fit, or none.
+    """
+    return _Finder(template, algebra, matrices).find()
+
+
+class _Finder:
+    def __init__(self, template: Template, algebra: Algebra, matrices: Mapping[str, Array]) -> None:
+        self.template, self.algebra, self.matrices = template, algebra, matrices
+        self.scenario = template.scenario
+        self.warnings: list[str] = []
+
+    def find(self) -> InfectionFree:
+        template, exact = self.template, self.algebra.dtype is object
+        self._refuse_needed()
+        system = RestSystem(template, self.algebra, self.matrices)
+        floats = system
+        if exact:
+            floats = RestSystem(template, FLOATS, {name: as_floats(table) for name, table in self.matrices.items()})
+        try:
+            found = find_rest(floats, system if exact else None, len(system.labels))
+        except FreeStates as free:
+            raise self._left_free(system, free.members) from None
+        x = self._choose(system, found)
+        state = system.state(x)
+        residual = self._check(system, x, state)
+        return InfectionFree(state, residual, tuple(self.warnings))
+
+    def _refuse_needed(self) -> None:
+        for arrow in self.template.rest_arrows:
+            used = {node.matrix for node in walk(arrow.rate.value) if isinstance(node, Apply)}
+            for name in used - set(self.matrices):
+                raise DerivationError(
+                    Problem(
+                        f"matrices.{name}",
+                        f"{arrow.label} uses {name} without infection, but {name} is balanced with a population that is only "
+                        "known in the infection-free state. Give population as an expression in parameters.",
+                        key=("matrices", name, "population"),
+                    )
+                )
+
+    def _left_free(self, system: RestSystem, members: tuple[int, ...]) -> DerivationError:
+        compartments = [label.split("[")[0] for k, label in enumerate(system.labels) if k in members]
+        named = ", ".join(dict.fromkeys(compartments))
+        first = compartments[0]
+        return DerivationError(
+            Problem(
+                "infection_free",
+                f"without infection nothing fixes {named}: any number of them is at rest (a closed population has no births "
+                f"and deaths to fix its size). Give {named} under [infection_free], for example {first} = 1000, or a "
+                f'parameter: {first} = "N0".',
+                key=("infection_free",),
+            )
+        )
+
+    def _choose(self, system: RestSystem, found: RestStates) -> Array:
+        """Return the non-negative state that is stable without infection, or the only one there is."""
+        fit = [k for k, good in enumerate(found.nonnegative) if good]
+        stable = [k for k in fit if found.stable[k]]
+        if len(stable) == 1:
+            return np.asarray(found.states[stable[0]])
+        if len(fit) == 1:
+            if len(system.labels):
+                named = self._words(system, found.states[fit[0]])
+                self.warnings.append(
+                    f"The infection-free state {named} is not stable without infection: A5 does not hold, and the "
+                    "number below says nothing about what happens after a small disturbance."
+                )
+            return np.asarray(found.states[fit[0]])
+        listed = "; ".join(self._words(system, x) for x in found.states[:5])
+        free = ", ".join(self.template.free)
+        if not fit:
+            what = (
+                f"no non-negative state without infection is at rest (found: {listed})"
+                if listed
+                else ("no state without infection is at rest")
+            )
+            advice = f"Check the flows into and out of {free}, or give the state under [infection_free]."
+        else:
+            which = stable or fit
+            listed = "; ".join(self._words(system, found.states[k]) for k in which[:5])
+            kind = "stable" if stable else "unstable"
+            what = f"{len(which)} {kind} states without infection are at rest: {listed}"
+            advice = f"Give the one that is meant under [infection_free] ({free})."
+        raise DerivationError(Problem("infection_free", f"{what}. {advice}", key=("infection_free",)))
+
+    def _words(self, system: RestSystem, x: Array) -> str:
+        numbers = as_floats(np.asarray(x))
+        shown = [f"{label} = {value:.6g}" for label, value in zip(system.labels, numbers, strict=True)]
+        return ", ".join(shown[:6]) + (", …" if len(shown) > 6 else "")
+
+    def _check(self, system: RestSystem, x: Array, state: Mapping[str, Array]) -> float:
+        """Refuse a given state that is negative or not at rest; note the largest net flow over gross flow."""
+        template, space = self.template, self.template.space
+        problems = []
+        for name in template.uninfected:
+            array = space.flatten(np.asarray(state[name]), template.by(name))[:, 0]
+            labels = self.scenario.items(name, template.by(name))
+            for label, value in zip(labels, array, strict=True):
+                if (is_balls(array) and not value.is_finite()) or (not is_balls(array) and not np.isfinite(value)):
+                    problems.append(
+                        Problem(
+                            f"infection_free.{name}",
+                            f"{label} has no value: it divides by 0 or leaves the range of a "
+                            "function at these parameters.",
+                            key=("infection_free", name),
+                        )
+                    )
+                elif value < 0 and name in template.given:
+                    problems.append(
+                        Problem(
+                            f"infection_free.{name}",
+                            f"{label} = {float(as_floats(np.array([value]))[0]):.6g} is negative. "
+                            "The number of hosts cannot be.",
+                            key=("infection_free", name),
+                        )
+                    )
+        if problems:
+            raise DerivationError(problems)
+        moving = tuple(name for name in template.uninfected if name in template.depended_on)
+        entering, leaving = net_flow(template, system.evaluator(x), template.rest_arrows, moving)
+        labels = template.items_of(moving)
+        into, out = as_floats(entering)[:, 0], as_floats(leaving)[:, 0]
+        net = as_floats(np.asarray(entering - leaving))[:, 0]
+        worst = 0.0
+        for k, label in enumerate(labels):
+            gross = abs(into[k]) + abs(out[k])
+            if not np.isfinite(gross):
+                problems.append(
+                    Problem(
+                        "infection_free",
+                        f"a rate at {label} has no value in the infection-free state: it divides by 0 or "
+                        "leaves the range of a function.",
+                        key=("infection_free",),
+                    )
+                )
+                continue
+            share = abs(net[k]) / gross if gross > 0 else 0.0
+            worst = max(worst, share)
+            if share > AT_REST and label.split("[")[0] not in template.free:
+                name = label.split("[")[0]
+                problems.append(
+                    Problem(
+                        f"infection_free.{name}",
+                        f"{label} is not at rest: {into[k]:.6g} per {self.scenario.time_unit} enter and {out[k]:.6g} leave. "
+                        f"Write the state as an expression in the parameters, or leave {name} out and it is solved for.",
+                        key=("infection_free", name),
+                    )
+                )
+        if problems:
+            raise DerivationError(problems)
+        return worst
