@@ -170,7 +170,7 @@ def _curved(
     if all(value == 0 for value in numbers):
         return dict.fromkeys(own, sympy.Integer(0))
     substitutions: list[tuple[sympy.Symbol, sympy.Expr]] = []
-    left, equations = list(own), [_numerator(e) for e in equations]
+    left, equations = list(own), [_numerator(e, wanted) for e in equations]
     while len(left) > 1:
         step = _linear_unknown(equations, left, wanted)
         if step is None:
@@ -178,7 +178,7 @@ def _curved(
         index, unknown, expression = step
         substitutions.append((unknown, expression))
         left.remove(unknown)
-        equations = [_numerator(e.subs(unknown, expression)) for k, e in enumerate(equations) if k != index]
+        equations = [_numerator(e.subs(unknown, expression), wanted) for k, e in enumerate(equations) if k != index]
     (last,) = left
     root = _matching_root(equations[0], last, wanted[last], values)
     if root is None:
@@ -189,8 +189,14 @@ def _curved(
     return out
 
 
-def _numerator(expression: sympy.Expr) -> sympy.Expr:
-    return sympy.fraction(sympy.together(expression))[0]
+def _numerator(expression: sympy.Expr, wanted: Mapping[sympy.Symbol, float | None]) -> sympy.Expr:
+    """Return the numerator, without factors that are unknowns known not to be 0."""
+    numerator = sympy.fraction(sympy.together(expression))[0]
+    for unknown, number in wanted.items():
+        if number:
+            while numerator != 0 and numerator.xreplace({unknown: sympy.Integer(0)}) == 0:
+                numerator = sympy.cancel(numerator / unknown)
+    return numerator
 
 
 def _linear_unknown(
@@ -201,7 +207,8 @@ def _linear_unknown(
     for index, equation in enumerate(equations):
         for unknown in left:
             if wanted[unknown] == 0:
-                found.append((0, index, unknown, sympy.Integer(0)))
+                if sympy.expand(equation.xreplace({unknown: sympy.Integer(0)})) == 0:
+                    found.append((0, index, unknown, sympy.Integer(0)))
                 continue
             slope = sympy.expand(sympy.diff(equation, unknown))
             if slope != 0 and not slope.has(unknown):
