@@ -39,17 +39,14 @@ def reproductive_values(solution: Solution, *, dark: bool = False) -> alt.LayerC
     if solution.left is None or len(solution.left) > MOST_BARS:
         return None
     rows = _rows(solution, solution.left)
-    return _bars(
-        rows, "reproductive value (relative; mean of new infections = 1)", "Reproductive value of each type", dark
-    )
+    return _bars(rows, "reproductive value (relative)", "Reproductive value of each type", dark)
 
 
 def efforts(result: ControlResult, *, dark: bool = False) -> alt.LayerChart | None:
     """Draw the critical effort of each type, and of each state, acted on alone.
 
     The critical effort is the share to remove, 1 - 1/T, from 0 to 1. Where T does not exist no effort on this target
-    is enough, and the bar is replaced by the words "not enough alone". None where there is nothing to draw, or
-    too much.
+    is enough, and the bar is replaced by the words "not enough alone". None where no bar would be left, or too many.
     """
     rows: list[dict[str, Any]] = []
     for single in result.type_reproduction:
@@ -57,7 +54,7 @@ def efforts(result: ControlResult, *, dark: bool = False) -> alt.LayerChart | No
             rows.append(_effort(f"infections of {single.types[0]}", single.critical_effort))
     for state in result.state_reproduction:
         rows.append(_effort(f"infectivity of {state.state}", state.critical_effort))
-    if not rows or len(rows) > MOST_BARS:
+    if len(rows) > MOST_BARS or not any(row["value"] for row in rows):
         return None
     return _bars(
         rows, "critical effort: share to remove (0 to 1)", "Critical effort for each target alone", dark, top=1.0

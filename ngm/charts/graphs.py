@@ -59,11 +59,13 @@ def quoted(text: str, most: int = 40) -> str:
     return '"' + plain.replace("\\", "\\\\").replace('"', '\\"') + '"'
 
 
-def flow_diagram(stages: Sequence[Stage], arrows: Sequence[Arrow], *, dark: bool = False) -> Graph | None:
+def flow_diagram(
+    stages: Sequence[Stage], arrows: Sequence[Arrow], *, dark: bool = False, down: bool = False
+) -> Graph | None:
     """Draw the compartments and flows of a model, finished or not.
 
     Transmission: thick, dashed, labelled "transmission". Transition: thin and solid. An infected compartment has a
-    double border. None where there is nothing to draw or too much.
+    double border. `down`: from top to bottom instead of left to right. None where there is nothing to draw or too much.
     """
     # A name that only a flow mentions is drawn too, dotted: the diagram shows what is typed.
     known = {stage.name for stage in stages}
@@ -71,13 +73,13 @@ def flow_diagram(stages: Sequence[Stage], arrows: Sequence[Arrow], *, dark: bool
     if not known or len(known) + len(mentioned) > MOST_NODES or len(arrows) > MOST_EDGES:
         return None
     colours = ink(dark)
-    lines = _head(colours)
+    lines = _head(colours, down)
     ids = {name: f"n{k}" for k, name in enumerate([*(stage.name for stage in stages), *mentioned])}
     for stage in stages:
         border = "peripheries=2" if stage.infected else "peripheries=1"
         lines.append(f"{ids[stage.name]} [label={_caption(stage.name, stage.label)} {border}]")
     lines += [f'{ids[name]} [label={quoted(name + " ?")} style="dotted,rounded"]' for name in mentioned]
-    for k, arrow in enumerate(arrows):
+    for k, arrow in enumerate(arrow for arrow in arrows if arrow.source or arrow.target):
         lines += _arrow(k, arrow, ids, colours)
     infected = [stage.name for stage in stages if stage.infected]
     told = "; ".join(
@@ -138,11 +140,11 @@ def _lines(texts: Sequence[str]) -> str:
     return '"' + "\\n".join(quoted(text)[1:-1] for text in texts) + '"'
 
 
-def _head(colours: Ink) -> list[str]:
+def _head(colours: Ink, down: bool = False) -> list[str]:
     font = f'fontname="Helvetica,Arial,sans-serif" fontcolor="{colours.text}"'
     return [
         "digraph {",
-        'rankdir="LR" bgcolor="transparent" pad="0.2" nodesep="0.3" ranksep="0.35"',
+        f'rankdir="{"TB" if down else "LR"}" bgcolor="transparent" pad="0.2" nodesep="0.3" ranksep="0.35"',
         f'graph [{font} fontsize="13"]',
         f'node [shape="box" style="filled,rounded" fillcolor="{colours.fill}" color="{colours.text}" {font} '
         'fontsize="15"]',
@@ -151,18 +153,6 @@ def _head(colours: Ink) -> list[str]:
 
 
 def _arrow(k: int, arrow: Arrow, ids: dict[str, str], colours: Ink) -> list[str]:
-    lines: list[str] = []
-    ends: list[str] = []
-    for side, name, other in (("a", arrow.source, arrow.target), ("b", arrow.target, arrow.source)):
-        if name:
-            ends.append(ids[name])
-            continue
-        # Outside has no box: a small point of its own for each flow, above or below the compartment.
-        outside = f"o{k}{side}"
-        ends.append(outside)
-        lines.append(f'{outside} [shape="point" width="0.07" label="" color="{colours.faint}"]')
-        if other:
-            lines.append(f"{{ rank=same; {ids[other]}; {outside} }}")
     words = _wrapped(arrow.label or arrow.rate, 20)
     if arrow.kind == "transmission":
         look = f'style="dashed" penwidth="2.4" color="{colours.strong}" arrowhead="normal"'
@@ -172,5 +162,13 @@ def _arrow(k: int, arrow: Arrow, ids: dict[str, str], colours: Ink) -> list[str]
     else:
         look = f'style="dotted" penwidth="1.1" color="{colours.faint}" arrowhead="odot"'
         words = ["kind?", *words]
-    lines.append(f"{ends[0]} -> {ends[1]} [label={_lines(words)} {look}]")
-    return lines
+    if arrow.source and arrow.target:
+        return [f"{ids[arrow.source]} -> {ids[arrow.target]} [label={_lines(words)} {look}]"]
+    # Outside has no box: the words of the flow stand there, above or below the compartment.
+    outside, inside = f"o{k}", ids[arrow.source or arrow.target]
+    ends = f"{outside} -> {inside}" if arrow.target else f"{inside} -> {outside}"
+    return [
+        f'{outside} [shape="plaintext" style="" margin="0.04" height="0.2" fontsize="13" label={_lines(words or ["outside"])}]',
+        f"{{ rank=same; {inside}; {outside} }}",
+        f"{ends} [{look}]",
+    ]

@@ -12,11 +12,11 @@ from ngm.results import Solution
 
 __all__ = ["eigenvalues"]
 
-#: Corners of the polygon that draws a circle: enough to look round at 320 pixels.
+#: Corners of the polygon that draws a circle: enough to look round at 270 pixels.
 CORNERS = 120
 
 
-def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> alt.LayerChart | None:
+def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 270) -> alt.LayerChart | None:
     """Draw the eigenvalues of K, the circle of radius R0 and the circle of radius 1.
 
     Every eigenvalue lies on the circle of radius R0 or inside it; those on it besides R0 itself belong to a periodic
@@ -85,12 +85,12 @@ def eigenvalues(solution: Solution, *, dark: bool = False, size: int = 320) -> a
             shape=alt.Shape(
                 "what:N",
                 scale=alt.Scale(domain=kinds, range=["diamond", "square", "circle"]),
-                legend=_legend("Eigenvalue"),
+                legend=_legend("Eigenvalue", symbolFillColor=colours.faint, symbolStrokeColor=colours.text),
             ),
             fill=alt.Fill(
                 "what:N",
                 scale=alt.Scale(domain=kinds, range=[colours.strong, colours.first, colours.faint]),
-                legend=_legend("Eigenvalue"),
+                legend=None,
             ),
             tooltip=["eigenvalue:N", "modulus:N", "what:N"],
         )
@@ -128,8 +128,8 @@ def _complex(re: float, im: float) -> str:
     return f"{short(re)} {'+' if im > 0 else '-'} {short(abs(im))} i"
 
 
-def _legend(title: str) -> alt.Legend:
-    return alt.Legend(title=title, orient="bottom", direction="vertical", symbolLimit=4, labelLimit=260)
+def _legend(title: str, **more: Any) -> alt.Legend:
+    return alt.Legend(title=title, orient="bottom", direction="vertical", labelLimit=260, **more)
 
 
 def _alt(solution: Solution) -> str:

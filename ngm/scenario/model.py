@@ -134,6 +134,12 @@ class Parameter:
         """What a number of this parameter is multiplied by to be in force (1 for a parameter that follows others)."""
         return Fraction(1) if self.unit is None or self.follows else self.unit.factor
 
+    def in_force(self) -> tuple[Node, ...]:
+        """Return the values that the computation uses, one for each group: `ngm.scenario.values.converted`."""
+        from ngm.scenario.values import converted
+
+        return converted(self)
+
 
 @dataclass(frozen=True, slots=True)
 class Definition:

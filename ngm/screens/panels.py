@@ -62,6 +62,7 @@ def change_a_value(shown: Shown, write: Write) -> None:
     if not chosen:
         st.caption("Choose a parameter, type another value, and see the new R0 beside the old one.")
         return
+    st.caption("Each value is in the parameter's own unit.")
     edits: list[forms.Edit] = []
     for name, place in zip(chosen, _columns(len(chosen)), strict=True):
         value, unit = rows[name][1], rows[name][2]
@@ -104,8 +105,15 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
             for k, c in enumerate(structure.classes, 1)
         ]
         _table(["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"], rows)
-        if not structure.irreducible:
-            st.caption("There are several classes, or none that sustains itself: R0 is the largest of theirs.")
+        if len(structure.classes) > 1:
+            st.caption("K has several classes: R0 is the largest of theirs.")
+        growing = [c for c in structure.classes if c.growth_rate is not None]
+        fastest = max(growing, key=lambda c: c.growth_rate or 0.0, default=None)
+        if fastest is not None and solution.R0 is not None and fastest.R0 < solution.R0:
+            st.warning(
+                f"The class that grows fastest ({plain(', '.join(fastest.types))}) is not the one with the largest R0: "
+                "R0 is no measure of speed."
+            )
     if solution.K is not None:
         with st.expander("K in numbers: row infected, column infecting"):
             parts.numbers_table(solution.K, solution.types_at_infection, write, "K")

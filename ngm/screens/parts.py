@@ -23,18 +23,21 @@ __all__ = [
     "applied",
     "cautions",
     "conditions_table",
+    "conversions",
     "dark",
     "digits",
+    "display",
     "earlier_result",
-    "formula",
     "headline",
     "latex",
     "latex_matrix",
+    "latex_words",
     "numbers_table",
     "plain",
     "problem_box",
     "results",
     "status",
+    "switch",
     "warnings_box",
 ]
 
@@ -78,12 +81,16 @@ def dark() -> bool:
 
 def digits(page: str) -> Callable[[float | None], str]:
     """Place a switch between short numbers and full precision; return the function that writes a number."""
-    field = f"{page}.precision"
-    full = st.toggle("Full precision", value=state.recall(field) == "full", key=field)
-    state.remember(field, "full" if full else "short")
-    if full:
+    if switch("Full precision", f"{page}.precision"):
         return lambda value: "–" if value is None else repr(value)
     return short
+
+
+def switch(label: str, field: str) -> bool:
+    """Place a switch that stays as it is left, also on other pages; return whether it is on."""
+    on = st.toggle(label, value=state.recall(field) == "on", key=field)
+    state.remember(field, "on" if on else "off")
+    return on
 
 
 def problem_box(problems: Sequence[Problem], title: str = "") -> None:
@@ -178,6 +185,13 @@ def earlier_result() -> None:
         headline(earlier)
 
 
+def conversions(text: str, folder: str | None, time_unit: str) -> None:
+    """Say which values are converted, as typed and as used."""
+    told = [f"{plain(name)}: {plain(value)}" for name, value in cache.conversions(text, folder)]
+    if told:
+        st.caption(f"Converted for the computation (time in units of one {plain(time_unit)}): {'; '.join(told)}.")
+
+
 def status() -> None:
     """Show in the side bar what is open, how it stands, and Undo."""
     held = state.current()
@@ -201,7 +215,12 @@ def latex(text: str) -> str:
     try:
         return cache.latex(text)
     except NgmError:
-        return r"\text{" + re.sub(r"[^\w\s.,:+*/()=-]", " ", text) + "}"
+        return latex_words(text)
+
+
+def latex_words(text: str) -> str:
+    """Return words as LaTeX text, with signs that could be commands left out."""
+    return r"\text{" + re.sub(r"[^\w\s.,:;+*/()=\[\]-]|_", " ", text) + "}" if text else ""
 
 
 def latex_matrix(rows: TextMatrix, types: Sequence[str], columns: Sequence[str] | None = None) -> str | None:
@@ -220,10 +239,13 @@ def latex_matrix(rows: TextMatrix, types: Sequence[str], columns: Sequence[str] 
     return f"{stretch}\\begin{{array}}{{c|{'c' * len(heads)}}}\n{body}\n\\end{{array}}"
 
 
-def formula(left: str, right: str | None) -> None:
-    """Show ``left = right``, both expressions (`left` LaTeX already)."""
-    if right is not None:
-        st.latex(f"{left} = {latex(right)}")
+def display(body: str) -> None:
+    """Show LaTeX on lines of its own.
+
+    The empty line above keeps the page from cutting the tops off low letters in a numerator: the box of a formula ends
+    where its letters begin, and what is too wide for the page scrolls inside that box.
+    """
+    st.latex(rf"\overset{{\vphantom{{x}}}}{{{body}}}")
 
 
 def numbers_table(matrix: Matrix, types: Sequence[str], write: Callable[[float | None], str], name: str) -> None:
@@ -241,5 +263,5 @@ def numbers_table(matrix: Matrix, types: Sequence[str], write: Callable[[float |
 def conditions_table(solution: Solution) -> None:
     """Show the conditions A1 to A5 with how each turned out, in words."""
     for condition in solution.conditions:
-        verdict = "✓ holds" if condition.holds else "✗ **does not hold**"
+        verdict = "✓ holds" if condition.holds else "✖ **does not hold**"
         st.markdown(f"- **{plain(condition.name)}** {verdict}. {plain(condition.detail)}")

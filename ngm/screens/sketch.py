@@ -27,7 +27,7 @@ def arrows(document: Mapping[str, Any]) -> list[Arrow]:
     return [
         Arrow(*(_text(entry.get(key)) for key in ("from", "to", "kind", "rate", "label")))
         for entry in (section if isinstance(section, list) else ())
-        if isinstance(entry, dict) and (entry.get("from") or entry.get("to"))
+        if isinstance(entry, dict)
     ]
 
 

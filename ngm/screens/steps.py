@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Sequence
 
 import streamlit as st
 
-from ngm.results import Matrix, Solution, TextMatrix
+from ngm.results import Matrix, Solution, Symbolic, TextMatrix
 from ngm.screens import parts
 from ngm.screens.parts import latex, plain
 
 __all__ = [
     "conditions",
+    "first_used",
     "infection_free",
     "next_generation",
     "residence",
@@ -51,9 +53,12 @@ def infection_free(solution: Solution, write: Write) -> None:
     elif len(solution.infection_free) > MOST_LINES:
         _plain_table(["compartment", "value"], [(k, write(v)) for k, v in solution.infection_free.items()])
     else:
+        _abbreviations(solution.symbolic, "state")
+        lines = []
         for name, value in solution.infection_free.items():
             middle = f" = {latex(written[name])}" if name in written and written[name] != write(value) else ""
-            st.latex(f"{latex(name)}^{{*}}{middle} = {_number(write(value))}")
+            lines.append(rf"{latex(name)}^{{*}} &{middle} = {_number(write(value))}")
+        _aligned(lines)
     st.caption(
         "Checked: the largest net flow, as a share of the gross flow of its compartment, is "
         f"{plain(write(solution.residual))}."
@@ -67,6 +72,7 @@ def transmission_and_transition(solution: Solution, write: Write) -> None:
         f"Rates per {plain(solution.time_unit)} at the infection-free state. Row: the type that is gained or lost; "
         "column: the type that causes it. F counts new infections; V counts everything else, with its sign turned."
     )
+    _abbreviations(solution.symbolic, "rates")
     _matrix("F", solution.symbolic.F, solution.F, solution.types, write)
     _matrix("V", solution.symbolic.V, solution.V, solution.types, write)
     with st.expander("Entry by entry: the flows behind F and V"):
@@ -89,26 +95,23 @@ def conditions(solution: Solution) -> None:
 
 def residence(solution: Solution) -> None:
     """Show the elimination that leads to the inverse of V."""
-    steps = [step for step in solution.symbolic.steps if step.kind in ("elimination", "residence")]
+    steps = [step for step in solution.symbolic.steps if step.kind == "residence"]
     st.subheader("5. Mean stays: the inverse of V")
-    if not steps and not solution.symbolic.abbreviations:
-        st.markdown("Nothing is written out here: the inverse of V needs no abbreviation, or is known in numbers only.")
+    if not steps:
+        st.markdown("Nothing is written out here: the inverse of V is known in numbers only, or there is none.")
         return
     st.markdown(
-        "Entry (i, j) of the inverse of V is the mean time spent in state i by one who enters at j. States are taken "
-        "out one after the other; what would be too long to repeat gets a name."
+        "Entry (i, j) of the inverse of V, written τ here, is the mean time spent in state i by one who enters at j. "
+        "States are taken out one after the other; what would be too long to repeat gets a name."
     )
-    named = {step.name for step in steps if step.kind == "elimination"}
-    for name, text in solution.symbolic.abbreviations.items():
-        if name not in named:
-            st.latex(f"{latex(name)} = {latex(text)}")
-    for step in steps[:MOST_LINES]:
-        if step.kind == "elimination":
-            st.markdown(plain(step.about))
-            parts.formula(latex(step.name), step.formula)
-        else:
-            st.markdown(f"Mean stay in {plain(step.name)} of one who enters at {plain(step.about)}:")
-            parts.formula(rf"\tau_{{{latex(step.name)},\,{latex(step.about)}}}", step.formula)
+    _abbreviations(solution.symbolic, "residence")
+    _aligned(
+        [
+            rf"\tau_{{{latex(step.name)},\,{latex(step.about)}}} &= {latex(step.formula)}"
+            for step in steps[:MOST_LINES]
+            if step.formula is not None
+        ]
+    )
     if len(steps) > MOST_LINES:
         with st.expander(f"{len(steps) - MOST_LINES} further lines"):
             rows = [(s.name, s.formula or "", s.about) for s in steps[MOST_LINES:]]
@@ -125,6 +128,7 @@ def next_generation(solution: Solution, write: Write) -> None:
         "K = F V⁻¹, kept to the types at infection. Entry (i, j): the infections of type i that one case of type j "
         "causes over its whole course."
     )
+    _abbreviations(solution.symbolic, "K")
     _matrix("K", solution.symbolic.K, solution.K, solution.types_at_infection, write)
 
 
@@ -135,17 +139,18 @@ def root(solution: Solution) -> None:
         st.markdown("There is none at these values.")
         return
     symbolic = solution.symbolic
+    _abbreviations(symbolic, "root")
     if symbolic.characteristic_polynomial is not None and len(symbolic.characteristic_polynomial) < MOST_TERMS * 40:
         st.markdown("Characteristic polynomial of K:")
-        st.latex(f"{latex(symbolic.characteristic_polynomial)} = 0")
+        parts.display(f"{latex(symbolic.characteristic_polynomial)} = 0")
     for step in symbolic.steps:
         if step.kind == "class":
             st.markdown(f"Class of {plain(step.name)}: {plain(step.about)}.")
             if step.formula is not None:
-                st.latex(latex(step.formula))
+                parts.display(latex(step.formula))
     if solution.closed_form is not None:
         st.markdown("Closed form, for all values of the parameters:")
-        st.latex(rf"\mathcal{{R}}_0 = {latex(solution.closed_form)}")
+        parts.display(rf"\mathcal{{R}}_0 = {latex(solution.closed_form)}")
         with st.expander("The closed form as text"):
             st.code(solution.closed_form, language=None, wrap_lines=True)
     else:
@@ -156,7 +161,7 @@ def _matrix(name: str, text: TextMatrix | None, numbers: Matrix | None, labels: 
     """Show a matrix typeset where it is written out and small enough, and its numbers."""
     typeset = parts.latex_matrix(text, labels) if text is not None else None
     if typeset is not None:
-        st.latex(f"{name} = {typeset}")
+        parts.display(f"{name} = {typeset}")
     if numbers is None:
         if typeset is None:
             st.caption(f"{name} is too large to be shown.")
@@ -169,6 +174,50 @@ def _matrix(name: str, text: TextMatrix | None, numbers: Matrix | None, labels: 
             parts.numbers_table(numbers, labels, write, name)
 
 
+def first_used(symbolic: Symbolic) -> dict[str, list[str]]:
+    """Return, for each section, the abbreviations that it is the first to need, in the order in which they are made."""
+    residence = [step.formula or "" for step in symbolic.steps if step.kind == "residence"]
+    classes = [step.formula or "" for step in symbolic.steps if step.kind == "class"]
+    written = {
+        "state": list((symbolic.infection_free or {}).values()),
+        "rates": [entry for rows in (symbolic.F or (), symbolic.V or ()) for row in rows for entry in row],
+        "residence": residence,
+        "K": [entry for row in symbolic.K or () for entry in row],
+        "root": [*classes, symbolic.characteristic_polynomial or ""],
+    }
+    told: set[str] = set()
+    out: dict[str, list[str]] = {}
+    for section, formulas in written.items():
+        needed: set[str] = set()
+        # Later names are made of earlier ones: from the last to the first, each brings what it is made of.
+        words = {word for formula in formulas for word in re.findall(r"\w+", formula)}
+        for name, formula in reversed(list(symbolic.abbreviations.items())):
+            if name in words:
+                needed.add(name)
+                words.update(re.findall(r"\w+", formula))
+        out[section] = [name for name in symbolic.abbreviations if name in needed - told]
+        told |= needed
+    return out
+
+
+def _abbreviations(symbolic: Symbolic, section: str) -> None:
+    about = {step.name: step.about for step in symbolic.steps if step.kind == "elimination"}
+    names = first_used(symbolic)[section]
+    if not names:
+        return
+    st.markdown("With these abbreviations:")
+    _aligned(
+        [
+            rf"{latex(name)} &= {latex(symbolic.abbreviations[name])} &&{parts.latex_words(about.get(name, ''))}"
+            for name in names[:MOST_LINES]
+        ]
+    )
+    if len(names) > MOST_LINES:
+        with st.expander(f"{len(names) - MOST_LINES} more"):
+            rows = [(name, symbolic.abbreviations[name], about.get(name, "")) for name in names[MOST_LINES:]]
+            _plain_table(["name", "formula", "about"], rows)
+
+
 def _terms(solution: Solution) -> None:
     entries = dict.fromkeys((t.matrix, t.row, t.column) for t in solution.terms)
     for matrix, row, column in entries:
@@ -176,7 +225,7 @@ def _terms(solution: Solution) -> None:
         flows = "; ".join(_flow(t.flow, t.label) for t in here)
         st.markdown(f"**{matrix}**, row {plain(row)}, column {plain(column)}: {plain(flows)}")
         total = " ".join(f"{'-' if t.sign < 0 else '+'} {_grouped(latex(t.share), len(here) > 1)}" for t in here)
-        st.latex(total.removeprefix("+ "))
+        parts.display(total.removeprefix("+ "))
 
 
 def _grouped(share: str, several: bool) -> str:
@@ -185,6 +234,13 @@ def _grouped(share: str, several: bool) -> str:
 
 def _flow(number: int | None, label: str) -> str:
     return label if number is None else f"flow {number}, {label}" if label else f"flow {number}"
+
+
+def _aligned(lines: Sequence[str]) -> None:
+    """Show lines of LaTeX below each other, aligned at their ``&``; a few at a time, each part scrolls by itself."""
+    for start in range(0, len(lines), 12):
+        body = r" \\[0.9em] ".join(lines[start : start + 12])
+        parts.display(rf"\begin{{aligned}}{body}\end{{aligned}}")
 
 
 def _number(text: str) -> str:

@@ -37,21 +37,25 @@ def tables(names: tuple[str, ...], document: Mapping[str, Any], boxes: dict[str,
         boxes[name] = st.container()
         if name == "matrices":
             for matrix in forms.matrix_names(document):
-                st.markdown(f"Entries of **{parts.plain(matrix)}**: row, from; column, with or to")
+                st.markdown(
+                    f"Entries of **{parts.plain(matrix)}**. Row: the group that makes contacts, or leaves. "
+                    "Column: the group that it meets, or joins."
+                )
                 edits += editors.matrix_editor(matrix, document)
     return edits
 
 
 def overview(document: Mapping[str, Any]) -> None:
     """Draw the flow diagram."""
-    graph = flow_diagram(sketch.stages(document), sketch.arrows(document), dark=parts.dark())
+    down = parts.switch("Draw the diagram from top to bottom (for narrow screens)", "model.down")
+    graph = flow_diagram(sketch.stages(document), sketch.arrows(document), dark=parts.dark(), down=down)
     if graph is None:
         st.caption("The flow diagram appears here (for up to 60 compartments).")
         return
     st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
     st.caption(
         "Thick dashed arrows marked “transmission” are new infections (F); thin solid ones are transitions (V). "
-        "Infected compartments have a double border; a dot is the outside."
+        "Infected compartments have a double border; words without a box stand outside."
     )
 
 
@@ -84,6 +88,9 @@ def page() -> None:
     state.edit(text)
     outcome = cache.solve(text, now.folder)
     rest = sort_out(outcome.problems, boxes)
+    if outcome.solution is not None:
+        with boxes["parameters"]:
+            parts.conversions(text, now.folder, outcome.solution.time_unit)
     with top:
         overview(forms.document(text) or document)
         if outcome.solution is not None:
