@@ -5,8 +5,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from ngm.results import ControlResult, Solution
+from ngm.results_control import Compared, Comparison
 
-__all__ = ["CAUTION", "control_text", "solve_text"]
+__all__ = ["CAUTION", "compare_text", "control_text", "solve_text"]
 
 CAUTION = (
     "A model's number is no forecast, and says nothing of speed or severity. It holds for this model, at these values, near "
@@ -166,6 +167,50 @@ def control_text(result: ControlResult) -> str:
         lines += ["", *(f"  {why}" for why in reasons[:20])]
     lines += _closing(result.warnings)
     return _squeezed(lines)
+
+
+def compare_text(result: Comparison) -> str:
+    """Return the rows of `ngm.compare` as text, the smallest number first."""
+    base, unit = result.baseline, result.time_unit
+    lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
+    lines.append(f"No R0: {base.no_R0}" if base.R0 is None else f"R0 = {figure(base.R0)} with no intervention")
+    lines.append(f"growth rate = {figure(base.growth_rate)} per {unit}{_time(base, unit)}")
+    if result.interventions:
+        lines += ["With an intervention in force the number is a control reproduction number; the smallest first.", ""]
+    head = ["intervention", "number", "below 1", "share of R0 removed", f"growth per {unit}", "doubles in", "halves in"]
+    rows = []
+    for row in result.by_number():
+        rows.append(
+            [
+                row.name,
+                "none" if row.R0 is None else figure(row.R0),
+                "yes" if row.below_one else "no" if row.R0 is not None else "-",
+                "-" if row.reduction is None else f"{100 * row.reduction:.4g} %",
+                figure(row.growth_rate),
+                figure(row.doubling_time),
+                figure(row.halving_time),
+                figure(row.cost),
+            ]
+        )
+    lines += table(rows, [*head, "cost"]) if rows else []
+    lines += _mixes(result)
+    lines += _closing(result.warnings)
+    return _squeezed(lines)
+
+
+def _time(row: Compared, unit: str) -> str:
+    if row.doubling_time is not None:
+        return f", doubling time = {figure(row.doubling_time)} {unit}"
+    return "" if row.halving_time is None else f", halving time = {figure(row.halving_time)} {unit}"
+
+
+def _mixes(result: Comparison) -> list[str]:
+    """Return the shares of the types among new infections, a row each, where that fits on a page."""
+    shown = [row for row in (result.baseline, *result.by_number()) if row.case_mix is not None]
+    if not 1 < len(result.types) <= MOST_PRINTED or not shown:
+        return []
+    rows = [[row.name, *(figure(round(share, 6)) for share in row.case_mix or ())] for row in shown]
+    return ["", "Share of new infections", *table(rows, ["", *result.types])]
 
 
 def _closing(warnings: Sequence[str]) -> list[str]:

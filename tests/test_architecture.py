@@ -17,17 +17,27 @@ PACKAGE = ROOT / "ngm"
 MAY_IMPORT: dict[str, set[str]] = {
     "errors": set(),
     "results": set(),
+    "results_control": {"results"},
     "engine": set(),
     "expression": {"errors"},
     "scenario": {"errors", "expression"},
     # The classes of a graph are arrays in, arrays out: the one thing of the engine that symbols need too.
     "derivation": {"errors", "expression", "scenario", "results", "engine.structure"},
     "worker": {"errors", "results", "scenario", "derivation"},
-    "analysis": {"errors", "expression", "scenario", "derivation", "engine", "results", "worker"},
-    "charts": {"results"},
-    "screens": {"ngm", "errors", "results", "charts", "scenario.edit", "scenario.file", "expression.typeset"},
-    "console": {"errors", "results"},
-    "__main__": {"ngm", "errors", "results", "charts", "console", "worker"},
+    "analysis": {"errors", "expression", "scenario", "derivation", "engine", "results", "results_control", "worker"},
+    "charts": {"results", "results_control"},
+    "screens": {
+        "ngm",
+        "errors",
+        "results",
+        "results_control",
+        "charts",
+        "scenario.edit",
+        "scenario.file",
+        "expression.typeset",
+    },
+    "console": {"errors", "results", "results_control"},
+    "__main__": {"ngm", "errors", "results", "results_control", "charts", "console", "worker"},
     "__init__": {"errors", "results", "scenario", "analysis"},
 }
 

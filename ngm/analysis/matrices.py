@@ -16,7 +16,20 @@ from ngm.errors import DerivationError, Problem, ScenarioError
 from ngm.expression.tree import names
 from ngm.scenario.model import Change, Intervention, Matrix
 
-__all__ = ["as_floats", "balanced", "changed", "needs_state", "population", "reciprocity_warnings", "tables"]
+__all__ = [
+    "RECIPROCAL",
+    "as_floats",
+    "balanced",
+    "changed",
+    "needs_state",
+    "population",
+    "reciprocity_gap",
+    "reciprocity_warnings",
+    "tables",
+]
+
+#: The two counts of a pair's contacts may differ by this share of their mean.
+RECIPROCAL = 1e-9
 
 
 def as_floats(values: Array) -> Array:
@@ -154,27 +167,37 @@ def _change_block(template: Template, algebra: Algebra, block: Array, change: Ch
         block[where] = amount
 
 
+def reciprocity_gap(template: Template, matrix: Matrix, table: Array, evaluator: Evaluator) -> tuple[float, str]:
+    """Return how far a matrix with a population is from C[i][j] N[i] = C[j][i] N[j], and which pair is the worst.
+
+    The gap is the difference of both counts over their mean (at most 2), the pair comes in words.
+    """
+    sizes = as_floats(population(template, matrix, evaluator))
+    table = as_floats(table)
+    blocks = table if matrix.within is not None else table[None]
+    groups = template.scenario.dimensions[matrix.by].groups
+    worst, pair, there = 0.0, (0, 0), 0
+    for k, (C, N) in enumerate(zip(blocks, sizes.reshape(len(blocks), -1), strict=True)):
+        total = C * N[:, None]
+        mean = (total + total.T) / 2
+        gap = np.abs(total - total.T) / np.where(mean > 0, mean, 1)
+        i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
+        if gap[i, j] > worst:
+            worst, pair, there = float(gap[i, j]), (int(i), int(j)), k
+    inside = "" if matrix.within is None else f" in {template.scenario.dimensions[matrix.within].groups[there]}"
+    return worst, f"{groups[pair[0]]} and {groups[pair[1]]}{inside}"
+
+
 def reciprocity_warnings(template: Template, evaluator: Evaluator, plain: Mapping[str, Array]) -> list[str]:
     """Return a warning for each matrix that breaks C[i][j] N[i] = C[j][i] N[j], with the worst pair and its size."""
     out = []
     for name, matrix in template.scenario.matrices.items():
         if matrix.population is None or matrix.reciprocal:
             continue
-        sizes = as_floats(population(template, matrix, evaluator))
-        blocks = plain[name] if matrix.within is not None else plain[name][None]
-        groups = template.scenario.dimensions[matrix.by].groups
-        worst, pair, there = 0.0, (0, 0), 0
-        for k, (C, N) in enumerate(zip(blocks, sizes.reshape(len(blocks), -1), strict=True)):
-            total = C * N[:, None]
-            mean = (total + total.T) / 2
-            gap = np.abs(total - total.T) / np.where(mean > 0, mean, 1)
-            i, j = np.unravel_index(int(np.argmax(gap)), gap.shape)
-            if gap[i, j] > worst:
-                worst, pair, there = float(gap[i, j]), (int(i), int(j)), k
-        if worst > 1e-9:
-            inside = "" if matrix.within is None else f" in {template.scenario.dimensions[matrix.within].groups[there]}"
+        worst, pair = reciprocity_gap(template, matrix, plain[name], evaluator)
+        if worst > RECIPROCAL:
             out.append(
-                f"matrices.{name} is not reciprocal: contacts between {groups[pair[0]]} and {groups[pair[1]]}{inside}, "
+                f"matrices.{name} is not reciprocal: contacts between {pair}, "
                 f"counted from either side, differ by {100 * worst:.3g} % of their mean. Set reciprocal = true to balance "
                 "them, or check the orientation."
             )

@@ -1,0 +1,223 @@
+"""What the analyses of control return: interventions side by side, strength and coverage needed, a shared supply.
+
+With an intervention in force the number is a control reproduction number and is labelled so; R0 is the baseline's
+alone. As in `ngm.results`, what does not exist is `None` with the reason beside it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from ngm.results import Vector
+
+if TYPE_CHECKING:
+    import pandas
+
+__all__ = ["BASELINE_LABEL", "CONTROL_LABEL", "Compared", "Comparison", "Coverage", "Strength"]
+
+BASELINE_LABEL = "R0"
+CONTROL_LABEL = "control reproduction number"
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Compared:
+    """One row of a comparison: the baseline, an intervention, or several of them together.
+
+    Attributes
+    ----------
+    label : str
+        What `R0` is: "R0" for the baseline, "control reproduction number" for everything else.
+    parts : tuple of str
+        The interventions in force, in order; empty for the baseline.
+    R0 : float or None
+        The number, with `bounds` that enclose it; None where there is none, and `no_R0` says why.
+    growth_rate : float or None
+        Per time unit; None only where the intervention leaves no F and V at all.
+    doubling_time, halving_time : float or None
+        ln 2 / |growth rate|, in time units, for a positive and a negative growth rate.
+    reduction : float or None
+        1 - number / R0 of the baseline: the share removed, negative where the number rises.
+    below_one : bool
+    cost : float or None
+    case_mix : tuple of float or None
+        Share of each type at infection among new infections; None where it is not unique or there is no number.
+    warnings : tuple of str
+        What is to be said of this row alone.
+    """
+
+    name: str
+    label: str
+    parts: tuple[str, ...]
+    R0: float | None
+    no_R0: str | None
+    bounds: tuple[float, float] | None
+    growth_rate: float | None
+    doubling_time: float | None
+    halving_time: float | None
+    reduction: float | None
+    below_one: bool
+    cost: float | None
+    case_mix: Vector | None
+    note: str | None = None
+    warnings: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Comparison:
+    """Every intervention of a scenario beside the baseline: the result of `ngm.compare`.
+
+    `types` labels every `case_mix`. `interventions` come in the order of the file, combinations after them.
+    """
+
+    title: str
+    time_unit: str
+    digest: str
+    types: tuple[str, ...]
+    baseline: Compared
+    interventions: tuple[Compared, ...]
+    warnings: tuple[str, ...]
+
+    def by_number(self) -> tuple[Compared, ...]:
+        """Return the interventions, the smallest number first; those without a number come last."""
+        return tuple(sorted(self.interventions, key=lambda row: (row.R0 is None, row.R0 or 0.0)))
+
+    def to_json(self) -> dict[str, Any]:
+        """Return the object that `compare --json` prints."""
+        base = self.baseline
+        return {
+            "baseline": {"R0": base.R0, "no_R0": base.no_R0, "growth_rate": base.growth_rate},
+            "interventions": [
+                {
+                    "name": row.name,
+                    "R0": row.R0,
+                    "no_R0": row.no_R0,
+                    "growth_rate": row.growth_rate,
+                    "reduction": row.reduction,
+                    "below_one": row.below_one,
+                    "cost": row.cost,
+                }
+                for row in self.interventions
+            ],
+            "warnings": list(self.warnings),
+        }
+
+    def to_frame(self) -> pandas.DataFrame:
+        """Return one row an intervention, the baseline first."""
+        import pandas
+
+        return pandas.DataFrame(
+            [
+                {
+                    "intervention": row.name,
+                    "number": row.R0,
+                    "what": row.label,
+                    "reduction": row.reduction,
+                    "below_one": row.below_one,
+                    "growth_rate": row.growth_rate,
+                    "doubling_time": row.doubling_time,
+                    "halving_time": row.halving_time,
+                    "cost": row.cost,
+                    "why_none": row.no_R0,
+                }
+                for row in (self.baseline, *self.interventions)
+            ]
+        )
+
+    def mix_frame(self) -> pandas.DataFrame:
+        """Return the share of each type among new infections: a row a type, a column the baseline or an intervention."""
+        import pandas
+
+        rows = (self.baseline, *self.interventions)
+        return pandas.DataFrame(
+            {row.name: row.case_mix for row in rows if row.case_mix is not None},
+            index=pandas.Index(list(self.types), name="type"),
+        )
+
+    def _repr_html_(self) -> str:
+        return str(self.to_frame().to_html(escape=True))
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Strength:
+    """How much of an intervention is needed: the result of `ngm.strength_needed`.
+
+    Attributes
+    ----------
+    target : float
+        The number to be reached.
+    strength : float or None
+        The least strength in [0, 1] from which on the number stays at or below the target; None where full strength
+        does not reach it (`unattainable`), or where the number cannot be computed on the way (`why`).
+    unattainable : bool
+    R0 : float or None
+        The number without the intervention.
+    at_full : float or None
+        The control reproduction number at full strength.
+    lowest, lowest_at : float or None
+        The least number met among the strengths tried, and where.
+    monotone : bool
+        Whether the number falls all the way among the strengths tried.
+    curve : tuple of (strength, number or None)
+        The strengths tried, in order.
+    """
+
+    title: str
+    digest: str
+    name: str
+    target: float
+    strength: float | None
+    unattainable: bool
+    R0: float | None
+    at_full: float | None
+    lowest: float | None
+    lowest_at: float | None
+    monotone: bool
+    why: str | None
+    curve: tuple[tuple[float, float | None], ...]
+    warnings: tuple[str, ...] = ()
+    label: str = CONTROL_LABEL
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Coverage:
+    """The coverage that a vaccine needs in chosen groups: the result of `ngm.coverage_needed`.
+
+    Attributes
+    ----------
+    groups, types : tuple of str
+        Who is vaccinated, and the types at infection that this acts on.
+    kind : str
+        "leaky" or "all-or-nothing". The threshold is the same, the size of an epidemic above it is not.
+    efficacy : float
+        Against infection and onward spread together: 1 - (1 - a)(1 - b). `lasting` is the share of coverage that
+        protects where protection wanes, else 1.
+    T, critical_effort : float or None
+        Type-reproduction number of the types (relative to the target), and the share of their infections to prevent.
+    coverage : float or None
+        Share of the groups to be vaccinated, the same in each; None where it would exceed 1 (`unattainable`) or where
+        there is no T (`why`).
+    required : float or None
+        critical_effort / (efficacy * lasting), above 1 where that is impossible.
+    at_full : float or None
+        The control reproduction number with everybody in the groups vaccinated.
+    """
+
+    title: str
+    digest: str
+    groups: tuple[str, ...]
+    types: tuple[str, ...]
+    kind: str
+    efficacy: float
+    lasting: float
+    target: float
+    R0: float | None
+    T: float | None
+    critical_effort: float | None
+    coverage: float | None
+    required: float | None
+    unattainable: bool
+    at_full: float | None
+    why: str | None
+    warnings: tuple[str, ...] = ()
+    label: str = CONTROL_LABEL
