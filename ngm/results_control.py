@@ -189,16 +189,17 @@ class Coverage:
         Who is vaccinated, and the types at infection that this acts on.
     kind : str
         "leaky" or "all-or-nothing". The threshold is the same, the size of an epidemic above it is not.
-    efficacy : float
-        Against infection and onward spread together: 1 - (1 - a)(1 - b). `lasting` is the share of coverage that
-        protects where protection wanes, else 1.
+    efficacies : tuple of float
+        Of each group, against infection and onward spread together: 1 - (1 - a)(1 - b). `lasting` is the share of
+        coverage that protects where protection wanes, else 1.
     T, critical_effort : float or None
         Type-reproduction number of the types (relative to the target), and the share of their infections to prevent.
     coverage : float or None
         Share of the groups to be vaccinated, the same in each; None where it would exceed 1 (`unattainable`) or where
         there is no T (`why`).
     required : float or None
-        critical_effort / (efficacy * lasting), above 1 where that is impossible.
+        critical_effort / (efficacy * lasting), above 1 where that is impossible; None where efficacies differ and full
+        coverage is not enough.
     at_full : float or None
         The control reproduction number with everybody in the groups vaccinated.
     """
@@ -208,7 +209,7 @@ class Coverage:
     groups: tuple[str, ...]
     types: tuple[str, ...]
     kind: str
-    efficacy: float
+    efficacies: Vector
     lasting: float
     target: float
     R0: float | None
