@@ -1,4 +1,4 @@
-"""Matrix files: CSV, square (with or without labels) or long (from, to, value).
+"""CSV: matrices, square (with or without labels) or long (from, to, value), and values by group.
 
 Separated by commas, semicolons or tabs. Labels are matched to the groups of a dimension in any order; whatever is
 unknown, missing, doubled, negative or no number is refused with its line and column.
@@ -11,21 +11,37 @@ import io
 from collections.abc import Sequence
 from decimal import Decimal, InvalidOperation
 from pathlib import Path
+from typing import Literal
 
-__all__ = ["LARGEST_MATRIX_FILE", "MatrixFileError", "read_matrix_file", "table_of"]
+__all__ = [
+    "LARGEST_MATRIX_FILE",
+    "LONG",
+    "Block",
+    "Form",
+    "MatrixFileError",
+    "Rows",
+    "form_and_table",
+    "read_matrix_file",
+    "rows_of",
+    "table_of",
+    "values_of",
+]
 
 #: bytes in a matrix file
 LARGEST_MATRIX_FILE = 64_000_000
 _SEPARATORS = (",", ";", "\t")
-_LONG = ("from", "to", "value")
+#: The header of the long form, in any order and case.
+LONG = ("from", "to", "value")
 _LARGEST = Decimal("1e300")
 
 Rows = list[tuple[int, list[str]]]
 Block = tuple[tuple[Decimal, ...], ...]
+#: Square without labels, with labels of rows and columns, with a header row alone; or long.
+Form = Literal["bare", "labelled", "header", "long"]
 
 
 class MatrixFileError(Exception):
-    """A matrix file cannot be taken; the message says where in the file, what, and what would be right."""
+    """A table cannot be taken; the message says where in the file, what, and what would be right."""
 
 
 def read_matrix_file(folder: str | None, file: str, groups: Sequence[str]) -> Block:
@@ -83,38 +99,115 @@ def _text(folder: str | None, file: str) -> str:
 
 def table_of(text: str, groups: Sequence[str]) -> Block:
     """Return the square table that the text of a CSV file holds, in the order of `groups`."""
-    rows = _rows(text)
-    if not rows:
-        raise MatrixFileError("the file is empty.")
+    return form_and_table(rows_of(text), groups)[1]
+
+
+def form_and_table(rows: Rows, groups: Sequence[str]) -> tuple[Form, Block]:
+    """Return how the table is written, and the table in the order of `groups`."""
     size = len(groups)
     widths = {len(cells) for _, cells in rows}
     first = [cell.strip() for cell in rows[0][1]]
-    if sorted(cell.lower() for cell in first) == sorted(_LONG):
-        order = [[cell.lower() for cell in first].index(name) for name in _LONG]
-        return _long(rows[1:], order, groups)
+    if sorted(cell.lower() for cell in first) == sorted(LONG):
+        order = [[cell.lower() for cell in first].index(name) for name in LONG]
+        return "long", _long(rows[1:], order, groups)
     if len(rows) == size and widths == {size}:
         if size > 1 or not _is_label(first[0], groups):
-            return _bare(rows)
+            return "bare", _bare(rows)
     elif len(rows) == size + 1:
         if widths == {size + 1}:
-            return _labelled(rows[0][1][1:], rows[1:], groups)
+            return "labelled", _labelled(rows[0][1][1:], rows[1:], groups)
         if len(first) == size and {len(cells) for _, cells in rows[1:]} == {size + 1}:
-            return _labelled(rows[0][1], rows[1:], groups)
+            return "labelled", _labelled(rows[0][1], rows[1:], groups)
         if widths == {size}:
-            return _header_only(rows, groups)
+            return "header", _header_only(rows, groups)
     elif widths == {3} and _is_label(first[0], groups) and _is_label(first[1], groups):
-        return _long(rows, [0, 1, 2], groups)
+        return "long", _long(rows, [0, 1, 2], groups)
     raise MatrixFileError(_shape(rows, groups))
 
 
-def _rows(text: str) -> Rows:
+def rows_of(text: str) -> Rows:
+    """Return the lines of a CSV text that hold something, each with its number and its cells; at least one."""
+    # a text that was pasted or uploaded may still have the mark that spreadsheets put first
+    text = text.removeprefix("\ufeff")
     head = next((line for line in text.splitlines() if line.strip()), "")
     separator = max(_SEPARATORS, key=head.count)
     reader = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
     try:
-        return [(reader.line_num, cells) for cells in reader if any(cell.strip() for cell in cells)]
+        rows = [(reader.line_num, cells) for cells in reader if any(cell.strip() for cell in cells)]
     except csv.Error as error:
         raise MatrixFileError(f"line {reader.line_num} cannot be read as CSV: {error}.") from None
+    if not rows:
+        raise MatrixFileError("the file is empty.")
+    return rows
+
+
+def values_of(text: str, groups: Sequence[str], *, signed: bool = False) -> tuple[Decimal, ...]:
+    """Return the values by group that the text of a CSV file holds, in the order of `groups`.
+
+    Lines of group, value (with a header or without), or a line of groups above a line of values (each with a cell in
+    front, or without). Values always go with labels: a bare list could be in another order.
+
+    Parameters
+    ----------
+    text : str
+        CSV; a number is written with a point.
+    groups : sequence of str
+        Labels of the dimension.
+    signed : bool
+        Whether values may be negative.
+
+    Raises
+    ------
+    MatrixFileError
+        Not such a table; a group unknown, missing or doubled; a cell that is no number, or negative.
+    """
+    known = {group: index for index, group in enumerate(groups)}
+    found: dict[int, Decimal] = {}
+    for label_at, label, value_at, cell in _labelled_values(rows_of(text), groups):
+        name = label if label in known else label.strip()
+        group = known.get(name)
+        if group is None:
+            raise MatrixFileError(f"{label_at}: '{_cut(name)}' is not a group. The groups: {_some(groups)}.")
+        if group in found:
+            raise MatrixFileError(f"{label_at}: '{_cut(name)}' stands twice.")
+        trouble = _trouble(cell, signed=signed)
+        if trouble:
+            raise MatrixFileError(f"{value_at}: {trouble}")
+        found[group] = Decimal(cell)
+    missing = [group for group, index in known.items() if index not in found]
+    if missing:
+        raise MatrixFileError(f"there is no value for {_some(missing)}.")
+    return tuple(found[index] for index in range(len(groups)))
+
+
+def _labelled_values(rows: Rows, groups: Sequence[str]) -> list[tuple[str, str, str, str]]:
+    """Return (place of the label, label, place of the value, value), in whichever way the file is laid out."""
+    line, first = rows[0]
+    width = len(first)
+    for other, cells in rows:
+        if len(cells) != width:
+            raise MatrixFileError(f"line {other} has {len(cells)} cells, line {line} has {width}.")
+    # Two columns are lines of group, value, unless both cells of the first of two lines are labels already, or the
+    # last one is the label of the only group.
+    beside = len(rows) == 2 and all(_is_label(cell, groups) for cell in first[-len(groups) :])
+    if width == 2 and not beside:
+        header = not _is_label(first[0], groups) and bool(_trouble(first[1], signed=True))
+        label, value = (1, 0) if header and first[0].strip().lower() == "value" else (0, 1)
+        return [
+            (f"line {n}, column {label + 1}", cells[label], f"line {n}, column {value + 1}", cells[value])
+            for n, cells in rows[1 if header else 0 :]
+        ]
+    if len(rows) == 2 and (width > 2 or beside):
+        below, cells = rows[1]
+        labels_start = _is_label(first[0], groups) or (not beside and not _trouble(cells[0], signed=True))
+        return [
+            (f"line {line}, column {k + 1}", first[k], f"line {below}, column {k + 1}", cells[k])
+            for k in range(0 if labels_start else 1, width)
+        ]
+    raise MatrixFileError(
+        f"{len(rows)} line{'' if len(rows) == 1 else 's'} of {width} cell{'' if width == 1 else 's'}. Expected lines of "
+        f"group, value for {_some(groups)}, or a line of groups above a line of values."
+    )
 
 
 def _is_label(cell: str, groups: Sequence[str]) -> bool:
@@ -216,7 +309,7 @@ def _numbers(cells: list[str], line: int, first: int) -> tuple[Decimal, ...]:
     raise AssertionError(cells)
 
 
-def _trouble(cell: str) -> str:
+def _trouble(cell: str, *, signed: bool = False) -> str:
     text = _cut(cell.strip())
     if not text:
         return "the cell is empty. Write 0 where there is none."
@@ -228,9 +321,9 @@ def _trouble(cell: str) -> str:
         comma = cell.strip().replace(",", ".", 1)
         advice = f" Write a decimal with a point: {_cut(comma)}." if "," in cell else ""
         return f"'{text}' is not a number.{advice}"
-    if value < 0:
+    if value < 0 and not signed:
         return f"{text} is negative. Entries are positive or zero."
-    return f"{text} is too large. Numbers stay below 1e300 in size." if value >= _LARGEST else ""
+    return f"{text} is too large. Numbers stay below 1e300 in size." if abs(value) >= _LARGEST else ""
 
 
 def _cut(text: str) -> str:
