@@ -48,6 +48,9 @@ MOST_PROBLEMS = 10
 MOST_TYPES = 12
 MOST_LATEX = 12_000
 
+#: A table of numbers may have this many types: all of its cells go to the browser each time.
+MOST_SHOWN = 100
+
 
 @dataclass(frozen=True, slots=True)
 class Shown:
@@ -249,7 +252,10 @@ def display(body: str) -> None:
 
 
 def numbers_table(matrix: Matrix, types: Sequence[str], write: Callable[[float | None], str], name: str) -> None:
-    """Show a matrix of numbers with its types on both sides."""
+    """Show a matrix of numbers with its types on both sides, or say where to find it where it is large."""
+    if len(types) > MOST_SHOWN:
+        st.caption(f"{name} has {len(types)} types; the command line prints it: python -m ngm solve FILE --json")
+        return
     import pandas
 
     frame = pandas.DataFrame(

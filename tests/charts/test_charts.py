@@ -94,6 +94,11 @@ def test_efforts_name_what_is_not_enough():
     }
 
 
+def test_efforts_without_a_bar_are_not_drawn():
+    nothing = replace(CONTROL, type_reproduction=CONTROL.type_reproduction[1:], state_reproduction=())
+    assert bars.efforts(nothing) is None
+
+
 @pytest.mark.parametrize(("dark", "ink"), [(False, LIGHT), (True, DARK)])
 def test_letters_take_the_ink_of_the_theme(dark, ink):
     for chart in (bars.stable_distribution(VECTOR_BORNE, dark=dark), eigenvalues(VECTOR_BORNE, dark=dark)):

@@ -89,3 +89,18 @@ def test_classes_are_boxes_and_the_largest_is_said():
     assert graph.dot.count("subgraph cluster_") == 2
     assert "class 1, R0 = 2 (the largest)" in graph.dot
     assert "class 2, R0 = 0.5" in graph.dot
+
+
+def test_a_diagram_can_run_from_top_to_bottom():
+    stages = [Stage("S", "", False)]
+    assert 'rankdir="LR"' in flow_diagram(stages, []).dot
+    assert 'rankdir="TB"' in flow_diagram(stages, [], down=True).dot
+
+
+def test_a_flow_from_outside_has_its_words_there():
+    graph = flow_diagram(
+        [Stage("S", "", False)], [Arrow("", "S", "transition", "b", "Birth"), Arrow("", "", "transition", "x")]
+    )
+    assert re.search(r'o0 \[.*label="Birth"', graph.dot)
+    assert "o0 -> n0" in graph.dot
+    assert graph.dot.count("->") == 1  # a flow from nowhere to nowhere is no arrow yet

@@ -116,6 +116,16 @@ def test_classes_of_a_reducible_model():
     assert sorted(table["R0"]) == ["0.5", "2.5"]
 
 
+def test_the_class_that_grows_fastest_is_named_where_it_is_not_the_one_with_the_largest_R0():
+    # By hand: A has R0 = 0.4/0.1 = 4 and grows by 0.3; B has 3/2 = 1.5 and grows by 1.
+    text = REDUCIBLE.replace("value = 0.5", "value = 0.4").replace("value = 0.1", "value = 3")
+    text = text.replace("g = { value = 0.2 }", "g = { value = 0.1 }\nh = { value = 2 }").replace("g * J", "h * J")
+    at = start(state(text), "numbers")
+    assert metrics(at)["R0: basic reproduction number"] == "4"
+    assert "grows fastest (J)" in words(at).replace("\\", "")
+    assert "grows fastest" not in words(start(STATES["reducible"], "numbers"))
+
+
 def test_derivation_shows_closed_form_conditions_and_flows():
     at = start(STATES["loaded"], "derivation")
     said = words(at)
