@@ -7,8 +7,8 @@ from itertools import combinations
 
 import numpy as np
 
+from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
-from ngm.analysis.solve import Numbers, decided_numbers
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import (
     ReproductionNumber,

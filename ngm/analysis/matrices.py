@@ -74,9 +74,10 @@ def population(template: Template, matrix: Matrix, evaluator: Evaluator) -> Arra
     return flat if matrix.within is None else flat.reshape(template.space.size(matrix.within), -1)
 
 
-def balanced(template: Template, algebra: Algebra, state: Mapping[str, Array] | None) -> dict[str, Array]:
+def balanced(
+    template: Template, algebra: Algebra, plain: Mapping[str, Array], state: Mapping[str, Array] | None
+) -> dict[str, Array]:
     """Return the matrices, C' in place of C where they are reciprocal; without a state those that need it are left out."""
-    plain = tables(template, algebra)
     out: dict[str, Array] = {}
     for name, matrix in template.scenario.matrices.items():
         if not matrix.reciprocal:

@@ -12,6 +12,8 @@ from typing import Any
 
 import numpy as np
 
+from ngm.analysis.large import block_slopes, scaled
+from ngm.analysis.large_state import is_large_stable
 from ngm.analysis.matrices import as_floats, balanced, changed, reciprocity_warnings, tables
 from ngm.analysis.state import InfectionFree, infection_free
 from ngm.derivation.evaluate import FLOATS, Algebra, Evaluator
@@ -21,6 +23,7 @@ from ngm.derivation.space import Array
 from ngm.derivation.template import Template, flow_name
 from ngm.engine.arithmetic import BALL_ARITHMETIC
 from ngm.engine.balls import contains_zero, is_balls, is_finite
+from ngm.engine.blocks import BlockMatrix
 from ngm.engine.rest import is_stable
 from ngm.errors import DerivationError, Problem
 from ngm.expression.tree import names
@@ -32,6 +35,15 @@ __all__ = ["MOST_EXACT", "MOST_WRITTEN", "Point"]
 #: Types up to which numbers are enclosed exactly, and matrices are written out in results.
 MOST_EXACT = 500
 MOST_WRITTEN = 500
+
+
+@dataclass(frozen=True)
+class LargeSlopes:
+    """F, losses and gains as block matrices: V = losses - gains."""
+
+    F: BlockMatrix
+    losses: BlockMatrix
+    gains: BlockMatrix
 
 
 @dataclass
@@ -71,6 +83,11 @@ class Point:
         return tables(self.template, FLOATS)
 
     @cached_property
+    def own_tables(self) -> dict[str, Array]:
+        """The matrices as the file gives them, in the arithmetic in use."""
+        return tables(self.template, self.algebra) if self.exact else self.plain_tables
+
+    @cached_property
     def _baseline(self) -> Point:
         return self if self.intervention is None else Point(self.original)
 
@@ -78,8 +95,10 @@ class Point:
     def infection_free(self) -> InfectionFree:
         """The infection-free state at the values in force."""
         if self.intervention is None:
-            return infection_free(self.template, self.algebra, balanced(self.template, self.algebra, None))
-        early = balanced(self._baseline.template, self.algebra, None)
+            return infection_free(
+                self.template, self.algebra, balanced(self.template, self.algebra, self.own_tables, None)
+            )
+        early = balanced(self._baseline.template, self.algebra, self.own_tables, None)
         late = [m for m in self.scenario.matrices if m not in early]
         if late:
             early = self._baseline.matrices
@@ -96,7 +115,7 @@ class Point:
     def matrices(self) -> dict[str, Array]:
         """The matrices in force (balanced where reciprocal, changed by the intervention)."""
         if self.intervention is None:
-            return balanced(self.template, self.algebra, self.state)
+            return balanced(self.template, self.algebra, self.own_tables, self.state)
         return changed(self.template, self.algebra, self._baseline.matrices, self.intervention)
 
     # --- F and V ------------------------------------------------------------------------------------------------------
@@ -119,6 +138,34 @@ class Point:
         if not (is_finite(F) and is_finite(V)):
             raise self._no_slope()
         return F, V
+
+    @cached_property
+    def blocks(self) -> LargeSlopes:
+        """F, losses and gains of a large model as block matrices."""
+        F, losses, gains = block_slopes(self.template, self.evaluator, self.template.arrows, self.template.infected)
+        if self.intervention is not None:
+            F = scaled(F, *self._scales(self.intervention))
+        return LargeSlopes(F, losses, gains)
+
+    def _scales(self, intervention: Intervention) -> tuple[dict[int, Array], dict[int, Array]]:
+        """Return what multiplies the rows and the columns of F under an intervention, by infected compartment."""
+        rows: dict[int, Array] = {}
+        columns: dict[int, Array] = {}
+        space = self.template.space
+        for change in intervention.changes:
+            if change.what not in ("susceptibility", "infectivity"):
+                continue
+            by = self.template.by(change.name)
+            part = self.template.infected.index(change.name)
+            left = 1 - float(self.template.evaluator(FLOATS, {}).value(change.amount.tree).ravel()[0])
+            chosen = [
+                left if all(g in change.groups.get(d, (g,)) for d, g in zip(by, groups, strict=True)) else 1.0
+                for groups in self.scenario.copies(by)
+            ]
+            values = space.spread(np.array(chosen).reshape(-1, 1), by)[..., 0]
+            into = rows if change.what == "susceptibility" else columns
+            into[part] = into[part] * values if part in into else values
+        return rows, columns
 
     def _scaled(self, F: Array, intervention: Intervention) -> Array:
         """Return F with rows scaled by susceptibility and columns by infectivity."""
@@ -191,6 +238,9 @@ class Point:
 
     def is_stable_without_infection(self) -> bool | None:
         """Return whether the uninfected block is stable; None where it is neutral (an eigenvalue 0)."""
+        moving = tuple(name for name in self.template.uninfected if name in self.template.depended_on)
+        if not self.exact and len(self.template.items_of(moving)) > MOST_EXACT:
+            return is_large_stable(self.template, self.evaluator, self.template.arrows, moving)
         slope = self.uninfected_slope
         if is_stable(slope):
             return True

@@ -6,110 +6,21 @@ from typing import Any
 
 import numpy as np
 
-from ngm.analysis.point import MOST_WRITTEN, Point
-from ngm.derivation.conditions import check_arrivals, check_exits, fifth_condition, first_conditions
+from ngm.analysis.numbers import Numbers, decided_numbers
+from ngm.analysis.point import MOST_WRITTEN
+from ngm.derivation.conditions import fifth_condition, first_conditions
 from ngm.derivation.terms import entry_terms
-from ngm.engine.balls import PRECISION, nearest, outward, precision, to_floats
-from ngm.engine.enclosure import MMatrix, inverse, m_matrix
-from ngm.engine.growth import class_growth_rate, doubling_time, growth_rate
-from ngm.engine.linear import matmul, possible
-from ngm.engine.spectrum import Spectrum, spectrum
+from ngm.engine.balls import nearest, outward, precision, to_floats
+from ngm.engine.growth import doubling_time
+from ngm.engine.spectrum import Spectrum
 from ngm.results import Class, Matrix, Solution, Structure, Symbolic, Vector
-from ngm.scenario.model import Intervention, Scenario
+from ngm.scenario.model import Scenario
 from ngm.worker import LIMIT, WorkerFailed, symbols, warm
 
-__all__ = ["Numbers", "decided_numbers", "solve"]
+__all__ = ["nearest_of", "solve"]
 
-#: Bits tried in turn until every zero, sign and tie is decided; a tie that outlasts them all is a tie.
-PRECISIONS = (PRECISION, 4 * PRECISION, 16 * PRECISION)
-#: Types up to which more bits are tried.
-MOST_REFINED = 60
 #: Types at infection up to which the eigenvalues of K are listed.
 MOST_EIGENVALUES = 500
-
-
-class Numbers:
-    """F, V, K and R0 of one scenario at its values, as arrays of the engine, computed with `bits` bits."""
-
-    bits = PRECISION
-
-    def __init__(self, scenario: Scenario, intervention: Intervention | None = None) -> None:
-        self.scenario = scenario
-        self.point = Point(scenario, intervention)
-        template = self.template = self.point.template
-        floats = self.point.plain_tables
-        check_arrivals(template, floats)
-        check_exits(template)
-        self.plain_matrices = floats
-        self.F, self.V = self.point.F_and_V
-        self.at = np.array(template.at_infection, dtype=int)
-        self.no_R0: str | None = None
-        self.broken: MMatrix | None = None
-        self.K_large: Any = None
-        self.K: Any = None
-        self.spectrum: Spectrum | None = None
-        self._reproduce()
-
-    @property
-    def decided(self) -> bool:
-        """False where more bits could change the classes, the vectors, or whether V is an M-matrix."""
-        if self.broken is not None:
-            return self.broken.decided
-        return self.spectrum is None or self.spectrum.decided
-
-    def _reproduce(self) -> None:
-        types = self.template.types
-        negative = [(i, j) for i, j in zip(*np.nonzero(possible(self.F)), strict=True) if self.F[i, j] < 0]
-        if negative:
-            i, j = negative[0]
-            self.no_R0 = (
-                f"F has a negative entry: {types[j]} takes away new infections of {types[i]}. "
-                "A rate of new infections must not fall when an infected compartment grows."
-            )
-            return
-        verdict = m_matrix(self.V)
-        if verdict.verdict != "yes":
-            self.broken = verdict
-            self.no_R0 = self._why_none(verdict)
-            return
-        self.K_large = matmul(self.F, inverse(self.V))
-        if self.point.exact is False:
-            self.K_large = np.maximum(self.K_large, 0.0)
-        self.K = self.K_large[np.ix_(self.at, self.at)]
-        if len(self.at):
-            self.spectrum = spectrum(self.K)
-
-    def _why_none(self, verdict: MMatrix) -> str:
-        types = self.template.types
-        if verdict.verdict == "positive off-diagonal":
-            assert verdict.entry is not None
-            i, j = verdict.entry
-            return (
-                f"V has a positive off-diagonal entry: members leave {types[i]} the faster, the more there are in {types[j]}. "
-                "F V^-1 is then no next-generation matrix."
-            )
-        members = [] if verdict.members is None else [types[int(k)] for k in verdict.members]
-        named = ", ".join(members[:6]) + (", …" if len(members) > 6 else "")
-        if verdict.verdict == "singular":
-            return (
-                f"V is singular at these values: of {named} nobody is lost, so the time spent there has no finite mean. "
-                "Check the rates out of it."
-            )
-        return (
-            f"V is no M-matrix at these values: {named} grows without any transmission (what arises there exceeds what "
-            "leaves), so the infection-free state is unstable by itself."
-        )
-
-
-def decided_numbers(scenario: Scenario, intervention: Intervention | None = None) -> Numbers:
-    """Return the numbers, computed with as many bits as it takes to decide every zero, sign and tie, up to a limit."""
-    for bits in PRECISIONS:
-        with precision(bits):
-            found = Numbers(scenario, intervention)
-        found.bits = bits
-        if found.decided or len(found.template.types) > MOST_REFINED:
-            break
-    return found
 
 
 def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
@@ -146,8 +57,7 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
 
 def _numbers(found: Numbers) -> dict[str, Any]:
     scenario, template, point = found.scenario, found.template, found.point
-    F, V = found.F, found.V
-    small = len(template.types) <= MOST_WRITTEN
+    small = found.point.exact and len(template.types) <= MOST_WRITTEN
     warnings = [*scenario.warnings, *point.infection_free.warnings, *point.reciprocity_warnings()]
     if not small:
         warnings.append(
@@ -155,7 +65,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
         )
     if len(found.at) == 0:
         warnings.append("No flow makes new infections near the infection-free state: R0 is 0.")
-    r = nearest_of(growth_rate(F, V))
+    r = found.growth
     doubling = doubling_time(r)
     spec = found.spectrum
     R0: float | None = None
@@ -198,8 +108,8 @@ def _numbers(found: Numbers) -> dict[str, Any]:
         },
         "infection_free": _state(found),
         "residual": point.infection_free.residual,
-        "F": _matrix(F) if small else None,
-        "V": _matrix(V) if small else None,
+        "F": _matrix(found.F) if small else None,
+        "V": _matrix(found.V) if small else None,
         "K_large": _matrix(found.K_large) if small and found.K_large is not None else None,
         "types_at_infection": tuple(template.types[k] for k in found.at),
         "K": _matrix(found.K) if small and found.K is not None else None,
@@ -232,23 +142,21 @@ def _conditions(found: Numbers, warnings: list[str]) -> list[Any]:
 def _structure(found: Numbers, spec: Spectrum) -> Structure:
     types = [found.template.types[k] for k in found.at]
     out = []
-    for members, root, period in zip(spec.classes, spec.roots, spec.periods, strict=True):
-        rate = None
-        if period is not None:
-            rate = class_growth_rate(found.F, found.V, found.at[members])
+    for number, (members, root, period) in enumerate(zip(spec.classes, spec.roots, spec.periods, strict=True)):
+        rate = None if period is None else found.class_growth(number)
         out.append(
             Class(
                 tuple(types[int(k)] for k in members),
                 nearest(root),
                 period,
-                None if rate is None else nearest_of(rate),
+                rate,
             )
         )
     return Structure(spec.irreducible, spec.period, tuple(out))
 
 
 def _symbols(found: Numbers, limit: float) -> tuple[Symbolic, list[str]]:
-    if limit <= 0:
+    if limit <= 0 or not found.template.is_written_out:
         return Symbolic(), []
     point, template = found.point, found.template
     values: dict[str, float] = {}

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from ngm.analysis.large_state import find_large_rest
 from ngm.analysis.matrices import as_floats
 from ngm.derivation.evaluate import FLOATS, Algebra
 from ngm.derivation.expand import net_flow
@@ -20,6 +21,8 @@ from ngm.expression.tree import Apply, walk
 
 __all__ = ["InfectionFree", "infection_free"]
 
+#: Unknowns up to which the equations at rest are written out as one matrix, where numbers are not enclosed.
+MOST_DENSE = 400
 #: Net flow over gross flow up to which a given state counts as at rest.
 AT_REST = 1e-9
 
@@ -66,7 +69,10 @@ class _Finder:
         if exact:
             floats = RestSystem(template, FLOATS, {name: as_floats(table) for name, table in self.matrices.items()})
         try:
-            found = find_rest(floats, system if exact else None, len(system.labels))
+            if not exact and len(system.labels) > MOST_DENSE:
+                found = find_large_rest(system)
+            else:
+                found = find_rest(floats, system if exact else None, len(system.labels))
         except FreeStates as free:
             raise self._left_free(system, free.members) from None
         x = self._choose(system, found)

@@ -36,24 +36,38 @@ def _trial_states(template: Template, seed: int) -> Iterator[dict[str, Array]]:
         yield state
 
 
-def _evaluator(template: Template, state: Mapping[str, Array], matrices: Mapping[str, Array]) -> Evaluator:
-    return template.evaluator(FLOATS, state, matrices=matrices)
+class _Trials:
+    """Evaluates rates at trial states; parameters are evaluated once."""
+
+    def __init__(self, template: Template, matrices: Mapping[str, Array]) -> None:
+        self.template, self.matrices = template, matrices
+        base = template.evaluator(FLOATS, {}, matrices=matrices)
+        self.parameters = {name: base.name(name) for name in template.scenario.parameters}
+
+    def at(self, state: Mapping[str, Array]) -> Evaluator:
+        """Return an evaluator at a state."""
+        return self.template.evaluator(FLOATS, state, names=self.parameters, matrices=self.matrices)
+
+    def rate(self, state: Mapping[str, Array], tree: Node, by: tuple[str, ...]) -> Array:
+        """Return the rate of a flow at a state, copy by copy."""
+        return self.template.space.flatten(self.at(state).value(tree), by)[:, 0]
 
 
 def first_conditions(template: Template, matrices: Mapping[str, Array]) -> list[Condition]:
     """Return A1, A2, A3 and A4. `matrices` as doubles. A4 is refused before (`check_arrivals`); A3 by the reader."""
     with np.errstate(all="ignore"):
+        trials = _Trials(template, matrices)
         return [
-            _rates_not_negative(template, matrices),
-            _nothing_leaves_empty(template, matrices),
+            _rates_not_negative(template, trials),
+            _nothing_leaves_empty(template, trials),
             Condition("A3", True, "Every transmission flow arrives in an infected compartment."),
             Condition("A4", True, "With nobody infected, every flow into an infected compartment is 0."),
         ]
 
 
-def _rates_not_negative(template: Template, matrices: Mapping[str, Array]) -> Condition:
+def _rates_not_negative(template: Template, trials: _Trials) -> Condition:
     scenario = template.scenario
-    evaluator = _evaluator(template, {}, matrices)
+    evaluator = trials.at({})
     doubtful = [
         (number, flow)
         for number, flow in enumerate(scenario.flows, 1)
@@ -63,7 +77,7 @@ def _rates_not_negative(template: Template, matrices: Mapping[str, Array]) -> Co
         return Condition("A1", True, "No rate can be negative: each is built from non-negative parts.")
     negative = set()
     for state in _trial_states(template, 1):
-        values = _evaluator(template, state, matrices)
+        values = trials.at(state)
         for number, flow in doubtful:
             value = values.value(flow.rate.tree)
             if np.any(value < -1e-12 * max(1e-300, float(np.max(np.abs(value))))):
@@ -121,7 +135,7 @@ def _expanded(template: Template, here: set[str]) -> set[str]:
     return seen
 
 
-def _nothing_leaves_empty(template: Template, matrices: Mapping[str, Array]) -> Condition:
+def _nothing_leaves_empty(template: Template, trials: _Trials) -> Condition:
     scenario, space = template.scenario, template.space
     broken = set()
     for trial, state in enumerate(_trial_states(template, 2)):
@@ -132,13 +146,13 @@ def _nothing_leaves_empty(template: Template, matrices: Mapping[str, Array]) -> 
                 continue
             arrow_by = template.arrows[number - 1].by
             own = space.index_of(template.by(flow.source), arrow_by)
-            full = _flow_rate(template, state, matrices, flow.rate.tree, arrow_by)
+            full = trials.rate(state, flow.rate.tree, arrow_by)
             for copy in {0, len(set(own.tolist())) - 1}:
                 emptied = dict(state)
                 flat = space.flatten(state[flow.source], template.by(flow.source)).copy()
                 flat[copy] = 1e-30 * float(np.max(np.abs(flat)))
                 emptied[flow.source] = space.spread(flat, template.by(flow.source))
-                rate = _flow_rate(template, emptied, matrices, flow.rate.tree, arrow_by)
+                rate = trials.rate(emptied, flow.rate.tree, arrow_by)
                 if np.any(np.abs(rate[own == copy]) > 1e-9 * float(np.max(np.abs(full)))):
                     broken.add(number)
     if broken:
@@ -149,12 +163,6 @@ def _nothing_leaves_empty(template: Template, matrices: Mapping[str, Array]) -> 
             f"{named} leaves a compartment even when it is empty: multiply the rate by the number in the compartment left.",
         )
     return Condition("A2", True, "Every flow out of a compartment is 0 when that compartment is empty.")
-
-
-def _flow_rate(
-    template: Template, state: Mapping[str, Array], matrices: Mapping[str, Array], tree: Node, by: tuple[str, ...]
-) -> Array:
-    return template.space.flatten(_evaluator(template, state, matrices).value(tree), by)[:, 0]
 
 
 def check_arrivals(template: Template, matrices: Mapping[str, Array]) -> None:
@@ -168,6 +176,7 @@ def check_arrivals(template: Template, matrices: Mapping[str, Array]) -> None:
     scenario = template.scenario
     walker = template.lineariser(set(template.infected), set(), template.definitions)
     problems = []
+    trials: _Trials | None = None
     for number, flow in enumerate(scenario.flows, 1):
         if flow.target not in template.infected:
             continue
@@ -175,11 +184,12 @@ def check_arrivals(template: Template, matrices: Mapping[str, Array]) -> None:
         rate = walker.at(flow.rate.tree, f"{name}, rate")
         if rate.is_zero:
             continue
+        trials = trials or _Trials(template, matrices)
         with np.errstate(all="ignore"):
             nothing = True
             for state in _trial_states(template, 3):
                 clear = {key: value * (key not in template.infected) for key, value in state.items()}
-                value = _evaluator(template, clear, matrices).value(flow.rate.tree)
+                value = trials.at(clear).value(flow.rate.tree)
                 if not np.all(np.abs(value) <= 1e-300):
                     nothing = False
                     break

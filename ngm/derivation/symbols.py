@@ -27,12 +27,8 @@ from ngm.expression.symbolic import symbol, text
 from ngm.results import Step, Symbolic
 from ngm.scenario.model import Scenario
 
-__all__ = ["MOST_TYPES_WRITTEN", "derive_symbols"]
+__all__ = ["derive_symbols"]
 
-#: Grouped models are written out copy by copy up to this many types.
-MOST_TYPES_WRITTEN = 12
-#: Plain models are written out up to this many.
-MOST_PLAIN_TYPES = 120
 #: Operations from which a part gets an abbreviation rather than being repeated.
 MOST_REPEATED = 20
 #: The longest text that is given for one formula.
@@ -58,9 +54,7 @@ def derive_symbols(
         Which side of each max or min is in force (1 or 0), over the space.
     """
     template = Template(scenario)
-    m = len(template.types)
-    grouped = any(template.by(name) for name in scenario.compartments)
-    if m == 0 or m > (MOST_TYPES_WRITTEN if grouped else MOST_PLAIN_TYPES):
+    if not template.is_written_out:
         return Symbolic()
     return _Derivation(template, state or {}, values or {}, branches or {}).run()
 

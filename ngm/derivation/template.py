@@ -31,7 +31,11 @@ from ngm.expression.tree import Add, Apply, Name, Node, Total, children, names
 from ngm.scenario.model import Flow, Scenario
 from ngm.scenario.values import converted
 
-__all__ = ["Arrow", "Template", "flow_name"]
+__all__ = ["MOST_GROUPED", "MOST_PLAIN", "Arrow", "Template", "flow_name"]
+
+#: Types up to which formulas are written out: of grouped models copy by copy, and of plain ones.
+MOST_GROUPED = 12
+MOST_PLAIN = 120
 
 
 @dataclass(frozen=True, slots=True)
@@ -329,17 +333,20 @@ class Template:
 
     def chain(self, terms: tuple[Term, ...], column: str, evaluator: Evaluator) -> Array | None:
         """Return the slope by the copies of `column`: an array over the space, last axis: those copies; None if zero."""
+        n = self.space.count(self.by(column))
+        eye: Array = np.empty((n, n), dtype=evaluator.algebra.dtype)
+        eye[...] = evaluator.algebra.number(Fraction(0))
+        np.fill_diagonal(eye, evaluator.algebra.number(Fraction(1)))
+        return self.along(terms, column, evaluator, self.space.spread(eye, self.by(column)))
+
+    def along(self, terms: tuple[Term, ...], column: str, evaluator: Evaluator, start: Array) -> Array | None:
+        """Return the slope along a deviation `start` of the copies of `column` (over the space); None where it is zero."""
         algebra = evaluator.algebra
-        by = self.by(column)
-        n = self.space.count(by)
         total: Array | None = None
         for term in terms:
             if term.column != column:
                 continue
-            eye: Array = np.empty((n, n), dtype=algebra.dtype)
-            eye[...] = algebra.number(Fraction(0))
-            np.fill_diagonal(eye, algebra.number(Fraction(1)))
-            array = self.space.spread(eye, by)
+            array = start
             for factor in reversed(term.factors):
                 if isinstance(factor, Applied):
                     array = evaluator.apply(factor.matrix, array, transposed=factor.transposed)
@@ -371,13 +378,6 @@ class Template:
         return evaluator
 
     @cached_property
-    def pattern(self) -> tuple[Array, Array]:
-        """F and V as True where an entry is not zero by structure."""
-        from ngm.derivation.expand import assemble
-
-        return assemble(self, self.pattern_evaluator)
-
-    @cached_property
     def pattern_matrices(self) -> dict[str, Array]:
         """Contact matrices count as positive everywhere, movement as positive off the diagonal."""
         moving = {movement.matrix for movement in self.scenario.movements}
@@ -390,7 +390,27 @@ class Template:
             out[name] = table if matrix.within is None else np.stack([table] * self.space.size(matrix.within))
         return out
 
+    @property
+    def is_written_out(self) -> bool:
+        """Whether the model is small enough for formulas copy by copy."""
+        grouped = any(c.by for c in self.scenario.compartments.values())
+        return 0 < len(self.types) <= (MOST_GROUPED if grouped else MOST_PLAIN)
+
     @cached_property
     def at_infection(self) -> tuple[int, ...]:
         """Rows of F that are not identically zero: the types at infection."""
-        return tuple(int(i) for i in np.flatnonzero(self.pattern[0].any(axis=1)))
+        evaluator, offsets = self.pattern_evaluator, self.offsets(self.infected)
+        infects = np.zeros(len(self.types), dtype=bool)
+        for arrow in self.arrows:
+            if not arrow.transmission or arrow.target is None:
+                continue
+            by = self.by(arrow.target)
+            lost = tuple(name for name in arrow.by if name not in by)
+            for column in {term.column for term in arrow.rate.terms} & set(self.infected):
+                everybody = np.ones((*self.space.shape(self.by(column)), 1), dtype=bool)
+                reached = self.along(arrow.rate.terms, column, evaluator, everybody)
+                if reached is not None:
+                    flat = self.space.flatten(evaluator.total(reached, lost), by)[:, 0]
+                    first = offsets[arrow.target]
+                    infects[first : first + len(flat)] |= flat
+        return tuple(int(i) for i in np.flatnonzero(infects))

@@ -1,0 +1,191 @@
+"""F, V, K and R0 of one scenario at its values, with or without an intervention: what every verb reads from."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from ngm.analysis.large import difference, faults, stray_losses
+from ngm.analysis.point import Point
+from ngm.derivation.conditions import check_arrivals, check_exits
+from ngm.derivation.expand import thumbnail
+from ngm.derivation.template import Template
+from ngm.engine.balls import PRECISION, interval, nearest, precision
+from ngm.engine.enclosure import MMatrix, inverse, m_matrix
+from ngm.engine.growth import class_growth_rate, growth_rate
+from ngm.engine.large import NextGeneration
+from ngm.engine.linear import matmul, possible
+from ngm.engine.spectrum import Spectrum, spectrum
+from ngm.engine.transitions import SingularTransitions
+from ngm.scenario.model import Intervention, Scenario
+
+__all__ = ["Numbers", "decided_numbers"]
+
+#: Bits tried in turn until every zero, sign and tie is decided; a tie that outlasts them all is a tie.
+PRECISIONS = (PRECISION, 4 * PRECISION, 16 * PRECISION)
+#: Types up to which more bits are tried.
+MOST_REFINED = 60
+
+
+class Numbers:
+    """F, V, K and R0 of one scenario at its values, as arrays of the engine, computed with `bits` bits."""
+
+    bits = PRECISION
+
+    def __init__(self, scenario: Scenario, intervention: Intervention | None = None) -> None:
+        self.scenario = scenario
+        self.point = Point(scenario, intervention)
+        template = self.template = self.point.template
+        floats = self.point.plain_tables
+        check_arrivals(template, floats)
+        check_exits(template if self.point.exact else Template(thumbnail(scenario)))
+        self.plain_matrices = floats
+        self.at = np.array(template.at_infection, dtype=int)
+        self.no_R0: str | None = None
+        self.broken: MMatrix | None = None
+        self.F: Any = None
+        self.V: Any = None
+        self.K_large: Any = None
+        self.K: Any = None
+        self.spectrum: Spectrum | None = None
+        self._growth: float | None = None
+        self._class_growth: list[float | None] = []
+        if self.point.exact:
+            self.F, self.V = self.point.F_and_V
+            self._reproduce()
+        else:
+            self._reproduce_large()
+
+    @property
+    def decided(self) -> bool:
+        """False where more bits could change the classes, the vectors, or whether V is an M-matrix."""
+        if self.broken is not None:
+            return self.broken.decided
+        return self.spectrum is None or self.spectrum.decided
+
+    def _reproduce(self) -> None:
+        types = self.template.types
+        negative = [(i, j) for i, j in zip(*np.nonzero(possible(self.F)), strict=True) if self.F[i, j] < 0]
+        if negative:
+            i, j = negative[0]
+            self.no_R0 = (
+                f"F has a negative entry: {types[j]} takes away new infections of {types[i]}. "
+                "A rate of new infections must not fall when an infected compartment grows."
+            )
+            return
+        verdict = m_matrix(self.V)
+        if verdict.verdict != "yes":
+            self.broken = verdict
+            self.no_R0 = self._why_none(verdict)
+            return
+        self.K_large = matmul(self.F, inverse(self.V))
+        self.K = self.K_large[np.ix_(self.at, self.at)]
+        if len(self.at):
+            self.spectrum = spectrum(self.K)
+
+    def _reproduce_large(self) -> None:
+        """Find R0 and the rest of a model whose matrices are never written out."""
+        slopes, infected = self.point.blocks, self.template.infected
+        V = difference(slopes.losses, slopes.gains)
+        negative, stray = faults(slopes.F), stray_losses(slopes.losses)
+        if negative is not None:
+            i, j = negative
+            self.no_R0 = (
+                f"F may have a negative entry: {infected[j]} takes away new infections of {infected[i]} in some group."
+            )
+        elif stray is not None:
+            i, j = stray
+            self.no_R0 = (
+                f"V may have a positive off-diagonal entry: members leave {infected[i]} because of {infected[j]}."
+            )
+        elif faults(slopes.gains) is not None:
+            self.no_R0 = "V may have a positive off-diagonal entry: what arrives somewhere falls as others grow."
+        if self.no_R0 is None:
+            try:
+                operator = NextGeneration(slopes.F, V, self.at)
+                if operator.is_m_matrix():
+                    self._take(operator)
+                    return
+                self.no_R0 = (
+                    "V is no M-matrix at these values: some infected compartments grow without any transmission."
+                )
+            except SingularTransitions as singular:
+                named = ", ".join(infected[k] for k in singular.parts)
+                self.no_R0 = f"V is singular at these values: of {named} nobody is lost in some group. Check the exits."
+        self.broken = MMatrix("no")
+        self._growth = NextGeneration.growth_of(slopes.F, V)
+
+    def _take(self, operator: NextGeneration) -> None:
+        if not len(self.at):
+            self._growth = operator.growth_rate()
+            return
+        found = operator.spectrum()
+        self._class_growth = [c.growth_rate for c in found.classes]
+        single = len(found.classes) == 1 and len(found.classes[0].members) == len(self.at)
+        irreducible = single and found.classes[0].period is not None
+        periods = tuple(c.period for c in found.classes)
+        cycles = {periods[k] for k in found.leading}
+        self.spectrum = Spectrum(
+            classes=tuple(c.members for c in found.classes),
+            roots=tuple(interval(*c.bounds) for c in found.classes),
+            periods=periods,
+            root=interval(*found.bounds),
+            leading=found.leading,
+            right=found.right,
+            left=found.left,
+            irreducible=irreducible,
+            period=periods[0] if irreducible else None,
+            cycle=cycles.pop() if len(cycles) == 1 else None,
+            decided=True,
+        )
+        start = None if found.right is None else operator.stays(found.right)
+        core = [rate for rate in self._class_growth if rate is not None]
+        self._growth = operator.growth_rate(start) if not single else max([*core, operator.growth_rate(start)])
+
+    @property
+    def growth(self) -> float:
+        """The largest real part of the eigenvalues of F - V, per time unit."""
+        if self._growth is None:
+            self._growth = nearest(growth_rate(self.F, self.V))
+        return self._growth
+
+    def class_growth(self, number: int) -> float | None:
+        """Return the growth rate of one class of K, as if it were alone; None for a zero class."""
+        if self._class_growth:
+            return self._class_growth[number]
+        assert self.spectrum is not None
+        rate = class_growth_rate(self.F, self.V, self.at[self.spectrum.classes[number]])
+        return None if rate is None else nearest(rate)
+
+    def _why_none(self, verdict: MMatrix) -> str:
+        types = self.template.types
+        if verdict.verdict == "positive off-diagonal":
+            assert verdict.entry is not None
+            i, j = verdict.entry
+            return (
+                f"V has a positive off-diagonal entry: members leave {types[i]} the faster, the more there are in {types[j]}. "
+                "F V^-1 is then no next-generation matrix."
+            )
+        members = [] if verdict.members is None else [types[int(k)] for k in verdict.members]
+        named = ", ".join(members[:6]) + (", …" if len(members) > 6 else "")
+        if verdict.verdict == "singular":
+            return (
+                f"V is singular at these values: of {named} nobody is lost, so the time spent there has no finite mean. "
+                "Check the rates out of it."
+            )
+        return (
+            f"V is no M-matrix at these values: {named} grows without any transmission (what arises there exceeds what "
+            "leaves), so the infection-free state is unstable by itself."
+        )
+
+
+def decided_numbers(scenario: Scenario, intervention: Intervention | None = None) -> Numbers:
+    """Return the numbers, computed with as many bits as it takes to decide every zero, sign and tie, up to a limit."""
+    for bits in PRECISIONS:
+        with precision(bits):
+            found = Numbers(scenario, intervention)
+        found.bits = bits
+        if found.decided or len(found.template.types) > MOST_REFINED:
+            break
+    return found
