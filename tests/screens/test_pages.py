@@ -10,7 +10,7 @@ from streamlit.testing.v1 import AppTest
 from ngm.screens import shelf
 from ngm.screens.registry import PAGES
 from ngm.screens.state import AppState, Version
-from tests.screens.texts import BROKEN, HOSTILE, REDUCIBLE, SIR, UNREADABLE
+from tests.screens.texts import BROKEN, HOSTILE, NO_R0, NO_TYPE, REDUCIBLE, SIR, UNREADABLE, grouped
 
 ROOT = Path(__file__).resolve().parents[2]
 MAIN = ROOT / "ngm" / "screens" / "main.py"
@@ -28,6 +28,9 @@ STATES = {
     "unreadable": state(UNREADABLE, SIR),
     "reducible": state(REDUCIBLE),
     "hostile": state(HOSTILE),
+    "no R0": state(NO_R0),
+    "no type at infection": state(NO_TYPE),
+    "many groups": state(grouped(64)),
     "empty": AppState(now=Version(shelf.EMPTY, "untitled.toml")),
 }
 
@@ -92,6 +95,13 @@ def test_no_number_is_shown_where_there_never_was_one(page):
     at = start(STATES["broken from the start"], page)
     assert not at.metric
     assert "bata" in words(at)
+
+
+@pytest.mark.parametrize("page", [page.name for page in PAGES])
+def test_why_there_is_no_R0_is_said(page):
+    at = start(STATES["no R0"], page)
+    assert "No R0 at these values" in words(at)
+    assert not any("R0" in label for label in metrics(at))
 
 
 def test_growth_and_vectors():

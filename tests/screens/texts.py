@@ -98,3 +98,64 @@ R = 0
 HOSTILE = SIR.replace("Plain", "![x](http://evil.example/a.png) <script>alert(1)</script> $x$ :red[y]").replace(
     '"Infectious"', '"a\\"] [b](http://evil.example) `` ``` $$ \\\\input{x}"'
 )
+
+#: Infected hosts that bear infected hosts faster than they are removed: no R0, V is no M-matrix (births b*I with b > g).
+NO_R0 = (
+    SIR.replace("[definitions]", "b = { value = 0.9 }\n\n[definitions]")
+    + """
+[[flow]]
+to = "I"
+rate = "b * I"
+kind = "transition"
+"""
+)
+
+#: New infections need two of the infected: F vanishes altogether, R0 = 0, no type at infection.
+NO_TYPE = SIR.replace("beta * S * I / N", "beta * S * I * I / N^2")
+
+
+def grouped(groups: int) -> str:
+    """Return a scenario of two infected compartments in so many groups; row sums of contacts 1, so R0 = 2, by hand."""
+    labels = ", ".join(f'"g{k}"' for k in range(groups))
+    row = "[" + ", ".join([str(1 / groups)] * groups) + "]"
+    return f"""\
+[scenario]
+title = "Many groups"
+time_unit = "day"
+
+[dimensions]
+g = [{labels}]
+
+[compartments]
+S = {{ infected = false, by = ["g"] }}
+E = {{ infected = true, by = ["g"] }}
+I = {{ infected = true, by = ["g"] }}
+
+[parameters]
+beta = {{ value = 2 }}
+s = {{ value = 1 }}
+
+[matrices.C]
+by = "g"
+values = [{", ".join([row] * groups)}]
+
+[[flow]]
+from = "S"
+to = "E"
+rate = "beta * S * C(I)"
+kind = "transmission"
+
+[[flow]]
+from = "E"
+to = "I"
+rate = "s * E"
+kind = "transition"
+
+[[flow]]
+from = "I"
+rate = "I"
+kind = "transition"
+
+[infection_free]
+S = 1
+"""
