@@ -12,10 +12,13 @@ from typing import TYPE_CHECKING, Any
 from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
 
 if TYPE_CHECKING:
+    from ngm.analysis.compare import compare
     from ngm.analysis.control import control
     from ngm.analysis.solve import solve
+    from ngm.analysis.strength import coverage_needed, strength_needed
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
+    from ngm.scenario.packages import combined
 
 __all__ = [
     "DerivationError",
@@ -23,19 +26,27 @@ __all__ = [
     "NgmError",
     "Scenario",
     "ScenarioError",
+    "combined",
+    "compare",
     "control",
+    "coverage_needed",
     "load",
     "loads",
     "solve",
+    "strength_needed",
 ]
 
 #: Where each public name is made. Loaded when first used: numpy and scipy take half a second that an import must not cost.
 _HOMES = {
     "Scenario": "ngm.scenario.model",
+    "combined": "ngm.scenario.packages",
+    "compare": "ngm.analysis.compare",
     "control": "ngm.analysis.control",
+    "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
     "solve": "ngm.analysis.solve",
+    "strength_needed": "ngm.analysis.strength",
 }
 
 

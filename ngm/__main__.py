@@ -12,12 +12,14 @@ import sys
 from collections.abc import Sequence
 
 from ngm.errors import NgmError, Problem, ScenarioError
-from ngm.results import Solution
+from ngm.results import ControlResult, Solution
+from ngm.results_control import Comparison
 
 __all__ = ["main"]
 
 VERBS = {
     "solve": "derive F, V and K from the flows; R0 with bounds, structure, growth",
+    "compare": "every intervention beside the baseline: control reproduction number, growth, share removed, cost",
     "control": "type, target and state reproduction numbers, and the share to remove",
 }
 
@@ -44,6 +46,16 @@ def _parser() -> argparse.ArgumentParser:
             help="another value for a parameter, in its own unit; may be given more than once",
         )
         sub.add_argument("--json", action="store_true", help="print one JSON object")
+        if verb == "compare":
+            sub.add_argument(
+                "--combine",
+                dest="combinations",
+                metavar="NAME",
+                nargs="+",
+                action="append",
+                default=[],
+                help="names of interventions to apply together, in order; after FILE; may be given more than once",
+            )
     return parser
 
 
@@ -80,15 +92,21 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _run(options: argparse.Namespace) -> str:
     import ngm
-    from ngm.console import control_text, solve_text
+    from ngm.console import compare_text, control_text, solve_text
 
     values = _values(options.values)
     scenario = ngm.load(options.file)
     if values:
         scenario = scenario.with_values(**values)
-    result = ngm.solve(scenario) if options.verb == "solve" else ngm.control(scenario)
+    result: Solution | Comparison | ControlResult
+    if options.verb == "compare":
+        result = ngm.compare(scenario, combinations=options.combinations)
+    else:
+        result = ngm.solve(scenario) if options.verb == "solve" else ngm.control(scenario)
     if options.json:
         return json.dumps(result.to_json(), ensure_ascii=False)
+    if isinstance(result, Comparison):
+        return compare_text(result)
     return solve_text(result) if isinstance(result, Solution) else control_text(result)
 
 
