@@ -103,11 +103,28 @@ def solve_text(result: Solution) -> str:
     if result.symbolic.characteristic_polynomial is not None:
         name = result.symbolic.polynomial_variable
         lines += ["", f"det({name} I - K) = {result.symbolic.characteristic_polynomial}"]
+    lines += _blocks(result)
     lines += _structure(result)
     lines += ["", "Conditions (van den Driessche & Watmough 2002)"]
     lines += [f"  {c.name} {'holds' if c.holds else 'DOES NOT HOLD'}: {c.detail}" for c in result.conditions]
     lines += _closing(result.warnings)
     return _squeezed(lines)
+
+
+def _blocks(result: Solution) -> list[str]:
+    """Return the block form of a grouped model."""
+    blocks = result.symbolic.blocks
+    if blocks is None:
+        return []
+    lines = ["", "On the template (each block for all groups; diag: a number in each group; C': the matrix transposed)"]
+    for name, entries in (("F", blocks.F), ("V", blocks.V), ("K", blocks.K)):
+        if entries is None:
+            lines.append(f"  {name} = F V^-1, solved group by group and along the moves; it has no formula by group")
+            continue
+        lines += [f"  {name}[{row}, {column}] = {entry}" for (row, column), entry in entries.items()]
+    if blocks.root is not None:
+        lines.append(f"  R0 = {blocks.root}")
+    return lines
 
 
 def _structure(result: Solution) -> list[str]:

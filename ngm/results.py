@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     import pandas
 
 __all__ = [
+    "BlockForm",
     "Class",
     "Condition",
     "ControlResult",
@@ -97,6 +98,24 @@ class Step:
 
 
 @dataclass(frozen=True, slots=True)
+class BlockForm:
+    """F, V and K of a grouped model on its template: one block for each pair of compartments, whatever the groups.
+
+    A block is a sum of products such as ``diag(beta*S) C diag(1/N)``: numbers by group on a diagonal, contact matrices,
+    and ``1 1'`` for a sum over groups. Keys are (row, column) compartments. `K` is None where members move between groups
+    (then V^-1 has no formula), `root` says what R0 is the spectral radius of, `closed_form` is R0 in the expression
+    syntax where mixing has rank one. `infection_free`: compartment -> formula by group, or its own name.
+    """
+
+    F: Mapping[tuple[str, str], str]
+    V: Mapping[tuple[str, str], str]
+    K: Mapping[tuple[str, str], str] | None
+    infection_free: Mapping[str, str]
+    root: str | None = None
+    closed_form: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Symbolic:
     """The derivation in the expression syntax; any part None where the model is too large to write out."""
 
@@ -109,6 +128,7 @@ class Symbolic:
     abbreviations: Mapping[str, str] = field(default_factory=dict)
     closed_form: str | None = None
     steps: tuple[Step, ...] = ()
+    blocks: BlockForm | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True)

@@ -111,6 +111,7 @@ def symbols(
     values: Mapping[str, float],
     branches: Mapping[str, list[int]],
     limit: float = LIMIT,
+    **options: Any,
 ) -> Symbolic:
     """Return `ngm.derivation.symbols.derive_symbols` of the same arguments, computed in a child within `limit` seconds.
 
@@ -126,7 +127,7 @@ def symbols(
             child = _Child()
     except OSError as error:
         raise WorkerFailed(f"no process for the formulas could be started ({error.strerror}).") from None
-    answer = child.ask((scenario, dict(state), dict(values), dict(branches)), limit)
+    answer = child.ask((scenario, dict(state), dict(values), dict(branches), options), limit)
     with _lock:
         if len(_idle) < 2:
             _idle.append(child)
@@ -176,11 +177,11 @@ def serve() -> None:
 
     while True:
         try:
-            scenario, state, values, branches = _receive(sys.stdin.buffer)
+            scenario, state, values, branches, options = _receive(sys.stdin.buffer)
         except (EOFError, OSError):
             os._exit(0)
         try:
-            answer: object = derive_symbols(scenario, state, values, branches)
+            answer: object = derive_symbols(scenario, state, values, branches, **options)
         except NgmError as error:
             answer = f"the formulas could not be written ({error.problems[0].message})"
         except RecursionError:

@@ -7,9 +7,9 @@ from typing import Any
 import numpy as np
 
 from ngm.analysis.large import difference, faults, stray_losses
-from ngm.analysis.point import Point
+from ngm.analysis.point import Point, refuse_huge
 from ngm.derivation.conditions import check_arrivals, check_exits
-from ngm.derivation.expand import thumbnail
+from ngm.derivation.outline import thumbnail
 from ngm.derivation.template import Template
 from ngm.engine.balls import PRECISION, interval, nearest, precision
 from ngm.engine.enclosure import MMatrix, inverse, m_matrix
@@ -80,6 +80,7 @@ class Numbers:
             self.no_R0 = self._why_none(verdict)
             return
         self.K_large = matmul(self.F, inverse(self.V))
+        refuse_huge("K", self.K_large, types)
         self.K = self.K_large[np.ix_(self.at, self.at)]
         if len(self.at):
             self.spectrum = spectrum(self.K)

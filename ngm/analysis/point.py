@@ -30,11 +30,32 @@ from ngm.expression.tree import names
 from ngm.scenario.model import Intervention, Scenario
 from ngm.scenario.values import intervened
 
-__all__ = ["MOST_EXACT", "MOST_WRITTEN", "Point"]
+__all__ = ["MOST_EXACT", "MOST_WRITTEN", "Point", "refuse_huge"]
 
+#: Entries of matrices stay below this.
+LARGEST = 1e300
 #: Types up to which numbers are enclosed exactly, and matrices are written out in results.
 MOST_EXACT = 500
 MOST_WRITTEN = 500
+
+
+def refuse_huge(name: str, matrix: Array, labels: tuple[str, ...]) -> None:
+    """Refuse a matrix with an entry that is no number below 1e300.
+
+    Raises
+    ------
+    DerivationError
+        With the entry and its labels.
+    """
+    numbers = as_floats(matrix)
+    for i, j in np.argwhere(~(np.abs(numbers) < LARGEST)):
+        raise DerivationError(
+            Problem(
+                "derivation",
+                f"{name}[{labels[i]}, {labels[j]}] is too large: numbers stay below 1e300. Check the units and the values in "
+                "the rates behind it.",
+            )
+        )
 
 
 @dataclass(frozen=True)
@@ -137,6 +158,8 @@ class Point:
             F = self._scaled(F, self.intervention)
         if not (is_finite(F) and is_finite(V)):
             raise self._no_slope()
+        for name, matrix in (("F", F), ("V", V)):
+            refuse_huge(name, matrix, self.template.types)
         return F, V
 
     @cached_property

@@ -9,6 +9,7 @@ import numpy as np
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.derivation.conditions import fifth_condition, first_conditions
+from ngm.derivation.outline import outline
 from ngm.derivation.terms import entry_terms
 from ngm.engine.balls import nearest, outward, precision, to_floats
 from ngm.engine.growth import doubling_time
@@ -156,9 +157,18 @@ def _structure(found: Numbers, spec: Spectrum) -> Structure:
 
 
 def _symbols(found: Numbers, limit: float) -> tuple[Symbolic, list[str]]:
-    if limit <= 0 or not found.template.is_written_out:
+    if limit <= 0 or not len(found.template.types):
         return Symbolic(), []
     point, template = found.point, found.template
+    if not template.is_written_out:
+        if not found.scenario.dimensions:
+            return Symbolic(), []
+        free = found.scenario.infection_free
+        alone = frozenset(name for name, given in free.items() if len({value.tree for value in given}) > 1)
+        try:
+            return symbols(outline(found.scenario), {}, {}, {}, limit, outlined=True, stand_alone=alone), []
+        except WorkerFailed as failed:
+            return Symbolic(), [f"No formulas: {failed}"]
     values: dict[str, float] = {}
     for name, parameter in found.scenario.parameters.items():
         flat = _plain(template.space.flatten(point.evaluator.name(name), parameter.by))[:, 0]

@@ -6,7 +6,7 @@ them apart, because their difference is where digits and signs get lost.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
@@ -14,12 +14,11 @@ import numpy as np
 
 from ngm.derivation.evaluate import Evaluator
 from ngm.derivation.space import Array
-from ngm.scenario.model import Dimension, Expression, Scenario
 
 if TYPE_CHECKING:
     from ngm.derivation.template import Arrow, Template
 
-__all__ = ["ArrowBlock", "arrow_blocks", "assemble", "blank", "net_flow", "slopes", "thumbnail"]
+__all__ = ["ArrowBlock", "arrow_blocks", "assemble", "blank", "net_flow", "slopes"]
 
 
 def blank(evaluator: Evaluator, rows: int, columns: int) -> Array:
@@ -128,28 +127,3 @@ def arrow_blocks(
                 flat = template.space.flatten(block, arrow.by)
                 out.append(ArrowBlock(arrow, column, flat, rows[0], rows[1]))
     return out
-
-
-def thumbnail(scenario: Scenario, groups: int = 2) -> Scenario:
-    """Return the scenario with only the first few groups of each dimension: the same structure, small enough to look at."""
-    kept = {name: Dimension(name, d.groups[:groups]) for name, d in scenario.dimensions.items()}
-    small = replace(scenario, dimensions=kept, interventions=())
-
-    def cut(values: tuple[Expression, ...], by: tuple[str, ...]) -> tuple[Expression, ...]:
-        if len(values) == 1:
-            return values
-        wanted = set(small.copies(by))
-        return tuple(value for value, copy in zip(values, scenario.copies(by), strict=True) if copy in wanted)
-
-    parameters = {
-        name: replace(p, values=cut(p.values, p.by), distributions=()) for name, p in scenario.parameters.items()
-    }
-    matrices = {}
-    for name, matrix in scenario.matrices.items():
-        n = len(kept[matrix.by].groups)
-        w = 1 if matrix.within is None else len(kept[matrix.within].groups)
-        matrices[name] = replace(
-            matrix, blocks=tuple(tuple(row[:n] for row in block[:n]) for block in matrix.blocks[:w])
-        )
-    free = {name: cut(values, scenario.compartments[name].by) for name, values in scenario.infection_free.items()}
-    return replace(small, parameters=parameters, matrices=matrices, infection_free=free)

@@ -291,7 +291,10 @@ class Lineariser:
 
     def _power_of_zero(self, base: Linear, exponent: Linear, node: Node) -> Linear:
         if exponent.terms:
-            raise self._refuse(f"has no slope when nobody is infected: {shorten(node)} has a state in its exponent.")
+            raise self._refuse(
+                f"has no slope when nobody is infected: {shorten(node)} has a state in its exponent. "
+                "Use a number or parameters there."
+            )
         if isinstance(exponent.value, Number):
             powers = [float(exponent.value.value)]
         else:
@@ -317,7 +320,10 @@ class Lineariser:
         if inner.is_zero:
             if node.function == "log" or inner.terms:
                 what = "value" if node.function == "log" else "slope"
-                raise self._refuse(f"has no {what} when nobody is infected: {shorten(node)} is taken at 0.")
+                raise self._refuse(
+                    f"has no {what} when nobody is infected: {shorten(node)} is taken at 0. "
+                    "Write the rate so that it has one there, for example with x + a small constant in place of x."
+                )
             return Linear(ZERO)
         if node.function == "log":
             value = ZERO if inner.value == ONE else Call("log", (inner.value,))
@@ -330,7 +336,10 @@ class Lineariser:
         first, second = (self.walk(argument) for argument in node.arguments)
         if first.is_zero and second.is_zero:
             if first.terms or second.terms:
-                raise self._refuse(f"has no slope when nobody is infected: {shorten(node)} is a tie of 0 with 0.")
+                raise self._refuse(
+                    f"has no slope when nobody is infected: {shorten(node)} is a tie of 0 with 0. "
+                    "Write the branch that is meant for few infected."
+                )
             return Linear(ZERO)
         value = Call(node.function, (first.value, second.value))
         if not first.terms and not second.terms:

@@ -13,11 +13,13 @@ from typing import Any
 import numpy as np
 import sympy
 
+from ngm.derivation.block_form import block_form
 from ngm.derivation.closed_form import ClassForm, class_forms, maximum, polynomial
 from ngm.derivation.elimination import Program, residence_times
 from ngm.derivation.evaluate import Evaluator
 from ngm.derivation.expand import assemble
 from ngm.derivation.network import Network, network
+from ngm.derivation.outline import outline
 from ngm.derivation.rest_symbols import solve_rest
 from ngm.derivation.space import Array
 from ngm.derivation.sympy_algebra import SYMBOLS
@@ -40,6 +42,9 @@ def derive_symbols(
     state: Mapping[str, float] | None = None,
     values: Mapping[str, float] | None = None,
     branches: Mapping[str, list[int]] | None = None,
+    *,
+    outlined: bool = False,
+    stand_alone: frozenset[str] = frozenset(),
 ) -> Symbolic:
     """Return the derivation in symbols; its parts are None where the model is too large to be written out.
 
@@ -52,11 +57,23 @@ def derive_symbols(
         Parameters in force, by item, which tell several solutions apart.
     branches : mapping of str to list of int
         Which side of each max or min is in force (1 or 0), over the space.
+    outlined : bool
+        The scenario is an outline of a larger one: only its block form is asked for.
+    stand_alone : frozenset of str
+        States that have no formula for all groups, and stand for themselves.
     """
+    named = frozenset(
+        name for name, given in scenario.infection_free.items() if len({value.tree for value in given}) > 1
+    )
     template = Template(scenario)
-    if not template.is_written_out:
-        return Symbolic()
-    return _Derivation(template, state or {}, values or {}, branches or {}).run()
+    out = Symbolic()
+    if template.is_written_out and not outlined:
+        out = _Derivation(template, state or {}, values or {}, branches or {}).run()
+    if scenario.dimensions and not template.at_rest.selectors:
+        blocks = block_form(outline(scenario), stand_alone | named)
+        closed = out.closed_form or (None if template.at_rest.by_value else blocks.closed_form)
+        out = replace(out, blocks=blocks, closed_form=closed)
+    return out
 
 
 class _Derivation:
