@@ -115,6 +115,9 @@ def form_and_table(rows: Rows, groups: Sequence[str]) -> tuple[Form, Block]:
             return "bare", _bare(rows)
     elif len(rows) == size + 1:
         if widths == {size + 1}:
+            # one row and column too many is told as that, not as labels that nobody meant
+            if not any(_is_label(cell, groups) or _trouble(cell, signed=True) for cell in first):
+                raise MatrixFileError(_shape(rows, groups))
             return "labelled", _labelled(rows[0][1][1:], rows[1:], groups)
         if len(first) == size and {len(cells) for _, cells in rows[1:]} == {size + 1}:
             return "labelled", _labelled(rows[0][1], rows[1:], groups)

@@ -71,6 +71,7 @@ def test_small_and_numeric_labels(text: str, groups: tuple[str, ...], table: obj
         ("", "the file is empty"),
         ("\n\n", "the file is empty"),
         ("1,2\n3,4", "2 lines of 2 cells for 3 groups"),
+        ("1,2,3,4\n5,6,7,8\n9,1,2,3\n4,5,6,7", "4 lines of 4 cells for 3 groups"),
         ("1,2,3\n4,5\n7,8,9", "line 2 has 2 cells, others have 3"),
         ("1,2,3\n4,5,6\n7,8,-9", "line 3, column 3: -9 is negative"),
         ("1,2,3\n4,x,6\n7,8,9", "line 2, column 2: 'x' is not a number"),
