@@ -45,9 +45,14 @@ def warm_up() -> None:
     gc.freeze()
 
 
-def report_error(error: Exception) -> None:
-    """Log a mistake of the program; the page shows a plain message without the details."""
+def report_error(error: Exception) -> bool:
+    """Log a mistake of the program and say so in plain words; True keeps Streamlit's own message away."""
     logging.getLogger("ngm").error("a page failed", exc_info=error)
+    st.error(
+        "**This page could not be finished.** That is a mistake of the program, not of your scenario; the server's log "
+        "says more. Nothing you typed is lost: it can be downloaded on the page **Scenario**."
+    )
+    return True
 
 
 @contextlib.asynccontextmanager

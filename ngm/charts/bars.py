@@ -27,7 +27,7 @@ def stable_distribution(solution: Solution, *, dark: bool = False) -> alt.LayerC
     if solution.right is None or len(solution.right) > MOST_BARS:
         return None
     rows = _rows(solution, solution.right)
-    return _bars(rows, "share of new infections (sums to 1)", "Stable distribution over the types at infection", dark)
+    return _bars(rows, "share of new infections", "Stable distribution over the types at infection", dark)
 
 
 def reproductive_values(solution: Solution, *, dark: bool = False) -> alt.LayerChart | None:
@@ -78,7 +78,7 @@ def _bars(rows: list[dict[str, Any]], axis: str, title: str, dark: bool, top: fl
     colours = ink(dark)
     scale = alt.Scale(domain=[0, top]) if top is not None else alt.Scale(domain=[0, 1.15 * _largest(rows)], nice=False)
     base = alt.Chart(alt.InlineData(values=rows)).encode(
-        y=alt.Y("type:N", sort=None, title=None, axis=alt.Axis(labelLimit=190)),
+        y=alt.Y("type:N", sort=None, title=None, axis=alt.Axis(labelLimit=150)),
         x=alt.X("value:Q", scale=scale, title=axis, axis=alt.Axis(tickCount=5)),
         tooltip=[alt.Tooltip("type:N", title="type"), alt.Tooltip("shown:N", title="value")],
     )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 
 import streamlit as st
 
@@ -104,7 +104,7 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
             (str(k), ", ".join(c.types), write(c.R0), "–" if c.period is None else str(c.period), write(c.growth_rate))
             for k, c in enumerate(structure.classes, 1)
         ]
-        _table(["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"], rows)
+        parts.table(["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"], rows)
         if len(structure.classes) > 1:
             st.caption("K has several classes: R0 is the largest of theirs.")
         growing = [c for c in structure.classes if c.growth_rate is not None]
@@ -153,7 +153,7 @@ def vectors(solution: Solution, write: Write) -> None:
             (t, write(right[k] if right else None), write(left[k] if left else None))
             for k, t in enumerate(solution.types_at_infection)
         ]
-        _table(["type", "share of new infections", "reproductive value"], rows)
+        parts.table(["type", "share of new infections", "reproductive value"], rows)
 
 
 def control(result: ControlResult, write: Write) -> None:
@@ -188,7 +188,7 @@ def control(result: ControlResult, write: Write) -> None:
     for title, rows in groups:
         st.markdown(f"**{title}**")
         if rows:
-            _table(heads, rows)
+            parts.table(heads, rows)
         else:
             st.caption("None listed.")
     parts.warnings_box(result.warnings)
@@ -198,9 +198,3 @@ def _columns(count: int) -> list[st.delta_generator.DeltaGenerator]:
     width = min(count, 3)
     columns = st.columns(width)
     return [columns[k % width] for k in range(count)]
-
-
-def _table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
-    import pandas
-
-    st.dataframe(pandas.DataFrame(rows, columns=list(heads)), hide_index=True, alt=", ".join(heads))

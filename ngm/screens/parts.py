@@ -38,6 +38,7 @@ __all__ = [
     "results",
     "status",
     "switch",
+    "table",
     "warnings_box",
 ]
 
@@ -47,6 +48,9 @@ MOST_PROBLEMS = 10
 #: A typeset matrix may have this many types and characters of LaTeX; past it nobody can read it.
 MOST_TYPES = 12
 MOST_LATEX = 12_000
+
+#: A plain table may have this many rows.
+MOST_ROWS = 40
 
 #: A table of numbers may have this many types: all of its cells go to the browser each time.
 MOST_SHOWN = 100
@@ -264,6 +268,19 @@ def numbers_table(matrix: Matrix, types: Sequence[str], write: Callable[[float |
         columns=list(types),
     )
     st.dataframe(frame, alt=f"Matrix {name}: rows and columns {', '.join(types[:20])}")
+
+
+def table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    """Show rows of text: as a plain table, which wraps long text, or as a grid that scrolls where it is long."""
+    import pandas
+
+    told = ", ".join(heads)
+    if len(rows) > MOST_ROWS:
+        st.dataframe(pandas.DataFrame(rows, columns=list(heads)), hide_index=True, alt=told)
+        return
+    # The cells of a plain table are read as Markdown.
+    cells = [[plain(cell) for cell in row] for row in rows]
+    st.table(pandas.DataFrame(cells, columns=[plain(head) for head in heads]), hide_index=True, alt=told)
 
 
 def conditions_table(solution: Solution) -> None:

@@ -51,7 +51,7 @@ def infection_free(solution: Solution, write: Write) -> None:
     if not solution.infection_free:
         st.markdown("The model has no uninfected compartment.")
     elif len(solution.infection_free) > MOST_LINES:
-        _plain_table(["compartment", "value"], [(k, write(v)) for k, v in solution.infection_free.items()])
+        parts.table(["compartment", "value"], [(k, write(v)) for k, v in solution.infection_free.items()])
     else:
         _abbreviations(solution.symbolic, "state")
         lines = []
@@ -81,7 +81,7 @@ def transmission_and_transition(solution: Solution, write: Write) -> None:
                 (f"{t.matrix}[{t.row}, {t.column}]", "+" if t.sign > 0 else "-", t.share, _flow(t.flow, t.label))
                 for t in solution.terms
             ]
-            _plain_table(["entry", "sign", "share", "flow"], rows)
+            parts.table(["entry", "sign", "share", "flow"], rows)
         else:
             _terms(solution)
 
@@ -115,7 +115,7 @@ def residence(solution: Solution) -> None:
     if len(steps) > MOST_LINES:
         with st.expander(f"{len(steps) - MOST_LINES} further lines"):
             rows = [(s.name, s.formula or "", s.about) for s in steps[MOST_LINES:]]
-            _plain_table(["name", "formula", "about"], rows)
+            parts.table(["name", "formula", "about"], rows)
 
 
 def next_generation(solution: Solution, write: Write) -> None:
@@ -215,7 +215,7 @@ def _abbreviations(symbolic: Symbolic, section: str) -> None:
     if len(names) > MOST_LINES:
         with st.expander(f"{len(names) - MOST_LINES} more"):
             rows = [(name, symbolic.abbreviations[name], about.get(name, "")) for name in names[MOST_LINES:]]
-            _plain_table(["name", "formula", "about"], rows)
+            parts.table(["name", "formula", "about"], rows)
 
 
 def _terms(solution: Solution) -> None:
@@ -246,9 +246,3 @@ def _aligned(lines: Sequence[str]) -> None:
 def _number(text: str) -> str:
     head, mark, tail = text.partition("e")
     return rf"{head} \times 10^{{{tail}}}" if mark else text.replace(",", r"\,")
-
-
-def _plain_table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
-    import pandas
-
-    st.dataframe(pandas.DataFrame(rows, columns=list(heads)), hide_index=True, alt=", ".join(heads))

@@ -122,8 +122,8 @@ def test_full_precision_shows_every_digit():
 
 def test_classes_of_a_reducible_model():
     at = start(STATES["reducible"], "numbers")
-    table = next(frame.value for frame in at.dataframe if "class" in frame.value.columns)
-    assert sorted(table["R0"]) == ["0.5", "2.5"]
+    table = next(shown.value for shown in at.table if "class" in shown.value.columns)
+    assert sorted(table["R0"]) == [r"0\.5", r"2\.5"]
 
 
 def test_the_class_that_grows_fastest_is_named_where_it_is_not_the_one_with_the_largest_R0():
