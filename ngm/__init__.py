@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
 
 if TYPE_CHECKING:
+    from ngm.analysis.allocation import allocate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
     from ngm.analysis.solve import solve
@@ -26,6 +27,7 @@ __all__ = [
     "NgmError",
     "Scenario",
     "ScenarioError",
+    "allocate",
     "combined",
     "compare",
     "control",
@@ -39,6 +41,7 @@ __all__ = [
 #: Where each public name is made. Loaded when first used: numpy and scipy take half a second that an import must not cost.
 _HOMES = {
     "Scenario": "ngm.scenario.model",
+    "allocate": "ngm.analysis.allocation",
     "combined": "ngm.scenario.packages",
     "compare": "ngm.analysis.compare",
     "control": "ngm.analysis.control",

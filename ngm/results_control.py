@@ -14,7 +14,17 @@ from ngm.results import Vector
 if TYPE_CHECKING:
     import pandas
 
-__all__ = ["BASELINE_LABEL", "CONTROL_LABEL", "Compared", "Comparison", "Coverage", "Strength"]
+__all__ = [
+    "BASELINE_LABEL",
+    "CONTROL_LABEL",
+    "Allocation",
+    "Compared",
+    "Comparison",
+    "Coverage",
+    "Share",
+    "SmallestSupply",
+    "Strength",
+]
 
 BASELINE_LABEL = "R0"
 CONTROL_LABEL = "control reproduction number"
@@ -222,3 +232,102 @@ class Coverage:
     why: str | None
     warnings: tuple[str, ...] = ()
     label: str = CONTROL_LABEL
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Share:
+    """One way to share a supply: coverage and doses of each group, and the control reproduction number it leaves."""
+
+    rule: str
+    coverage: Vector
+    doses: Vector
+    spent: float
+    R0: float
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class SmallestSupply:
+    """The least supply found that brings the number to the target; None throughout where none does, with the reason.
+
+    `lower_bound`: no smaller supply can do; None where that is not known.
+    """
+
+    target: float
+    supply: float | None
+    lower_bound: float | None
+    coverage: Vector | None
+    doses: Vector | None
+    why: str | None
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Allocation:
+    """A supply shared among groups so that the number is as small as possible: the result of `ngm.allocate`.
+
+    Attributes
+    ----------
+    groups : tuple of str
+        Labels every vector. `sizes` are members, `costs` a head, `efficacies` against infection and onward spread
+        together, `upper` the highest coverage.
+    supply : float
+        In the unit of `costs`: doses where each costs 1.
+    R0 : float
+        The number without the supply.
+    best : Share
+        The best share found; `best.R0` is the control reproduction number that it leaves.
+    lower_bound : float
+        No share of this supply leaves less, but for rounding.
+    gap : float
+        1 - lower_bound / best.R0: the best share lies within it. It says what is proven, not what is lost.
+    route, proof : str
+        How the bound was found: a word ("convex", "nearly convex", "divided", "all") and a sentence.
+    rules : tuple of Share
+        Simple rules beside it.
+    smallest : SmallestSupply
+    """
+
+    title: str
+    digest: str
+    groups: tuple[str, ...]
+    sizes: Vector
+    costs: Vector
+    efficacies: Vector
+    upper: Vector
+    supply: float
+    R0: float
+    best: Share
+    lower_bound: float
+    gap: float
+    route: str
+    proof: str
+    rules: tuple[Share, ...]
+    smallest: SmallestSupply
+    warnings: tuple[str, ...] = ()
+    label: str = CONTROL_LABEL
+
+    def to_frame(self) -> pandas.DataFrame:
+        """Return one row a group: members, and coverage and doses in the best share, by each rule, in the smallest supply."""
+        import pandas
+
+        columns: dict[str, Any] = {"members": self.sizes, "cost a head": self.costs, "efficacy": self.efficacies}
+        for share in (self.best, *self.rules):
+            columns[f"coverage, {share.rule}"] = share.coverage
+            columns[f"doses, {share.rule}"] = share.doses
+        if self.smallest.coverage is not None:
+            columns["coverage, smallest supply"] = self.smallest.coverage
+            columns["doses, smallest supply"] = self.smallest.doses
+        return pandas.DataFrame(columns, index=pandas.Index(list(self.groups), name="group"))
+
+    def numbers_frame(self) -> pandas.DataFrame:
+        """Return one row a way to share: the number it leaves, and what it spends."""
+        import pandas
+
+        rows = [
+            {"share": s.rule, "number": s.R0, "what": self.label, "spent": s.spent} for s in (self.best, *self.rules)
+        ]
+        return pandas.DataFrame(
+            [{"share": "none", "number": self.R0, "what": "without the supply", "spent": 0.0}, *rows]
+        )
+
+    def _repr_html_(self) -> str:
+        return str(self.numbers_frame().to_html(escape=True)) + str(self.to_frame().to_html(escape=True))

@@ -11,6 +11,9 @@ from ngm.analysis.numbers import Numbers
 
 __all__ = ["HostGroup", "host_groups"]
 
+#: the label of hosts that are not grouped
+EVERYBODY = "everybody"
+
 #: a kind of hosts, and (dimension, group) in the order of the file's dimensions
 _Key = tuple[str, tuple[tuple[str, str], ...]]
 
@@ -32,7 +35,8 @@ def host_groups(found: Numbers) -> tuple[HostGroup, ...]:
     """Return the groups of hosts of a scenario, in the order of their first types at infection.
 
     Compartments that flows link belong to one kind of hosts: susceptible people are not counted among midges. A kind is
-    split by the groups of its types at infection.
+    split by the groups of its types at infection. Where there is one kind, a label names the group ("65+", or "everybody"
+    without groups); where there are several, it names the types at infection ("E_h", "I1[65+] + I2[65+]").
     """
     scenario, template = found.scenario, found.template
     kinds = _kinds(found)
@@ -51,7 +55,9 @@ def host_groups(found: Numbers) -> tuple[HostGroup, ...]:
     sizes = _sizes(found, kinds, {(kind, tuple(d for d, _ in groups)) for kind, groups in rows})
     out = []
     for key, members in rows.items():
-        label = template.types[int(found.at[members[0]])] if several or not first[key] else first[key]
+        label = first[key] or EVERYBODY
+        if several:
+            label = " + ".join(template.types[int(found.at[k])] for k in members)
         out.append(HostGroup(label, tuple(members), sizes.get(key)))
     return tuple(out)
 

@@ -19,7 +19,15 @@ from ngm.scenario.fields import closest, listed, short
 from ngm.scenario.model import Intervention, Scenario
 from ngm.scenario.packages import find_intervention, scaled
 
-__all__ = ["chosen_groups", "coverage_needed", "strength_needed"]
+__all__ = [
+    "check_target",
+    "chosen_groups",
+    "coverage_needed",
+    "number_of",
+    "shares_of",
+    "strength_needed",
+    "values_of",
+]
 
 #: Strengths tried before the root is looked for; fewer where each takes long.
 SAMPLES = 21
@@ -54,7 +62,7 @@ def strength_needed(
         No intervention of this name, or a target that is none.
     """
     package = find_intervention(scenario, intervention) if isinstance(intervention, str) else intervention
-    _check_target(target)
+    check_target(target)
     before = () if with_also is None else with_also.changes
     reasons: dict[float, str] = {}
 
@@ -119,7 +127,8 @@ def number_of(found: Numbers) -> float:
     return 0.0 if found.spectrum is None else nearest(found.spectrum.root)
 
 
-def _check_target(target: float) -> None:
+def check_target(target: float) -> None:
+    """Raise ScenarioError where a target is no positive number."""
     if not (np.isfinite(target) and target > 0):
         raise ScenarioError(Problem("", f"a target of {target:g} is none: the number to be reached lies above 0."))
 
@@ -167,7 +176,7 @@ def coverage_needed(
     Smith, Rodrigues & Fine (1984) Int. J. Epidemiol. 13:87-93 (from memory); Roberts & Heesterbeek (2003) Proc. R. Soc.
     B 270:1359
     """
-    _check_target(target)
+    check_target(target)
     if kind not in ("leaky", "all-or-nothing"):
         raise ScenarioError(Problem("kind", f"'{short(kind)}' is no kind of vaccine. Write leaky or all-or-nothing."))
     lasting = _lasting(turnover, waning)
@@ -290,10 +299,10 @@ def chosen_groups(found: Numbers, labels: Sequence[str] | None) -> tuple[HostGro
     return tuple(by_label[label] for label in labels)
 
 
-def shares_of(
+def values_of(
     given: float | Mapping[str, float], groups: Sequence[HostGroup], what: str
 ) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
-    """Return one share in [0, 1] for each group; a mapping must name every group."""
+    """Return one finite number for each group; a mapping must name every group and no other."""
     problems = []
     if isinstance(given, Mapping):
         labels = [group.label for group in groups]
@@ -308,11 +317,20 @@ def shares_of(
         values = [float(given.get(label, 0.0)) for label in labels]
     else:
         values = [float(given)] * len(groups)
-    for value in values:
-        if not 0 <= value <= 1:
-            advice = f" For {value:g} % write {value / 100:g}." if 1 < value <= 100 else ""
-            problems.append(Problem(what, f"{value:g} lies outside [0, 1].{advice}"))
-            break
+    if not np.all(np.isfinite(values)):
+        problems.append(Problem(what, "is not finite. Give a number."))
     if problems:
         raise ScenarioError(problems)
     return np.array(values)
+
+
+def shares_of(
+    given: float | Mapping[str, float], groups: Sequence[HostGroup], what: str
+) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
+    """Return one share in [0, 1] for each group; a mapping must name every group and no other."""
+    values = values_of(given, groups, what)
+    for value in values.tolist():
+        if not 0 <= value <= 1:
+            advice = f" For {value:g} % write {value / 100:g}." if 1 < value <= 100 else ""
+            raise ScenarioError(Problem(what, f"{value:g} lies outside [0, 1].{advice}"))
+    return values

@@ -17,9 +17,21 @@ import numpy as np
 import numpy.typing as npt
 
 from ngm.engine.structure import IntArray, classes
+from ngm.engine.symmetric import symmetric_form
 from ngm.engine.vaccination import scaled_number
 
-__all__ = ["Cut", "Problem", "best_share", "greedy", "in_order", "least_supply", "perron", "same_multiple"]
+__all__ = [
+    "Cut",
+    "Problem",
+    "best_share",
+    "cyclic_classes",
+    "first_then_even",
+    "greedy",
+    "in_order",
+    "least_supply",
+    "perron",
+    "same_multiple",
+]
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -79,8 +91,22 @@ class Problem:
     @cached_property
     def parts(self) -> list[IntArray]:
         """The classes of K that have a cycle."""
-        there = self.K > 0
-        return [members for members in classes(there) if len(members) > 1 or there[members[0], members[0]]]
+        return cyclic_classes(self.K > 0)
+
+    @cached_property
+    def forms(self) -> list[FloatArray] | None:
+        """The symmetric matrix that each class is similar to by scaling; None where one has none."""
+        forms = [symmetric_form(self.K[np.ix_(members, members)]) for members in self.parts]
+        return None if any(form is None for form in forms) else [form for form in forms if form is not None]
+
+    @cached_property
+    def shift(self) -> float | None:
+        """How far below 0 the eigenvalues of the symmetric forms reach; 0: the number is convex in coverage."""
+        if self.forms is None:
+            return None
+        values = [np.linalg.eigvalsh(form) for form in self.forms]
+        least, largest = min((v[0] for v in values), default=0.0), max((v[-1] for v in values), default=0.0)
+        return float(-least) if -least > 1e-12 * largest else 0.0
 
     def factors(self, x: FloatArray) -> FloatArray:
         """Return 1 - e x for each type."""
@@ -92,6 +118,12 @@ class Problem:
     def number(self, x: FloatArray) -> float:
         """Return the number that a coverage leaves, from enclosed roots."""
         return scaled_number(self.K, np.clip(self.factors(x), 0.0, 1.0))
+
+    def value(self, x: FloatArray) -> float:
+        """Return the number that a coverage leaves: from doubles, or as `number` where a type is all but taken out."""
+        if self.factors(x).min(initial=1.0) < 1e-6:
+            return self.number(x)
+        return float(self.roots(x)[0].max(initial=0.0))
 
     def roots(self, x: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Return the root of each class and its slope by coverage: (c,) and (c, g).
@@ -120,6 +152,11 @@ class Problem:
     def spend(self, x: FloatArray) -> float:
         """Return what a coverage costs."""
         return float(self.price @ x)
+
+
+def cyclic_classes(there: npt.NDArray[np.bool_]) -> list[IntArray]:
+    """Return the classes of a pattern that have a cycle."""
+    return [members for members in classes(there) if len(members) > 1 or there[members[0], members[0]]]
 
 
 def perron(matrix: FloatArray, start: tuple[FloatArray, FloatArray] | None) -> tuple[float, FloatArray, FloatArray]:
@@ -191,6 +228,14 @@ def in_order(problem: Problem, order: Sequence[int] | IntArray, budget: float) -
     return x
 
 
+def first_then_even(problem: Problem, group: int, budget: float) -> FloatArray:
+    """Return the coverage that fills one group, and gives the same coverage to all others with what is left."""
+    x = in_order(problem, [group], budget)
+    others = np.ones(len(x))
+    others[group] = 0.0
+    return np.asarray(x + same_multiple(problem, others, max(budget - problem.spend(x), 0.0)))
+
+
 def greedy(problem: Problem, budget: float, portions: int = 40) -> FloatArray:
     """Return the coverage that gives each portion where the number falls most for its price at that moment."""
     x = np.zeros(len(problem.price))
@@ -224,16 +269,17 @@ def best_share(problem: Problem, budget: float, starts: Sequence[FloatArray]) ->
     """
     if problem.spend(problem.upper) <= budget:
         return problem.upper.copy()
-    ranked = sorted((float(problem.roots(x)[0].max(initial=0.0)), k) for k, x in enumerate(starts))
+    ranked = sorted((problem.value(x), k) for k, x in enumerate(starts))
     many = len(problem.price) > _MANY
-    chosen = [starts[k] for _, k in ranked[: 1 if many else 6]]
+    chosen = [starts[k] for _, k in ranked[: 1 if many or problem.shift == 0.0 else 6]]
     best, least = starts[ranked[0][1]], ranked[0][0]
     for start in chosen:
         x = _improved(problem, budget, _steps(problem, budget, start, 60 if many else 8))
-        value = float(problem.tangents(x)[0].max(initial=0.0))
+        problem.tangents(x)
+        value = problem.value(x)
         if value < least:
             best, least = x, value
-    return best
+    return _feasible(problem, np.where(best < 1e-9, 0.0, best), budget)
 
 
 def _steps(problem: Problem, budget: float, x: FloatArray, count: int) -> FloatArray:
@@ -266,7 +312,7 @@ def _improved(problem: Problem, budget: float, x: FloatArray) -> FloatArray:
             break
         found = _minimised(problem, x, free, budget=budget)
         found = _feasible(problem, found, budget)
-        gain = float(problem.roots(x)[0].max() - problem.roots(found)[0].max())
+        gain = problem.value(x) - problem.value(found)
         if gain > 0:
             x = found
         if len(x) <= _MANY or gain < 1e-7:
@@ -340,18 +386,28 @@ def _sequential(function: Callable[[FloatArray], Any], start: FloatArray, bounds
     """Return where sequential quadratic programming ends; `function` gives value and slope."""
     from scipy.optimize import minimize
 
-    settings: Any = {"ftol": 1e-12, "maxiter": 100}
+    settings: Any = {"ftol": 1e-12 if len(start) <= _MANY else 1e-9, "maxiter": 100}
     found = minimize(function, start, jac=True, bounds=bounds, constraints=rules, method="SLSQP", options=settings)
     return np.asarray(found.x, dtype=float)
 
 
 def _feasible(problem: Problem, x: FloatArray, budget: float) -> FloatArray:
     """Return the coverage moved so that it spends the budget and no more: shrunk, or grown towards the limits."""
+    x = np.where(x > problem.upper - 1e-9, problem.upper, x)
     spent = problem.spend(x)
     if spent > budget:
-        return x * (budget / spent)
-    room = problem.spend(problem.upper) - spent
-    return np.asarray(x + (problem.upper - x) * (min(1.0, (budget - spent) / room) if room > 0 else 0.0))
+        inside = x < problem.upper
+        movable = float(problem.price[inside] @ x[inside])
+        if movable < spent - budget:
+            return x * (budget / spent)
+        return np.where(inside, x * (1 - (spent - budget) / movable), x)
+    # What is left goes first to groups that have some already: none that was given nothing gets a trace.
+    for takes in (x > 0, np.ones(len(x), dtype=bool)):
+        space = np.where(takes, problem.upper - x, 0.0)
+        room = problem.spend(space)
+        if room > 0:
+            x = x + space * min(1.0, (budget - problem.spend(x)) / room)
+    return np.asarray(x)
 
 
 def least_supply(problem: Problem, target: float, starts: Sequence[FloatArray]) -> FloatArray | None:
@@ -365,7 +421,7 @@ def least_supply(problem: Problem, target: float, starts: Sequence[FloatArray]) 
     nothing = np.zeros(len(problem.price))
 
     def height(x: FloatArray) -> float:
-        return float(problem.roots(np.clip(x, 0.0, problem.upper))[0].max(initial=0.0)) - target
+        return problem.value(np.clip(x, 0.0, problem.upper)) - target
 
     if height(nothing) <= 0:
         return nothing
@@ -390,4 +446,4 @@ def least_supply(problem: Problem, target: float, starts: Sequence[FloatArray]) 
         found = brought(_minimised(problem, start, free, target=target))
         if problem.spend(found) < problem.spend(best):
             best = found
-    return best
+    return np.where(best < 1e-9, 0.0, np.where(best > problem.upper - 1e-9, problem.upper, best))

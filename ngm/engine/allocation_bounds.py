@@ -28,17 +28,16 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from ngm.engine.allocation import Cut, Problem, best_share, in_order, perron
-from ngm.engine.structure import IntArray
+from ngm.engine.allocation import Cut, Problem, best_share, cyclic_classes, in_order, perron
 
-__all__ = ["Bound", "least_price_bound", "lower_bound", "symmetric_form"]
+__all__ = ["Bound", "least_price_bound", "lower_bound"]
 
 FloatArray = npt.NDArray[np.float64]
 
 #: A bound this close to the number, relative to it, is close enough.
-CLOSE = 1e-5
-#: Boxes looked at, and types up to which there are any.
-BOXES = 1500
+CLOSE = 2e-5
+#: Boxes looked at, by the number of groups, and types up to which there are more than the first.
+BOXES = ((4, 1500), (10, 600), (20, 300))
 _FEW_TYPES = 24
 _MOST_CUTS = 250
 
@@ -56,49 +55,6 @@ class Bound:
     x: FloatArray
 
 
-def symmetric_form(block: FloatArray) -> FloatArray | None:
-    """Return the symmetric matrix that an irreducible block is similar to by a diagonal matrix; None where there is none.
-
-    With h such that B_ij / h_i = B_ji / h_j: A_ij = B_ij sqrt(h_j / h_i).
-
-    Examples
-    --------
-    >>> symmetric_form(np.array([[1.0, 4.0], [9.0, 2.0]])).round(12).tolist()
-    [[1.0, 6.0], [6.0, 2.0]]
-    """
-    size = len(block)
-    there = block > 0
-    if not np.array_equal(there, there.T):
-        return None
-    h = np.zeros(size)
-    h[0] = 1.0
-    waiting = [0]
-    while waiting:
-        i = waiting.pop()
-        for j in np.nonzero(there[i] & (h == 0))[0]:
-            h[j] = h[i] * block[j, i] / block[i, j]
-            waiting.append(int(j))
-    if not np.all(np.isfinite(h) & (h > 0)):
-        return None
-    A = block * np.sqrt(h[None, :] / h[:, None])
-    if np.abs(A - A.T).max() > 1e-10 * np.abs(A).max():
-        return None
-    return np.asarray((A + A.T) / 2)
-
-
-def _shifts(problem: Problem) -> tuple[list[FloatArray], float] | None:
-    """Return the symmetric form of every class, and how far below 0 their eigenvalues reach; None without such forms."""
-    forms, least, largest = [], 0.0, 0.0
-    for members in problem.parts:
-        form = symmetric_form(problem.K[np.ix_(members, members)])
-        if form is None:
-            return None
-        values = np.linalg.eigvalsh(form)
-        forms.append(form)
-        least, largest = min(least, float(values[0])), max(largest, float(values[-1]))
-    return forms, -least if -least > 1e-12 * largest else 0.0
-
-
 def lower_bound(problem: Problem, budget: float, x: FloatArray) -> Bound:
     """Return a lower bound on the number that any coverage within the budget leaves, given the best one known.
 
@@ -112,24 +68,20 @@ def lower_bound(problem: Problem, budget: float, x: FloatArray) -> Bound:
     """
     if problem.spend(problem.upper) <= budget:
         return Bound(problem.number(problem.upper), "all", problem.upper.copy())
-    number = _value(problem, x)
-    found = _shifts(problem)
-    if found is not None and found[1] == 0.0:
+    number = problem.value(x)
+    shift = problem.shift
+    if shift == 0.0:
         low, x = _by_tangents(problem, budget, x)
         return Bound(max(low, 0.0), "convex", x)
     near: float | None = None
-    if found is not None and found[1] < 0.2 * number:
-        near = _nearly(problem, budget, x, *found)
+    if shift is not None and shift < 0.2 * number:
+        near = _nearly(problem, budget, x, shift)
         if near >= number * (1 - 1e-4):
             return Bound(near, "nearly convex", x)
     low, x = _by_boxes(problem, budget, x)
     if near is not None and near > low:
         return Bound(near, "nearly convex", x)
     return Bound(max(low, 0.0), "divided", x)
-
-
-def _value(problem: Problem, x: FloatArray) -> float:
-    return float(problem.roots(x)[0].max(initial=0.0))
 
 
 # -- tangents ---------------------------------------------------------------------------------------------------------
@@ -183,10 +135,11 @@ def _outcome(problem: Problem, found: Any, unit: float) -> tuple[float, FloatArr
     return float(found.fun) * unit, np.clip(found.x[: len(problem.price)], 0.0, problem.upper)
 
 
-def _nearly(problem: Problem, budget: float, x: FloatArray, forms: list[FloatArray], shift: float) -> float:
+def _nearly(problem: Problem, budget: float, x: FloatArray, shift: float) -> float:
     """Return the bound of A + s I, less s: diag(d)^1/2 A diag(d)^1/2 loses at most s max d <= s."""
     K = np.zeros(problem.K.shape)
-    for members, form in zip(problem.parts, forms, strict=True):
+    assert problem.forms is not None
+    for members, form in zip(problem.parts, problem.forms, strict=True):
         K[np.ix_(members, members)] = form + shift * np.eye(len(members))
     other = Problem(K, problem.member, problem.effect, problem.price, problem.upper)
     y = best_share(other, budget, [x])
@@ -195,8 +148,7 @@ def _nearly(problem: Problem, budget: float, x: FloatArray, forms: list[FloatArr
 
 def least_price_bound(problem: Problem, target: float, x: FloatArray) -> float | None:
     """Return a lower bound on the price of bringing the number to the target; None where K is not convex in coverage."""
-    found = _shifts(problem)
-    if found is None or found[1] > 0.0:
+    if problem.shift != 0.0:
         return None
     problem.tangents(x)
     low = -np.inf
@@ -224,7 +176,7 @@ class _Divider:
 
     def __init__(self, problem: Problem, budget: float, x: FloatArray) -> None:
         self.problem, self.budget = problem, budget
-        self.best, self.x = _value(problem, x), x
+        self.best, self.x = problem.value(x), x
         self.reached = problem.member >= 0
 
     def look(self, box: _Box) -> tuple[float, int, float, _Box] | None:
@@ -238,7 +190,7 @@ class _Divider:
         full = float(price @ width)
         if full <= room * (1 + 1e-12):
             self.offer(upper)
-            return _value(problem, upper), -1, 0.0, _Box(box.lower, upper)
+            return problem.value(upper), -1, 0.0, _Box(box.lower, upper)
         point = box.lower + width * (room / full)
         bound, group, where = -np.inf, -1, 0.0
         for _ in range(2):
@@ -252,7 +204,7 @@ class _Divider:
 
     def offer(self, x: FloatArray) -> None:
         """Take a coverage where it is better than the best so far."""
-        value = _value(self.problem, x)
+        value = self.problem.value(x)
         if value < self.best:
             self.best, self.x = value, x.copy()
 
@@ -265,23 +217,17 @@ class _Divider:
         at = problem.factors(point)
         # Where a factor falls to almost nothing its chord says little: then it counts as if at its least.
         held = low < 1e-2 * high
-        at = np.where(held, np.maximum(low, 1e-13), at)
-        best: tuple[float, IntArray, FloatArray] | None = None
-        for members in problem.parts:
-            root, weights = _weights(at[members, None] * problem.K[np.ix_(members, members)])
-            if best is None or root > best[0]:
-                best = (root, members, weights)
-        assert best is not None
-        root, members, weights = best
-        share = np.zeros(len(at))
-        share[members] = weights
+        at = np.where(held, low, at)
+        root, share = _weights(problem, at)
         moving = self.reached & ~held & (high > low)
         fall = np.zeros(len(at))
         fall[moving] = np.log(low[moving] / high[moving])
+        rise = np.zeros(len(at))
+        rise[moving] = np.log(high[moving] / at[moving])
         width = np.maximum(upper - lower, 1e-300)
         slope = _by_group(problem, moving, share * fall) / width
         corner = lower + self._filled(slope, width, room)
-        start = float((share * np.log(np.where(moving, high / at, 1.0)))[moving].sum())
+        start = float(share @ rise)
         bound = root * np.exp(start + float(slope @ (corner - lower)))
         off = _by_group(problem, moving, share * fall**2 / 8)
         lost = self.reached & held & (high > low)
@@ -306,18 +252,31 @@ def _by_group(problem: Problem, types: npt.NDArray[np.bool_], values: FloatArray
     return out
 
 
-def _weights(matrix: FloatArray) -> tuple[float, FloatArray]:
-    """Return root and l_i r_i / (l . r): the slope of log root by the logarithm of each row's factor; they sum to 1."""
-    root, right, left = perron(matrix, None)
-    weights = left * right
-    total = float(weights.sum())
-    return root, weights / total if total > 0 else np.full(len(weights), 1 / len(weights))
+def _weights(problem: Problem, factors: FloatArray) -> tuple[float, FloatArray]:
+    """Return the root of diag(factors) K, and l_i r_i / (l . r) for its leading class, 0 elsewhere.
+
+    These are the slopes of log root by the logarithms of the factors; they sum to 1. A factor of 0 takes its type out.
+    """
+    parts = problem.parts
+    if np.any(factors == 0):
+        there = (problem.K > 0) & (factors > 0)[:, None]
+        parts = cyclic_classes(there)
+    best, share = 0.0, np.zeros(len(factors))
+    for members in parts:
+        root, right, left = perron(factors[members, None] * problem.K[np.ix_(members, members)], None)
+        weights = left * right
+        if root > best and weights.sum() > 0:
+            best = root
+            share = np.zeros(len(factors))
+            share[members] = weights / weights.sum()
+    return best, share
 
 
 def _by_boxes(problem: Problem, budget: float, x: FloatArray) -> tuple[float, FloatArray]:
     """Return a lower bound by dividing boxes, and the best coverage met."""
     divider = _Divider(problem, budget, x)
-    limit = BOXES if len(problem.K) <= _FEW_TYPES else 2
+    few = len(problem.K) <= _FEW_TYPES
+    limit = next((n for groups, n in BOXES if few and len(x) <= groups), 2)
     first = divider.look(_Box(np.zeros(len(x)), problem.upper.copy()))
     if first is None:
         return divider.best * (1 - CLOSE), divider.x
