@@ -344,16 +344,16 @@ class Lineariser:
         value = Call(node.function, (first.value, second.value))
         if not first.terms and not second.terms:
             return Linear(value)
-        larger, smaller = (first, second) if node.function == "max" else (second, first)
-        # "#" cannot stand in a name of the file, so the selector's name is free.
-        name = f"#{len(self.selectors)}"
+        # The selector is 1 where its first side exceeds its second: then a max follows that side, a min the other one.
+        name = f"#{len(self.selectors)}"  # "#" cannot stand in a name of the file
         by_structure = first.is_zero or second.is_zero
-        text = f"{self.where}: {shorten(node)}"
-        self.selectors.append(Selector(name, larger.value, smaller.value, text, by_structure))
+        self.selectors.append(Selector(name, first.value, second.value, f"{self.where}: {shorten(node)}", by_structure))
         self.by_value = self.by_value or not by_structure
-        chosen = Name(name)
+        chosen: Node = Name(name)
         other = Add(((1, ONE), (-1, chosen)))
-        return Linear(value, (*(t.times(chosen) for t in larger.terms), *(t.times(other) for t in smaller.terms)))
+        of_first, of_second = (chosen, other) if node.function == "max" else (other, chosen)
+        terms = (*(t.times(of_first) for t in first.terms), *(t.times(of_second) for t in second.terms))
+        return Linear(value, terms)
 
     def _refuse(self, message: str) -> DerivationError:
         return DerivationError(Problem(self.where, message))

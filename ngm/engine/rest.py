@@ -317,13 +317,22 @@ def _scan(net: Any) -> list[FloatArray]:
     grid = np.logspace(-12, 15, 2000)
     values = np.asarray(net(grid.reshape(1, -1)))[0]
     found = []
+
+    def at(y: float) -> float:
+        return float(np.asarray(net(np.array([[y]])))[0, 0])
+
     for k in range(len(grid) - 1):
         a, b = values[k], values[k + 1]
         if a == 0:
             found.append(np.array([grid[k]]))
         elif np.isfinite(a) and np.isfinite(b) and a * b < 0:
-            root = brentq(lambda y: float(np.asarray(net(np.array([[y]])))[0, 0]), grid[k], grid[k + 1], xtol=1e-300)
-            near = abs(float(np.asarray(net(np.array([[root]])))[0, 0]))
+            # One value and many at once may differ in the last bit: at a root on the grid that is a sign.
+            a, b = at(grid[k]), at(grid[k + 1])
+            if a * b >= 0:
+                found.append(np.array([grid[k] if abs(a) <= abs(b) else grid[k + 1]]))
+                continue
+            root = brentq(at, grid[k], grid[k + 1], xtol=1e-300)
+            near = abs(at(float(root)))
             if near <= 1e-6 * max(abs(a), abs(b)):  # a pole changes sign too, and is no root
                 found.append(np.array([float(root)]))
     return found

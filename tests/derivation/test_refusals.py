@@ -206,3 +206,36 @@ def test_a_count_on_which_nothing_depends_is_no_part_of_the_state() -> None:
     solution = ngm.solve(ngm.loads(text([*SIR, ("D", False)], VALUES, flows, free={"S": 9, "R": 0})))
     assert solution.infection_free["D"] == 0
     assert solution.R0 == pytest.approx(0.5 / 0.35, rel=1e-14)
+
+
+@pytest.mark.parametrize(
+    ("death", "rate"), [("min(gamma*I, 3 + I)", 0.25), ("max(gamma*I - 1, 0.25*I)", 0.25), ("max(2*I, I - 3)", 2.0)]
+)
+def test_the_branch_in_force_gives_the_slope(death: str, rate: float) -> None:
+    """By hand: at I = 0 the side in force is gamma I, 0.25 I and 2 I; S = 30, infection 0.5 S I: R0 = 15 / rate."""
+    flows: list[Flow] = [("S", "I", "beta*S*I", "t"), ("I", "", death, "x")]
+    solution = ngm.solve(ngm.loads(text([("S", False), ("I", True)], VALUES, flows, free={"S": 30})))
+    assert solution.V == ((rate,),)
+    assert solution.R0 == pytest.approx(15 / rate, rel=1e-14)
+
+
+def test_a_capped_infection_follows_its_uncapped_branch() -> None:
+    """By hand: min(S I, c) is S I near I = 0 while c > 0: F = beta S."""
+    flows: list[Flow] = [("S", "I", "beta*min(I*S, 4)", "t"), ("I", "", "gamma*I", "x")]
+    solution = ngm.solve(ngm.loads(text([("S", False), ("I", True)], VALUES, flows, free={"S": 30})))
+    assert solution.F == ((15.0,),)
+    assert solution.closed_form == "30*beta/gamma"
+
+
+@pytest.mark.parametrize(("births", "deaths", "rest"), [("3", "S + 2*S^2", 1.0), ("10", "S + S^3", 2.0)])
+def test_a_root_on_the_grid_is_found(births: str, deaths: str, rest: float) -> None:
+    """By hand: 3 = S + 2 S^2 at S = 1, 10 = S + S^3 at S = 2."""
+    flows: list[Flow] = [
+        ("", "S", births, "x"),
+        ("S", "", deaths, "x"),
+        ("S", "I", "beta*S*I", "t"),
+        ("I", "", "gamma*I", "x"),
+    ]
+    solution = ngm.solve(ngm.loads(text([("S", False), ("I", True)], VALUES, flows)))
+    assert solution.infection_free["S"] == pytest.approx(rest, rel=1e-15)
+    assert solution.R0 == pytest.approx(2 * rest, rel=1e-14)
