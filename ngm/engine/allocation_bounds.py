@@ -97,7 +97,7 @@ def _by_tangents(problem: Problem, budget: float, x: FloatArray) -> tuple[float,
         if low >= best * (1 - CLOSE) or step == more - 1:
             break
         for share in (1.0, 0.3):
-            z = x + share * (y - x)
+            z = np.clip(x + share * (y - x), 0.0, problem.upper)
             value = float(problem.tangents(z)[0].max(initial=0.0))
             if value < best:
                 best, x = value, z
