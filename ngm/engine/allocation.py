@@ -406,7 +406,7 @@ def _feasible(problem: Problem, x: FloatArray, budget: float) -> FloatArray:
         space = np.where(takes, problem.upper - x, 0.0)
         room = problem.spend(space)
         if room > 0:
-            x = x + space * min(1.0, (budget - problem.spend(x)) / room)
+            x = x + space * min(1.0, max(0.0, budget - problem.spend(x)) / room)
     return np.asarray(x)
 
 
