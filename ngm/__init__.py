@@ -13,8 +13,10 @@ from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
 
 if TYPE_CHECKING:
     from ngm.analysis.allocation import allocate
+    from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
+    from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
     from ngm.analysis.strength import coverage_needed, strength_needed
     from ngm.scenario.file import load, loads
@@ -28,12 +30,14 @@ __all__ = [
     "Scenario",
     "ScenarioError",
     "allocate",
+    "calibrate",
     "combined",
     "compare",
     "control",
     "coverage_needed",
     "load",
     "loads",
+    "sensitivity",
     "solve",
     "strength_needed",
 ]
@@ -48,6 +52,8 @@ _HOMES = {
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
+    "calibrate": "ngm.analysis.calibrate",
+    "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
 }

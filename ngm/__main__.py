@@ -14,6 +14,7 @@ from collections.abc import Sequence
 from ngm.errors import NgmError, Problem, ScenarioError
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Comparison
+from ngm.results_sensitivity import Calibration, Sensitivity
 
 __all__ = ["main"]
 
@@ -21,6 +22,8 @@ VERBS = {
     "solve": "derive F, V and K from the flows; R0 with bounds, structure, growth",
     "compare": "every intervention beside the baseline: control reproduction number, growth, share removed, cost",
     "control": "type, target and state reproduction numbers, and the share to remove",
+    "sensitivity": "how R0 and the growth rate answer to each parameter, and to each entry of K",
+    "calibrate": "the value of a parameter at which R0 is the one that is wanted",
 }
 
 
@@ -46,6 +49,9 @@ def _parser() -> argparse.ArgumentParser:
             help="another value for a parameter, in its own unit; may be given more than once",
         )
         sub.add_argument("--json", action="store_true", help="print one JSON object")
+        if verb == "calibrate":
+            sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
+            sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
         if verb == "compare":
             sub.add_argument(
                 "--combine",
@@ -92,22 +98,25 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _run(options: argparse.Namespace) -> str:
     import ngm
-    from ngm.console import compare_text, control_text, solve_text
+    from ngm.console import result_text
 
-    values = _values(options.values)
     scenario = ngm.load(options.file)
+    values = _values(options.values)
     if values:
         scenario = scenario.with_values(**values)
-    result: Solution | Comparison | ControlResult
-    if options.verb == "compare":
-        result = ngm.compare(scenario, combinations=options.combinations)
-    else:
-        result = ngm.solve(scenario) if options.verb == "solve" else ngm.control(scenario)
-    if options.json:
-        return json.dumps(result.to_json(), ensure_ascii=False)
-    if isinstance(result, Comparison):
-        return compare_text(result)
-    return solve_text(result) if isinstance(result, Solution) else control_text(result)
+    result: Solution | Comparison | ControlResult | Sensitivity | Calibration
+    match options.verb:
+        case "compare":
+            result = ngm.compare(scenario, combinations=options.combinations)
+        case "control":
+            result = ngm.control(scenario)
+        case "sensitivity":
+            result = ngm.sensitivity(scenario)
+        case "calibrate":
+            result = ngm.calibrate(scenario, options.parameter, options.R0)
+        case _:
+            result = ngm.solve(scenario)
+    return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)
 
 
 if __name__ == "__main__":

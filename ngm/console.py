@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Compared, Comparison
+from ngm.results_sensitivity import Calibration, Sensitivity
 
 __all__ = ["CAUTION", "compare_text", "control_text", "solve_text"]
 
@@ -228,6 +229,57 @@ def _mixes(result: Comparison) -> list[str]:
         return []
     rows = [[row.name, *(figure(round(share, 6)) for share in row.case_mix or ())] for row in shown]
     return ["", "Share of new infections", *table(rows, ["", *result.types])]
+
+
+def sensitivity_text(result: Sensitivity) -> str:
+    """Return the local indices of `ngm.sensitivity` as text, largest first."""
+    unit = result.time_unit
+    lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
+    lines.append("No R0" if result.R0 is None else f"R0 = {figure(result.R0)}")
+    lines.append(f"growth rate r = {figure(result.growth_rate)} per {unit}")
+    lines.append("An elasticity e: 1 % more of the parameter moves the number by e %, all others held.")
+    order = sorted(result.local, key=lambda index: -abs(index.elasticity or 0.0))
+    rows = [
+        [
+            index.parameter,
+            figure(index.value),
+            figure(index.elasticity),
+            figure(index.derivative),
+            figure(index.growth_elasticity),
+        ]
+        for index in order[:80]
+    ]
+    lines += ["", *table(rows, ["parameter", "value", "elasticity of R0", "dR0/dp", "elasticity of r"])]
+    if len(order) > 80:
+        lines.append(f"  … and {len(order) - 80} more; use --json.")
+    names = result.types_at_infection
+    if result.entry_elasticity is not None and len(names) <= MOST_PRINTED:
+        lines += ["", "Elasticity of R0 by entry of K (they add up to 1)"]
+        rows = [[name, *(figure(v) for v in row)] for name, row in zip(names, result.entry_elasticity, strict=True)]
+        lines += table(rows, ["", *names])
+    lines += _closing(result.warnings)
+    return _squeezed(lines)
+
+
+def calibrate_text(result: Calibration) -> str:
+    """Return the value found by `ngm.calibrate` as text."""
+    lines = [f"{result.parameter} = {result.value!r} gives R0 = {result.R0:g}."]
+    return _squeezed([*lines, *_closing(result.warnings)])
+
+
+def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Calibration) -> str:
+    """Return any result as text."""
+    match result:
+        case Solution():
+            return solve_text(result)
+        case Comparison():
+            return compare_text(result)
+        case ControlResult():
+            return control_text(result)
+        case Sensitivity():
+            return sensitivity_text(result)
+        case Calibration():
+            return calibrate_text(result)
 
 
 def _closing(warnings: Sequence[str]) -> list[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -144,12 +145,17 @@ class Numbers:
         core = [rate for rate in self._class_growth if rate is not None]
         self._growth = operator.growth_rate(start) if not single else max([*core, operator.growth_rate(start)])
 
+    @cached_property
+    def growth_ball(self) -> Any:
+        """The largest real part of the eigenvalues of F - V, per time unit, as a ball."""
+        if self._growth is not None:
+            return interval(self._growth, self._growth)
+        return growth_rate(self.F, self.V)
+
     @property
     def growth(self) -> float:
         """The largest real part of the eigenvalues of F - V, per time unit."""
-        if self._growth is None:
-            self._growth = nearest(growth_rate(self.F, self.V))
-        return self._growth
+        return nearest(self.growth_ball)
 
     def class_growth(self, number: int) -> float | None:
         """Return the growth rate of one class of K, as if it were alone; None for a zero class."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -32,11 +33,13 @@ class InfectionFree:
     """The state without infection: every uninfected compartment as an array over the space.
 
     `residual`: the largest net flow over gross flow of a compartment. `warnings`: what was accepted all the same.
+    `net_flows`: of each given copy that has to be at rest, its net flow (in the arithmetic in use) and its gross flow.
     """
 
     state: dict[str, Array]
     residual: float
     warnings: tuple[str, ...]
+    net_flows: dict[str, tuple[Any, float]]
 
 
 def infection_free(template: Template, algebra: Algebra, matrices: Mapping[str, Array]) -> InfectionFree:
@@ -77,8 +80,8 @@ class _Finder:
             raise self._left_free(system, free.members) from None
         x = self._choose(system, found)
         state = system.state(x)
-        residual = self._check(system, x, state)
-        return InfectionFree(state, residual, tuple(self.warnings))
+        residual, net_flows = self._check(system, x, state)
+        return InfectionFree(state, residual, tuple(self.warnings), net_flows)
 
     def _refuse_needed(self) -> None:
         for arrow in self.template.rest_arrows:
@@ -143,7 +146,9 @@ class _Finder:
         shown = [f"{label} = {value:.6g}" for label, value in zip(system.labels, numbers, strict=True)]
         return ", ".join(shown[:6]) + (", …" if len(shown) > 6 else "")
 
-    def _check(self, system: RestSystem, x: Array, state: Mapping[str, Array]) -> float:
+    def _check(
+        self, system: RestSystem, x: Array, state: Mapping[str, Array]
+    ) -> tuple[float, dict[str, tuple[Any, float]]]:
         """Refuse a given state that is negative or not at rest; note the largest net flow over gross flow."""
         template, space = self.template, self.template.space
         problems = []
@@ -175,8 +180,9 @@ class _Finder:
         entering, leaving = net_flow(template, system.evaluator(x), template.rest_arrows, moving)
         labels = template.items_of(moving)
         into, out = as_floats(entering)[:, 0], as_floats(leaving)[:, 0]
-        net = as_floats(np.asarray(entering - leaving))[:, 0]
-        worst = 0.0
+        exact_net = np.asarray(entering - leaving)[:, 0]
+        net = as_floats(exact_net)
+        worst, net_flows = 0.0, {}
         for k, label in enumerate(labels):
             gross = abs(into[k]) + abs(out[k])
             if not np.isfinite(gross):
@@ -190,6 +196,8 @@ class _Finder:
                 )
                 continue
             share = abs(net[k]) / gross if gross > 0 else 0.0
+            if label.split("[")[0] not in template.free:
+                net_flows[label] = (exact_net[k], gross)
             worst = max(worst, share)
             if share > AT_REST and label.split("[")[0] not in template.free:
                 name = label.split("[")[0]
@@ -203,4 +211,4 @@ class _Finder:
                 )
         if problems:
             raise DerivationError(problems)
-        return worst
+        return worst, net_flows

@@ -15,6 +15,7 @@ from dataclasses import dataclass
 from typing import Any, Protocol
 
 import numpy as np
+from flint import ctx
 from scipy.linalg import lu_factor, lu_solve
 from scipy.optimize import brentq
 
@@ -28,8 +29,8 @@ __all__ = ["FreeStates", "RestStates", "System", "find_rest", "is_stable"]
 MOST_CANDIDATES = 64
 #: Random starts of Newton's method for a block of several unknowns.
 STARTS = 80
-#: Bits of precision tried in turn before a block counts as singular.
-BITS = (128, 256, 1024)
+#: How many times the bits in force are tried in turn before a block counts as singular.
+TIMES = (1, 2, 8)
 
 
 class System(Protocol):
@@ -131,8 +132,8 @@ class _Search:
                 plain[block] = self._solve_floats(slope[np.ix_(block, block)], -right, block)
             return plain
         free: list[int] = []
-        for bits in BITS:
-            with precision(bits):
+        for times in TIMES:
+            with precision(times * ctx.prec):
                 slope, constant = self._affine_parts()
                 x = balls(np.zeros(self.n))
                 free = []
@@ -228,14 +229,14 @@ class _Search:
         assert exact is not None
         scale = max(1e-300, float(np.max(np.abs(start), initial=0.0)))
         live = np.abs(start) > 1e-11 * scale
-        with precision(BITS[0]):
+        with precision(ctx.prec):
             zero_rows = exact.flow(balls(np.where(live, start, 0.0)))
             for k in np.flatnonzero(~live):
                 if not (is_zero(zero_rows[0][k, 0]) and is_zero(zero_rows[1][k, 0])):
                     live[k] = True
         members = np.flatnonzero(live)
-        for bits in BITS[:2]:
-            with precision(bits):
+        for times in TIMES[:2]:
+            with precision(times * ctx.prec):
                 found = self._krawczyk(np.where(live, start, 0.0), members)
                 if found is not None:
                     return found
@@ -254,7 +255,7 @@ class _Search:
             if step is None:
                 return None
             new = _middle(x[members] - step)
-            done = all(abs(a - b) <= abs(a) * arb(2) ** -90 for a, b in zip(new, x[members], strict=True))
+            done = all(abs(a - b) <= abs(a) * arb(2) ** (30 - ctx.prec) for a, b in zip(new, x[members], strict=True))
             x[members] = new
             if done:
                 break
@@ -268,7 +269,10 @@ class _Search:
         except ZeroDivisionError:
             return None
         for widen in (2, 64, 4096):
-            radius = [abs(s).upper() * widen + abs(v) * arb(2) ** -100 for s, v in zip(step, x[members], strict=True)]
+            radius = [
+                abs(s).upper() * widen + abs(v) * arb(2) ** (24 - ctx.prec)
+                for s, v in zip(step, x[members], strict=True)
+            ]
             box = x.copy()
             around = np.array([arb(v.mid(), r.upper()) for v, r in zip(x[members], radius, strict=True)], dtype=object)
             box[members] = around
