@@ -65,10 +65,17 @@ def _used(draft: Draft) -> Iterator[Placed]:
     """Yield every expression of the model that is used as it stands; definitions are used through these."""
     for _, placed in draft.flows:
         yield placed
-    for entries in draft.infection_free.values():
+    for _, _, entries in _given(draft):
         yield from entries
     for _, placed in _populations(draft):
         yield placed
+
+
+def _given(draft: Draft) -> Iterator[tuple[str, str, tuple[Placed, ...]]]:
+    """Yield section, compartment and expressions of every state that is given."""
+    for section, state in draft.states.items():
+        for name, entries in state.items():
+            yield section, name, entries
 
 
 def _all(draft: Draft) -> Iterator[Placed]:
@@ -94,7 +101,7 @@ def _names(draft: Draft) -> bool:
                 told.add(node.name)
                 message = _unknown(draft, node.name, role, quantities)
                 draft.found.add(placed.where, message, placed.key, placed.expression.text, node.position)
-    for name, entries in draft.infection_free.items():
+    for _, name, entries in _given(draft):
         for placed in entries:
             for node in walk(placed.expression.tree):
                 if isinstance(node, Name) and node.name in draft.infected:
@@ -121,7 +128,7 @@ def _circles(draft: Draft) -> list[str]:
     needs: dict[str, list[str]] = {}
     for name, definition in draft.definitions.items():
         needs[name] = _needed(definition.expression.tree)
-    for name, entries in draft.infection_free.items():
+    for name, entries in draft.states["infection_free"].items():
         needs[name] = [needed for placed in entries for needed in _needed(placed.expression.tree)]
     for name, matrix in draft.matrices.items():
         if matrix.population is not None:
@@ -137,6 +144,14 @@ def _circles(draft: Draft) -> list[str]:
         key: Key = (sections[role], draft.typed[turned[0]])
         advice = "" if role == "definition" else " Leave one of them out, or write it in parameters."
         draft.found.add(sections[role], f"{arrows(turned)} goes in a circle.{advice}", key)
+    now = {
+        name: [needed for placed in entries for needed in _needed(placed.expression.tree)]
+        for name, entries in draft.states["state_now"].items()
+    }
+    for circle in order({**{n: needs[n] for n in draft.definitions}, **now})[1]:
+        if any(name in now for name in circle):
+            message = f"{arrows(circle)} goes in a circle. Write one of them in parameters."
+            draft.found.add("state_now", message, ("state_now",))
     for circle in parameter_order(draft.parameters)[1]:
         key = ("parameters", draft.typed[circle[0]])
         draft.found.add("parameters", f"{arrows(circle)} goes in a circle. Give one of them a number.", key)
@@ -228,7 +243,7 @@ def _groups(draft: Draft, ordered: list[str]) -> None:
         allowed = frozenset(name for end in ends for name in draft.compartments[end].by)
         owner = f"{ends[0]} has" if len(ends) == 1 else f"{ends[0]} and {ends[1]} have"
         check_within(draft, placed, has, allowed, lookup, owner)
-    for name, entries in draft.infection_free.items():
+    for _, name, entries in _given(draft):
         allowed = frozenset(draft.compartments[name].by)
         for placed in entries:
             check_within(draft, placed, varies(draft, placed, lookup), allowed, lookup, f"{name} has")
@@ -259,7 +274,7 @@ def _numbers(draft: Draft) -> None:
             except exact.NoValueError as error:
                 draft.found.add(placed.where, str(error), placed.key, placed.expression.text, error.position)
                 break
-    for entries in draft.infection_free.values():
+    for _, _, entries in _given(draft):
         for placed in entries:
             if exact.is_closed(placed.expression.tree):
                 try:

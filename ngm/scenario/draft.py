@@ -65,7 +65,10 @@ class Draft:
     matrices: dict[str, Matrix] = field(default_factory=dict)
     flows: list[tuple[Flow, Placed]] = field(default_factory=list)
     movements: list[Movement] = field(default_factory=list)
-    infection_free: dict[str, tuple[Placed, ...]] = field(default_factory=dict)
+    #: section -> compartment -> its expressions: the state without infection, and the state now
+    states: dict[str, dict[str, tuple[Placed, ...]]] = field(
+        default_factory=lambda: {"infection_free": {}, "state_now": {}}
+    )
     interventions: list[Intervention] = field(default_factory=list)
     report: dict[str, str | tuple[str, ...]] = field(default_factory=dict)
     #: kinds of flow and states of infection that the file names, readable or not

@@ -15,7 +15,7 @@ from ngm.scenario.document import read_text, to_data
 from ngm.scenario.draft import Draft
 from ngm.scenario.edit import delete, insert, move, rename, set_value
 from ngm.scenario.fields import EnoughError, Findings
-from ngm.scenario.model import Scenario
+from ngm.scenario.model import Expression, Scenario
 from ngm.scenario.read import read
 
 __all__ = ["delete", "insert", "load", "loads", "move", "rename", "set_value"]
@@ -62,6 +62,10 @@ def loads(text: str, folder: str | None = None) -> Scenario:
     return _scenario(draft, text, folder)
 
 
+def _state(draft: Draft, section: str) -> dict[str, tuple[Expression, ...]]:
+    return {name: tuple(placed.expression for placed in entries) for name, entries in draft.states[section].items()}
+
+
 def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
     return Scenario(
         title=draft.title,
@@ -73,9 +77,8 @@ def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
         dimensions=draft.dimensions,
         matrices=draft.matrices,
         movements=tuple(draft.movements),
-        infection_free={
-            name: tuple(placed.expression for placed in entries) for name, entries in draft.infection_free.items()
-        },
+        infection_free=_state(draft, "infection_free"),
+        state_now=_state(draft, "state_now"),
         interventions=tuple(draft.interventions),
         report=draft.report,
         summary=draft.summary,

@@ -226,6 +226,7 @@ class Scenario:
 
     Mappings keep the order of the file. Built by `ngm.load` and `ngm.loads` only, which check everything first.
     `infection_free`: compartment -> one expression for all groups, or one for each copy (in the order of its `by`).
+    `state_now`: the same for the state of today, at rest or not; a compartment left out is as without infection.
     `warnings`: what the reader noticed and did not refuse. `text`: the file.
     """
 
@@ -239,6 +240,7 @@ class Scenario:
     matrices: Mapping[str, Matrix] = field(default_factory=dict)
     movements: tuple[Movement, ...] = ()
     infection_free: Mapping[str, tuple[Expression, ...]] = field(default_factory=dict)
+    state_now: Mapping[str, tuple[Expression, ...]] = field(default_factory=dict)
     interventions: tuple[Intervention, ...] = ()
     report: Mapping[str, str | tuple[str, ...]] = field(default_factory=dict)
     summary: str | None = None

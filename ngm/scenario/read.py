@@ -19,7 +19,7 @@ from ngm.scenario.read_parameters import read_parameters
 
 __all__ = ["read"]
 
-_LATER = ("next_generation", "projection", "state_now")
+_LATER = ("next_generation", "projection")
 _SECTIONS = (
     "scenario",
     "dimensions",
@@ -30,6 +30,7 @@ _SECTIONS = (
     "flow",
     "movement",
     "infection_free",
+    "state_now",
     "intervention",
     "report",
 )
@@ -71,7 +72,8 @@ def read(draft: Draft, data: Mapping[str, Any], folder: str | None) -> None:
     _definitions(draft, members["definitions"])
     _flows(draft, data, required=not later)
     _movements(draft, data)
-    _infection_free(draft, data)
+    for section in ("infection_free", "state_now"):
+        _state(draft, data, section)
     read_interventions(draft, entries(draft, data, "intervention"))
     _report(draft, data)
 
@@ -362,13 +364,15 @@ def _movement_groups(draft: Draft, movement: Movement, where: str, key: Key) -> 
                 return
 
 
-def _infection_free(draft: Draft, data: Mapping[str, Any]) -> None:
-    for typed, raw in _section(draft, data, "infection_free").items():
-        where, key = f"infection_free.{short(typed)}", ("infection_free", typed)
+def _state(draft: Draft, data: Mapping[str, Any], section: str) -> None:
+    """Read a state of the uninfected compartments: without infection, or as it is now."""
+    state = draft.states[section]
+    for typed, raw in _section(draft, data, section).items():
+        where, key = f"{section}.{short(typed)}", (section, typed)
         name = draft.resolve(typed, "compartment", where, key)
         if name is None:
             continue
-        if name in draft.infection_free:
+        if name in state:
             draft.found.add(where, f"{name} is given twice, in two spellings. Keep one.", key)
             continue
         if name in draft.infected:
@@ -388,7 +392,7 @@ def _infection_free(draft: Draft, data: Mapping[str, Any]) -> None:
             if expression is not None:
                 placed.append(Placed(expression, place, key))
         if len(placed) == len(items):
-            draft.infection_free[name] = tuple(placed)
+            state[name] = tuple(placed)
 
 
 def _report(draft: Draft, data: Mapping[str, Any]) -> None:

@@ -40,7 +40,9 @@ ON_PLAIN: list[tuple[str, str, tuple[str, ...]]] = [
     ('time_unit = "day"', 'time_unit = "day"\ntime = "continuous"', ("scenario, time: 'continuous' is not known",)),
     # sections
     ("[definitions]", "[definitons]", ("definitons: is not a section", "Did you mean 'definitions'?")),
-    ("[infection_free]", "[state_now]\nS = 1\n[infection_free]", ("[state_now]: is not supported yet",)),
+    ("[infection_free]", "[state_now]\nI = 1\n[infection_free]", ("state_now.I: I is infected",)),
+    ("[infection_free]", "[state_now]\nS = -1\n[infection_free]", ("state_now.S: -1 is negative",)),
+    ("[infection_free]", "[state_now]\nX = 1\n[infection_free]", ("state_now",)),
     ("[infection_free]", "[projection]\nstages = []\n[infection_free]", ("[projection]: is not supported yet",)),
     ("[infection_free]", "[next_generation]\ntypes = []\n[infection_free]", ("[next_generation]: is not supported",)),
     ("[[intervention]]", "[intervention]", ("[intervention]: expected a list of tables", "[[intervention]]")),
