@@ -123,8 +123,10 @@ def suggest(name: str, known: Iterable[str]) -> str | None:
         return None
     others = [other for other in known if other != wanted]
     folded = _folded(wanted)
+    # the first letter rules most of them out, which matters where a file has 100,000 names
+    starts = {"_", folded[:1], folded[:1].upper()}
     for other in others:
-        if len(other) <= 2 * _LONGEST_COMPARED and _folded(other) == folded:
+        if other[:1] in starts and len(other) <= 2 * _LONGEST_COMPARED and _folded(other) == folded:
             return other
     near = [other for other in others if abs(len(other) - len(wanted)) <= 3 + len(wanted) // 4][:_MOST_COMPARED]
     found = get_close_matches(wanted, near, n=1, cutoff=0.7)

@@ -36,8 +36,8 @@ _LARGEST = Decimal("1e300")
 
 Rows = list[tuple[int, list[str]]]
 Block = tuple[tuple[Decimal, ...], ...]
-#: Square without labels, with labels of rows and columns, with a header row alone; or long.
-Form = Literal["bare", "labelled", "header", "long"]
+#: Square without labels, with labels of rows and columns, with a header row or a header column alone; or long.
+Form = Literal["bare", "labelled", "header", "column", "long"]
 
 
 class MatrixFileError(Exception):
@@ -111,8 +111,13 @@ def form_and_table(rows: Rows, groups: Sequence[str]) -> tuple[Form, Block]:
         order = [[cell.lower() for cell in first].index(name) for name in LONG]
         return "long", _long(rows[1:], order, groups)
     if len(rows) == size and widths == {size}:
+        if size > 1 and not first[0] and all(_is_label(cell, groups) for cell in first[1:]):
+            # a labelled table that lacks a group
+            return "labelled", _labelled(rows[0][1][1:], rows[1:], groups)
         if size > 1 or not _is_label(first[0], groups):
             return "bare", _bare(rows)
+    elif len(rows) == size and widths == {size + 1} and all(_is_label(cells[0], groups) for _, cells in rows):
+        return "column", _column_only(rows, groups)
     elif len(rows) == size + 1:
         if widths == {size + 1}:
             # one row and column too many is told as that, not as labels that nobody meant
@@ -250,6 +255,14 @@ def _header_only(rows: Rows, groups: Sequence[str]) -> Block:
     return _bare(rows[1:])
 
 
+def _column_only(rows: Rows, groups: Sequence[str]) -> Block:
+    if _match([cells[0] for _, cells in rows], groups, None, "row") != list(range(len(groups))):
+        raise MatrixFileError(
+            "the rows have labels in another order than the groups, and the columns have none. Add a header row."
+        )
+    return tuple(_numbers(cells[1:], line, 2) for line, cells in rows)
+
+
 def _match(labels: list[str], groups: Sequence[str], line: int | None, what: str) -> list[int]:
     """Return, for each group, the place of its label."""
     known = {group: index for index, group in enumerate(groups)}
@@ -301,7 +314,7 @@ def _numbers(cells: list[str], line: int, first: int) -> tuple[Decimal, ...]:
     try:
         row = tuple(map(Decimal, cells))
         # nan compares false with everything: so a row passes only if every number is proven good
-        if all(0 <= value < _LARGEST for value in row) and not any("_" in cell for cell in cells):
+        if all(0 <= value < _LARGEST for value in row) and all(map(_is_plain, cells)):
             return row
     except InvalidOperation:
         pass
@@ -312,6 +325,11 @@ def _numbers(cells: list[str], line: int, first: int) -> tuple[Decimal, ...]:
     raise AssertionError(cells)
 
 
+def _is_plain(cell: str) -> bool:
+    """Return False for what only Python's numbers may hold: underscores, and digits of other scripts."""
+    return "_" not in cell and cell.isascii()
+
+
 def _trouble(cell: str, *, signed: bool = False) -> str:
     text = _cut(cell.strip())
     if not text:
@@ -320,7 +338,7 @@ def _trouble(cell: str, *, signed: bool = False) -> str:
         value = Decimal(cell)
     except InvalidOperation:
         value = Decimal("nan")
-    if not value.is_finite() or "_" in cell:
+    if not value.is_finite() or not _is_plain(cell):
         comma = cell.strip().replace(",", ".", 1)
         advice = f" Write a decimal with a point: {_cut(comma)}." if "," in cell else ""
         return f"'{text}' is not a number.{advice}"

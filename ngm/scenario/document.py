@@ -26,6 +26,8 @@ MOST_PARTS = 50
 _PART = r"""(?:[A-Za-z0-9_-]+|"[^"\n]*"|'[^'\n]*')[ \t]*\.[ \t]*"""
 _LONG_KEY = re.compile(rf"(?:^[ \t]*\[{{0,2}}|[{{,])[ \t]*(?:{_PART}){{{MOST_PARTS}}}", re.MULTILINE)
 _PLACE = re.compile(r" \(at (?:line (\d+), column (\d+)|end of document)\)$")
+_WORD = re.compile(r"[^\W\d_]\w*", re.UNICODE)
+_POINT_FIRST = re.compile(r"[+-]?\.\d")
 _FOREIGN_KEY = re.compile(r"^[ \t]*([^\W\d_][\w.]*)[ \t]*=", re.UNICODE)
 
 
@@ -134,10 +136,10 @@ def _syntax(text: str, told: str) -> NoReturn:
         if number > 1 and column == 1 and what == "Cannot overwrite a value":
             number, column = number - 1, 1
     line = lines[number - 1] if number <= len(lines) else ""
-    _refuse(_advice(what, line), f"line {number}", line, max(0, column - 1))
+    _refuse(_advice(what, line, max(0, column - 1)), f"line {number}", line, max(0, column - 1))
 
 
-def _advice(what: str, line: str) -> str:
+def _advice(what: str, line: str, column: int) -> str:
     if what.startswith(("Cannot overwrite", "Duplicate inline table key")):
         return "this key stands twice in its table. Keep one of the two."
     if what.startswith(("Cannot declare", "Cannot mutate")):
@@ -146,4 +148,23 @@ def _advice(what: str, line: str) -> str:
     if what == "Invalid statement" and foreign is not None and not foreign.group(1).isascii():
         return f'a key with letters other than A to Z wants quotes: "{foreign.group(1)}" = …'
     what = what[:1].lower() + what[1:] if what else "cannot be read"
-    return f"not valid TOML: {what}."
+    return f"not valid TOML: {what}.{_hint(what, line, column)}"
+
+
+def _hint(what: str, line: str, column: int) -> str:
+    """Return what was most likely meant at this place of a line that is no TOML."""
+    rest = line[column:]
+    word = _WORD.match(rest)
+    if word is not None and word.group().lower() in ("true", "yes", "on", "false", "no", "off"):
+        return f" Write {'true' if word.group().lower() in ('true', 'yes', 'on') else 'false'}, without quotes."
+    if _POINT_FIRST.match(rest):
+        return " A number begins with a digit: 0.5, not .5."
+    if rest[:1].isdigit() and line[:column].rstrip().endswith("0"):
+        return " A number has no zeros in front: 0.5, not 00.5."
+    if word is not None and line[:column].rstrip().endswith("="):
+        return ' Text and expressions stand in quotes: rate = "beta * S".'
+    if not rest and what.startswith("illegal character"):
+        return " A text ends with a quote on the line on which it begins."
+    if not rest and line.rstrip().endswith((",", "{")) and "{" in line:
+        return " What stands between { and } stands on one line."
+    return ""

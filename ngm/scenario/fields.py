@@ -28,7 +28,7 @@ _SMALLEST_EXPONENT = -300
 
 
 #: a file with more problems than this is not read further: finding suggestions for 100,000 names takes minutes
-MOST_PROBLEMS = 200
+MOST_PROBLEMS = 60
 
 
 class EnoughError(Exception):

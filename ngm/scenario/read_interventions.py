@@ -108,7 +108,7 @@ def _amount(draft: Draft, table: Table, form: What, name: str | None) -> tuple[A
         return None
     action = actions[0]
     if action not in allowed:
-        table.problem(action, f"a {form} takes no {action}. Write {choice}.")
+        table.problem(action, f"{'an' if form == 'infectivity' else 'a'} {form} takes no {action}. Write {choice}.")
         return None
     number = draft.found.number(table.raw[action], table.at(action), (*table.key, action))
     if number is None:

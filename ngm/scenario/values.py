@@ -14,7 +14,7 @@ from ngm.expression import names, parse
 from ngm.expression.tree import Add, Multiply, Negate, Node, Number
 from ngm.expression.write import write
 from ngm.scenario import exact
-from ngm.scenario.fields import closest, describe, short, to_expression
+from ngm.scenario.fields import closest, describe, listed, short, to_expression
 from ngm.scenario.following import values_in_force
 from ngm.scenario.model import Change, Expression, Intervention, Parameter, Scenario, number
 
@@ -85,10 +85,21 @@ def with_values(scenario: Scenario, values: Mapping[str, object], *, rewrite: bo
         name = names.canonical(typed)
         if name is None or name not in parameters:
             what = f"'{short(typed)}' is not a parameter of this scenario."
-            other = (
-                "Only parameters can be set." if name in scenario.definitions or name in scenario.compartments else ""
-            )
-            hint = closest(name or typed, parameters) or f" {other}".rstrip()
+            hint = closest(name or typed, parameters)
+            base = names.canonical(typed.partition("[")[0])
+            if base in parameters:
+                hint = f" A value given here holds in all groups of {base}: write {base} alone, or edit the file."
+            elif (
+                not hint
+                and name is not None
+                and any(
+                    name in known
+                    for known in (scenario.definitions, scenario.compartments, scenario.matrices, scenario.dimensions)
+                )
+            ):
+                hint = " Only parameters can be set."
+            elif not hint:
+                hint = f" The parameters: {listed(parameters)}." if parameters else " It has no parameters."
             problems.append(Problem("", f"{what}{hint}"))
             continue
         try:

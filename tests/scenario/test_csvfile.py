@@ -58,6 +58,7 @@ def test_forms(text: str) -> None:
         (",x\nx,3", ("x",), ((3,),)),
         ("from,to,value\nx,x,3", ("x",), ((3,),)),
         ("x,x,3", ("x",), ((3,),)),
+        ("x,1,2\ny,3,4", ("x", "y"), ((1, 2), (3, 4))),
         ("1e-3,0\n0,1E2", ("x", "y"), ((Decimal("0.001"), 0), (0, 100))),
     ],
 )
@@ -84,7 +85,9 @@ def test_small_and_numeric_labels(text: str, groups: tuple[str, ...], table: obj
         (",a,b,d\na,1,2,3\nb,4,5,6\nc 1,7,8,9", "column 3: 'd' is not a group. The groups: a, b, c 1."),
         (",a,b,c 1\na,1,2,3\nb,4,5,6\nd,7,8,9", "row 3: 'd' is not a group"),
         (",a,b,b\na,1,2,3\nb,4,5,6\nc 1,7,8,9", "column 3: 'b' stands twice"),
-        (",a,b\na,1,2\nb,4,5", "line"),
+        (",a,b\na,1,2\nb,4,5", "there is no column for c 1"),
+        ("b,1,2,3\na,4,5,6\nc 1,7,8,9", "the rows have labels in another order than the groups"),
+        ("1,2,3\n4,٥,6\n7,8,9", "line 2, column 2: '٥' is not a number"),
         ("c 1,b,a\n1,2,3\n4,5,6\n7,8,9", "another order than the groups"),
         ("from,to,value\na,b,1\na,b,2", "line 3: from 'a' to 'b' stands twice"),
         ("from,to,value\na,b,1", "there is no value from 'a' to 'a'"),

@@ -1,0 +1,201 @@
+"""Wrong compartments, parameters, units and definitions.
+
+Each case: what is wrong, which base, the edits, and parts of the message, which are by hand.
+"""
+
+from __future__ import annotations
+
+from tests.contract.bases import PLAIN
+from tests.contract.edits import BETA, LABEL_S, NDEF, Case, beta
+
+COMPARTMENTS: list[Case] = [
+    ("infected missing", "P", [(LABEL_S, 'S = { label = "x" }')], ["compartments.S", "infected"]),
+    ("infected a text", "P", [(LABEL_S, 'S = { infected = "false" }')], ["compartments.S", "infected"]),
+    ("infected a number", "P", [(LABEL_S, "S = { infected = 0 }")], ["compartments.S", "infected"]),
+    ("unknown key", "P", [(LABEL_S, "S = { infected = false, start = 3 }")], ["compartments.S", "start"]),
+    ("label a number", "P", [(LABEL_S, "S = { infected = false, label = 3 }")], ["compartments.S", "label"]),
+    ("not a table", "P", [(LABEL_S, "S = false")], ["compartments.S", "table"]),
+    ("by unknown", "P", [(LABEL_S, 'S = { infected = false, by = ["age"] }')], ["compartments.S", "age"]),
+    ("by a text", "G", [("W = { infected = true }", 'W = { infected = true, by = "age" }')], ["W", '["age"]']),
+    ("by twice", "G", [("W = { infected = true }", 'W = { infected = true, by = ["age", "age"] }')], ["W", "twice"]),
+    ("by misspelt", "G", [("W = { infected = true }", 'W = { infected = true, by = ["aeg"] }')], ["aeg", "age"]),
+    (
+        "none infected",
+        "P",
+        [
+            ('E = { label = "Latently infected", infected = true }', "E = { infected = false }"),
+            ('I = { label = "Infectious", infected = true }', "I = { infected = false }"),
+        ],
+        ["infected"],
+    ),
+    (
+        "no compartments",
+        "P",
+        [(PLAIN[PLAIN.index("[compartments]") : PLAIN.index("[parameters]")], "")],
+        ["compartments"],
+    ),
+]
+
+PARAMETERS: list[Case] = [
+    ("value missing", "P", beta('unit = "1/day"'), ["parameters.beta", "value"]),
+    ("value true", "P", beta("value = true"), ["parameters.beta, value"]),
+    ("value a table", "P", beta("value = { a = 1 }"), ["parameters.beta, value"]),
+    ("value empty", "P", beta('value = ""'), ["parameters.beta, value"]),
+    ("value negative", "P", beta("value = -0.1"), ["parameters.beta, value", "sign"]),
+    ("negative expression", "P", beta('value = "1 - 2"'), ["parameters.beta, value", "negative"]),
+    ("not a number", "P", beta("value = nan"), ["parameters.beta, value"]),
+    ("infinite", "P", beta("value = -inf"), ["parameters.beta, value"]),
+    ("list without by", "P", beta("value = [1, 2]"), ["parameters.beta, value"]),
+    ("names a compartment", "P", beta('value = "S / 2"'), ["parameters.beta, value", "S", "compartment"]),
+    ("names a definition", "P", beta('value = "N / 2"'), ["parameters.beta, value", "N", "definition"]),
+    ("circle of one", "P", beta('value = "beta"'), ["beta", "circle"]),
+    ("circle of two", "P", [(BETA, 'beta = { value = "kap" }\nkap = { value = "2 * beta" }')], ["circle"]),
+    ("unknown name", "P", beta('value = "gama"'), ["gama", "gamma"]),
+    ("root of a negative", "P", beta('value = "sqrt(-1)"'), ["parameters.beta, value", "root"]),
+    ("log of zero", "P", beta('value = "log(0)"'), ["parameters.beta, value", "log"]),
+    ("zero to a negative power", "P", beta('value = "0^-1"'), ["parameters.beta, value"]),
+    ("overflow", "P", beta('value = "exp(2000)"'), ["parameters.beta, value", "large"]),
+    ("following gives a negative", "P", beta('value = "gamma - 1"'), ["beta", "negative"]),
+    ("following divides by zero", "P", beta('value = "1 / (gamma - 1/5)"'), ["beta", "0"]),
+    ("following with a range", "P", beta('value = "2 * gamma", range = [0, 1]'), ["beta", "range"]),
+    (
+        "following with a distribution",
+        "P",
+        beta('value = "2 * gamma", distribution = { name = "uniform", low = 0, high = 1 }'),
+        ["beta", "distribution"],
+    ),
+    ("following in per cent", "P", beta('value = "2 * gamma", unit = "%"'), ["beta", "%"]),
+    ("following in weeks", "P", beta('value = "2 * gamma", unit = "1/week"'), ["beta", "week"]),
+    ("range not a list", "P", beta("value = 1, range = 2"), ["beta, range"]),
+    ("range of three", "P", beta("value = 1, range = [0, 1, 2]"), ["beta, range"]),
+    ("range reversed", "P", beta("value = 1, range = [2, 0]"), ["beta, range"]),
+    ("range negative", "P", beta("value = 1, range = [-1, 2]"), ["beta, range", "negative"]),
+    ("range of texts", "P", beta('value = 1, range = ["a", "b"]'), ["beta, range"]),
+    ("range infinite", "P", beta("value = 1, range = [0, inf]"), ["beta, range"]),
+    ("sign unknown", "P", beta('value = 1, sign = "negative"'), ["beta, sign", "any"]),
+    ("unit a number", "P", beta("value = 1, unit = 7"), ["beta, unit"]),
+    ("by without dimensions", "P", beta('value = [1], by = ["age"]'), ["beta", "age"]),
+    ("season waits", "P", beta("value = 1, season = { amplitude = 0.1, period = 365, peak = 1 }"), ["beta", "season"]),
+    ("unknown key", "P", beta("value = 1, prior = 2"), ["beta", "prior"]),
+    (
+        "name of distribution unknown",
+        "P",
+        beta('value = 1, distribution = { name = "weibull", mean = 1, sd = 1 }'),
+        ["beta", "weibull", "lognormal"],
+    ),
+    (
+        "distribution in capitals",
+        "P",
+        beta('value = 1, distribution = { name = "Normal", mean = 1, sd = 1 }'),
+        ["Normal", "normal"],
+    ),
+    ("distribution without name", "P", beta("value = 1, distribution = { mean = 1, sd = 1 }"), ["beta", "name"]),
+    (
+        "distribution with a wrong key",
+        "P",
+        beta('value = 1, distribution = { name = "gamma", shape = 1, scale = 1 }'),
+        ["shape"],
+    ),
+    ("distribution lacks a key", "P", beta('value = 1, distribution = { name = "uniform", low = 1 }'), ["high"]),
+    ("sd zero", "P", beta('value = 1, distribution = { name = "normal", mean = 1, sd = 0 }'), ["sd"]),
+    ("sd negative", "P", beta('value = 1, distribution = { name = "lognormal", mean = 1, sd = -1 }'), ["sd"]),
+    ("lognormal mean zero", "P", beta('value = 1, distribution = { name = "lognormal", mean = 0, sd = 1 }'), ["mean"]),
+    ("gamma mean negative", "P", beta('value = 1, distribution = { name = "gamma", mean = -1, sd = 1 }'), ["mean"]),
+    (
+        "uniform reversed",
+        "P",
+        beta('value = 1, distribution = { name = "uniform", low = 2, high = 1 }'),
+        ["low", "high"],
+    ),
+    (
+        "uniform negative",
+        "P",
+        beta('value = 1, distribution = { name = "uniform", low = -2, high = 1 }'),
+        ["low", "negative"],
+    ),
+    (
+        "triangular mode outside",
+        "P",
+        beta('value = 1, distribution = { name = "triangular", low = 0, mode = 3, high = 2 }'),
+        ["mode"],
+    ),
+    ("beta too wide", "P", beta('value = 0.5, distribution = { name = "beta", mean = 0.5, sd = 0.6 }'), ["sd"]),
+    ("beta mean 1", "P", beta('value = 0.5, distribution = { name = "beta", mean = 1, sd = 0.1 }'), ["mean"]),
+    (
+        "distribution a list without groups",
+        "P",
+        beta('value = 1, distribution = [{ name = "uniform", low = 0, high = 1 }]'),
+        ["distribution"],
+    ),
+    ("too few values", "G", [("[1.0, 0.5]", "[1.0]")], ["parameters.sus, value", "2 groups of age"]),
+    ("too many values", "G", [("[1.0, 0.5]", "[1, 2, 3]")], ["parameters.sus, value", "2 groups of age"]),
+    (
+        "flat for two dimensions",
+        "G",
+        [("[[100, 200, 300], [400, 500, 600]]", "[1, 2, 3, 4, 5, 6]")],
+        ["parameters.size, value"],
+    ),
+    (
+        "order of by reversed",
+        "G",
+        [("[[100, 200, 300], [400, 500, 600]]", "[[1, 2], [3, 4], [5, 6]]")],
+        ["parameters.size"],
+    ),
+    ("ragged", "G", [("[[100, 200, 300], [400, 500, 600]]", "[[1, 2, 3], [4, 5]]")], ["parameters.size, value"]),
+    ("nested too deep", "G", [("[1.0, 0.5]", "[[1.0], [0.5]]")], ["parameters.sus, value"]),
+    ("negative in a list", "G", [("[1.0, 0.5]", "[1.0, -0.5]")], ["parameters.sus, value", "-0.5"]),
+    ("text in a list", "G", [("[1.0, 0.5]", '[1.0, "x y"]')], ["parameters.sus, value"]),
+    ("sum in a parameter", "G", [("xi = { value = 0.01 }", 'xi = { value = "sum(sus)" }')], ["parameters.xi", "sum"]),
+    ("matrix in a parameter", "G", [("xi = { value = 0.01 }", 'xi = { value = "G(1)" }')], ["parameters.xi", "G"]),
+    (
+        "follows one over groups",
+        "G",
+        [("xi = { value = 0.01 }", 'xi = { value = "2 * sus" }')],
+        ["parameters.xi", "age"],
+    ),
+    (
+        "two distributions of three",
+        "G",
+        [("[0.2, 0.25, 0.3], by", '[0.2, 0.25, 0.3], distribution = [{ name = "uniform", low = 0, high = 1 }], by')],
+        ["gamma", "distribution"],
+    ),
+]
+
+UNITS: list[Case] = [
+    (
+        "weeks in generations",
+        "P",
+        [('time_unit = "day"', 'time_unit = "generation"'), ("1/day", "1/week")],
+        ["beta", "week"],
+    ),
+    ("days in generations", "P", [('time_unit = "day"', 'time_unit = "generation"')], ["beta", "day"]),
+]
+
+DEFINITIONS: list[Case] = [
+    ("a number", "P", [(NDEF, "N = 1000")], ["definitions.N", "quotes"]),
+    ("circle of one", "P", [(NDEF, 'N = "N + 1"')], ["N", "circle"]),
+    ("circle of three", "P", [(NDEF, 'N = "a1 + S"\na1 = "a2"\na2 = "N"')], ["circle"]),
+    ("unknown name", "P", [(NDEF, 'N = "S + E + I + P"')], ["definitions.N", "'P'"]),
+    (
+        "51 deep",
+        "P",
+        [(NDEF, 'd0 = "S"\n' + "".join(f'd{k} = "d{k - 1} + 1"\n' for k in range(1, 52)) + 'N = "d51"')],
+        ["50"],
+    ),
+    (
+        "doubling",
+        "P",
+        [(NDEF, 'd0 = "S"\n' + "".join(f'd{k} = "d{k - 1} + d{k - 1}"\n' for k in range(1, 40)) + 'N = "d39"')],
+        ["100,000"],
+    ),
+    ("unused and wrong", "P", [(NDEF, NDEF + '\nextra = "S +"')], ["definitions.extra"]),
+    ("unused with unknown", "P", [(NDEF, NDEF + '\nextra = "S + foo"')], ["definitions.extra", "foo"]),
+    ("grouped one of a matrix bare", "G", [('N = "S + I"', 'N = "S + I + C"')], ["definitions.N", "C"]),
+    ("sum over an unknown dimension", "G", [('N = "S + I"', 'N = "sum(S, place)"')], ["definitions.N", "place"]),
+    ("sum over a missing dimension", "G", [('N = "S + I"', 'N = "sum(sus, town) + S"')], ["definitions.N", "town"]),
+    ("sum over a parameter", "G", [('N = "S + I"', 'N = "sum(S, q)"')], ["definitions.N", "q"]),
+    ("sum of three arguments", "G", [('N = "S + I"', 'N = "sum(S, age, town)"')], ["definitions.N", "sum"]),
+    ("sum without argument", "G", [('N = "S + I"', 'N = "sum()"')], ["definitions.N", "sum"]),
+    ("matrix of two arguments", "G", [('N = "S + I"', 'N = "G(S, I)"')], ["definitions.N", "G"]),
+    ("matrix without argument", "G", [('N = "S + I"', 'N = "G()"')], ["definitions.N", "G"]),
+]
