@@ -75,6 +75,10 @@ def solve_text(result: Solution) -> str:
             )
         elif result.per_cycle is None:
             lines.append("R0 per cycle: classes of different periods attain R0, so there is no one number per cycle")
+    if result.effective is not None and result.effective.R is not None:
+        lines.append(
+            f"effective number at the state now = {figure(result.effective.R)} (not R0: it holds at today's immunity)"
+        )
     lines.append(f"growth rate = {figure(result.growth_rate)} per {unit}")
     if result.doubling_time is not None:
         lines.append(f"doubling time = {figure(result.doubling_time)} {unit}")
@@ -195,6 +199,8 @@ def compare_text(result: Comparison) -> str:
     lines.append(f"growth rate = {figure(base.growth_rate)} per {unit}{_time(base, unit)}")
     if result.interventions:
         lines += ["With an intervention in force the number is a control reproduction number; the smallest first.", ""]
+    if base.effective is not None:
+        lines.insert(4, f"effective number at the state now = {figure(base.effective)}")
     head = ["intervention", "number", "below 1", "share of R0 removed", f"growth per {unit}", "doubles in", "halves in"]
     rows = []
     for row in result.by_number():
@@ -208,9 +214,11 @@ def compare_text(result: Comparison) -> str:
                 figure(row.doubling_time),
                 figure(row.halving_time),
                 figure(row.cost),
+                *([figure(row.effective)] if base.effective is not None else []),
             ]
         )
-    lines += table(rows, [*head, "cost"]) if rows else []
+    head += ["cost", *(["effective now"] if base.effective is not None else [])]
+    lines += table(rows, head) if rows else []
     lines += _mixes(result)
     lines += _closing(result.warnings)
     return _squeezed(lines)

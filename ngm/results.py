@@ -19,6 +19,7 @@ __all__ = [
     "Class",
     "Condition",
     "ControlResult",
+    "Effective",
     "EntryTerm",
     "Solution",
     "StateNumber",
@@ -98,6 +99,15 @@ class Step:
 
 
 @dataclass(frozen=True, slots=True)
+class Effective:
+    """The number at the state now, with that state: called effective, never R0. None with the reason where there is none."""
+
+    R: float | None
+    no_R: str | None
+    state: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
 class BlockForm:
     """F, V and K of a grouped model on its template: one block for each pair of compartments, whatever the groups.
 
@@ -168,10 +178,13 @@ class Solution:
     eigenvalues: tuple[tuple[float, float], ...] = ()
     #: what each entry of F and V is made of, flow by flow
     terms: tuple[EntryTerm, ...] = ()
+    #: the number at the state now, where the file gives one
+    effective: Effective | None = None
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `solve --json` prints."""
         symbolic = self.symbolic
+        now = self.effective
         return {
             "title": self.title,
             "types": list(self.types),
@@ -215,6 +228,7 @@ class Solution:
             "doubling_time": self.doubling_time,
             "conditions": [{"name": c.name, "holds": c.holds, "detail": c.detail} for c in self.conditions],
             "warnings": list(self.warnings),
+            **({} if now is None else {"effective": {"R": now.R, "state": dict(now.state)}}),
         }
 
     def to_frame(self) -> pandas.DataFrame:

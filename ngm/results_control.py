@@ -50,6 +50,8 @@ class Compared:
         1 - number / R0 of the baseline: the share removed, negative where the number rises.
     below_one : bool
     cost : float or None
+    effective : float or None
+        The number at the state now, under the same changes; None where the file gives no such state.
     case_mix : tuple of float or None
         Share of each type at infection among new infections; None where it is not unique or there is no number.
     warnings : tuple of str
@@ -71,6 +73,7 @@ class Compared:
     case_mix: Vector | None
     note: str | None = None
     warnings: tuple[str, ...] = ()
+    effective: float | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -122,6 +125,7 @@ class Comparison:
                     "intervention": row.name,
                     "number": row.R0,
                     "what": row.label,
+                    "effective_now": row.effective,
                     "reduction": row.reduction,
                     "below_one": row.below_one,
                     "growth_rate": row.growth_rate,

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
+from ngm.analysis.effective import effective
 from ngm.analysis.groups import host_groups
 from ngm.analysis.matrices import RECIPROCAL, as_floats, reciprocity_gap
 from ngm.analysis.numbers import Numbers, decided_numbers
@@ -107,6 +108,7 @@ def _row(
             R0 = min(max(nearest(found.spectrum.root), bounds[0]), bounds[1])
             if found.spectrum.right is not None and len(found.template.types) <= MOST_WRITTEN:
                 mix = tuple(as_floats(found.spectrum.right).tolist())
+    now = effective(found)
     r = found.growth
     doubling, halving = doubling_time(r), doubling_time(-r)
     return Compared(
@@ -124,6 +126,7 @@ def _row(
         cost=None if intervention is None else intervention.cost,
         case_mix=mix,
         note=None if intervention is None else intervention.note,
+        effective=None if now is None else now.R,
     )
 
 

@@ -154,8 +154,7 @@ class Point:
     def F_and_V(self) -> tuple[Array, Array]:
         """F and V of all infected types, (m, m) each."""
         F, V = assemble(self.template, self.evaluator)
-        if self.intervention is not None:
-            F = self._scaled(F, self.intervention)
+        F = self.scaled(F)
         if not (is_finite(F) and is_finite(V)):
             raise self._no_slope()
         for name, matrix in (("F", F), ("V", V)):
@@ -167,10 +166,10 @@ class Point:
         """F, losses and gains of a large model as block matrices."""
         F, losses, gains = block_slopes(self.template, self.evaluator, self.template.arrows, self.template.infected)
         if self.intervention is not None:
-            F = scaled(F, *self._scales(self.intervention))
+            F = scaled(F, *self.scales(self.intervention))
         return LargeSlopes(F, losses, gains)
 
-    def _scales(self, intervention: Intervention) -> tuple[dict[int, Array], dict[int, Array]]:
+    def scales(self, intervention: Intervention) -> tuple[dict[int, Array], dict[int, Array]]:
         """Return what multiplies the rows and the columns of F under an intervention, by infected compartment."""
         rows: dict[int, Array] = {}
         columns: dict[int, Array] = {}
@@ -190,11 +189,13 @@ class Point:
             into[part] = into[part] * values if part in into else values
         return rows, columns
 
-    def _scaled(self, F: Array, intervention: Intervention) -> Array:
-        """Return F with rows scaled by susceptibility and columns by infectivity."""
+    def scaled(self, F: Array) -> Array:
+        """Return F with rows scaled by susceptibility and columns by infectivity, where an intervention does that."""
+        if self.intervention is None:
+            return F
         F = F.copy()
         at = self.template.offsets(self.template.infected)
-        for change in intervention.changes:
+        for change in self.intervention.changes:
             if change.what not in ("susceptibility", "infectivity"):
                 continue
             by = self.template.by(change.name)

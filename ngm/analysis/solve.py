@@ -6,6 +6,7 @@ from typing import Any
 
 import numpy as np
 
+from ngm.analysis.effective import effective
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.derivation.conditions import fifth_condition, first_conditions
@@ -49,6 +50,9 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     found = decided_numbers(scenario)
     with precision(found.bits):
         out = _numbers(found)
+        out["effective"] = effective(found)
+        if out["effective"] is not None and out["effective"].no_R is not None:
+            out["warnings"].append(f"No effective number: {out['effective'].no_R}")
     symbolic, more = _symbols(found, limit)
     out["warnings"] += more
     out["warnings"] = tuple(dict.fromkeys(out["warnings"]))
