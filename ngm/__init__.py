@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
+    from ngm.analysis.mixing import mixing
+    from ngm.analysis.mixing_scan import mixing_map, mixing_responses
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
     from ngm.analysis.strength import coverage_needed, strength_needed
@@ -37,6 +39,9 @@ __all__ = [
     "coverage_needed",
     "load",
     "loads",
+    "mixing",
+    "mixing_map",
+    "mixing_responses",
     "sensitivity",
     "solve",
     "strength_needed",
@@ -52,6 +57,9 @@ _HOMES = {
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
+    "mixing": "ngm.analysis.mixing",
+    "mixing_map": "ngm.analysis.mixing_scan",
+    "mixing_responses": "ngm.analysis.mixing_scan",
     "calibrate": "ngm.analysis.calibrate",
     "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",

@@ -16,7 +16,7 @@ from ngm.analysis.matrices import balanced, tables
 from ngm.analysis.state import infection_free
 from ngm.derivation.evaluate import FLOATS, Evaluator
 from ngm.derivation.expand import assemble
-from ngm.derivation.linearise import Applied, Term
+from ngm.derivation.linearise import Applied, Summed, Term
 from ngm.derivation.rest import choose_branches
 from ngm.derivation.space import Array
 from ngm.derivation.template import Template
@@ -99,7 +99,7 @@ class Variation:
             if isinstance(factor, Applied):
                 if factor.matrix == matrix:
                     return True
-            elif isinstance(factor, Node) and self._uses(factor, matrix, set()):
+            elif not isinstance(factor, Summed) and self._uses(factor, matrix, set()):
                 return True
         return False
 
