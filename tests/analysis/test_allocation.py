@@ -112,13 +112,13 @@ def test_some_groups_only():
     assert [share.rule for share in found.rules] == ["by population"]
 
 
-@pytest.mark.parametrize("supply", [30_000, 100_000])
+@pytest.mark.parametrize("supply", [30_000, 100_000, 1_000_000])
 def test_four_ages_and_a_hundred_thousand_doses(supply):
     found = ngm.allocate(ngm.load(FOUR), supply, efficacy=0.7)
     by_population = next(share for share in found.rules if share.rule == "by population")
     assert found.best.R0 <= by_population.R0
-    # By hand: everybody alike leaves R0 (1 - 0.7 supply/100000).
-    assert by_population.R0 == pytest.approx(found.R0 * (1 - 0.7 * supply / 100_000), rel=1e-12)
+    # By hand: everybody alike leaves R0 (1 - 0.7 supply/1000000).
+    assert by_population.R0 == pytest.approx(found.R0 * (1 - 0.7 * supply / 1_000_000), rel=1e-12)
     assert found.gap < 1e-5
     assert list(found.to_frame().index) == ["0-4", "5-17", "18-64", "65+"]
     assert len(found.numbers_frame()) == 2 + len(found.rules)
