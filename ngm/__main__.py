@@ -49,6 +49,8 @@ def _parser() -> argparse.ArgumentParser:
             help="another value for a parameter, in its own unit; may be given more than once",
         )
         sub.add_argument("--json", action="store_true", help="print one JSON object")
+        if verb == "control":
+            sub.add_argument("--by", metavar="DIMENSION", help="also the number of each group of this dimension")
         if verb == "calibrate":
             sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
             sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
@@ -109,7 +111,7 @@ def _run(options: argparse.Namespace) -> str:
         case "compare":
             result = ngm.compare(scenario, combinations=options.combinations)
         case "control":
-            result = ngm.control(scenario)
+            result = ngm.control(scenario, by=options.by)
         case "sensitivity":
             result = ngm.sensitivity(scenario)
         case "calibrate":

@@ -172,6 +172,7 @@ def control_text(result: ControlResult) -> str:
             "Entries of K (who infects <- by whom)",
             [(f"{t.entry[0]} <- {t.entry[1]}", t) for t in result.target_reproduction],
         ),
+        ("Groups", [(t.types[0], t) for t in result.groups]),
         ("Infectivity of states", [(t.state, t) for t in result.state_reproduction]),
     ):
         if not rows:

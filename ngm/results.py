@@ -297,6 +297,8 @@ class ControlResult:
     target_reproduction: tuple[TargetNumber, ...]
     state_reproduction: tuple[StateNumber, ...]
     warnings: tuple[str, ...]
+    #: by group of a dimension, where that was asked for
+    groups: tuple[TypeNumber, ...] = ()
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `control --json` prints."""
@@ -315,6 +317,16 @@ class ControlResult:
                 for t in self.state_reproduction
             ],
             "warnings": list(self.warnings),
+            **(
+                {
+                    "group_reproduction": [
+                        {"group": t.types[0], "T": t.T, "critical_effort": t.critical_effort, "why": t.why}
+                        for t in self.groups
+                    ]
+                }
+                if self.groups
+                else {}
+            ),
         }
 
     def to_frame(self) -> pandas.DataFrame:

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from itertools import combinations
 
 import numpy as np
+import numpy.typing as npt
 
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
@@ -18,18 +20,21 @@ from ngm.engine.control import (
     type_reproduction_number,
 )
 from ngm.engine.linear import pattern
+from ngm.errors import Problem, ScenarioError
 from ngm.results import ControlResult, StateNumber, TargetNumber, TypeNumber
 from ngm.scenario.model import Scenario
 
-__all__ = ["control"]
+__all__ = ["control", "group_numbers"]
 
 #: Types at infection up to which every set of types is listed, and every entry of K.
 MOST_FOR_SETS = 6
 MOST_FOR_ENTRIES = 10
 
 
-def control(scenario: Scenario) -> ControlResult:
+def control(scenario: Scenario, *, by: str | None = None) -> ControlResult:
     """Return type-, target- and state-reproduction numbers of a scenario, with the share to remove.
+
+    With `by`, the name of a dimension, also those of its groups (`group_numbers`), for models of any size.
 
     The share to remove is 1 - 1/T where T > 1 and 0 where T <= 1; where what is left alone sustains the infection by
     itself there is no T, and the reason is given.
@@ -46,7 +51,8 @@ def control(scenario: Scenario) -> ControlResult:
     """
     found = decided_numbers(scenario)
     with precision(found.bits):
-        return _control(found)
+        result = _control(found)
+    return result if by is None else replace(result, groups=group_numbers(scenario, by))
 
 
 def _control(found: Numbers) -> ControlResult:
@@ -117,3 +123,53 @@ def _why(number: ReproductionNumber, target: str) -> str | None:
     if number.T is not None:
         return None
     return f"T({target}) does not exist: without it the infection sustains itself (rho = {number.rest:.4g})."
+
+
+def group_numbers(scenario: Scenario, dimension: str) -> tuple[TypeNumber, ...]:
+    """Return the type-reproduction number of each group of a dimension: all its types at infection acted on together.
+
+    For models of any size: past the size at which K is written out it is applied and never formed. `types` of each number
+    is the label of the group.
+
+    Raises
+    ------
+    ngm.ScenarioError
+        The scenario has no such dimension.
+    ngm.DerivationError
+        As `ngm.solve`.
+    """
+    if dimension not in scenario.dimensions:
+        known = ", ".join(scenario.dimensions) or "none"
+        raise ScenarioError(
+            Problem("control, by", f"'{dimension}' is no dimension of the scenario. Its dimensions: {known}.")
+        )
+    found = decided_numbers(scenario)
+    if found.no_R0 is not None or found.spectrum is None:
+        return ()
+    belongs = _belongs(found, dimension)
+    out = []
+    with precision(found.bits):
+        for k, group in enumerate(scenario.dimensions[dimension].groups):
+            mask = belongs == k
+            if not mask.any():
+                continue
+            if found.operator is not None:
+                T, rest = found.operator.type_number(mask)
+                number = ReproductionNumber(T, rest)
+            else:
+                number = type_reproduction_number(found.K, mask)
+            out.append(TypeNumber((group,), number.T, number.critical_effort, _why(number, group)))
+    return tuple(out)
+
+
+def _belongs(found: Numbers, dimension: str) -> npt.NDArray[np.intp]:
+    """Return the group of each type at infection along a dimension; -1 where it has none."""
+    template = found.template
+    groups = found.scenario.dimensions[dimension].groups
+    out = []
+    for name in template.infected:
+        by = template.by(name)
+        place = by.index(dimension) if dimension in by else None
+        for copy in found.scenario.copies(by):
+            out.append(-1 if place is None else groups.index(copy[place]))
+    return np.asarray(np.array(out, dtype=np.intp)[found.at])

@@ -50,6 +50,7 @@ class Numbers:
         self.K_large: Any = None
         self.K: Any = None
         self.spectrum: Spectrum | None = None
+        self.operator: NextGeneration | None = None
         self._growth: float | None = None
         self._class_growth: list[float | None] = []
         if self.point.exact:
@@ -107,6 +108,7 @@ class Numbers:
             try:
                 operator = NextGeneration(slopes.F, V, self.at)
                 if operator.is_m_matrix():
+                    self.operator = operator
                     self._take(operator)
                     return
                 self.no_R0 = (

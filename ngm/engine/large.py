@@ -260,6 +260,44 @@ class NextGeneration:
             fb = log_root(b)
         return b
 
+    def type_number(self, targeted: npt.NDArray[np.bool_]) -> tuple[float | None, float]:
+        """Return the type-reproduction number T of a set of types at infection, and the root of what is left alone.
+
+        T is the factor by which the targeted rows of K have to be divided for its root to be 1; None where the other
+        rows alone have a root of 1 or more. Found by the secant rule on logarithms, each step one Arnoldi iteration.
+
+        References
+        ----------
+        Roberts & Heesterbeek (2003) Proc. R. Soc. B 270:1359, doi:10.1098/rspb.2003.2339
+        """
+        n = len(self.at)
+        vector = np.full(n, 1.0 / n)
+
+        def root(factors: FloatArray) -> float:
+            nonlocal vector
+            value, vector = perron_pair(lambda x: factors * (self @ x), vector + 1e-12, 1e-13)
+            return max(value, 0.0)
+
+        rest = root(np.where(targeted, 0.0, 1.0))
+        if rest >= 1:
+            return None, rest
+        whole = root(np.ones(n))
+        if whole == 0:
+            return 0.0, rest
+
+        def log_root(log_T: float) -> float:
+            return float(np.log(max(root(np.where(targeted, np.exp(-log_T), 1.0)), 1e-300)))
+
+        a, fa = 0.0, float(np.log(whole))
+        b = fa if fa != 0 else 0.1
+        fb = log_root(b)
+        for _ in range(60):
+            if fb == fa or abs(fb) <= 1e-13:
+                break
+            a, fa, b = b, fb, b - fb * (b - a) / (fb - fa)
+            fb = log_root(b)
+        return float(np.exp(b)), rest
+
     # --- several classes -----------------------------------------------------------------------------------------------
 
     def _by_classes(self) -> LargeSpectrum:

@@ -130,3 +130,27 @@ def test_operators_give_the_numbers_of_the_matrices(name: str, text: str, writte
     else:
         assert found.right == pytest.approx(expected.right, rel=1e-7, abs=1e-12)
         assert found.left == pytest.approx(expected.left, rel=1e-7, abs=1e-10)
+
+
+@pytest.mark.parametrize(
+    ("name", "dimension"), [("random 0", "age"), ("random 0", "town"), ("random 3", "age"), ("random 5", "town")]
+)
+def test_numbers_of_groups(name: str, dimension: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Second route: K written out, and the type-reproduction number of the rows of each group."""
+    from ngm.analysis.control import group_numbers
+
+    scenario = ngm.loads(dict(TEXTS)[name])
+    expected = group_numbers(scenario, dimension)
+    monkeypatch.setattr(ngm.analysis.point, "MOST_EXACT", 0)
+    found = group_numbers(scenario, dimension)
+    assert [f.types for f in found] == [e.types for e in expected]
+    assert len(found) == len(scenario.dimensions[dimension].groups)
+    for f, e in zip(found, expected, strict=True):
+        assert f.T == (None if e.T is None else pytest.approx(e.T, rel=1e-9))
+
+
+def test_a_dimension_that_is_not_there_is_told() -> None:
+    from ngm.analysis.control import group_numbers
+
+    with pytest.raises(ngm.ScenarioError, match="Its dimensions: age, town"):
+        group_numbers(ngm.loads(TEXTS[0][1]), "region")
