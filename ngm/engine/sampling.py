@@ -252,7 +252,7 @@ def correlated(u: npt.ArrayLike, correlation: npt.ArrayLike) -> FloatArray:
 
 
 def _checked_correlation(correlation: npt.ArrayLike, d: int) -> FloatArray:
-    R = np.array(correlation, dtype=float)
+    R: FloatArray = np.array(correlation, dtype=float)
     if R.shape != (d, d):
         raise SamplingError(f"the correlations of {d} parameters are a {d} x {d} matrix, not one of shape {R.shape}.")
     if not np.all(np.isfinite(R)):
@@ -268,7 +268,7 @@ def _checked_correlation(correlation: npt.ArrayLike, d: int) -> FloatArray:
                 raise SamplingError(
                     f"the correlation {R[i, j]:g} of parameters {j + 1} and {i + 1} lies outside -1 to 1, or at an end of it."
                 )
-    R = (R + R.T) / 2
+    R = np.asarray((R + R.T) / 2)
     np.fill_diagonal(R, 1.0)
     least = float(np.linalg.eigvalsh(R)[0]) if d else 1.0
     # Below rounding, definiteness is a matter of luck.
