@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
 __all__ = [
     "SamplingError",
+    "check_seed",
     "correlated",
     "design",
     "index_ranges",
@@ -392,5 +393,16 @@ def _check_sizes(n: int, d: int, seed: int) -> None:
         raise SamplingError(f"{n} draws: expected a whole number, 1 or more.")
     if not (_is_int(d) and d >= 0):
         raise SamplingError(f"{d} parameters: expected a whole number, 0 or more.")
+    check_seed(seed)
+
+
+def check_seed(seed: int) -> None:
+    """Refuse a seed that is no whole number from 0 up (0 is one).
+
+    Raises
+    ------
+    SamplingError
+        A seed that is none.
+    """
     if not (_is_int(seed) and seed >= 0):
         raise SamplingError(f"seed {seed}: expected a whole number, 0 or more.")
