@@ -169,7 +169,7 @@ def control_text(result: ControlResult) -> str:
     for title, rows in (
         ("Types", [(", ".join(t.types), t) for t in result.type_reproduction]),
         (
-            "Entries of K (who infects <- by whom)",
+            "Entries of K (who is infected <- by whom)",
             [(f"{t.entry[0]} <- {t.entry[1]}", t) for t in result.target_reproduction],
         ),
         ("Groups", [(t.types[0], t) for t in result.groups]),

@@ -17,7 +17,6 @@ from typing import Any, Protocol
 import numpy as np
 from flint import ctx
 from scipy.linalg import lu_factor, lu_solve
-from scipy.optimize import brentq
 
 from ngm.engine.balls import BallArray, FloatArray, arb, balls, contains_zero, is_finite, is_zero, precision, to_floats
 from ngm.engine.linear import matmul, solve
@@ -318,6 +317,8 @@ def _solve_balls(matrix: BallArray, right: BallArray) -> BallArray | None:
 
 def _scan(net: Any) -> list[FloatArray]:
     """Return the zeros of one function of one unknown where it changes sign, from 1e-12 to 1e15."""
+    from scipy.optimize import brentq  # a fifth of a second, which few models need
+
     grid = np.logspace(-12, 15, 2000)
     values = np.asarray(net(grid.reshape(1, -1)))[0]
     found = []
