@@ -16,6 +16,7 @@ __all__ = [
     "first_used",
     "infection_free",
     "next_generation",
+    "on_the_template",
     "residence",
     "root",
     "transmission_and_transition",
@@ -130,6 +131,27 @@ def next_generation(solution: Solution, write: Write) -> None:
     )
     _abbreviations(solution.symbolic, "K")
     _matrix("K", solution.symbolic.K, solution.K, solution.types_at_infection, write)
+
+
+def on_the_template(solution: Solution) -> None:
+    """Show the block form of a grouped model: one block for each pair of compartments, whatever the number of groups."""
+    blocks = solution.symbolic.blocks
+    if blocks is None:
+        return
+    st.markdown("**All groups at once**")
+    st.markdown(
+        "Each block stands for all groups: *diag* is a number in each group, a name is a contact or movement matrix "
+        "(with a prime: transposed), and *sum* adds up groups."
+    )
+    lines = []
+    for name, entries in (("F", blocks.F), ("V", blocks.V), ("K", blocks.K)):
+        if entries is None:
+            lines.append("K = F V^-1 has no formula by group: members move between groups")
+        else:
+            lines += [f"{name}[{row}, {column}] = {entry}" for (row, column), entry in entries.items()]
+    if blocks.root is not None:
+        lines.append(f"R0 = {blocks.root}")
+    st.code("\n".join(lines), language=None, wrap_lines=True)
 
 
 def root(solution: Solution) -> None:

@@ -316,3 +316,11 @@ def test_a_matrix_cell_is_one_line_of_difference():
     assert not at.exception
     assert metrics(at) != before
     assert sum(a != b for a, b in zip(text.splitlines(), text_of(at).splitlines(), strict=True)) == 1
+
+
+def test_a_grouped_derivation_stands_on_its_template():
+    scenario = (ROOT / "scenarios" / "age-groups-ember-cough.toml").read_text(encoding="utf-8")
+    at = start(state(scenario), "derivation")
+    blocks = [code.value for code in at.code if "diag(" in code.value]
+    assert len(blocks) == 1
+    assert "K[E, E] = diag(population*q*sigma) contacts diag(1/(gamma*population))" in blocks[0]

@@ -22,6 +22,7 @@ def page() -> None:
     steps.conditions(solution)
     steps.residence(solution)
     steps.next_generation(solution, write)
+    steps.on_the_template(solution)
     steps.root(solution)
     parts.warnings_box(solution.warnings)
     parts.cautions()
