@@ -57,6 +57,12 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     out["warnings"] += more
     out["warnings"] = tuple(dict.fromkeys(out["warnings"]))
     closed = symbolic.closed_form if out["R0"] is not None else None
+    if closed is not None and found.point.infection_free.among > 1:
+        out["warnings"] = (
+            *out["warnings"],
+            "The closed form holds where the infection-free state is the one found here: of several states at rest it is the "
+            "one that is stable at these values.",
+        )
     return Solution(**out, closed_form=closed, symbolic=symbolic)
 
 

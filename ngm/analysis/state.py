@@ -33,13 +33,14 @@ class InfectionFree:
     """The state without infection: every uninfected compartment as an array over the space.
 
     `residual`: the largest net flow over gross flow of a compartment. `warnings`: what was accepted all the same.
-    `net_flows`: of each given copy that has to be at rest, its net flow (in the arithmetic in use) and its gross flow.
+    `among`: how many non-negative states at rest it was chosen from. `net_flows`: of each given copy that has to be at rest, its net flow (in the arithmetic in use) and its gross flow.
     """
 
     state: dict[str, Array]
     residual: float
     warnings: tuple[str, ...]
     net_flows: dict[str, tuple[Any, float]]
+    among: int = 1
 
 
 def infection_free(template: Template, algebra: Algebra, matrices: Mapping[str, Array]) -> InfectionFree:
@@ -81,7 +82,8 @@ class _Finder:
         x = self._choose(system, found)
         state = system.state(x)
         residual, net_flows = self._check(system, x, state)
-        return InfectionFree(state, residual, tuple(self.warnings), net_flows)
+        among = sum(found.nonnegative)
+        return InfectionFree(state, residual, tuple(self.warnings), net_flows, among)
 
     def _refuse_needed(self) -> None:
         for arrow in self.template.rest_arrows:

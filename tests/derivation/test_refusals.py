@@ -113,6 +113,8 @@ def test_the_stable_state_of_two_is_taken() -> None:
     assert solution.infection_free == {"S": 2.0}
     assert solution.R0 == pytest.approx(4, rel=1e-14)
     assert solution.symbolic.infection_free == {"S": "2"}
+    assert solution.closed_form is not None
+    assert any("closed form holds where" in warning for warning in solution.warnings)
 
 
 def test_a_single_unstable_state_is_taken_with_a_warning() -> None:
