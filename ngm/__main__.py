@@ -10,11 +10,16 @@ import argparse
 import json
 import sys
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 from ngm.errors import NgmError, Problem, ScenarioError
 from ngm.results import ControlResult, Solution
-from ngm.results_control import Comparison
+from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_sensitivity import Calibration, Sensitivity
+from ngm.typed import by_group, number
+
+if TYPE_CHECKING:
+    from ngm import Scenario
 
 __all__ = ["main"]
 
@@ -22,6 +27,9 @@ VERBS = {
     "solve": "derive F, V and K from the flows; R0 with bounds, structure, growth",
     "compare": "every intervention beside the baseline: control reproduction number, growth, share removed, cost",
     "control": "type, target and state reproduction numbers, and the share to remove",
+    "strength": "how much of an intervention brings the number down to 1, or to another target",
+    "coverage": "the share of chosen groups to be vaccinated for the number to fall to 1, or to another target",
+    "allocate": "the best way to share a supply of vaccine among groups, beside simple rules",
     "sensitivity": "how R0 and the growth rate answer to each parameter, and to each entry of K",
     "calibrate": "the value of a parameter at which R0 is the one that is wanted",
 }
@@ -54,6 +62,8 @@ def _parser() -> argparse.ArgumentParser:
         if verb == "calibrate":
             sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
             sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
+        if verb in ("strength", "coverage", "allocate"):
+            _needs_options(sub, verb)
         if verb == "compare":
             sub.add_argument(
                 "--combine",
@@ -65,6 +75,32 @@ def _parser() -> argparse.ArgumentParser:
                 help="names of interventions to apply together, in order; after FILE; may be given more than once",
             )
     return parser
+
+
+def _needs_options(sub: argparse.ArgumentParser, verb: str) -> None:
+    """Add the options of `strength`, `coverage` and `allocate`; a number may be typed as 0.7 or 70 %."""
+
+    def several(option: str, metavar: str, text: str, **more: object) -> None:
+        sub.add_argument(option, metavar=metavar, nargs="+", help=f"{text}; after FILE", **more)  # type: ignore[arg-type]
+
+    sub.add_argument("--target", metavar="X", default="1", help="the number to be reached, 1 where left out")
+    several("--with", "NAME", "interventions in force besides, in order", dest="besides", default=[])
+    if verb == "strength":
+        sub.add_argument("--intervention", metavar="NAME", required=True, help="one of the file's interventions")
+        return
+    several("--groups", "G", "groups of hosts, or types at infection; all where left out")
+    each = "one number for all groups or G=NUMBER for each"
+    several("--efficacy", "E", f"efficacy against infection, 0 to 1: {each}; 1 where left out", default=["1"])
+    several("--against-spread", "S", f"efficacy against onward spread, 0 to 1: {each}; 0 where left out", default=["0"])
+    if verb == "coverage":
+        sub.add_argument("--kind", choices=["leaky", "all-or-nothing"], default="leaky", help="of vaccine")
+        sub.add_argument("--turnover", metavar="T", help="births per head and time unit, where protection wanes")
+        sub.add_argument("--waning", metavar="W", default="0", help="rate at which protection is lost, per time unit")
+    else:
+        sub.add_argument("--supply", metavar="N", required=True, help="doses, or a budget in the unit of --cost")
+        several("--cost", "C", f"cost a head: {each}; 1 where left out", default=["1"])
+        several("--upper", "U", f"highest coverage, 0 to 1: {each}; 1 where left out", default=["1"])
+        several("--sizes", "G=N", "members of groups, in place of those that the model tells", default=[])
 
 
 def _values(given: Sequence[str]) -> dict[str, str]:
@@ -100,12 +136,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _run(options: argparse.Namespace) -> str:
     import ngm
-    from ngm.console import result_text
 
     scenario = ngm.load(options.file)
     values = _values(options.values)
     if values:
         scenario = scenario.with_values(**values)
+    if options.verb in ("strength", "coverage", "allocate"):
+        return _needs(options, scenario)
+    from ngm.console import result_text
+
     result: Solution | Comparison | ControlResult | Sensitivity | Calibration
     match options.verb:
         case "compare":
@@ -119,6 +158,52 @@ def _run(options: argparse.Namespace) -> str:
         case _:
             result = ngm.solve(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)
+
+
+def _needs(options: argparse.Namespace, scenario: Scenario) -> str:
+    """Run one of the verbs that say how much is needed."""
+    import ngm
+    from ngm.console_control import needs_text
+
+    besides = ngm.combined(scenario, options.besides).intervention if options.besides else None
+    target = number(options.target, "--target")
+    result: Strength | Coverage | Allocation
+    if options.verb == "strength":
+        result = ngm.strength_needed(scenario, options.intervention, target=target, with_also=besides)
+    else:
+        efficacy = by_group(options.efficacy, "--efficacy")
+        against_spread = by_group(options.against_spread, "--against-spread")
+        if options.verb == "coverage":
+            result = ngm.coverage_needed(
+                scenario,
+                options.groups,
+                efficacy=efficacy,
+                against_spread=against_spread,
+                kind=options.kind,
+                turnover=None if options.turnover is None else number(options.turnover, "--turnover"),
+                waning=number(options.waning, "--waning"),
+                target=target,
+                intervention=besides,
+            )
+        else:
+            sizes = by_group(options.sizes, "--sizes")
+            if not isinstance(sizes, dict):
+                raise ScenarioError(Problem("--sizes", "expected GROUP=NUMBER, for example 65+=18000."))
+            result = ngm.allocate(
+                scenario,
+                number(options.supply, "--supply"),
+                groups=options.groups,
+                efficacy=efficacy,
+                against_spread=against_spread,
+                cost=by_group(options.cost, "--cost"),
+                upper=by_group(options.upper, "--upper"),
+                sizes=sizes,
+                target=target,
+                intervention=besides,
+            )
+    if options.json:
+        return json.dumps({**result.to_json(), "in_force": list(options.besides)}, ensure_ascii=False)
+    return needs_text(result, options.besides)
 
 
 if __name__ == "__main__":

@@ -8,7 +8,7 @@ from ngm.results import ControlResult, Solution
 from ngm.results_control import Compared, Comparison
 from ngm.results_sensitivity import Calibration, Sensitivity
 
-__all__ = ["CAUTION", "compare_text", "control_text", "solve_text"]
+__all__ = ["CAUTION", "closing", "compare_text", "control_text", "figure", "solve_text", "squeezed", "table"]
 
 CAUTION = (
     "A model's number is no forecast, and says nothing of speed or severity. It holds for this model, at these values, near "
@@ -112,8 +112,8 @@ def solve_text(result: Solution) -> str:
     lines += _structure(result)
     lines += ["", "Conditions (van den Driessche & Watmough 2002)"]
     lines += [f"  {c.name} {'holds' if c.holds else 'DOES NOT HOLD'}: {c.detail}" for c in result.conditions]
-    lines += _closing(result.warnings)
-    return _squeezed(lines)
+    lines += closing(result.warnings)
+    return squeezed(lines)
 
 
 def _blocks(result: Solution) -> list[str]:
@@ -188,8 +188,8 @@ def control_text(result: ControlResult) -> str:
             lines.append(f"  … and {len(cells) - 80} more; use --json.")
     if reasons:
         lines += ["", *(f"  {why}" for why in reasons[:20])]
-    lines += _closing(result.warnings)
-    return _squeezed(lines)
+    lines += closing(result.warnings)
+    return squeezed(lines)
 
 
 def compare_text(result: Comparison) -> str:
@@ -221,8 +221,8 @@ def compare_text(result: Comparison) -> str:
     head += ["cost", *(["effective now"] if base.effective is not None else [])]
     lines += table(rows, head) if rows else []
     lines += _mixes(result)
-    lines += _closing(result.warnings)
-    return _squeezed(lines)
+    lines += closing(result.warnings)
+    return squeezed(lines)
 
 
 def _time(row: Compared, unit: str) -> str:
@@ -266,14 +266,14 @@ def sensitivity_text(result: Sensitivity) -> str:
         lines += ["", "Elasticity of R0 by entry of K (they add up to 1)"]
         rows = [[name, *(figure(v) for v in row)] for name, row in zip(names, result.entry_elasticity, strict=True)]
         lines += table(rows, ["", *names])
-    lines += _closing(result.warnings)
-    return _squeezed(lines)
+    lines += closing(result.warnings)
+    return squeezed(lines)
 
 
 def calibrate_text(result: Calibration) -> str:
     """Return the value found by `ngm.calibrate` as text."""
     lines = [f"{result.parameter} = {result.value!r} gives R0 = {result.R0:g}."]
-    return _squeezed([*lines, *_closing(result.warnings)])
+    return squeezed([*lines, *closing(result.warnings)])
 
 
 def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Calibration) -> str:
@@ -291,7 +291,8 @@ def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Ca
             return calibrate_text(result)
 
 
-def _closing(warnings: Sequence[str]) -> list[str]:
+def closing(warnings: Sequence[str]) -> list[str]:
+    """Return the lines that every text ends in: warnings, and the caution."""
     lines: list[str] = []
     if warnings:
         lines += ["", "Warnings", *(f"  ! {warning}" for warning in warnings)]
@@ -306,7 +307,7 @@ def _is_number(text: str) -> bool:
     return True
 
 
-def _squeezed(lines: Sequence[str]) -> str:
+def squeezed(lines: Sequence[str]) -> str:
     """Return the lines as text, without two blank ones in a row."""
     out: list[str] = []
     for line in lines:

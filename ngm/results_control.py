@@ -192,6 +192,22 @@ class Strength:
     warnings: tuple[str, ...] = ()
     label: str = CONTROL_LABEL
 
+    def to_json(self) -> dict[str, Any]:
+        """Return the object that `strength --json` prints; `curve` is a list of [strength, number]."""
+        return {
+            "intervention": self.name,
+            "target": self.target,
+            "strength": self.strength,
+            "unattainable": self.unattainable,
+            "R0": self.R0,
+            "at_full": self.at_full,
+            "lowest": self.lowest,
+            "lowest_at": self.lowest_at,
+            "why": self.why,
+            "curve": [list(point) for point in self.curve],
+            "warnings": list(self.warnings),
+        }
+
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Coverage:
@@ -237,6 +253,26 @@ class Coverage:
     warnings: tuple[str, ...] = ()
     label: str = CONTROL_LABEL
 
+    def to_json(self) -> dict[str, Any]:
+        """Return the object that `coverage --json` prints."""
+        return {
+            "groups": list(self.groups),
+            "types": list(self.types),
+            "kind": self.kind,
+            "efficacies": list(self.efficacies),
+            "lasting": self.lasting,
+            "target": self.target,
+            "R0": self.R0,
+            "T": self.T,
+            "critical_effort": self.critical_effort,
+            "coverage": self.coverage,
+            "required": self.required,
+            "unattainable": self.unattainable,
+            "at_full": self.at_full,
+            "why": self.why,
+            "warnings": list(self.warnings),
+        }
+
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Share:
@@ -247,6 +283,16 @@ class Share:
     doses: Vector
     spent: float
     R0: float
+
+    def to_json(self) -> dict[str, Any]:
+        """Return the share as it stands in the object that `allocate --json` prints."""
+        return {
+            "rule": self.rule,
+            "R0": self.R0,
+            "coverage": list(self.coverage),
+            "doses": list(self.doses),
+            "spent": self.spent,
+        }
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -262,6 +308,17 @@ class SmallestSupply:
     coverage: Vector | None
     doses: Vector | None
     why: str | None
+
+    def to_json(self) -> dict[str, Any]:
+        """Return the supply as it stands in the object that `allocate --json` prints."""
+        return {
+            "target": self.target,
+            "supply": self.supply,
+            "lower_bound": self.lower_bound,
+            "coverage": None if self.coverage is None else list(self.coverage),
+            "doses": None if self.doses is None else list(self.doses),
+            "why": self.why,
+        }
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -308,6 +365,25 @@ class Allocation:
     smallest: SmallestSupply
     warnings: tuple[str, ...] = ()
     label: str = CONTROL_LABEL
+
+    def to_json(self) -> dict[str, Any]:
+        """Return the object that `allocate --json` prints; every list of numbers is in the order of `groups`."""
+        return {
+            "groups": list(self.groups),
+            "sizes": list(self.sizes),
+            "costs": list(self.costs),
+            "efficacies": list(self.efficacies),
+            "upper": list(self.upper),
+            "supply": self.supply,
+            "R0": self.R0,
+            "best": self.best.to_json(),
+            "lower_bound": self.lower_bound,
+            "gap": self.gap,
+            "proof": self.proof,
+            "rules": [rule.to_json() for rule in self.rules],
+            "smallest": self.smallest.to_json(),
+            "warnings": list(self.warnings),
+        }
 
     def to_frame(self) -> pandas.DataFrame:
         """Return one row a group: members, and coverage and doses in the best share, by each rule, in the smallest supply."""
