@@ -27,10 +27,12 @@ HEAVY = (
     "ngm",
     "ngm.charts.bars",
     "ngm.charts.graphs",
+    "ngm.charts.mixing",
     "ngm.charts.spectrum",
     "ngm.expression.typeset",
     "ngm.analysis.solve",
     "ngm.analysis.control",
+    "ngm.analysis.mixing_scan",
 )
 
 

@@ -13,10 +13,11 @@ from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
 
 if TYPE_CHECKING:
     from ngm.analysis.allocation import allocate
+    from ngm.analysis.batch import reproduction_numbers
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
-    from ngm.analysis.mixing import mixing
+    from ngm.analysis.mixing import contact_readings, mixing
     from ngm.analysis.mixing_scan import mixing_map, mixing_responses
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
@@ -35,10 +36,12 @@ __all__ = [
     "calibrate",
     "combined",
     "compare",
+    "contact_readings",
     "control",
     "coverage_needed",
     "load",
     "loads",
+    "reproduction_numbers",
     "mixing",
     "mixing_map",
     "mixing_responses",
@@ -53,10 +56,12 @@ _HOMES = {
     "allocate": "ngm.analysis.allocation",
     "combined": "ngm.scenario.packages",
     "compare": "ngm.analysis.compare",
+    "contact_readings": "ngm.analysis.mixing",
     "control": "ngm.analysis.control",
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
+    "reproduction_numbers": "ngm.analysis.batch",
     "mixing": "ngm.analysis.mixing",
     "mixing_map": "ngm.analysis.mixing_scan",
     "mixing_responses": "ngm.analysis.mixing_scan",

@@ -15,7 +15,7 @@ from ngm.results import Matrix, Vector
 if TYPE_CHECKING:
     import pandas
 
-__all__ = ["Curve", "Gaps", "MixCase", "Mixing", "MixingMap", "MixingResponses", "Scale"]
+__all__ = ["Curve", "Gaps", "MixCase", "Mixing", "MixingMap", "MixingResponses", "Reading", "Scale"]
 
 #: One straight piece of a line: (x, y) of its two ends.
 Piece = tuple[tuple[float, float], tuple[float, float]]
@@ -75,13 +75,34 @@ class Gaps:
 
 
 @dataclass(frozen=True, eq=False, slots=True)
+class Reading:
+    """What a table says if its rows, or its columns, make the contacts.
+
+    Attributes
+    ----------
+    makes : str
+        "rows" or "columns".
+    contacts : tuple of float
+        Contacts per time unit that one member of each group makes.
+    mean : float or None
+        Their mean over the population; None without sizes, as `gaps` is.
+    """
+
+    makes: str
+    contacts: Vector
+    mean: float | None
+    gaps: Gaps | None
+
+
+@dataclass(frozen=True, eq=False, slots=True)
 class Mixing:
     """A contact matrix of a scenario, and R0 and the case mix with it: the result of `ngm.mixing`.
 
     Attributes
     ----------
     matrix, by : str
-        Name and dimension. `within` is the group of the other dimension whose matrix this is, or None.
+        Name and dimension. `within` is the group of the other dimension whose matrix this is, or None; `others` are all
+        groups of that dimension.
     settings : tuple of str
         Every matrix of contacts of the scenario.
     groups : tuple of str
@@ -111,6 +132,7 @@ class Mixing:
     label: str | None
     by: str
     within: str | None
+    others: tuple[str, ...]
     settings: tuple[str, ...]
     groups: tuple[str, ...]
     table: Matrix

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -12,16 +12,16 @@ from ngm.analysis.matrices import as_floats, population
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.variation import MOST_VARIED, Outcome, Variation, contact_matrices
 from ngm.engine.balls import nearest, precision
-from ngm.engine.contacts import FloatArray, reciprocal_contacts, reciprocity
+from ngm.engine.contacts import ContactError, FloatArray, both_readings, reciprocal_contacts, reciprocity
 from ngm.engine.mixing import assortativity_coefficient, assortativity_index
 from ngm.errors import Problem, ScenarioError
 from ngm.results import Matrix, Vector
-from ngm.results_mixing import Gaps, MixCase, Mixing
+from ngm.results_mixing import Gaps, MixCase, Mixing, Reading
 from ngm.scenario.fields import closest, listed, short
 from ngm.scenario.model import Matrix as ContactMatrix
 from ngm.scenario.model import Scenario
 
-__all__ = ["Chosen", "Shares", "checked_factors", "choose", "mixing", "rows_of", "shares"]
+__all__ = ["Chosen", "Shares", "checked_factors", "choose", "contact_readings", "mixing", "rows_of", "shares"]
 
 #: Where a matrix is wanted and a scenario has none.
 NO_MATRIX = (
@@ -183,6 +183,7 @@ def mixing(
         label=chosen.matrix.label,
         by=chosen.matrix.by,
         within=chosen.within,
+        others=() if chosen.matrix.within is None else scenario.dimensions[chosen.matrix.within].groups,
         settings=contact_matrices(scenario),
         groups=chosen.groups,
         table=rows_of(table),
@@ -192,7 +193,7 @@ def mixing(
         sizes=None if sizes is None else tuple(sizes.tolist()),
         sizes_from=sizes_from,
         reciprocal=chosen.matrix.reciprocal,
-        gaps=_gaps(given, sizes, chosen),
+        gaps=_gaps(given, sizes, chosen.groups),
         assortativity=assortativity_index(table),
         coefficient=None if sizes is None else assortativity_coefficient(table, sizes),
         mix_labels=by.labels,
@@ -240,12 +241,44 @@ def _case(name: str, in_force: bool, outcome: Outcome, by: Shares, chosen: Chose
     return MixCase(name, what, in_force, outcome.R0, by.of(outcome.right), outcome.why)
 
 
-def _gaps(given: FloatArray, sizes: FloatArray | None, chosen: Chosen) -> Gaps | None:
+def _gaps(given: FloatArray, sizes: FloatArray | None, groups: Sequence[str]) -> Gaps | None:
     if sizes is None:
         return None
     found = reciprocity(given, sizes)
-    pair = None if found.pair is None else (chosen.groups[found.pair[0]], chosen.groups[found.pair[1]])
+    pair = None if found.pair is None else (groups[found.pair[0]], groups[found.pair[1]])
     return Gaps(rows_of(found.gaps), found.largest, pair, found.overall)
+
+
+def contact_readings(
+    table: Sequence[Sequence[float]], groups: Sequence[str], sizes: Sequence[float] | None = None
+) -> tuple[Reading, Reading]:
+    """Return what a table of contacts says if its rows make the contacts, and what if its columns do.
+
+    Parameters
+    ----------
+    table : sequence of rows of float, >= 0
+        Contacts per head and time unit, in an orientation that is not known.
+    groups : sequence of str
+        Labels of its rows and columns.
+    sizes : sequence of float, > 0, optional
+        Members of each group.
+
+    Raises
+    ------
+    ngm.ScenarioError
+        An entry is negative or no number, or a group is empty.
+    """
+    try:
+        found = both_readings(np.array(table, dtype=float), None if sizes is None else np.array(sizes, dtype=float))
+    except ContactError as error:
+        where = ", ".join(groups[k] for k in error.index)
+        raise ScenarioError(Problem(where, f"{error}.")) from None
+    N = None if sizes is None else np.array(sizes, dtype=float)
+    first, second = (
+        Reading(reading.makes, tuple(reading.contacts.tolist()), reading.mean, _gaps(reading.C, N, groups))
+        for reading in found
+    )
+    return first, second
 
 
 def _sizes(found: Numbers, chosen: Chosen) -> tuple[FloatArray | None, str]:

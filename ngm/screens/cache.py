@@ -15,8 +15,19 @@ import ngm
 from ngm.charts.style import short
 from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
+from ngm.results_mixing import Mixing, MixingMap, MixingResponses
 
-__all__ = ["Outcome", "control", "conversions", "latex", "problems", "solve"]
+__all__ = [
+    "Outcome",
+    "control",
+    "conversions",
+    "latex",
+    "mixing",
+    "mixing_map",
+    "mixing_responses",
+    "problems",
+    "solve",
+]
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,6 +61,39 @@ def solve(text: str, folder: str | None) -> Outcome:
 def control(text: str, folder: str | None) -> ControlResult:
     """Return type, target and state reproduction numbers of a scenario text that `solve` accepts."""
     return ngm.control(ngm.loads(text, folder=folder))
+
+
+@st.cache_resource(max_entries=64, show_spinner=False)
+def mixing(
+    text: str, folder: str | None, matrix: str | None, within: str | None, factors: tuple[tuple[str, float], ...] = ()
+) -> Mixing | tuple[Problem, ...]:
+    """Return a contact matrix looked at, or why there is none to look at."""
+    try:
+        return ngm.mixing(ngm.loads(text, folder=folder), matrix, within, factors=dict(factors))
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=32, show_spinner="Computing what R0 answers to …")
+def mixing_responses(
+    text: str, folder: str | None, matrix: str, within: str | None
+) -> MixingResponses | tuple[Problem, ...]:
+    """Return how R0 and the case mix answer to mixing, or why they cannot be asked."""
+    try:
+        return ngm.mixing_responses(ngm.loads(text, folder=folder), matrix, within)
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=32, show_spinner="Drawing the map …")
+def mixing_map(
+    text: str, folder: str | None, x: tuple[str, str], y: tuple[str, str], within: str | None
+) -> MixingMap | tuple[Problem, ...]:
+    """Return R0 over two quantities, or why there is no such map."""
+    try:
+        return ngm.mixing_map(ngm.loads(text, folder=folder), x, y, within=within)
+    except NgmError as error:
+        return error.problems
 
 
 @st.cache_resource(max_entries=128, show_spinner=False)

@@ -28,6 +28,7 @@ __all__ = [
     "digits",
     "display",
     "earlier_result",
+    "grid",
     "headline",
     "latex",
     "latex_matrix",
@@ -268,6 +269,15 @@ def numbers_table(matrix: Matrix, types: Sequence[str], write: Callable[[float |
         columns=list(types),
     )
     st.dataframe(frame, alt=f"Matrix {name}: rows and columns {', '.join(types[:20])}")
+
+
+def grid(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:
+    """Show rows of text as a grid that scrolls: for tables that are wide."""
+    import pandas
+
+    # A column's name stands for it: two of the same would be one.
+    names = [head if head not in heads[:k] else f"{head} ({k + 1})" for k, head in enumerate(heads)]
+    st.dataframe(pandas.DataFrame(rows, columns=names), hide_index=True, alt=", ".join(heads[:20]))
 
 
 def table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> None:

@@ -29,4 +29,5 @@ PAGES = (
     Page("model", "Model"),
     Page("derivation", "Derivation"),
     Page("numbers", "Reproduction numbers"),
+    Page("mixing", "Mixing"),
 )
