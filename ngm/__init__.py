@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
     from ngm.analysis.strength import coverage_needed, strength_needed
+    from ngm.analysis.units import units
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
     from ngm.scenario.packages import combined
@@ -41,13 +42,14 @@ __all__ = [
     "coverage_needed",
     "load",
     "loads",
-    "reproduction_numbers",
     "mixing",
     "mixing_map",
     "mixing_responses",
+    "reproduction_numbers",
     "sensitivity",
     "solve",
     "strength_needed",
+    "units",
 ]
 
 #: Where each public name is made. Loaded when first used: numpy and scipy take half a second that an import must not cost.
@@ -61,14 +63,15 @@ _HOMES = {
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
-    "reproduction_numbers": "ngm.analysis.batch",
     "mixing": "ngm.analysis.mixing",
     "mixing_map": "ngm.analysis.mixing_scan",
     "mixing_responses": "ngm.analysis.mixing_scan",
     "calibrate": "ngm.analysis.calibrate",
+    "reproduction_numbers": "ngm.analysis.batch",
     "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
+    "units": "ngm.analysis.units",
 }
 
 

@@ -1,0 +1,247 @@
+"""How to get from draws to K and R0: programs, the checks that a draw must pass, and the class structure of K.
+
+A `Plan` is plain data that other processes can be sent.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from functools import cached_property
+
+import numpy as np
+
+from ngm.analysis.matrices import as_floats
+from ngm.analysis.point import Point
+from ngm.analysis.traced import Columns, CurvedBaseline, TracedPoint, TracedTemplate, opened
+from ngm.derivation.compile import Program, compiled
+from ngm.derivation.conditions import check_arrivals, check_exits
+from ngm.derivation.expand import assemble
+from ngm.derivation.network import network
+from ngm.derivation.space import Array
+from ngm.derivation.stays import Stays, stays
+from ngm.derivation.tracing import Trace, Traced
+from ngm.expression.tree import names
+from ngm.scenario.model import Intervention, Scenario
+
+__all__ = ["MOST_TRACED", "NO_STATE", "Check", "Plan", "plan"]
+
+#: Types up to which a model is traced; past them draws are done one by one.
+MOST_TRACED = 150
+#: A pivot below this share of its parts has lost too many digits: such a draw is done by itself, with bounds.
+DOUBTFUL = 1e-8
+
+SINGULAR = "V is singular or no M-matrix: some infected compartments are not lost, or grow without any transmission"
+NEGATIVE_F = "F has a negative entry"
+POSITIVE_V = "V has a positive entry off its diagonal"
+NO_STATE = "no infection-free state with non-negative numbers"
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """What must hold of an output of a program at a draw.
+
+    `kind`: "above" 0 or "not below" 0: else there is no R0, for the reason `why`; "redo" where not above 0: the draw is
+    done by itself; "value": finite and not negative, else the draws are refused; "rest": output and the one after it
+    agree, else the draws are refused.
+    """
+
+    kind: str
+    output: int
+    why: str
+
+
+@dataclass(frozen=True)
+class Plan:
+    """How to get from draws to K and R0.
+
+    Attributes
+    ----------
+    scenario, intervention
+        For draws that are done one by one.
+    columns : mapping
+        Which input each copy of a drawn parameter is read from; inputs are in the parameters' own units.
+    inputs : int
+    at, size : int
+        Types at infection (rows of K).
+    entries : tuple of (int, int, float or None)
+        (row, column, value) of the entries of K that are not 0 by structure; those without a constant value are the
+        first outputs of `main`, in this order.
+    main : Program or None
+        None: draws are done one by one.
+    checks : tuple of Check
+        On outputs of `main`.
+    curve : Program or None
+        Where the infection-free state is no affine system: net flow (n) and its slope (n, n) from inputs and state (n).
+        `main` then takes the state after the inputs.
+    start : tuple of float
+        The state at the scenario's own values.
+    """
+
+    scenario: Scenario
+    intervention: Intervention | None
+    columns: Columns
+    inputs: int
+    size: int
+    entries: tuple[tuple[int, int, float | None], ...] = ()
+    main: Program | None = None
+    checks: tuple[Check, ...] = ()
+    curve: Program | None = None
+    start: tuple[float, ...] = ()
+
+    @cached_property
+    def pattern(self) -> Array:
+        """Which entries of K are not 0 by structure."""
+        out = np.zeros((self.size, self.size), dtype=bool)
+        for i, j, _ in self.entries:
+            out[i, j] = True
+        return out
+
+
+def plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int) -> Plan:
+    """Return how to compute K and R0 for draws of some parameters.
+
+    Raises
+    ------
+    DerivationError
+        The scenario itself, at its own values, has no infection-free state, or V is singular by structure.
+    """
+    point = Point(scenario, intervention)
+    out = Plan(scenario, intervention, columns, inputs, len(point.template.at_infection))
+    if len(point.template.types) > MOST_TRACED:
+        return out
+    check_arrivals(point.template, point.plain_tables)
+    check_exits(point.template)
+    state = point.infection_free.state
+    trace = Trace()
+    drawn = tuple(trace.input(nonnegative=not any_sign) for any_sign in _signs(scenario, columns, inputs))
+    traced = TracedPoint(opened(scenario, columns), intervention, trace, drawn, columns)
+    try:
+        return _traced_plan(out, traced, state)
+    except CurvedBaseline:
+        return out
+
+
+def _signs(scenario: Scenario, columns: Columns, inputs: int) -> list[bool]:
+    signs = [False] * inputs
+    for name, places in columns.items():
+        for k in places:
+            if k is not None:
+                signs[k] = signs[k] or scenario.parameters[name].any_sign
+    return signs
+
+
+def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> Plan:
+    template, trace = point.template, point.trace
+    evaluator = point.evaluator
+    trace.doing = ""
+    F, _ = assemble(template, evaluator)
+    if template.exponents & _moved(template):
+        return out
+    F = point.scaled(F)
+    net = network(template, evaluator, template.arrows, template.infected)
+    at = list(template.at_infection)
+    one = trace.constant(1.0)
+    found = stays(net, [{j: one} for j in at], trace)
+    entries: list[tuple[int, int, float | None]] = []
+    numbers: list[Traced] = []
+    for b, column in enumerate(found.columns):
+        for a, row in enumerate(at):
+            total = trace.constant(0.0)
+            for s, stay in column.items():
+                total = total + F[row, s] * stay
+            if total.value != 0:
+                entries.append((a, b, total.value))
+                if total.value is None:
+                    numbers.append(total)
+    checks = _checks(point, F, found, numbers)
+    main = compiled(trace, numbers)
+    curve, start = None, np.empty(0)
+    if point.unknown:
+        assert point.slope is not None
+        curve = compiled(trace, [*point.net, *point.slope.ravel().tolist()])
+        start = np.concatenate(
+            [template.space.flatten(as_floats(state[name]), template.by(name))[:, 0] for name in template.free]
+        )
+    return replace(
+        out,
+        entries=tuple(entries),
+        main=main,
+        checks=tuple(checks),
+        curve=curve,
+        start=tuple(start.tolist()),
+    )
+
+
+def _moved(template: TracedTemplate) -> set[str]:
+    """Return the parameters and definitions that a draw changes."""
+    open_ = set(template.columns)
+    while True:
+        more = {
+            name
+            for name, p in template.scenario.parameters.items()
+            if name not in open_ and any(names(v.tree) & open_ for v in p.values)
+        }
+        more |= {n for n, tree in template.definitions.items() if n not in open_ and names(tree) & open_}
+        if not more:
+            return open_
+        open_ |= more
+
+
+def _as_drawn(number: Traced) -> bool:
+    """Return whether a number is an input, converted or not: it was looked at when it came in."""
+    name, a, b = number.trace.operations[number.place]
+    if name == "multiply":
+        parts = (number.trace.operations[a][0], number.trace.operations[b][0])
+        return number.nonnegative and sorted(parts) == ["constant", "input"]
+    return name == "input"
+
+
+def _checks(point: TracedPoint, F: Array, found: Stays, numbers: list[Traced]) -> list[Check]:
+    """Return the checks; the numbers that they look at are appended to the outputs."""
+    template, trace = point.template, point.trace
+    out: list[Check] = []
+    seen: set[tuple[str, int]] = set()
+
+    def add(kind: str, number: Traced, why: str, second: Traced | None = None) -> None:
+        if (kind, number.place) in seen and second is None:
+            return
+        seen.add((kind, number.place))
+        out.append(Check(kind, len(numbers), why))
+        numbers.append(number)
+        if second is not None:
+            numbers.append(second)
+
+    for name, parameter in template.scenario.parameters.items():
+        if name.startswith("#") or parameter.any_sign:
+            continue
+        values = template.space.flatten(template.traced[name], parameter.by)[:, 0]
+        for item, value in zip(template.scenario.items(name, parameter.by), values.tolist(), strict=True):
+            if value.value is None and not _as_drawn(value):
+                add("value", value, item)
+    for label, a, b in point.balance:
+        if a.value is None or b.value is None:
+            add("rest", a, label, b)
+    for name in template.given:
+        for value in point.state[name].ravel().tolist():
+            if value.value is None and not value.nonnegative:
+                add("value", value, f"{name} in the infection-free state")
+    for value in point.solved:
+        if value.value is None and not value.nonnegative:
+            add("not below", value, NO_STATE)
+    for guard in trace.guards:
+        if guard.why:
+            add("above" if guard.strict else "not below", guard.number, guard.why)
+    for pivot, parts in (*point.doubtful, *found.doubtful):
+        # Signs are decided by what follows; here only digits that cancelled.
+        gap = trace.subtract(trace.multiply(pivot, pivot), trace.multiply(parts * DOUBTFUL, parts * DOUBTFUL))
+        add("redo", gap, "")
+    for entry in F.ravel().tolist():
+        if not entry.nonnegative:
+            add("not below", entry, NEGATIVE_F)
+    for rate in found.rates:
+        if not rate.nonnegative:
+            add("not below", rate, POSITIVE_V)
+    for pivot in found.pivots:
+        add("above", pivot, SINGULAR)
+    return out
