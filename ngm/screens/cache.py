@@ -15,19 +15,30 @@ import ngm
 from ngm.charts.style import short
 from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
+from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_mixing import Mixing, MixingMap, MixingResponses
+from ngm.screens import jobs
 
 __all__ = [
+    "ByGroup",
     "Outcome",
+    "allocate",
+    "compare",
     "control",
     "conversions",
+    "coverage",
     "latex",
     "mixing",
     "mixing_map",
     "mixing_responses",
+    "numbers",
     "problems",
     "solve",
+    "strength",
 ]
+
+#: One number for all groups, or (group, number) for each: plain values, so that they can be part of a key.
+ByGroup = float | tuple[tuple[str, float], ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,19 +59,117 @@ def problems(text: str, folder: str | None) -> tuple[Problem, ...]:
     return ()
 
 
-@st.cache_resource(max_entries=64, show_spinner="Deriving …")
-def solve(text: str, folder: str | None) -> Outcome:
-    """Return the solution of a scenario text, or the problems found on the way."""
+@st.cache_resource(max_entries=128, show_spinner=False)
+def numbers(text: str, folder: str | None) -> Outcome:
+    """Return the numbers of a scenario text without its formulas, or the problems found on the way."""
     try:
-        return Outcome(ngm.solve(ngm.loads(text, folder=folder)), ())
+        return Outcome(ngm.solve(ngm.loads(text, folder=folder), limit=0), ())
     except NgmError as error:
         return Outcome(None, error.problems)
+
+
+def solve(text: str, folder: str | None) -> Outcome:
+    """Return the solution of a scenario text: with its formulas where they have come, else the numbers alone."""
+    ready = jobs.ready(text, folder)
+    return numbers(text, folder) if ready is None else Outcome(ready, ())
 
 
 @st.cache_resource(max_entries=64, show_spinner="Computing control numbers …")
 def control(text: str, folder: str | None) -> ControlResult:
     """Return type, target and state reproduction numbers of a scenario text that `solve` accepts."""
     return ngm.control(ngm.loads(text, folder=folder))
+
+
+@st.cache_resource(max_entries=64, show_spinner="Comparing the interventions …")
+def compare(
+    text: str, folder: str | None, combinations: tuple[tuple[str, ...], ...] = ()
+) -> Comparison | tuple[Problem, ...]:
+    """Return every intervention, and combinations of them, beside the baseline; or why there is no comparison."""
+    try:
+        return ngm.compare(ngm.loads(text, folder=folder), combinations=combinations, partial=True)
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=256, show_spinner=False)
+def strength(
+    text: str, folder: str | None, name: str, target: float, besides: tuple[str, ...]
+) -> Strength | tuple[Problem, ...]:
+    """Return the strength at which an intervention brings the number to a target, others being in force besides."""
+    try:
+        scenario = ngm.loads(text, folder=folder)
+        also = ngm.combined(scenario, besides).intervention if besides else None
+        return ngm.strength_needed(scenario, name, target=target, with_also=also)
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=128, show_spinner="Computing the coverage …")
+def coverage(
+    text: str,
+    folder: str | None,
+    groups: tuple[str, ...] | None = None,
+    efficacy: ByGroup = 1.0,
+    against_spread: ByGroup = 0.0,
+    kind: str = "leaky",
+    turnover: float | None = None,
+    waning: float = 0.0,
+    target: float = 1.0,
+    besides: tuple[str, ...] = (),
+) -> Coverage | tuple[Problem, ...]:
+    """Return the coverage that groups need, or what is wrong with the question."""
+    try:
+        scenario = ngm.loads(text, folder=folder)
+        return ngm.coverage_needed(
+            scenario,
+            groups,
+            efficacy=_by_group(efficacy),
+            against_spread=_by_group(against_spread),
+            kind=kind,
+            turnover=turnover,
+            waning=waning,
+            target=target,
+            intervention=ngm.combined(scenario, besides).intervention if besides else None,
+        )
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=64, show_spinner="Sharing the supply: many ways are tried …")
+def allocate(
+    text: str,
+    folder: str | None,
+    supply: float,
+    groups: tuple[str, ...] | None,
+    efficacy: ByGroup,
+    against_spread: ByGroup,
+    cost: ByGroup,
+    upper: ByGroup,
+    sizes: tuple[tuple[str, float], ...],
+    target: float,
+    besides: tuple[str, ...],
+) -> Allocation | tuple[Problem, ...]:
+    """Return the best share of a supply, or what is wrong with the question."""
+    try:
+        scenario = ngm.loads(text, folder=folder)
+        return ngm.allocate(
+            scenario,
+            supply,
+            groups=groups,
+            efficacy=_by_group(efficacy),
+            against_spread=_by_group(against_spread),
+            cost=_by_group(cost),
+            upper=_by_group(upper),
+            sizes=dict(sizes),
+            target=target,
+            intervention=ngm.combined(scenario, besides).intervention if besides else None,
+        )
+    except NgmError as error:
+        return error.problems
+
+
+def _by_group(given: ByGroup) -> float | dict[str, float]:
+    return dict(given) if isinstance(given, tuple) else given
 
 
 @st.cache_resource(max_entries=64, show_spinner=False)

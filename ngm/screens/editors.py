@@ -10,7 +10,7 @@ import streamlit as st
 from ngm.screens import forms, state
 from ngm.screens.forms import Column, Edit, Row, Table
 
-__all__ = ["matrix_editor", "table_editor"]
+__all__ = ["grid", "matrix_editor", "table_editor"]
 
 #: A matrix with more groups is edited as text, or read from a file.
 MOST_GROUPS = 40
@@ -20,7 +20,7 @@ def table_editor(table: Table, document: Mapping[str, Any]) -> list[Edit]:
     """Place the grid of one table; return the edits that it asks for."""
     key = f"model.{table.section}.{state.current().forms}"
     before = forms.rows(table, document)
-    typed = _grid(key, before, table.columns, table.title)
+    typed = grid(key, before, table.columns, table.title)
     after = forms.tidy(table, typed)
     return [] if after == before else forms.edits(table, before, after, document)
 
@@ -48,7 +48,7 @@ def matrix_editor(name: str, document: Mapping[str, Any]) -> list[Edit]:
         block = others.index(chosen)
     before = forms.matrix_rows(values, len(groups), block)
     columns = [Column(str(k), group, "value", width=90) for k, group in enumerate(groups)]
-    typed = _grid(f"model.matrix.{name}.{block}.{state.current().forms}", before, columns, name, groups)
+    typed = grid(f"model.matrix.{name}.{block}.{state.current().forms}", before, columns, name, groups)
     after = [tuple("" if cell is None or cell != cell else str(cell).strip() for cell in row) for row in typed]
     return [] if after == before else forms.matrix_edits(path, values, before, after, block, len(groups))
 
@@ -59,7 +59,7 @@ def _groups(document: Mapping[str, Any], dimension: object) -> list[str]:
     return [group for group in found if isinstance(group, str)] if isinstance(found, list) else []
 
 
-def _grid(
+def grid(
     key: str, before: Sequence[Row], columns: Sequence[Column], title: str, labels: Sequence[str] | None = None
 ) -> list[tuple[object, ...]]:
     """Return the rows that the grid holds now.

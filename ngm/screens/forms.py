@@ -187,9 +187,9 @@ TABLES: Mapping[str, Table] = {
 
 @dataclass(frozen=True, slots=True)
 class Edit:
-    """One edit of the document: set, delete or rename what is at `path`, or append to the list there."""
+    """One edit of the document: set, delete or rename what is at `path`, append to the list there, or insert before it."""
 
-    action: Literal["set", "delete", "rename", "append"]
+    action: Literal["set", "delete", "rename", "append", "insert"]
     path: Path
     value: Any = None
 
@@ -268,6 +268,8 @@ def apply(text: str, changes: Sequence[Edit]) -> str:
             text = edit.delete(text, change.path)
         elif change.action == "rename":
             text = edit.rename(text, change.path, change.value)
+        elif change.action == "insert":
+            text = edit.insert(text, change.path, change.value)
         else:
             text = edit.insert(text, (*change.path, AT_THE_END), change.value)
     return text
