@@ -17,11 +17,13 @@ if TYPE_CHECKING:
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
+    from ngm.analysis.drawfile import read_draws
     from ngm.analysis.mixing import contact_readings, mixing
     from ngm.analysis.mixing_scan import mixing_map, mixing_responses
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
     from ngm.analysis.strength import coverage_needed, strength_needed
+    from ngm.analysis.uncertainty import uncertainty
     from ngm.analysis.units import units
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
@@ -45,10 +47,12 @@ __all__ = [
     "mixing",
     "mixing_map",
     "mixing_responses",
+    "read_draws",
     "reproduction_numbers",
     "sensitivity",
     "solve",
     "strength_needed",
+    "uncertainty",
     "units",
 ]
 
@@ -71,6 +75,8 @@ _HOMES = {
     "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
+    "uncertainty": "ngm.analysis.uncertainty",
+    "read_draws": "ngm.analysis.drawfile",
     "units": "ngm.analysis.units",
 }
 

@@ -7,6 +7,7 @@ anything else.
 from __future__ import annotations
 
 import argparse
+import io
 import json
 import sys
 from collections.abc import Sequence
@@ -32,7 +33,11 @@ VERBS = {
     "allocate": "the best way to share a supply of vaccine among groups, beside simple rules",
     "sensitivity": "how R0 and the growth rate answer to each parameter, and to each entry of K",
     "calibrate": "the value of a parameter at which R0 is the one that is wanted",
+    "units": "whether the units fit, what is converted, and the mean stay in every stage",
 }
+
+#: The verbs that contradict.
+OPINIONS = ("units",)
 
 
 class _Parser(argparse.ArgumentParser):
@@ -59,6 +64,16 @@ def _parser() -> argparse.ArgumentParser:
         sub.add_argument("--json", action="store_true", help="print one JSON object")
         if verb == "control":
             sub.add_argument("--by", metavar="DIMENSION", help="also the number of each group of this dimension")
+        if verb == "sensitivity":
+            sub.add_argument(
+                "--draws", metavar="N", type=int, help="also draw the parameters N times from their distributions"
+            )
+            sub.add_argument(
+                "--seed", metavar="K", type=int, default=0, help="of the draws; the same seed, the same numbers"
+            )
+            sub.add_argument(
+                "--from", dest="draw_file", metavar="TABLE", help="take joint draws from a CSV or Parquet file"
+            )
         if verb == "calibrate":
             sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
             sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
@@ -110,6 +125,8 @@ def _values(given: Sequence[str]) -> dict[str, str]:
         name, sign, value = item.partition("=")
         if not sign or not name.strip() or not value.strip():
             problems.append(Problem("--set", f"expected NAME=VALUE, for example --set beta=0.3, not {item[:80]!r}."))
+        elif name.strip() in out:
+            problems.append(Problem("--set", f"{name.strip()[:80]} is given twice. Keep one."))
         else:
             out[name.strip()] = value.strip()
     if problems:
@@ -119,12 +136,17 @@ def _values(given: Sequence[str]) -> dict[str, str]:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one verb and return the exit code."""
+    if isinstance(sys.stdout, io.TextIOWrapper):
+        # where the terminal has another encoding than UTF-8: what it cannot show must not end the program
+        sys.stdout.reconfigure(errors="replace")
     options = _parser().parse_args(arguments)
     try:
         text = _run(options)
     except NgmError as error:
         print(error, file=sys.stderr)
         return 2
+    if options.json and "utf" not in (sys.stdout.encoding or "utf").lower():
+        text = json.dumps(json.loads(text))  # letters beyond ASCII escaped
     try:
         print(text)
         sys.stdout.flush()
@@ -143,6 +165,8 @@ def _run(options: argparse.Namespace) -> str:
         scenario = scenario.with_values(**values)
     if options.verb in ("strength", "coverage", "allocate"):
         return _needs(options, scenario)
+    if options.verb in OPINIONS:
+        return _opinion(options, scenario)
     from ngm.console import result_text
 
     result: Solution | Comparison | ControlResult | Sensitivity | Calibration
@@ -152,12 +176,24 @@ def _run(options: argparse.Namespace) -> str:
         case "control":
             result = ngm.control(scenario, by=options.by)
         case "sensitivity":
-            result = ngm.sensitivity(scenario)
+            draws = options.draws
+            if options.draw_file is not None:
+                draws = ngm.read_draws(scenario, options.draw_file)
+            result = ngm.sensitivity(scenario, draws=draws, seed=options.seed)
         case "calibrate":
             result = ngm.calibrate(scenario, options.parameter, options.R0)
         case _:
             result = ngm.solve(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)
+
+
+def _opinion(options: argparse.Namespace, scenario: Scenario) -> str:
+    """Run one of the verbs that give a second opinion."""
+    import ngm
+    from ngm.console_opinion import opinion_text
+
+    result = ngm.units(scenario)
+    return json.dumps(result.to_json(), ensure_ascii=False) if options.json else opinion_text(result)
 
 
 def _needs(options: argparse.Namespace, scenario: Scenario) -> str:

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Compared, Comparison
-from ngm.results_sensitivity import Calibration, Sensitivity
+from ngm.results_sensitivity import Calibration, Sensitivity, Uncertainty
 
 __all__ = ["CAUTION", "closing", "compare_text", "control_text", "figure", "solve_text", "squeezed", "table"]
 
@@ -266,8 +266,30 @@ def sensitivity_text(result: Sensitivity) -> str:
         lines += ["", "Elasticity of R0 by entry of K (they add up to 1)"]
         rows = [[name, *(figure(v) for v in row)] for name, row in zip(names, result.entry_elasticity, strict=True)]
         lines += table(rows, ["", *names])
+    if result.uncertainty is not None:
+        lines += _uncertainty(result.uncertainty)
     lines += closing(result.warnings)
     return squeezed(lines)
+
+
+def _uncertainty(result: Uncertainty) -> list[str]:
+    """Return what the draws say."""
+    told = result.R0
+    seed = "" if result.seed is None else f", seed {result.seed}"
+    lines = ["", f"Draws: {result.how}{seed}; {told.rejected:,} of {told.draws:,} without an R0"]
+    if told.quantiles is not None:
+        quantiles = ", ".join(f"{100 * float(level):g} %: {figure(value)}" for level, value in told.quantiles.items())
+        lines += [f"  R0: mean {figure(told.mean)}, sd {figure(told.sd)}; quantiles {quantiles}"]
+        lines += [f"  share of draws with R0 > 1: {figure(told.above_one)}"]
+    rows = []
+    for driver in sorted(result.drivers, key=lambda d: -abs(d.total if d.total is not None else d.prcc or 0.0)):
+        monotone = "-" if driver.monotone is None else "yes" if driver.monotone else "NO"
+        rows.append([driver.parameter, figure(driver.prcc), monotone, figure(driver.first), figure(driver.total)])
+    lines += ["", *table(rows, ["parameter", "PRCC", "one direction", "Sobol first", "Sobol total"])]
+    if result.interventions:
+        shares = [[a.intervention, figure(a.figures.mean), figure(a.below_one)] for a in result.interventions]
+        lines += ["", *table(shares, ["intervention", "mean control number", "share of draws below 1"])]
+    return lines
 
 
 def calibrate_text(result: Calibration) -> str:

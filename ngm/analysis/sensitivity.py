@@ -8,6 +8,7 @@ derivative goes through too.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 from fractions import Fraction
 from typing import Any
@@ -32,8 +33,11 @@ MOST_LARGE_ROWS = 60
 LARGE_STEP = Fraction(1, 10**5)
 
 
-def sensitivity(scenario: Scenario) -> Sensitivity:
+def sensitivity(scenario: Scenario, *, draws: int | Mapping[str, Any] | None = None, seed: int = 0) -> Sensitivity:
     """Return local indices of every parameter given as a number, and those of the entries of K.
+
+    With `draws`, a number of draws or the draws themselves, also what the spread of the parameters does to R0
+    (`ngm.uncertainty`).
 
     dR0/dp and (p/R0) dR0/dp, of the growth rate too; of an entry K[i, j]: v_i w_j / (v.w), v and w the left and right
     Perron vectors, and that times K[i, j]/R0.
@@ -57,6 +61,12 @@ def sensitivity(scenario: Scenario) -> Sensitivity:
     if why is not None:
         warnings.append(why)
     local = local_indices(scenario, found, warnings) if why is None else _empty(scenario)
+    spread = None
+    if draws is not None:
+        from ngm.analysis.uncertainty import uncertainty
+
+        spread = uncertainty(scenario, draws, seed=seed)
+        warnings += spread.warnings
     return Sensitivity(
         title=scenario.title,
         time_unit=scenario.time_unit,
@@ -68,6 +78,7 @@ def sensitivity(scenario: Scenario) -> Sensitivity:
         entry_sensitivity=entries[0],
         entry_elasticity=entries[1],
         warnings=tuple(dict.fromkeys(warnings)),
+        uncertainty=spread,
     )
 
 
