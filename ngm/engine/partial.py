@@ -43,11 +43,11 @@ class PartialRank:
         Why there is none.
     monotone : bool or None
         False where the result both rises and falls with the parameter, on average or by the value of another one
-        (`turns_with`): then `value` misleads, and a variance-based index is the one to read. None where there are too
-        few draws to tell, or no value.
+        (`turns_with`), and enough to count: then `value` misleads, and a variance-based index is the one to read. None
+        where there are too few draws to tell, or no value.
     turning_share : float or None
-        The largest share of the partial residuals' variance that the parameter explains and no curve of one direction
-        does; 0 where it cannot be told from chance. `value` squared compares with it.
+        The share of the partial residuals' variance that the parameter explains and no curve of one direction does, on
+        average or split, whichever is clearly larger; 0 where it cannot be told from chance. `value` squared compares with it.
     turns_with : int or None
         Column, from 0, of the parameter by whose lower and upper half the response was split when it showed; None where
         it shows without a split, or not at all.
@@ -113,7 +113,7 @@ def prcc(X: npt.ArrayLike, y: npt.ArrayLike) -> Prcc:
     >>> x1, x2 = [1, 2, 3, 4, 5, 6, 7, 8], [3, 8, 1, 6, 2, 7, 5, 4]
     >>> found = prcc(np.transpose([x1, x2]), [2, 5, 4, 9, 8, 20, 25, 40])
     >>> [round(c.value, 9) for c in found.coefficients]
-    [0.987420883, 0.872339159]
+    [0.987420883, 0.87233916]
     """
     table, result = np.asarray(X, dtype=float), np.asarray(y, dtype=float)
     if table.ndim != 2 or result.shape != (len(table),):
@@ -197,11 +197,12 @@ class _Monotone:
         for j in [None, *(k for k in range(self.d) if k != i)]:
             cell = self.bin[i] if j is None else self.half[j] * self.bins + self.bin[i]
             beside, explained, chance = _beside(partial, cell, self.bins, _FALSE_ALARM / self.d)
-            if beside > chance and beside > _OF_ALL * total and beside > _OF_EXPLAINED * explained:
-                told = True
-                # What a split shows beyond the whole must be worth telling: a split always explains a little more.
-                if turning == 0 or beside > 1.5 * turning:
-                    turning, split = beside, j
+            if beside <= chance:
+                continue
+            told = told or (beside > _OF_ALL * total and beside > _OF_EXPLAINED * explained)
+            # A split always explains a little more than the whole: it is named where it shows clearly more.
+            if turning == 0 or beside > 1.5 * turning:
+                turning, split = beside, j
         return not told, turning / total if total > 0 else 0.0, split
 
 

@@ -138,9 +138,18 @@ def test_the_level_and_the_seed_count():
     assert found == again
     assert (found.first, found.total) == (other.first, other.total)
     assert found.first_interval != other.first_interval
-    narrow = sobol_indices(*values, level=0.5)
-    assert narrow.first_interval[0][0] > found.first_interval[0][0]
-    assert narrow.first_interval[0][1] < found.first_interval[0][1]
+
+
+# Second route: of many rows the estimates are normal, so both ends lie as many errors away as a normal quantile says.
+@pytest.mark.parametrize(("level", "errors"), [(0.95, 1.959964), (0.5, 0.6744898)])
+def test_intervals_are_as_wide_as_errors_say(level, errors):
+    found = sobol_indices(*saltelli_values(product, 2**14, 2, seed=1), level=level)
+    for value, (low, high), error in (
+        *zip(found.first, found.first_interval, found.first_error, strict=True),
+        *zip(found.total, found.total_interval, found.total_error, strict=True),
+    ):
+        assert (high - value) / error == pytest.approx(errors, abs=0.2)
+        assert (value - low) / error == pytest.approx(errors, abs=0.2)
 
 
 # By hand: scale and shift change no index, at any size of number.

@@ -41,6 +41,8 @@ def test_latin_hypercube_columns_are_apart():
 # By definition of a (0, m, 2)-net in base 2: the first two coordinates have one point in each box of 2^-a by 2^-(m - a).
 def test_sobol_is_even():
     u = sobol_sequence(0, 256, 5, seed=3)
+    # The middles of cells of width 2^-32: neither 0 nor 1 can occur.
+    assert np.all(u * 2**33 % 2 == 1)
     assert np.all((u > 0) & (u < 1))
     for a in range(9):
         boxes = np.floor(u[:, 0] * 2**a) * 2 ** (8 - a) + np.floor(u[:, 1] * 2 ** (8 - a))
