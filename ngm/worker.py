@@ -16,14 +16,15 @@ import struct
 import subprocess
 import sys
 import threading
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextvars import ContextVar
 from pathlib import Path
 from typing import IO, Any
 
 from ngm.results import Symbolic
 from ngm.scenario.model import Scenario
 
-__all__ = ["LIMIT", "WorkerFailed", "symbols", "warm"]
+__all__ = ["LIMIT", "Stop", "WorkerFailed", "stoppable", "symbols", "warm"]
 
 #: Seconds for the symbols of one scenario.
 LIMIT = 10.0
@@ -35,6 +36,43 @@ _HEADER = struct.Struct(">Q")
 
 class WorkerFailed(Exception):  # noqa: N818
     """No symbols: `str()` says why, in words for a warning."""
+
+
+class Stop:
+    """A way to stop the symbolic work that a thread has begun, from another thread."""
+
+    def __init__(self) -> None:
+        self._lock = threading.Lock()
+        self._child: _Child | None = None
+        self.asked = False
+
+    def now(self) -> None:
+        """Stop what is under way, and whatever would follow."""
+        with self._lock:
+            self.asked = True
+            child = self._child
+        if child is not None:
+            child.process.kill()
+
+    def _watch(self, child: _Child | None) -> None:
+        with self._lock:
+            self._child = child
+            if child is None or not self.asked:
+                return
+        child.process.kill()
+
+
+_stop: ContextVar[Stop | None] = ContextVar("stop", default=None)
+
+
+@contextlib.contextmanager
+def stoppable(stop: Stop) -> Iterator[None]:
+    """Let `stop` end the symbolic work done inside; it raises WorkerFailed, and the numbers come alone."""
+    token = _stop.set(stop)
+    try:
+        yield
+    finally:
+        _stop.reset(token)
 
 
 class _Child:
@@ -60,6 +98,7 @@ class _Child:
         assert self.process.stdin is not None
         assert self.process.stdout is not None
         late = threading.Event()
+        wanted = _stop.get()
 
         def stop() -> None:
             late.set()
@@ -69,10 +108,14 @@ class _Child:
         timer.daemon = True
         timer.start()
         try:
+            if wanted is not None:
+                wanted._watch(self)
             _send(self.process.stdin, request)
             return _receive(self.process.stdout)
         except (OSError, EOFError, pickle.UnpicklingError, struct.error):
             self.kill()
+            if wanted is not None and wanted.asked:
+                raise WorkerFailed("the formulas were stopped; the numbers stand by themselves.") from None
             if late.is_set():
                 raise WorkerFailed(
                     f"the formulas took longer than {limit:g} s and were stopped; the numbers stand by themselves."
@@ -82,6 +125,8 @@ class _Child:
             ) from None
         finally:
             timer.cancel()
+            if wanted is not None:
+                wanted._watch(None)
 
     def kill(self) -> None:
         """End the child at once."""

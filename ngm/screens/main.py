@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import parts
+from ngm.screens import desk, state
 from ngm.screens.registry import PAGES
 
 
@@ -13,11 +13,15 @@ def main() -> None:
     # The icon is an emoji: a named one would be fetched from another server.
     st.set_page_config(page_title="Next-generation matrices", page_icon="🧮", layout="wide")
     page = st.navigation([st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES])
+    told = state.arrive()
     status = st.sidebar.container()
+    notices = st.container()
     page.run()
-    # After the page, so that the side bar speaks of the text as the page has just left it.
+    # After the page, so that both speak of the text as the page has just left it.
+    with notices:
+        desk.notices(told)
     with status:
-        parts.status()
+        desk.status()
 
 
 main()

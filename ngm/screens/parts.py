@@ -37,7 +37,6 @@ __all__ = [
     "plain",
     "problem_box",
     "results",
-    "status",
     "switch",
     "table",
     "warnings_box",
@@ -198,24 +197,6 @@ def conversions(text: str, folder: str | None, time_unit: str) -> None:
     told = [f"{plain(name)}: {plain(value)}" for name, value in cache.conversions(text, folder)]
     if told:
         st.caption(f"Converted for the computation (time in units of one {plain(time_unit)}): {'; '.join(told)}.")
-
-
-def status() -> None:
-    """Show in the side bar what is open, how it stands, and Undo."""
-    held = state.current()
-    if held.now is None:
-        st.caption("No scenario is open.")
-    else:
-        outcome = cache.solve(held.now.text, held.now.folder)
-        st.caption(f"Open: {plain(held.now.name)}")
-        if outcome.solution is None:
-            count = len(outcome.problems)
-            st.markdown(f"⚠ {count} problem{'s' if count > 1 else ''} to put right")
-        elif outcome.solution.R0 is None:
-            st.markdown("No R0 at these values")
-        else:
-            st.markdown(f"R0 = **{plain(short(outcome.solution.R0))}**")
-    st.button("Undo last change", on_click=state.undo, disabled=not held.past, key="status.undo")
 
 
 def latex(text: str) -> str:

@@ -30,4 +30,6 @@ PAGES = (
     Page("derivation", "Derivation"),
     Page("numbers", "Reproduction numbers"),
     Page("mixing", "Mixing"),
+    Page("control", "Control"),
+    Page("versions", "Versions"),
 )

@@ -1,22 +1,48 @@
 """What one visitor's session holds. The scenario's text is the only state of the model; all else follows from it.
 
-`AppState` is frozen and lives in ``st.session_state["ngm"]``; it is replaced here and nowhere else.
+`AppState` is frozen and lives in ``st.session_state["ngm"]``; it is replaced here and nowhere else. Each accepted edit
+is a version in the store of drafts before the page says anything about it, and the address of the page names the draft:
+a session that begins with such an address goes on where the draft stands.
 """
 
 from __future__ import annotations
 
+import time
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import streamlit as st
 
-from ngm.screens import cache
+from ngm.drafts import Conflict, Draft, DraftError, Saved, Store
+from ngm.screens import cache, shelf
 
-__all__ = ["AppState", "Version", "current", "edit", "open_text", "opened", "recall", "remember", "undo"]
+__all__ = [
+    "PARAMETER",
+    "AppState",
+    "Version",
+    "adopt",
+    "arrive",
+    "bring_in",
+    "current",
+    "edit",
+    "open_text",
+    "opened",
+    "owner",
+    "recall",
+    "redo",
+    "remember",
+    "restore",
+    "store",
+    "undo",
+]
 
 KEY = "ngm"
 
-#: Undo keeps this many characters of earlier texts, and always the last one.
-MOST_KEPT = 4_000_000
+#: The part of the address that names the draft.
+PARAMETER = "draft"
+
+#: What a draft's origin says where its matrix files lie beside the scenarios that come with the app.
+SHELF = "shelf"
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,8 +75,20 @@ class AppState:
     ----------
     now : Version or None
         What is being worked on; None before anything is opened.
+    draft : str or None
+        Id of the draft that `now` is kept in; None where it is in no store.
+    rev, head : int
+        The draft's counter of moves, and the number of its version, that `now` is.
+    earlier, later : bool
+        Whether Undo, Redo lead anywhere.
     past : tuple of Version
-        What Undo goes back to, oldest first.
+        What stood before the last edit of this session; empty after anything else than an edit.
+    before : tuple of str
+        Drafts that were left by opening another scenario in this session: Undo leads back to them at last.
+    conflict : Conflict or None
+        Somebody else changed the draft first: theirs, and where ours is kept.
+    trouble : str or None
+        Why nothing can be stored at the moment.
     forms, source : int
         Counters in the keys of widgets: they go up when the text was changed by something other than the tables and
         fields, or other than the text view, so that these start afresh from the text and not from what they held.
@@ -59,7 +97,15 @@ class AppState:
     """
 
     now: Version | None = None
+    draft: str | None = None
+    rev: int = 0
+    head: int = 0
+    earlier: bool = False
+    later: bool = False
     past: tuple[Version, ...] = ()
+    before: tuple[str, ...] = ()
+    conflict: Conflict | None = None
+    trouble: str | None = None
     forms: int = 0
     source: int = 0
     entries: tuple[tuple[str, str], ...] = ()
@@ -71,6 +117,55 @@ def current() -> AppState:
     return held if isinstance(held, AppState) else AppState()
 
 
+def store() -> Store:
+    """Return the store of drafts."""
+    return _store()
+
+
+@st.cache_resource(show_spinner=False)
+def _store() -> Store:
+    return Store()
+
+
+def owner() -> str:
+    """Return who is signed in, or nothing: drafts are listed to their owner and to nobody else."""
+    # `st.user` has these fields only where a sign-in is set up.
+    who = st.user.to_dict() if hasattr(st.user, "to_dict") else {}
+    return str(who.get("email") or who.get("sub") or "") if who.get("is_logged_in") else ""
+
+
+def arrive() -> str | None:
+    """Begin a run: take up the draft that the address names, and put it into the address where it is missing.
+
+    Returns
+    -------
+    str or None
+        What to tell where the address names a draft that is not there.
+    """
+    state = current()
+    asked = st.query_params.get(PARAMETER)
+    told = None
+    if state.now is None and asked:
+        try:
+            found = store().get(asked)
+        except DraftError as error:
+            found, told = None, f"The draft of this address cannot be read. {error.problems[0].message}"
+        if found is not None:
+            # Keys of widgets that no earlier session of this browser tab can have used: what it still holds under them
+            # belongs to another state of the text, and a table would apply its changes a second time.
+            fresh = int(time.time() * 1000)
+            state = _at(replace(state, forms=fresh, source=fresh), found)
+            _put(state)
+        elif told is None:
+            told = "There is no draft at this address here: it may be on another computer, or mistyped."
+    elif state.now is not None and state.draft is None:
+        _put(state := _kept(state, state.now))
+    if state.draft is not None and asked != state.draft:
+        # A click in the menu drops it from the address.
+        st.query_params[PARAMETER] = state.draft
+    return told
+
+
 def opened(text: str, name: str, folder: str | None = None) -> Version:
     """Return a scenario text as it is when it is first opened."""
     text = text.replace("\r\n", "\n")
@@ -78,33 +173,83 @@ def opened(text: str, name: str, folder: str | None = None) -> Version:
 
 
 def open_text(text: str, name: str, folder: str | None = None) -> None:
-    """Work on another scenario; the one before stays within reach of Undo."""
+    """Work on another scenario, as a new draft; the one before stays within reach of Undo."""
     state = current()
-    _put(AppState(opened(text, name, folder), _kept(state), state.forms + 1, state.source + 1))
+    before = state.before if state.draft is None else (*state.before, state.draft)
+    _put(_kept(replace(_anew(state), before=before, conflict=None), opened(text, name, folder), "opened"))
+    _address()
 
 
-def edit(text: str, *, by_source: bool = False) -> None:
+def edit(text: str, *, by_source: bool = False, note: str = "") -> None:
     """Replace the scenario's text after an edit in a table or field, or (`by_source`) in the text view."""
     state = current()
     if state.now is None or text == state.now.text:
         return
-    valid = text if _has_results(text, state.now.folder) else state.now.valid
-    _put(
-        replace(
-            state,
-            now=replace(state.now, text=text, valid=valid),
-            past=_kept(state),
-            forms=state.forms + by_source,
-            source=state.source + (not by_source),
-        )
+    good = _has_results(text, state.now.folder)
+    now = replace(state.now, text=text, valid=text if good else state.now.valid)
+    state = replace(
+        state, now=now, past=(state.now,), forms=state.forms + by_source, source=state.source + (not by_source)
     )
+    if state.draft is None:
+        _put(_kept(state, now))
+        return
+    try:
+        answer = store().save(state.draft, state.rev, text, base=state.head, note=note, good=good)
+    except DraftError as error:
+        _put(replace(state, trouble=error.problems[0].message))
+        return
+    if isinstance(answer, Saved):
+        found = answer.draft
+        state = replace(state, rev=found.rev, head=found.head, earlier=found.earlier, later=found.later, trouble=None)
+    else:
+        # Ours goes on as a line of its own beside theirs, until one is chosen.
+        state = replace(state, head=answer.aside, conflict=answer, trouble=None)
+    _put(state)
 
 
 def undo() -> None:
-    """Go back to the text before the last change."""
+    """Go back to the version that the present one was made from; at the first, to the scenario open before."""
     state = current()
-    if state.past:
-        _put(replace(state, now=state.past[-1], past=state.past[:-1], forms=state.forms + 1, source=state.source + 1))
+    if state.draft is not None and state.earlier:
+        _move(state, lambda kept, draft: kept.undo(draft, state.rev))
+    elif state.before:
+        found = _read(state.before[-1])
+        if found is not None:
+            _put(_at(replace(_anew(state), before=state.before[:-1]), found))
+            _address()
+
+
+def redo() -> None:
+    """Go forward again to the last version made from the present one."""
+    state = current()
+    _move(state, lambda kept, draft: kept.redo(draft, state.rev))
+
+
+def restore(number: int, rev: int | None = None) -> None:
+    """Show another version of the draft; `rev`: in place of what somebody else made of it."""
+    state = current()
+    _move(state, lambda kept, draft: kept.move(draft, state.rev if rev is None else rev, number))
+
+
+def adopt() -> None:
+    """Show the draft as it stands now, whoever changed it."""
+    state = current()
+    found = None if state.draft is None else _read(state.draft)
+    if found is not None:
+        _put(_at(_anew(state), found))
+
+
+def bring_in(content: bytes) -> str | None:
+    """Open a draft that was exported with its history, as a new one; return what is wrong with the file, if anything."""
+    state = current()
+    try:
+        found = store().bring_in(content, owner=owner())
+    except DraftError as error:
+        return error.problems[0].message
+    before = state.before if state.draft is None else (*state.before, state.draft)
+    _put(_at(replace(_anew(state), before=before), found))
+    _address()
+    return None
 
 
 def remember(field: str, value: str) -> None:
@@ -123,15 +268,69 @@ def _put(state: AppState) -> None:
     st.session_state[KEY] = state
 
 
-def _kept(state: AppState) -> tuple[Version, ...]:
-    """Return the past with the present one added, the oldest dropped where it grows too large."""
-    if state.now is None:
-        return state.past
-    past = [*state.past, state.now]
-    while len(past) > 1 and sum(len(version.text) for version in past) > MOST_KEPT:
-        del past[0]
-    return tuple(past)
+def _address() -> None:
+    key = current().draft
+    if key is not None and st.query_params.get(PARAMETER) != key:
+        st.query_params[PARAMETER] = key
+
+
+def _anew(state: AppState) -> AppState:
+    """Return the state with all widgets to start from the text."""
+    return replace(state, past=(), forms=state.forms + 1, source=state.source + 1)
+
+
+def _kept(state: AppState, now: Version, note: str = "") -> AppState:
+    """Return the state with this text as a new draft; without one, and why, where it cannot be stored."""
+    origin = SHELF if now.folder == str(shelf.FOLDER) else ""
+    try:
+        found = store().create(now.text, now.name, origin=origin, owner=owner(), note=note, good=now.valid == now.text)
+    except DraftError as error:
+        why = error.problems[0].message
+        return replace(state, now=now, draft=None, earlier=False, later=False, trouble=why)
+    return replace(
+        state, now=now, draft=found.id, rev=found.rev, head=found.head, earlier=False, later=False, trouble=None
+    )
+
+
+def _at(state: AppState, found: Draft) -> AppState:
+    """Return the state with a stored draft as what is being worked on."""
+    folder = str(shelf.FOLDER) if found.origin == SHELF else None
+    return replace(
+        state,
+        now=Version(found.text, found.name, folder, found.valid),
+        draft=found.id,
+        rev=found.rev,
+        head=found.head,
+        earlier=found.earlier,
+        later=found.later,
+        conflict=None,
+        trouble=None,
+    )
+
+
+def _move(state: AppState, how: Callable[[Store, str], Saved | Conflict | None]) -> None:
+    """Move the draft's head and show what is there; where somebody else was faster, say so and keep ours."""
+    if state.draft is None:
+        return
+    try:
+        answer = how(store(), state.draft)
+    except DraftError as error:
+        _put(replace(state, trouble=error.problems[0].message))
+        return
+    if isinstance(answer, Saved):
+        _put(_at(_anew(state), answer.draft))
+    elif isinstance(answer, Conflict):
+        # What this session shows is stored already: as the version it came from.
+        _put(replace(state, conflict=Conflict(answer.theirs, state.head)))
+
+
+def _read(key: str) -> Draft | None:
+    try:
+        return store().get(key)
+    except DraftError as error:
+        _put(replace(current(), trouble=error.problems[0].message))
+        return None
 
 
 def _has_results(text: str, folder: str | None) -> bool:
-    return cache.solve(text, folder).solution is not None
+    return cache.numbers(text, folder).solution is not None

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import parts, steps
+from ngm.screens import desk, parts, steps
 
 
 def page() -> None:
@@ -14,7 +14,7 @@ def page() -> None:
     if shown is None:
         return
     write = parts.digits("derivation")
-    solution = shown.solution
+    solution = desk.formulas(shown)
     parts.headline(solution, write)
     steps.types(solution)
     steps.infection_free(solution, write)
