@@ -43,27 +43,31 @@ def read_text(path: str | Path) -> str:
     ScenarioError
         No such file, a directory, another extension than ``.toml``, more than 16 MB, or not UTF-8.
     """
+    if not str(path):
+        _refuse("the name of the file is empty. Name a scenario file (extension .toml).")
+    # the end of a path tells more than its beginning
+    where = str(path) if len(str(path)) <= 200 else "…" + str(path)[-200:]
     place = Path(path)
     try:
         if place.is_dir():
-            _refuse("this is a directory. Name the scenario file in it (extension .toml).", str(path))
+            _refuse("this is a directory. Name the scenario file in it (extension .toml).", where)
         if place.suffix.lower() != ".toml":
-            _refuse("a scenario file has the extension .toml.", str(path))
+            _refuse("a scenario file has the extension .toml.", where)
         if not place.exists():
-            _refuse("there is no such file.", str(path))
+            _refuse("there is no such file.", where)
         if not place.is_file():
-            _refuse("this is no ordinary file. Name a scenario file (extension .toml).", str(path))
+            _refuse("this is no ordinary file. Name a scenario file (extension .toml).", where)
         with place.open("rb") as stream:
             raw = stream.read(LARGEST_FILE + 1)
     except (OSError, ValueError) as error:
-        _refuse(f"cannot be read: {getattr(error, 'strerror', None) or 'the path is not valid'}.", str(path))
+        _refuse(f"cannot be read: {getattr(error, 'strerror', None) or 'the path is not valid'}.", where)
     if len(raw) > LARGEST_FILE:
-        _refuse("the file is larger than 16 MB. Put large matrices into CSV files (file = …).", str(path))
+        _refuse("the file is larger than 16 MB. Put large matrices into CSV files (file = …).", where)
     try:
         return raw.decode("utf-8")
     except UnicodeDecodeError as error:
         line = raw.count(b"\n", 0, error.start) + 1
-        _refuse(f"line {line} is not UTF-8. Save the file as UTF-8.", str(path))
+        _refuse(f"line {line} is not UTF-8. Save the file as UTF-8.", where)
 
 
 def to_data(text: str) -> dict[str, Any]:
