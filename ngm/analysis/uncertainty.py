@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
 from fractions import Fraction
+from statistics import NormalDist
 from typing import Any
 
 import numpy as np
@@ -43,9 +44,7 @@ class _Input:
         upper = 100.0 if self.parameter.unit is not None and self.parameter.unit.factor == Fraction(1, 100) else 1.0
         name, arguments = self.distribution.name, self.distribution.arguments
         if name == "normal" and not self.parameter.any_sign:
-            from scipy.special import ndtr
-
-            below = float(ndtr(-arguments["mean"] / arguments["sd"]))
+            below = NormalDist(arguments["mean"], arguments["sd"]).cdf(0.0)
             u = below + np.asarray(u) * (1 - below)
         return quantile(name, arguments, u, upper=upper)
 
