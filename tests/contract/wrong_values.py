@@ -75,7 +75,6 @@ PARAMETERS: list[Case] = [
     ("sign unknown", "P", beta('value = 1, sign = "negative"'), ["beta, sign", "any"]),
     ("unit a number", "P", beta("value = 1, unit = 7"), ["beta, unit"]),
     ("by without dimensions", "P", beta('value = [1], by = ["age"]'), ["beta", "age"]),
-    ("season waits", "P", beta("value = 1, season = { amplitude = 0.1, period = 365, peak = 1 }"), ["beta", "season"]),
     ("unknown key", "P", beta("value = 1, prior = 2"), ["beta", "prior"]),
     (
         "name of distribution unknown",
