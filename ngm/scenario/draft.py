@@ -58,6 +58,7 @@ class Draft:
     title: str = ""
     summary: str | None = None
     time_unit: str = ""
+    strict_units: bool = False
     dimensions: dict[str, Dimension] = field(default_factory=dict)
     compartments: dict[str, Compartment] = field(default_factory=dict)
     parameters: dict[str, Parameter] = field(default_factory=dict)

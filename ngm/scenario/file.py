@@ -7,9 +7,10 @@ return it with one thing changed: comments, order and spacing stay, so that one 
 from __future__ import annotations
 
 from contextlib import suppress
+from dataclasses import replace
 from pathlib import Path
 
-from ngm.errors import ScenarioError
+from ngm.errors import Problem, ScenarioError
 from ngm.scenario.check import check
 from ngm.scenario.document import read_text, to_data
 from ngm.scenario.draft import Draft
@@ -17,6 +18,7 @@ from ngm.scenario.edit import delete, insert, move, rename, set_value
 from ngm.scenario.fields import EnoughError, Findings
 from ngm.scenario.model import Expression, Scenario
 from ngm.scenario.read import read
+from ngm.scenario.unit_check import check_units
 
 __all__ = ["delete", "insert", "load", "loads", "move", "rename", "set_value"]
 
@@ -59,7 +61,31 @@ def loads(text: str, folder: str | None = None) -> Scenario:
         check(draft)
     if draft.found.problems:
         raise ScenarioError(draft.found.problems)
-    return _scenario(draft, text, folder)
+    return _with_units(draft, _scenario(draft, text, folder))
+
+
+def _with_units(draft: Draft, scenario: Scenario) -> Scenario:
+    """Return the scenario with a warning for what does not fit in its units; refuse it where they are strict."""
+    check = check_units(scenario)
+    if scenario.strict_units and check.findings:
+        problems = []
+        for finding in check.findings:
+            key = tuple(draft.typed.get(part, part) if isinstance(part, str) else part for part in finding.key)
+            problems.append(Problem(finding.where, f'{finding.message} (units = "strict")', key=key))
+        raise ScenarioError(problems)
+    if not check.given or not check.findings:
+        return scenario
+    wrong = [f"Units: {finding}" for finding in check.findings if finding.kind != "missing"]
+    # A remark in place of a unit has a warning of its own where it speaks of time.
+    open_ones = [
+        name
+        for name in (finding.where.partition(".")[2] for finding in check.findings if finding.kind == "missing")
+        if scenario.parameters[name].unit is None
+    ]
+    if open_ones:
+        named = ", ".join(open_ones[:6]) + (", …" if len(open_ones) > 6 else "")
+        wrong.append(f"Units: the flows need a unit for {named}, and the file gives none.")
+    return replace(scenario, warnings=(*scenario.warnings, *wrong))
 
 
 def _state(draft: Draft, section: str) -> dict[str, tuple[Expression, ...]]:
@@ -82,6 +108,7 @@ def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
         interventions=tuple(draft.interventions),
         report=draft.report,
         summary=draft.summary,
+        strict_units=draft.strict_units,
         warnings=tuple(draft.found.warnings),
         text=text,
         folder=folder,

@@ -157,10 +157,9 @@ def _scenario(draft: Draft, data: Mapping[str, Any]) -> None:
             shown = version if number_trouble(version) is None and abs(version) < 10**9 else "this"
             table.problem("format", f"{shown} is not known to this version. It reads format = 1.")
     check = table.text("units")
-    if check == "strict":
-        table.problem("units", '"strict" is not supported yet by this version. Write "warn" or leave it out.')
-    elif check is not None and check != "warn":
-        table.problem("units", f"'{short(check)}' is not known. Write \"warn\" or leave it out.")
+    draft.strict_units = check == "strict"
+    if check not in (None, "warn", "strict"):
+        table.problem("units", f'\'{short(check or "")}\' is not known. Write "warn" or "strict", or leave it out.')
     time = table.text("time")
     if time == "discrete":
         table.problem("time", '"discrete" is not supported yet by this version. Leave it out for continuous time.')

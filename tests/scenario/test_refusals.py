@@ -34,7 +34,6 @@ ON_PLAIN: list[tuple[str, str, tuple[str, ...]]] = [
     ('time_unit = "day"', 'time_unit = "day"\nformat = 2', ("scenario, format: 2 is not known", "format = 1")),
     ('time_unit = "day"', 'time_unit = "day"\nformat = "1"', ("scenario, format: expected the number 1",)),
     ('time_unit = "day"', 'time_unit = "day"\nformat = true', ("scenario, format: expected the number 1, not true",)),
-    ('time_unit = "day"', 'time_unit = "day"\nunits = "strict"', ("scenario, units", "not supported yet")),
     ('time_unit = "day"', 'time_unit = "day"\nunits = "loose"', ("scenario, units: 'loose' is not known",)),
     ('time_unit = "day"', 'time_unit = "day"\ntime = "discrete"', ("scenario, time", "not supported yet")),
     ('time_unit = "day"', 'time_unit = "day"\ntime = "continuous"', ("scenario, time: 'continuous' is not known",)),
