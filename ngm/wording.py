@@ -20,7 +20,7 @@ def share(value: float | None) -> str:
     if value is None:
         return "-"
     # What an optimiser leaves of a bound of 0 is 0.
-    text = f"{100 * value:.4g}" if abs(value) > 1e-12 else "0"
+    text = f"{100 * value:.4g}" if abs(value) > 1e-8 else "0"
     return f"{100 * value:.10g} %" if float(text) == 100 and value != 1 else f"{text} %"
 
 

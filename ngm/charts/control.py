@@ -21,6 +21,7 @@ MOST_BARS = 60
 STEP = 34
 AXIS = 76
 LINE = 24
+TALL = 48
 
 TargetKind = Literal["types", "entries", "states"]
 
@@ -42,7 +43,7 @@ def interventions(rows: Sequence[Compared], *, dark: bool = False) -> alt.LayerC
     """
     data: list[dict[str, Any]] = [
         {
-            "name": _name(row.name + (" (R0)" if not row.parts else "")),
+            "name": row.name + (" (R0)" if not row.parts else ""),
             "value": row.R0 or 0.0,
             "shown": "no number" if row.R0 is None else short(row.R0) + (", below 1" if row.below_one else ""),
             "what": row.label,
@@ -52,7 +53,11 @@ def interventions(rows: Sequence[Compared], *, dark: bool = False) -> alt.LayerC
     ]
     if len(data) > MOST_BARS or all(row.R0 is None for row in rows):
         return None
-    reach = 1.3 * max(1.0, *(row["value"] for row in data))
+    told = "; ".join(f"{row['name']} {row['shown']}" for row in data)
+    # The number stands below the name: beside its bar it would run into the line at 1.
+    for row in data:
+        row["name"] = f"{_wrapped(row['name'])}\n{row['shown']}"
+    reach = 1.06 * max(1.0, *(row["value"] for row in data))
     base = _base(data, "reproduction number", alt.Scale(domain=[0, reach], nice=False))
     colours = ink(dark)
     bars = base.mark_bar(height={"band": 0.6}).encode(
@@ -62,12 +67,9 @@ def interventions(rows: Sequence[Compared], *, dark: bool = False) -> alt.LayerC
             legend=None,
         )
     )
-    texts = base.mark_text(align="left", dx=5, color=colours.text).encode(text="shown:N")
-    layers = [bars, *_threshold(1.0, "1", dark, down=True), texts]
-    told = "; ".join(f"{row['name']} {row['shown']}" for row in data)
-    return _layered(
-        layers, len(data), f"Reproduction number of the baseline and of each intervention, line at 1: {told}."
-    )
+    layers = [bars, *_threshold(1.0, "1", dark, down=True)]
+    spoken = f"Reproduction number of the baseline and of each intervention, line at 1: {told}."
+    return _layered(layers, len(data), spoken, TALL)
 
 
 def strength(result: Strength, *, dark: bool = False) -> alt.LayerChart | None:
@@ -80,8 +82,15 @@ def strength(result: Strength, *, dark: bool = False) -> alt.LayerChart | None:
         return None
     colours = ink(dark)
     top = 1.12 * max(result.target, *(row["value"] for row in data))
-    x = alt.X("strength:Q", scale=alt.Scale(domain=[0, 1], nice=False), title="strength (0: not there, 1: in full)")
-    y = alt.Y("value:Q", scale=alt.Scale(domain=[0, top], nice=False), title="reproduction number")
+    x = alt.X(
+        "strength:Q",
+        scale=alt.Scale(domain=[0, 1], nice=False),
+        title="strength (0: not there, 1: in full)",
+        axis=alt.Axis(tickCount=5),
+    )
+    y = alt.Y(
+        "value:Q", scale=alt.Scale(domain=[0, top], nice=False), title="reproduction number", axis=alt.Axis(tickCount=5)
+    )
     base = alt.Chart(alt.InlineData(values=data)).encode(
         x=x, y=y, tooltip=[alt.Tooltip("strength:Q", format=".3f"), alt.Tooltip("value:Q", format=".4f")]
     )
@@ -132,7 +141,7 @@ def efforts(result: ControlResult, kind: TargetKind, *, dark: bool = False) -> a
         return None
     data: list[dict[str, Any]] = [
         {
-            "name": _name(name),
+            "name": _wrapped(name),
             "value": effort or 0.0,
             "shown": "cannot work alone"
             if effort is None
@@ -168,7 +177,7 @@ def shares(result: Allocation, *, dark: bool = False) -> alt.LayerChart | None:
         return None
     data: list[dict[str, Any]] = [
         {
-            "name": _name(name),
+            "name": _wrapped(name),
             "value": value,
             "shown": short(value, 5),
             "what": result.label,
@@ -204,7 +213,7 @@ def coverages(result: Allocation, *, dark: bool = False) -> alt.LayerChart | Non
     ways = [("best found", result.best), *([("by population", even)] if even is not None else [])]
     data: list[dict[str, Any]] = [
         {
-            "name": _name(group),
+            "name": _wrapped(group),
             "value": 100 * share.coverage[k],
             "shown": f"{100 * share.coverage[k]:.3g} % ({share.doses[k]:,.0f} doses)",
             "what": rule,
@@ -214,7 +223,9 @@ def coverages(result: Allocation, *, dark: bool = False) -> alt.LayerChart | Non
     ]
     colours = ink(dark)
     kinds = ["best found", "by population"]
-    base = _base(data, "coverage, %", alt.Scale(domain=[0, 1.06 * max(1e-9, *(row["value"] for row in data))]))
+    # A little room on both sides: a point at 0 would cover the name beside it.
+    most = max(1e-9, *(row["value"] for row in data))
+    base = _base(data, "coverage, %", alt.Scale(domain=[-0.05 * most, 1.06 * most], nice=False))
     points = base.mark_point(size=130, opacity=1, strokeWidth=2).encode(
         shape=alt.Shape(
             "what:N",
@@ -231,13 +242,24 @@ def coverages(result: Allocation, *, dark: bool = False) -> alt.LayerChart | Non
     return _layered([points], len(result.groups) + 1, f"Coverage of each group: {told}.")
 
 
-def _name(name: str) -> str:
-    """Return a name over lines that an axis has room for."""
+def _wrapped(name: str) -> str:
+    """Return a name over one or two lines that an axis has room for."""
     lines = wrap(name, LINE) or [name]
     return "\n".join(lines if len(lines) <= 2 else [lines[0], lines[1][: LINE - 1] + "…"])
 
 
+def _apart(data: list[dict[str, Any]]) -> None:
+    """Give names that were cut to the same text their numbers: one name is one place on the axis."""
+    taken: set[tuple[str, str]] = set()
+    for row in data:
+        name, k = row["name"], 2
+        while (row["name"], row["what"]) in taken:
+            row["name"], k = f"{name} ({k})", k + 1
+        taken.add((row["name"], row["what"]))
+
+
 def _base(data: list[dict[str, Any]], axis: str, scale: alt.Scale) -> alt.Chart:
+    _apart(data)
     return alt.Chart(alt.InlineData(values=data)).encode(
         y=alt.Y(
             "name:N",
@@ -262,10 +284,10 @@ def _threshold(at: float, word: str, dark: bool, *, down: bool) -> list[alt.Char
     text = chart.mark_text(color=colours.text, fontWeight="bold")
     if down:
         return [rule.encode(x="at:Q"), text.encode(x="at:Q", y=alt.value(-8), text="word:N")]
-    return [rule.encode(y="at:Q"), text.encode(y="at:Q", x=alt.value(10), text="word:N").properties()]
+    return [rule.encode(y="at:Q"), text.encode(y="at:Q", x=alt.value(12), yOffset=alt.value(-9), text="word:N")]
 
 
-def _layered(layers: Sequence[Any], bars: int, description: str) -> alt.LayerChart:
+def _layered(layers: Sequence[Any], bars: int, description: str, step: int = STEP) -> alt.LayerChart:
     return alt.LayerChart(layer=list(layers)).properties(
-        height=STEP * bars + AXIS, description=description.replace("\n", " ")
+        height=step * bars + AXIS, description=description.replace("\n", " ")
     )

@@ -15,6 +15,9 @@ __all__ = ["grid", "matrix_editor", "table_editor"]
 #: A matrix with more groups is edited as text, or read from a file.
 MOST_GROUPS = 40
 
+#: Height of a row of a grid, pixels.
+ROW = 35
+
 
 def table_editor(table: Table, document: Mapping[str, Any]) -> list[Edit]:
     """Place the grid of one table; return the edits that it asks for."""
@@ -60,12 +63,18 @@ def _groups(document: Mapping[str, Any], dimension: object) -> list[str]:
 
 
 def grid(
-    key: str, before: Sequence[Row], columns: Sequence[Column], title: str, labels: Sequence[str] | None = None
+    key: str,
+    before: Sequence[Row],
+    columns: Sequence[Column],
+    title: str,
+    labels: Sequence[str] | None = None,
+    spare: int | None = None,
 ) -> list[tuple[object, ...]]:
     """Return the rows that the grid holds now.
 
     The table given to the grid stays the same object as long as the grid lives, whatever is typed: with a new one after
-    each edit every second edit is lost. It is taken from the text when the grid is new, or is come back to.
+    each edit every second edit is lost. It is taken from the text when the grid is new, or is come back to. `spare`: with
+    it the grid is as high as its first rows and so many more, up to 25 in all, in place of the usual ten.
     """
     import pandas
 
@@ -81,6 +90,7 @@ def grid(
         hide_index=labels is None,
         column_config={column.field: _config(column, before, k) for k, column in enumerate(columns)},
         placeholder="",
+        height="auto" if spare is None else ROW * (min(len(st.session_state[base]) + spare, 25) + 2) + 2,
         alt=title,
     )
     return [tuple(row) for row in frame.itertuples(index=False, name=None)]

@@ -203,10 +203,10 @@ def _grid(name: str, document: dict[str, Any]) -> list[forms.Edit]:
     st.session_state[seen] = before
     key = f"control.{name}.{state.current().forms}.{st.session_state.get(number, 0)}"
     if name == "changes":
-        typed = editors.grid(key, before, packages.CHANGES, "Changes of each intervention")
+        typed = editors.grid(key, before, packages.CHANGES, "Changes of each intervention", spare=1)
         return packages.change_edits(document, packages.tidy_changes(document, typed))
     st.caption("Names, notes and costs. A row without a change has to get one in the table above.")
-    typed = editors.grid(key, before, packages.INTERVENTIONS.columns, "Interventions: names, notes, costs")
+    typed = editors.grid(key, before, packages.INTERVENTIONS.columns, "Interventions: names, notes, costs", spare=0)
     after = forms.tidy(packages.INTERVENTIONS, typed)
     return [] if after == before else forms.edits(packages.INTERVENTIONS, before, after, document)
 

@@ -10,7 +10,7 @@ from collections.abc import Mapping, Sequence
 from difflib import SequenceMatcher
 from typing import Any
 
-from ngm.screens.cells import shown, typed
+from ngm.screens.cells import Typed, shown, typed
 from ngm.screens.forms import AT_THE_END, NAMELESS, Column, Edit, Row, Table
 
 __all__ = ["CHANGES", "INTERVENTIONS", "change_edits", "change_rows", "names", "tidy_changes"]
@@ -38,13 +38,13 @@ CHANGES = (
     Column("intervention", "Intervention", hint="A new name makes a new one; empty: as in the row above.", width=180),
     Column("what", "Acts on", "choice", "What kind of thing is changed.", WHAT, 130),
     Column("name", "Its name", hint="Of the parameter, matrix or compartment: beta, contacts, E.", width=110),
-    Column("group", "Groups", hint="age: 0-4, 5-17 (and ; region: North); empty: all.", width=140),
-    Column("rows", "Rows", "names", "Of a matrix: groups, separated by commas; empty: all.", width=100),
-    Column("columns", "Columns", "names", "Of a matrix: groups, separated by commas; empty: all.", width=100),
     Column(
         "action", "How", "choice", "reduce: for susceptibility and infectivity; else the other three.", ACTIONS, 110
     ),
     Column("amount", "Amount", "value", "multiply by 0.8; set to 0.3; add -0.05; reduce by 0.45, for 45 %.", width=110),
+    Column("group", "Groups", hint="age: 0-4, 5-17 (and ; region: North); empty: all.", width=140),
+    Column("rows", "Rows", "names", "Of a matrix: groups, separated by commas; empty: all.", width=100),
+    Column("columns", "Columns", "names", "Of a matrix: groups, separated by commas; empty: all.", width=100),
 )
 
 
@@ -129,16 +129,16 @@ def _changed(
     path: tuple[str | int, ...], change: Mapping[str, Any], before: Row, after: Row, document: Mapping[str, Any]
 ) -> list[Edit]:
     """Return the edits of one change: cell by cell, or the whole of it where it is of another kind now."""
-    if (before[0], before[5]) != (after[0], after[5]) or _what(change) is None or _action(change) is None:
+    if (before[0], before[2]) != (after[0], after[2]) or _what(change) is None or _action(change) is None:
         known = {*WHAT, *ACTIONS, NAMELESS, NO_ACTION, "group", "rows", "columns"}
-        others = {key: value for key, value in change.items() if key not in known}
-        return [Edit("set", path, {**_entry(after, document), **others})]
+        others = {key: _plain(value) for key, value in change.items() if key not in known}
+        return [Edit("set", path, {**others, **_entry(after, document)})]
     out: list[Edit] = []
-    keys = (after[0], after[0], "group", "rows", "columns", after[5], after[5])
+    keys = (after[0], after[0], after[2], after[2], "group", "rows", "columns")
     values = _values(after, document)
-    for c in (1, 2, 3, 4, 6):
+    for c in (1, 3, 4, 5, 6):
         if before[c] != after[c]:
-            value = "" if values[c] is None and c in (1, 6) else values[c]
+            value = "" if values[c] is None and c in (1, 3) else values[c]
             out.append(Edit("delete", (*path, keys[c])) if value is None else Edit("set", (*path, keys[c]), value))
     return out
 
@@ -168,30 +168,30 @@ def _cells(change: Mapping[str, Any]) -> Row:
     return (
         what or "",
         shown(change.get(what or NAMELESS), "text"),
+        action or "",
+        shown(change.get(action or NO_ACTION)),
         _groups_text(change.get("group")),
         shown(change.get("rows"), "names"),
         shown(change.get("columns"), "names"),
-        action or "",
-        shown(change.get(action or NO_ACTION)),
     )
 
 
 def _values(row: Row, document: Mapping[str, Any]) -> tuple[Any, ...]:
-    what, name, group, rows, columns, action, amount = row
+    what, name, action, amount, group, rows, columns = row
     return (
         what,
         name or None,
+        action,
+        typed(amount, "value"),
         _groups(group, document),
         typed(rows, "names"),
         typed(columns, "names"),
-        action,
-        typed(amount, "value"),
     )
 
 
 def _entry(row: Row, document: Mapping[str, Any]) -> dict[str, Any]:
     """Return a change as the document holds it."""
-    what, name, group, rows, columns, action, amount = _values(row, document)
+    what, name, action, amount, group, rows, columns = _values(row, document)
     out: dict[str, Any] = {}
     if what or name is not None:
         out[what or NAMELESS] = name or ""
@@ -199,6 +199,15 @@ def _entry(row: Row, document: Mapping[str, Any]) -> dict[str, Any]:
     if action or amount is not None:
         out[action or NO_ACTION] = "" if amount is None else amount
     return out
+
+
+def _plain(value: Any) -> Any:
+    """Return a value of the document with numbers kept as typed turned into numbers."""
+    if isinstance(value, dict):
+        return {key: _plain(item) for key, item in value.items()}
+    if isinstance(value, list):
+        return [_plain(item) for item in value]
+    return typed(value, "value") if isinstance(value, Typed) else value
 
 
 def _groups_text(value: object) -> str:

@@ -107,12 +107,13 @@ def coverage(shown: Shown, write: Write) -> None:
         return
     words = plain(coverage_words(together))
     (st.error if together.unattainable else st.success)(f"**{words}**")
-    rows = [_coverage_row("together: " + ", ".join(together.groups[:8]), together, write)]
+    together_name = ", ".join(together.groups[:8]) + (", …" if len(together.groups) > 8 else "")
+    rows = [_coverage_row(together_name + (" together" if len(together.groups) > 1 else ""), together, write)]
     if 1 < len(together.groups) <= MOST_ALONE:
         alone = [(group, ask((group,))) for group in together.groups]
         rows += [_coverage_row(f"{group} alone", found, write) for group, found in alone if found is not None]
     heads = ["vaccinated", "T", "share of their infections to prevent", "coverage needed", "number with all of them"]
-    parts.table([*heads, "in words"], rows)
+    parts.table([*heads, "why not"], rows)
     st.caption(
         "Coverage is the share of the whole group, immune or not. Whether a vaccine protects everybody in part or some "
         "wholly does not move the threshold; it does move the size of an epidemic above it."
@@ -134,15 +135,14 @@ def coverage(shown: Shown, write: Write) -> None:
 
 
 def _coverage_row(name: str, found: Coverage, write: Write) -> tuple[str, ...]:
-    needed = write(found.coverage) if found.coverage is not None else "unattainable"
-    effort = "cannot work alone" if found.T is None and found.R0 is not None and found.unattainable else ""
+    alone = found.unattainable and found.T is None
     return (
         name,
         write(found.T),
-        effort or write(found.critical_effort),
-        needed,
+        "cannot work alone" if alone else write(found.critical_effort),
+        "unattainable" if found.coverage is None else write(found.coverage),
         write(found.at_full),
-        coverage_words(found),
+        found.why or "",
     )
 
 
@@ -212,12 +212,13 @@ def sharing(shown: Shown, write: Write) -> None:
 def _shares(found: Allocation, besides: Sequence[str], write: Write) -> None:
     even = next((rule for rule in found.rules if rule.rule == "by population"), None)
     figures = [
-        ("Control reproduction number without the supply" if besides else "R0, without the supply", write(found.R0)),
-        ("Control reproduction number, best share", write(found.best.R0)),
-        *([("Control reproduction number, by population", write(even.R0))] if even is not None else []),
+        ("Without the supply", found.R0, found.label if besides else "basic reproduction number R0"),
+        ("Best share found", found.best.R0, found.label),
+        *([("Shared by population", even.R0, found.label)] if even is not None else []),
     ]
-    for (label, value), place in zip(figures, st.columns(len(figures)), strict=True):
-        place.metric(label, value, border=True)
+    for (label, value, what), place in zip(figures, st.columns(len(figures)), strict=True):
+        place.metric(label, write(value), border=True)
+        place.caption(what.capitalize() if what == found.label else what)
     st.markdown("\n".join(f"- {plain(line)}" for line in allocation_words(found)))
     first, second = st.columns(2)
     with first:
@@ -286,7 +287,8 @@ def _vaccine(entries: Entries, groups: Sequence[str], columns: Sequence[Column])
     defaults = {"efficacy": "1", "spread": "0", "cost": "1", "upper": "1"}
     fields = [column for column in columns if column.field in defaults]
     general: dict[str, float] = {}
-    for column, place in zip(fields, st.columns(len(fields)), strict=True):
+    places = [place for _ in range(0, len(fields), 2) for place in st.columns(2)]
+    for column, place in zip(fields, places, strict=True):
         hint = (
             "For all groups. 0.7 or 70 %." if column.field != "cost" else "For all groups, in the unit of the supply."
         )
