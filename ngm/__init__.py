@@ -25,6 +25,7 @@ if TYPE_CHECKING:
     from ngm.analysis.strength import coverage_needed, strength_needed
     from ngm.analysis.uncertainty import uncertainty
     from ngm.analysis.units import units
+    from ngm.reporting.make import report
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
     from ngm.scenario.packages import combined
@@ -48,6 +49,7 @@ __all__ = [
     "mixing_map",
     "mixing_responses",
     "read_draws",
+    "report",
     "reproduction_numbers",
     "sensitivity",
     "solve",
@@ -72,6 +74,7 @@ _HOMES = {
     "mixing_responses": "ngm.analysis.mixing_scan",
     "calibrate": "ngm.analysis.calibrate",
     "reproduction_numbers": "ngm.analysis.batch",
+    "report": "ngm.reporting.make",
     "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
