@@ -36,7 +36,7 @@ ROUNDING = 1e-12
 #: Draws that one task of an executor takes.
 TASK = 50_000
 #: Doubles of K, of checks and of the draws' results that are held at a time in one piece.
-MOST_HELD = 1 << 21
+MOST_HELD = 1 << 20
 NO_VALUE = "a rate or an entry of K has no value: it divides by 0 or leaves the range of a function"
 
 

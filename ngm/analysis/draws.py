@@ -101,7 +101,9 @@ def _table(parameter: Parameter, typed: str, values: Any, copies: int) -> FloatA
         if bad is not None:
             k, shown = bad
             return Problem(short(typed), f"draw {k + 1} is {shown}, and no number.")
-    table = rows.astype(float)
+    table = np.asarray(rows, dtype=float)
+    if table.size == 0 or (table.max() < LARGEST and table.min() >= (-LARGEST if parameter.any_sign else 0)):
+        return table
     for wrong, what in (
         (~(np.abs(table) < LARGEST), "not finite or too large"),
         (table < 0 if not parameter.any_sign else np.zeros(0, dtype=bool), "negative"),

@@ -24,8 +24,10 @@ BoolArray = npt.NDArray[np.bool_]
 _UNIT = 2.0**-53
 #: The relative distance of the two quotients, or the estimated error of a root of a polynomial, that is accepted.
 _GAP = 1e-12
-#: Doubles in the matrices that are worked on at a time: what a processor keeps close at hand.
-_WORKING_SET = 1 << 16
+#: Doubles in the matrices that are worked on at a time: enough for numpy's calls to cost little, few enough to stay near.
+_WORKING_SET = 1 << 18
+#: How often a shifted matrix is factored, and how many solutions each factored one gives.
+_MOST_FACTORED, _MOST_SOLVED = 12, 4
 
 
 def perron_roots(K: FloatArray, pattern: BoolArray | None = None) -> FloatArray:
@@ -139,7 +141,7 @@ def _full_roots(B: FloatArray, pattern: BoolArray) -> FloatArray:
     if len(B) <= 4:
         found = _newton(B)
     else:
-        found = _noda(B)
+        found = _iterate(B)
     for k in np.flatnonzero(np.isnan(found)):
         found[k] = reproduction_number(B[:, :, k])
     return found
@@ -242,7 +244,7 @@ def _newton(B: FloatArray) -> FloatArray:
     x *= top
     x[~done] = np.nan
     if not done.all():
-        x[~done] = _noda(B[:, :, ~done] * top[~done])
+        x[~done] = _iterate(B[:, :, ~done] * top[~done])
     return x
 
 
@@ -292,60 +294,95 @@ def _coefficients_4(B: FloatArray) -> tuple[FloatArray, ...]:
     return -(B[0, 0] + B[1, 1] + B[2, 2] + B[3, 3]), second, -third, determinant
 
 
-# --- more types: power steps, then Noda's iteration -----------------------------------------------------------------------
+# --- more types: power steps, then inverse steps --------------------------------------------------------------------------
 
 
-def _noda(B: FloatArray, most_steps: int = 30) -> FloatArray:
-    """Return the roots of irreducible aperiodic matrices; nan where the quotients do not come together."""
-    n, _, size = B.shape
+def _iterate(B: FloatArray) -> FloatArray:
+    """Return the roots of irreducible aperiodic matrices; nan where the quotients do not come together.
+
+    With A = s I - B and A y = x, (B y)_i / y_i = s - x_i / y_i: the quotients come with each solution. The first shift
+    is an estimate of the root from both sides; where a solution has mixed signs the next shift is the largest quotient so
+    far, for which A is an M-matrix (Noda's choice).
+    """
+    size = B.shape[2]
     out = np.full(size, np.nan)
-    active = np.arange(size)
-    B = np.array(B)  # scaled in place: B[i, j] x[j] / x[i], so that the quotients are row sums
-    left = np.empty_like(B)
-    for step in range(most_steps):
-        sums = _row_sums(B)
-        high, low = sums.max(axis=0), sums.min(axis=0)
-        done = high - low <= (_GAP / 8) * high
-        if done.any():
-            out[active[done]] = 0.5 * (high[done] + low[done])
-            keep = ~done
-            if not keep.any():
+    left = B.sum(axis=0)
+    x = B.sum(axis=1)
+    x /= x.max(axis=0)
+    image = _images(B, x)
+    low, high = _bounds(image / x)
+    close = _accept(out, np.arange(size), low, high)
+    shift = (left * image).sum(axis=0) / (left * x).sum(axis=0)
+    shift += 1e-6 * (high - low)
+    x = image / image.max(axis=0)
+    active = np.flatnonzero(~close)
+    for _ in range(_MOST_FACTORED):
+        if not len(active):
+            break
+        if len(active) < B.shape[2]:
+            keep = ~close
+            B, x, shift, high, low = B[:, :, keep], x[:, keep], shift[keep], high[keep], low[keep]
+        A = _factored(B, shift)
+        close = np.zeros(len(active), dtype=bool)
+        for _ in range(_MOST_SOLVED):
+            y = _solved(A, x)
+            quotients = shift - x / y
+            down, up = _bounds(quotients)
+            y /= y[0]
+            valid = (y > 0).all(axis=0) & (up - down < high - low)
+            x = np.where(valid, y, x)
+            x /= x.max(axis=0)
+            low, high = np.where(valid, down, low), np.where(valid, up, high)
+            close |= _accept(out, active, low, high)
+            if not valid.any() or close.all():
                 break
-            active, B, sums, high = active[keep], B[:, :, keep], sums[:, keep], high[keep]
-            left = np.empty_like(B)
-        if step < 2:
-            y = sums / high
-        else:
-            np.negative(B, out=left)
-            shift = high * (1 + 4 * _UNIT)
-            for k in range(n):
-                left[k, k] += shift
-            y = _solve_ones(left)
-            y /= y.max(axis=0)
-        B *= y[None, :, :]
-        B /= y[:, None, :]
+        # A shift at the root itself leaves nothing to divide by: a hair above the largest quotient is enough.
+        shift = high * (1 + 4 * _UNIT)
+        active = active[~close]
     return out
 
 
-def _row_sums(B: FloatArray) -> FloatArray:
-    out = B[:, 0].copy()
-    for k in range(1, B.shape[1]):
-        out += B[:, k]
+def _accept(out: FloatArray, active: npt.NDArray[np.intp], low: FloatArray, high: FloatArray) -> BoolArray:
+    close = high - low <= (_GAP / 8) * high
+    fresh = close & np.isnan(out[active])
+    out[active[fresh]] = 0.5 * (high[fresh] + low[fresh])
+    return np.asarray(close)
+
+
+def _bounds(quotients: FloatArray) -> tuple[FloatArray, FloatArray]:
+    return quotients.min(axis=0), quotients.max(axis=0)
+
+
+def _images(B: FloatArray, x: FloatArray) -> FloatArray:
+    """Return B x, term by term."""
+    out = B[:, 0] * x[0]
+    for k in range(1, len(x)):
+        out += B[:, k] * x[k]
     return out
 
 
-def _solve_ones(A: FloatArray) -> FloatArray:
-    """Return x with A x = 1 for matrices with positive pivots, elimination without exchanges; A is used up."""
+def _factored(B: FloatArray, shift: FloatArray) -> FloatArray:
+    """Return shift I - B as L U in one array (L with a diagonal of 1), by elimination without exchanges."""
+    A = -B
     n = len(A)
-    x = np.ones((n, A.shape[2]))
+    for k in range(n):
+        A[k, k] += shift
     room = np.empty_like(A)
     for k in range(n - 1):
-        share = A[k + 1 :, k] / A[k, k]
-        rest = np.multiply(share[:, None, :], A[k, k + 1 :][None, :, :], out=room[k + 1 :, k + 1 :])
+        A[k + 1 :, k] /= A[k, k]
+        rest = np.multiply(A[k + 1 :, k][:, None, :], A[k, k + 1 :][None, :, :], out=room[k + 1 :, k + 1 :])
         A[k + 1 :, k + 1 :] -= rest
-        x[k + 1 :] -= share * x[k]
+    return np.asarray(A)
+
+
+def _solved(A: FloatArray, right: FloatArray) -> FloatArray:
+    """Return y with L U y = right."""
+    y = right.copy()
+    n = len(y)
+    for k in range(n - 1):
+        y[k + 1 :] -= A[k + 1 :, k] * y[k]
     for k in range(n - 1, -1, -1):
-        x[k] /= A[k, k]
+        y[k] /= A[k, k]
         if k:
-            x[:k] -= A[:k, k] * x[k]
-    return x
+            y[:k] -= A[:k, k] * y[k]
+    return y
