@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import random
+from dataclasses import replace
+from fractions import Fraction
 from functools import cached_property
 from typing import Any
 
@@ -19,7 +22,9 @@ from ngm.engine.large import NextGeneration
 from ngm.engine.linear import matmul, possible
 from ngm.engine.spectrum import Spectrum, spectrum
 from ngm.engine.transitions import SingularTransitions
-from ngm.scenario.model import Intervention, Scenario
+from ngm.errors import DerivationError, NgmError, Problem
+from ngm.expression.tree import Multiply, Number
+from ngm.scenario.model import Expression, Intervention, Scenario
 
 __all__ = ["Numbers", "decided_numbers"]
 
@@ -34,8 +39,8 @@ class Numbers:
 
     bits = PRECISION
 
-    def __init__(self, scenario: Scenario, intervention: Intervention | None = None) -> None:
-        self.scenario = scenario
+    def __init__(self, scenario: Scenario, intervention: Intervention | None = None, *, moved: bool = False) -> None:
+        self.scenario, self._moved = scenario, moved
         self.point = Point(scenario, intervention)
         template = self.template = self.point.template
         floats = self.point.plain_tables
@@ -77,6 +82,8 @@ class Numbers:
             )
             return
         verdict = m_matrix(self.V)
+        if verdict.verdict == "singular" and verdict.members is not None:
+            self._refuse_structure([types[int(k)] for k in verdict.members])
         if verdict.verdict != "yes":
             self.broken = verdict
             self.no_R0 = self._why_none(verdict)
@@ -86,6 +93,28 @@ class Numbers:
         self.K = self.K_large[np.ix_(self.at, self.at)]
         if len(self.at):
             self.spectrum = spectrum(self.K)
+
+    def _refuse_structure(self, members: list[str]) -> None:
+        """Refuse a V that is singular whatever the values: it still is with every number of the file moved at random."""
+        if self._moved:
+            return
+        rng = random.Random(2002)
+        for _ in range(2):
+            try:
+                other = Numbers(_shaken(self.scenario, rng), moved=True)
+            except NgmError:
+                return
+            if other.broken is None or other.broken.verdict != "singular":
+                return
+        named = ", ".join(dict.fromkeys(label.split("[")[0] for label in members))
+        raise DerivationError(
+            Problem(
+                "derivation",
+                f"V is singular whatever the values: what leaves {named} comes back in the same measure. Check the flows into "
+                f"and out of {named}; one of them is meant for another compartment, or stands twice.",
+                key=("flow",),
+            )
+        )
 
     def _reproduce_large(self) -> None:
         """Find R0 and the rest of a model whose matrices are never written out."""
@@ -198,3 +227,16 @@ def decided_numbers(scenario: Scenario, intervention: Intervention | None = None
         if found.decided or len(found.template.types) > MOST_REFINED:
             break
     return found
+
+
+def _shaken(scenario: Scenario, rng: random.Random) -> Scenario:
+    """Return the scenario with each number of its parameters multiplied by a random factor."""
+    parameters = {}
+    for name, parameter in scenario.parameters.items():
+        values = []
+        for value in parameter.values:
+            factor = Number(Fraction(rng.randrange(500, 2000), 1000))
+            shaken = Expression("", Multiply(((1, value.tree), (1, factor)))) if value.is_number else value
+            values.append(shaken)
+        parameters[name] = replace(parameter, values=tuple(values))
+    return replace(scenario, parameters=parameters)

@@ -33,7 +33,8 @@ class InfectionFree:
     """The state without infection: every uninfected compartment as an array over the space.
 
     `residual`: the largest net flow over gross flow of a compartment. `warnings`: what was accepted all the same.
-    `among`: how many non-negative states at rest it was chosen from. `net_flows`: of each given copy that has to be at rest, its net flow (in the arithmetic in use) and its gross flow.
+    `net_flows`: of each given copy that has to be at rest, its net flow (in the arithmetic in use) and its gross flow.
+    `among`: how many non-negative states at rest it was chosen from.
     """
 
     state: dict[str, Array]
@@ -78,7 +79,7 @@ class _Finder:
             else:
                 found = find_rest(floats, system if exact else None, len(system.labels))
         except FreeStates as free:
-            raise self._left_free(system, free.members) from None
+            raise self._left_free(system, free) from None
         x = self._choose(system, found)
         state = system.state(x)
         residual, net_flows = self._check(system, x, state)
@@ -98,9 +99,19 @@ class _Finder:
                     )
                 )
 
-    def _left_free(self, system: RestSystem, members: tuple[int, ...]) -> DerivationError:
-        compartments = [label.split("[")[0] for k, label in enumerate(system.labels) if k in members]
+    def _left_free(self, system: RestSystem, free: FreeStates) -> DerivationError:
+        compartments = [label.split("[")[0] for k, label in enumerate(system.labels) if k in free.members]
         named = ", ".join(dict.fromkeys(compartments))
+        if free.restless:
+            filling = ", ".join(dict.fromkeys(system.labels[k].split("[")[0] for k in free.restless))
+            return DerivationError(
+                Problem(
+                    "infection_free",
+                    f"without infection {filling} never comes to rest: something enters and nothing balances it. Add a flow "
+                    f"out of {filling} (deaths, ageing), or leave out the inflow and give {filling} under [infection_free].",
+                    key=("infection_free",),
+                )
+            )
         first = compartments[0]
         return DerivationError(
             Problem(
@@ -206,7 +217,8 @@ class _Finder:
                 problems.append(
                     Problem(
                         f"infection_free.{name}",
-                        f"{label} is not at rest: {into[k]:.6g} per {self.scenario.time_unit} enter and {out[k]:.6g} leave. "
+                        f"{label} is not at rest: {_apart(into[k], out[k])[0]} per {self.scenario.time_unit} enter and "
+                        f"{_apart(into[k], out[k])[1]} leave. "
                         f"Write the state as an expression in the parameters, or leave {name} out and it is solved for.",
                         key=("infection_free", name),
                     )
@@ -214,3 +226,12 @@ class _Finder:
         if problems:
             raise DerivationError(problems)
         return worst, net_flows
+
+
+def _apart(a: float, b: float) -> tuple[str, str]:
+    """Return two numbers with as many digits as it takes to tell them apart."""
+    for digits in (6, 9, 12, 17):
+        first, second = f"{a:.{digits}g}", f"{b:.{digits}g}"
+        if first != second:
+            break
+    return first, second

@@ -12,6 +12,7 @@ decided here, by structure, and never by the values of parameters.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
@@ -78,10 +79,15 @@ class Term:
 
 @dataclass(frozen=True, slots=True)
 class Linear:
-    """Value without infection, and slope."""
+    """Value without infection, and slope.
+
+    `order`: how fast a value of 0 is reached as the deviations shrink: 1 for I, 2 for I*E, 0 for a value that is not 0,
+    infinite for what is 0 whatever the state.
+    """
 
     value: Node
     terms: tuple[Term, ...] = ()
+    order: float = 0.0
 
     @property
     def is_zero(self) -> bool:
@@ -193,7 +199,7 @@ class Lineariser:
         """Return value and slope."""
         match node:
             case Number():
-                return Linear(ZERO if node.value == 0 else node)
+                return Linear(ZERO, (), math.inf) if node.value == 0 else Linear(node)
             case Name(name=name):
                 return self._name(node, name)
             case Add(terms=parts):
@@ -203,7 +209,9 @@ class Lineariser:
             case Negate(operand=operand):
                 inner = self.walk(operand)
                 return Linear(
-                    ZERO if inner.is_zero else Negate(inner.value), tuple(t.times(ONE, -1) for t in inner.terms)
+                    ZERO if inner.is_zero else Negate(inner.value),
+                    tuple(t.times(ONE, -1) for t in inner.terms),
+                    inner.order,
                 )
             case Power(base=base, exponent=exponent):
                 return self._power(self.walk(base), self.walk(exponent), node)
@@ -219,11 +227,11 @@ class Lineariser:
                     for one in over:
                         value = Total(value, one)
                 terms = tuple(t.under(Summed(over)) for t in inner.terms) if over else inner.terms
-                return Linear(value, terms)
+                return Linear(value, terms, inner.order)
             case Apply(matrix=matrix, operand=operand):
                 inner = self.walk(operand)
                 value = ZERO if inner.is_zero else Apply(matrix, inner.value)
-                return Linear(value, tuple(t.under(Applied(matrix)) for t in inner.terms))
+                return Linear(value, tuple(t.under(Applied(matrix)) for t in inner.terms), inner.order)
 
     def _name(self, node: Name, name: str) -> Linear:
         if name in self.definitions and name not in self.memo:
@@ -233,21 +241,25 @@ class Lineariser:
             terms = inner.terms
             if name in self.variables:
                 terms = (Term(name),)
-            self.memo[name] = Linear(value, terms)
+            self.memo[name] = Linear(value, terms, 1.0 if name in self.variables and inner.is_zero else inner.order)
         if name in self.memo:
             return self.memo[name]
         terms = (Term(name),) if name in self.variables else ()
-        return Linear(ZERO if name in self.zero else node, terms)
+        if name in self.zero:
+            return Linear(ZERO, terms, 1.0 if terms else math.inf)
+        return Linear(node, terms)
 
     def _sum(self, parts: tuple[tuple[int, Node], ...]) -> Linear:
         values: list[tuple[int, Node]] = []
         terms: list[Term] = []
+        order = math.inf
         for sign, part in parts:
             inner = self.walk(part)
+            order = min(order, inner.order)
             if not inner.is_zero:
                 values.append((sign, inner.value))
             terms.extend(t.times(ONE, sign) for t in inner.terms)
-        return Linear(_add(values), tuple(terms))
+        return Linear(_add(values), tuple(terms), order)
 
     def _product(self, parts: tuple[tuple[int, Node], ...], node: Node) -> Linear:
         inner = [(sign, self.walk(part)) for sign, part in parts]
@@ -268,7 +280,7 @@ class Lineariser:
                 others += [(-1, factor.value), (-1, factor.value)]
             coefficient = _multiply(others)
             terms.extend(t.times(coefficient, sign) for t in factor.terms)
-        return Linear(value, tuple(terms))
+        return Linear(value, tuple(terms), sum(factor.order for _, factor in inner))
 
     def _power(self, base: Linear, exponent: Linear, node: Node) -> Linear:
         if base.is_zero:
@@ -301,12 +313,15 @@ class Lineariser:
             # Whether I^p has a slope at I = 0 depends on the value of p: noted, since a formula then holds for such p only.
             powers = self.exponent(exponent.value)
             self.by_value = True
-        if all(p > 1 for p in powers):
-            return Linear(ZERO)
-        if all(p == 1 for p in powers):
-            return base
         if all(p == 0 for p in powers):
             return Linear(ONE)
+        # x^p with x of order k vanishes with order k p: beyond 1 the slope is 0, below it is infinite, and at 1 it is that
+        # of x itself, or differs from one direction to another.
+        orders = [base.order * p for p in powers]
+        if all(order > 1 for order in orders):
+            return Linear(ZERO, (), min(orders))
+        if all(p == 1 for p in powers):
+            return base
         raise self._refuse(
             f"has no slope when nobody is infected: the exponent in {shorten(node)} must be 1 or more "
             "where its base is 0 without infection."
@@ -318,13 +333,13 @@ class Lineariser:
             value: Node = ONE if inner.is_zero else Call("exp", (inner.value,))
             return Linear(value, tuple(t.times(value) for t in inner.terms))
         if inner.is_zero:
-            if node.function == "log" or inner.terms:
+            if node.function == "log" or inner.order <= 2:
                 what = "value" if node.function == "log" else "slope"
                 raise self._refuse(
                     f"has no {what} when nobody is infected: {shorten(node)} is taken at 0. "
                     "Write the rate so that it has one there, for example with x + a small constant in place of x."
                 )
-            return Linear(ZERO)
+            return Linear(ZERO, (), inner.order / 2)
         if node.function == "log":
             value = ZERO if inner.value == ONE else Call("log", (inner.value,))
             return Linear(value, tuple(t.times(reciprocal(inner.value)) for t in inner.terms))
@@ -340,7 +355,7 @@ class Lineariser:
                     f"has no slope when nobody is infected: {shorten(node)} is a tie of 0 with 0. "
                     "Write the branch that is meant for few infected."
                 )
-            return Linear(ZERO)
+            return Linear(ZERO, (), min(first.order, second.order))
         value = Call(node.function, (first.value, second.value))
         if not first.terms and not second.terms:
             return Linear(value)

@@ -33,7 +33,20 @@ def tidy(expression: sympy.Expr) -> sympy.Expr:
             length = _length(form)
             if length < least:
                 best, least = form, length
-    return best
+    return _turned(best)
+
+
+def _turned(expression: sympy.Expr) -> sympy.Expr:
+    """Return a product without a minus sign in front where one of its sums can take it: a/(d - c), not -a/(c - d)."""
+    if not (expression.is_Mul and expression.as_coeff_Mul()[0].is_negative):
+        return expression
+    for factor in expression.args:
+        base, power = factor.as_base_exp()
+        negative = base.is_Add and any(term.as_coeff_Mul()[0].is_negative for term in base.args)
+        if negative and power.is_Integer and power.is_odd:
+            turned = sympy.Add(*(-term for term in base.args))
+            return sympy.Mul(-1, expression / factor, turned**power)
+    return expression
 
 
 def _length(expression: sympy.Expr) -> int:

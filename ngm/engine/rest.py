@@ -45,11 +45,14 @@ class System(Protocol):
 
 
 class FreeStates(Exception):  # noqa: N818 - it is a finding, not a mistake
-    """A block of unknowns that nothing fixes: its equations are singular. `members`: their indices."""
+    """Unknowns whose equations are singular: nothing fixes them, or they never rest. `members`: their indices.
 
-    def __init__(self, members: tuple[int, ...]) -> None:
+    `restless`: those among them that something enters all the same, so that no number of them is at rest.
+    """
+
+    def __init__(self, members: tuple[int, ...], restless: tuple[int, ...] = ()) -> None:
         super().__init__(members)
-        self.members = members
+        self.members, self.restless = members, restless
 
 
 @dataclass(frozen=True, slots=True)
@@ -131,21 +134,24 @@ class _Search:
                 plain[block] = self._solve_floats(slope[np.ix_(block, block)], -right, block)
             return plain
         free: list[int] = []
+        restless: list[int] = []
         for times in TIMES:
             with precision(times * ctx.prec):
                 slope, constant = self._affine_parts()
                 x = balls(np.zeros(self.n))
-                free = []
+                free, restless = [], []
                 for block in blocks:
                     right = _plus(constant[block], slope[block], x)
                     solved = _solve_balls(slope[np.ix_(block, block)], right)
                     if solved is None:
                         free += [int(k) for k in block]
+                        alone = len(block) == 1 and not contains_zero(right[0])
+                        restless += [int(k) for k in block if alone]
                     else:
                         x[block] = solved
                 if not free:
                     return x
-        raise FreeStates(tuple(sorted(free)))
+        raise FreeStates(tuple(sorted(free)), tuple(restless))
 
     def _affine_parts(self) -> tuple[BallArray, BallArray]:
         """Return slope and constant of an affine net flow, from its value at 0 or, where it has none there, at 1."""

@@ -87,6 +87,39 @@ REFUSED: list[tuple[str, Callable[[], str], list[str]]] = [
     ),
     ("divided by an empty population", lambda: closed(S=0, R=0), ["flow 1, rate", "divides by"]),
     (
+        "a root of two that vanish",
+        lambda: text(
+            [*SIR, ("E", True)],
+            VALUES,
+            [("S", "I", "beta*S*sqrt(I*E)", "t"), RECOVERY, ("E", "", "E", "x")],
+            free={"S": 9, "R": 0},
+        ),
+        ["flow 1, rate", "no slope when nobody is infected", "sqrt(I*E)"],
+    ),
+    (
+        "births and no deaths",
+        lambda: text(
+            [("S", False), ("I", True)], VALUES, [("", "S", "3", "x"), ("S", "I", "beta*S*I", "t"), ("I", "", "I", "x")]
+        ),
+        ["without infection S never comes to rest", "Add a flow out of S"],
+    ),
+    (
+        "what leaves comes back",
+        lambda: text(
+            [("S", False), ("I", True), ("W", True)],
+            VALUES,
+            [
+                ("S", "I", "beta*S*W", "t"),
+                ("I", "", "I", "x"),
+                ("", "W", "I", "x"),
+                ("", "W", "gamma*W", "x"),
+                ("W", "", "gamma*W", "x"),
+            ],
+            free={"S": 9},
+        ),
+        ["V is singular whatever the values", "W"],
+    ),
+    (
         "a tie of two branches",
         lambda: text(
             SIR, {**VALUES, "cap": 0.0}, [("S", "I", "min(beta*S*I, cap)", "t"), RECOVERY], free={"S": 9, "R": 0}
@@ -241,3 +274,35 @@ def test_a_root_on_the_grid_is_found(births: str, deaths: str, rest: float) -> N
     solution = ngm.solve(ngm.loads(text([("S", False), ("I", True)], VALUES, flows)))
     assert solution.infection_free["S"] == pytest.approx(rest, rel=1e-15)
     assert solution.R0 == pytest.approx(2 * rest, rel=1e-14)
+
+
+@pytest.mark.parametrize(("rate", "R0"), [("(I*I)^0.6", 0.0), ("(I*I)^2", 0.0), ("I^1", 18.0), ("I^0", None)])
+def test_powers_of_what_vanishes(rate: str, R0: float | None) -> None:
+    """By hand: x^p has slope 0 at 0 where x vanishes with order k and k p > 1; I^0 is 1: cases out of nothing."""
+    model = text(SIR, VALUES, [("S", "I", f"beta*S*{rate}", "t"), RECOVERY], free={"S": 9, "R": 0})
+    if R0 is None:
+        with pytest.raises(ngm.DerivationError, match="even when nobody is infected"):
+            ngm.solve(ngm.loads(model), limit=0)
+    else:
+        assert ngm.solve(ngm.loads(model), limit=0).R0 == pytest.approx(R0)
+
+
+def test_a_rest_that_is_missed_by_little_is_told_with_enough_digits() -> None:
+    flows: list[Flow] = [("", "S", "1", "x"), ("S", "", "0.1*S", "x"), ("S", "I", "beta*S*I", "t"), ("I", "", "I", "x")]
+    model = text([("S", False), ("I", True)], VALUES, flows, free={"S": 10.00001})
+    with pytest.raises(ngm.DerivationError, match=r"1 per day enter and 1\.000001 leave"):
+        ngm.solve(ngm.loads(model), limit=0)
+
+
+def test_a_sum_takes_the_minus_sign() -> None:
+    """By hand: two reservoirs that feed each other: R0 = 3 a b/(g (d - c)), written with d - c."""
+    flows: list[Flow] = [
+        ("S", "I", "b*S*(W + X)", "t"), ("I", "", "g*I", "x"), ("", "W", "a*I + c*X", "x"), ("", "X", "c*W", "x"),
+        ("W", "", "d*W", "x"), ("X", "", "d*X", "x"),
+    ]  # fmt: skip
+    values = {"a": 0.5, "b": 0.2, "c": 0.1, "d": 0.4, "g": 0.3}
+    compartments = [("S", False), ("I", True), ("W", True), ("X", True)]
+    closed = ngm.solve(ngm.loads(text(compartments, values, flows, free={"S": 3}))).closed_form
+    assert closed is not None
+    assert not closed.startswith("-")
+    assert "d - c" in closed
