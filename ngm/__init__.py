@@ -20,8 +20,10 @@ if TYPE_CHECKING:
     from ngm.analysis.drawfile import read_draws
     from ngm.analysis.mixing import contact_readings, mixing
     from ngm.analysis.mixing_scan import mixing_map, mixing_responses
+    from ngm.analysis.plane import plane, swings
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
+    from ngm.analysis.splits import splits
     from ngm.analysis.strength import coverage_needed, strength_needed
     from ngm.analysis.uncertainty import uncertainty
     from ngm.analysis.units import units
@@ -43,17 +45,22 @@ __all__ = [
     "contact_readings",
     "control",
     "coverage_needed",
+    "difference",
+    "formula",
     "load",
     "loads",
     "mixing",
     "mixing_map",
     "mixing_responses",
+    "plane",
     "read_draws",
     "report",
     "reproduction_numbers",
     "sensitivity",
     "solve",
+    "splits",
     "strength_needed",
+    "swings",
     "uncertainty",
     "units",
 ]
@@ -73,13 +80,18 @@ _HOMES = {
     "mixing_map": "ngm.analysis.mixing_scan",
     "mixing_responses": "ngm.analysis.mixing_scan",
     "calibrate": "ngm.analysis.calibrate",
+    "plane": "ngm.analysis.plane",
     "reproduction_numbers": "ngm.analysis.batch",
     "report": "ngm.reporting.make",
     "sensitivity": "ngm.analysis.sensitivity",
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
+    "swings": "ngm.analysis.plane",
     "uncertainty": "ngm.analysis.uncertainty",
     "read_draws": "ngm.analysis.drawfile",
+    "difference": "ngm.analysis.difference",
+    "formula": "ngm.analysis.formula",
+    "splits": "ngm.analysis.splits",
     "units": "ngm.analysis.units",
 }
 

@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING
 from ngm.errors import NgmError, Problem, ScenarioError
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
+from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 from ngm.results_sensitivity import Calibration, Sensitivity
 from ngm.typed import by_group, number
 
@@ -35,10 +36,13 @@ VERBS = {
     "calibrate": "the value of a parameter at which R0 is the one that is wanted",
     "report": "the derivation ready to hand in: HTML, Markdown, LaTeX, Word or PDF by the ending of the file",
     "units": "whether the units fit, what is converted, and the mean stay in every stage",
+    "splits": "R0 under every defensible division of the flows into new infections and the rest",
+    "formula": "whether a formula from a paper is the model's R0, a number related to it, or another one",
+    "difference": "what differs between two models, and what each change does to R0",
 }
 
 #: The verbs that contradict.
-OPINIONS = ("units",)
+OPINIONS = ("units", "splits", "formula", "difference")
 
 
 class _Parser(argparse.ArgumentParser):
@@ -86,6 +90,13 @@ def _parser() -> argparse.ArgumentParser:
             sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
         if verb in ("strength", "coverage", "allocate"):
             _needs_options(sub, verb)
+        if verb == "formula":
+            sub.add_argument(
+                "--text", metavar="FORMULA", required=True, help="in the expression syntax or simple LaTeX"
+            )
+            sub.add_argument("--seed", metavar="K", type=int, default=1, help="of the random points, 1 where left out")
+        if verb == "difference":
+            sub.add_argument("--to", metavar="FILE", required=True, help="the second scenario file")
         if verb == "compare":
             sub.add_argument(
                 "--combine",
@@ -224,7 +235,16 @@ def _opinion(options: argparse.Namespace, scenario: Scenario) -> str:
     import ngm
     from ngm.console_opinion import opinion_text
 
-    result = ngm.units(scenario)
+    result: Units | Splits | FormulaOpinion | Difference
+    match options.verb:
+        case "splits":
+            result = ngm.splits(scenario)
+        case "formula":
+            result = ngm.formula(scenario, options.text, seed=options.seed)
+        case "difference":
+            result = ngm.difference(scenario, ngm.load(options.to))
+        case _:
+            result = ngm.units(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else opinion_text(result)
 
 

@@ -3,14 +3,22 @@
 from __future__ import annotations
 
 from ngm.console import WIDTH, closing, figure, squeezed, table
-from ngm.results_opinion import Stay, Units
+from ngm.results_opinion import Difference, FormulaOpinion, ModelChange, Splits, Stay, Units
 
-__all__ = ["opinion_text", "stay_words", "units_text"]
+__all__ = ["change_words", "difference_text", "formula_text", "opinion_text", "splits_text", "stay_words", "units_text"]
 
 
-def opinion_text(result: Units) -> str:
+def opinion_text(result: Units | Splits | FormulaOpinion | Difference) -> str:
     """Return any second opinion as text."""
-    return units_text(result)
+    match result:
+        case Units():
+            return units_text(result)
+        case Splits():
+            return splits_text(result)
+        case FormulaOpinion():
+            return formula_text(result)
+        case Difference():
+            return difference_text(result)
 
 
 def _heading(title: str) -> list[str]:
@@ -56,3 +64,82 @@ def stay_words(stay: Stay, time_unit: str) -> str:
         f"{100 * way.probability:.3g} % {way.label}" + (f" ({way.to})" if way.to else " (out)") for way in stay.exits
     )
     return f"mean stay in {stay.compartment} {figure(stay.mean)} {time_unit}; {ways}"
+
+
+def splits_text(result: Splits) -> str:
+    """Return the result of `ngm.splits` as text."""
+    lines = _heading(result.title)
+    if not result.choices:
+        lines.append(
+            "No flow's kind is a choice: nothing enters an infected compartment but by infection or by a step forward."
+        )
+    else:
+        lines += ["Flows whose kind is a choice", *(f"  flow {k}: {why}" for k, why in result.choices.items())]
+        hosts = list(result.splits[0].hosts)
+        rows, refused = [], []
+        for number, split in enumerate(result.splits, 1):
+            name = f"{number}" + (" (the file)" if split.as_typed else "")
+            if split.refused is not None:
+                refused.append(f"  {name}: {split.refused}")
+            rows.append(
+                [
+                    name,
+                    *(kind for kind in split.kinds.values()),
+                    "refused" if split.refused is not None else figure(split.R0),
+                    figure(split.growth_rate),
+                    *("none" if split.hosts.get(host) is None else figure(split.hosts[host]) for host in hosts),
+                ]
+            )
+        head = ["split", *(f"flow {k}" for k in result.choices), "R0", f"growth per {result.time_unit}"]
+        lines += ["", *table(rows, [*head, *(f"T({host})" for host in hosts)])]
+        if refused:
+            lines += ["", "No valid split", *refused]
+        if result.agree:
+            lines += ["", f"The same in all valid splits: {', '.join(result.agree)}."]
+        if result.differ:
+            lines.append(f"Not to be compared between models that split differently: {', '.join(result.differ)}.")
+        lines.append("F, V and K of each split: use --json.")
+    return squeezed([*lines, *closing(result.warnings)])
+
+
+def formula_text(result: FormulaOpinion) -> str:
+    """Return the result of `ngm.formula` as text."""
+    lines = [*_heading(result.title), f"Formula: {result.formula}", f"Verdict: {result.verdict}", result.message]
+    if result.counterexample is not None:
+        lines += ["", "A point where the two differ (values in force, in the scenario's time unit)"]
+        lines += [f"  {name} = {figure(value)}" for name, value in result.counterexample.items()]
+        lines.append(f"  the model's R0 = {figure(result.R0_there)}, the formula = {figure(result.formula_there)}")
+    if result.responses:
+        rows = [[name, figure(a), figure(b)] for name, (a, b) in result.responses.items()]
+        lines += ["", "They answer differently to (elasticities there)"]
+        lines += table(rows, ["parameter", "the model's R0", "the formula"])
+    return squeezed([*lines, *closing(result.warnings)])
+
+
+def change_words(change: ModelChange) -> str:
+    """Return one change as a line: parameter gamma changed: 1.4 1/week -> 1.4 1/day."""
+    if change.how == "renamed":
+        return f"{change.before} is renamed {change.after}"
+    text = f"{change.name} {change.how}" if change.what == "flow" else f"{change.what} {change.name} {change.how}"
+    if change.before is not None or change.after is not None:
+        text += f": {change.before or '-'} -> {change.after or '-'}"
+    return text + (f" ({change.note})" if change.note else "")
+
+
+def difference_text(result: Difference) -> str:
+    """Return the result of `ngm.difference` as text."""
+    lines = _heading(f"{result.first} -> {result.second}")
+    lines.append(f"R0 {figure(result.R0[0])} -> {figure(result.R0[1])}")
+    lines.append(f"growth rate {figure(result.growth_rate[0])} -> {figure(result.growth_rate[1])}")
+    lines += ["", "What differs", *(f"  {change_words(change)}" for change in result.changes[:80])]
+    if not result.changes:
+        lines.append("  nothing")
+    if result.entries:
+        lines += ["", "Entries that moved"]
+        for entry in result.entries[:80]:
+            values = f"{figure(entry.before)} -> {figure(entry.after)}"
+            lines.append(f"  {entry.matrix}[{entry.row}, {entry.column}]  {values}   ({'; '.join(entry.because)})")
+    if result.contributions:
+        rows = [[c.change, figure(c.in_order), figure(c.averaged)] for c in result.contributions]
+        lines += ["", "What moved R0", *table(rows, ["change", "in this order", "mean over orders"])]
+    return squeezed([*lines, *closing(result.warnings)])

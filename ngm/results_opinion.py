@@ -145,7 +145,8 @@ class FormulaMatch:
 class FormulaOpinion:
     """The result of `ngm.formula`.
 
-    `verdict`: "equal", "square", "root", "type number", "other split", "threshold only" or "different". `exact`: whether
+    `verdict`: "equal", "square", "root", "type number", "other split", "threshold only", "different" or
+    "undecided" (too few points with an R0). `exact`: whether
     the agreement was also shown with symbols. `counterexample`: values in force of the parameters at a point where the
     two differ, with both numbers; None where none was found. `responses`: parameters to which they respond
     differently there: name -> (elasticity of R0, elasticity of the formula).
