@@ -121,11 +121,9 @@ class _Blocks:
         scenario, space = template.scenario, template.space
         names = {name: _one(space.dimensions, symbol(name, p.any_sign)) for name, p in scenario.parameters.items()}
         program = Program(lambda wish: sympy.Dummy(wish))
-        items = template.items_of(template.free)
         found = solve_rest(template, names, {}, {}, {}, program)
         if found is None or program.lines:
             return {}
-        del items
         return {name: found[name].ravel()[0] for name in template.free}
 
     # --- blocks --------------------------------------------------------------------------------------------------------
@@ -219,7 +217,7 @@ class _Blocks:
                 if waiting != 1:
                     parts.append(f"diag({self.text(waiting)})")
                 waiting = sympy.Integer(1)
-                parts.append(self._operator(factor, term))
+                parts.append(self._operator(factor))
             else:
                 waiting = waiting * self.scalar(factor)
         if after is not None:
@@ -228,7 +226,7 @@ class _Blocks:
             parts.append(f"diag({self.text(waiting)})")
         return " ".join(parts)
 
-    def _operator(self, factor: Applied | Summed, term: Term) -> str:
+    def _operator(self, factor: Applied | Summed) -> str:
         if isinstance(factor, Applied):
             return f"{factor.matrix}'" if factor.transposed else factor.matrix
         over = ", ".join(factor.dimensions)
@@ -304,8 +302,7 @@ class _Blocks:
             if summed != by:
                 return None
             total = total + product
-        heads = {tuple(self.text(self._head(term)) for _ in (0,)) for term, _ in items}
-        if len(heads) != 1:
+        if len({self.text(self._head(term)) for term, _ in items}) != 1:
             return None
         return f"sum({self.text(total)})"
 

@@ -186,7 +186,6 @@ def polynomial(
     forms: list[ClassForm],
     x: sympy.Symbol,
     program: Program,
-    values_seed: int = 11,
 ) -> sympy.Expr | None:
     """Return det(x I - K) as a product over classes; None where a class is too large to write out.
 

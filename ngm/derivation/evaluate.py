@@ -7,7 +7,7 @@ printed cannot part ways.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Protocol
@@ -154,7 +154,6 @@ class Evaluator:
     lists: Mapping[str, tuple[tuple[Node, ...], tuple[str, ...]]] = field(default_factory=dict)
     matrices: Mapping[str, Array] = field(default_factory=dict)
     along: Mapping[str, tuple[str, str | None]] = field(default_factory=dict)
-    needed: Callable[[str], None] | None = None
 
     def scalar(self, value: object) -> Array:
         """Return one number as an array over the space."""
@@ -250,8 +249,6 @@ class Evaluator:
 
     def apply(self, matrix: str, array: Array, *, transposed: bool = False) -> Array:
         """Return, in group i, the sum over j of M[i][j] x[j] (M[j][i] when transposed)."""
-        if self.needed is not None:
-            self.needed(matrix)
         by, within = self.along[matrix]
         table = self.matrices[matrix]
         axis, size = self.space.axis(by), self.space.size(by)

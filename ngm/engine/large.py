@@ -195,8 +195,7 @@ class NextGeneration:
         x = self._settled(x, root)
         low, high = self.bounds(x)
         root = min(max(root, low), high)
-        value, left = perron_pair(self.transposed_product, np.full(n, 1.0 / n))
-        del value
+        left = perron_pair(self.transposed_product, np.full(n, 1.0 / n))[1]
         left = left / float(left @ x)
         rate = self.growth_rate(self.stays(x))
         one = LargeClass(np.arange(n), root, (low, high), period, rate, x)
