@@ -294,7 +294,9 @@ def _uncertainty(result: Uncertainty) -> list[str]:
 
 def calibrate_text(result: Calibration) -> str:
     """Return the value found by `ngm.calibrate` as text."""
-    lines = [f"{result.parameter} = {result.value!r} gives R0 = {result.R0:g}."]
+    R0 = "no R0" if result.R0 is None else f"R0 = {result.R0:g}"
+    rate = "" if result.growth_rate is None else f"a growth rate of {result.growth_rate:g}, and "
+    lines = [f"{result.parameter} = {result.value!r} gives {rate}{R0}."]
     return squeezed([*lines, *closing(result.warnings)])
 
 

@@ -1,4 +1,4 @@
-"""What the analyses of sensitivity return: local indices, entries of K, a calibrated value.
+"""What the analyses of sensitivity return: local indices, entries of K, swings, draws, planes, a calibrated value.
 
 As in `ngm.results`, what does not exist is `None`, with the reason in `warnings`.
 """
@@ -10,11 +10,23 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from ngm.results import Matrix
+from ngm.results_mixing import Piece, Scale
 
 if TYPE_CHECKING:
     import pandas
 
-__all__ = ["Assurance", "Calibration", "DrawFigures", "Driver", "LocalIndex", "Sensitivity", "Uncertainty"]
+__all__ = [
+    "Assurance",
+    "Calibration",
+    "DrawFigures",
+    "Driver",
+    "LocalIndex",
+    "Plane",
+    "Sensitivity",
+    "Swing",
+    "Swings",
+    "Uncertainty",
+]
 
 
 @dataclass(frozen=True, slots=True)
@@ -181,14 +193,119 @@ class Uncertainty:
 
 
 @dataclass(frozen=True, slots=True)
+class Swing:
+    """R0 with one parameter at either end, the others as they are.
+
+    Attributes
+    ----------
+    parameter : str
+        With its group where the ends are given by group: ``sigma[65+]``; else all groups are moved together.
+    low, high : float
+        The ends, in the parameter's own unit; factors on its values where it has several.
+    unit : str
+        Of the ends; empty where they have none or are factors.
+    R0_low, R0_high : float or None
+        None where there is no R0 at that end.
+    """
+
+    parameter: str
+    low: float
+    high: float
+    unit: str
+    R0_low: float | None
+    R0_high: float | None
+
+    @property
+    def width(self) -> float:
+        """How far apart R0 is at both ends; 0 where one of them has none."""
+        return 0.0 if self.R0_low is None or self.R0_high is None else abs(self.R0_high - self.R0_low)
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Swings:
+    """R0 at both ends of each parameter's range, and at 10 % less and more: the result of `ngm.swings`, widest first.
+
+    `ranges` holds the parameters with a range, or with a distribution: then its central 95 %. `missing`: why there is no R0
+    at some ends -> how many.
+    """
+
+    title: str
+    digest: str
+    R0: float | None
+    ranges: tuple[Swing, ...]
+    tenth: tuple[Swing, ...]
+    missing: Mapping[str, int]
+
+    def to_frame(self) -> pandas.DataFrame:
+        """Return a row an end pair; `over` says whether it is the range or 10 %."""
+        import pandas
+
+        columns = ["over", "parameter", "low", "high", "unit", "R0_low", "R0_high"]
+        rows = [
+            {"over": over, **{name: getattr(swing, name) for name in columns[1:]}}
+            for over, swings in (("range", self.ranges), ("10 %", self.tenth))
+            for swing in swings
+        ]
+        return pandas.DataFrame(rows, columns=columns)
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Plane:
+    """R0 over two quantities at once, with the lines on which it has given values: the result of `ngm.plane`.
+
+    Attributes
+    ----------
+    R0 : tuple of rows
+        Row: y, column: x; None where there is no R0.
+    now : float or None
+        R0 of the scenario as it is.
+    lines : tuple of (level, pieces)
+        Straight pieces of the line R0 = level, between neighbours on the grid.
+    missing : mapping of str to int
+        Why there is no R0 -> at how many points.
+    """
+
+    title: str
+    digest: str
+    x: Scale
+    y: Scale
+    R0: tuple[tuple[float | None, ...], ...]
+    now: float | None
+    lines: tuple[tuple[float, tuple[Piece, ...]], ...]
+    missing: Mapping[str, int]
+
+    def to_frame(self) -> pandas.DataFrame:
+        """Return a row a point: x, y, R0."""
+        import pandas
+
+        rows = [
+            (x, y, R0)
+            for y, row in zip(self.y.values, self.R0, strict=True)
+            for x, R0 in zip(self.x.values, row, strict=True)
+        ]
+        return pandas.DataFrame(rows, columns=[self.x.title, self.y.title, "R0"])
+
+
+@dataclass(frozen=True, slots=True)
 class Calibration:
-    """The value of a parameter at which R0 (or the growth rate) is what is wanted: the result of `ngm.calibrate`."""
+    """The value of a parameter at which R0 (or the growth rate) is what is wanted: the result of `ngm.calibrate`.
+
+    `R0` is the wanted one; where a growth rate is wanted, the one that goes with it, None where there is none.
+    """
 
     parameter: str
     value: float
-    R0: float
+    R0: float | None
     warnings: tuple[str, ...]
+    growth_rate: float | None = None
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `calibrate --json` prints."""
-        return {"parameter": self.parameter, "value": self.value, "R0": self.R0, "warnings": list(self.warnings)}
+        wanted = {} if self.growth_rate is None else {"growth_rate": self.growth_rate}
+        return {
+            "parameter": self.parameter,
+            "value": self.value,
+            "R0": self.R0,
+            **wanted,
+            "warnings": list(self.warnings),
+        }

@@ -113,9 +113,14 @@ def draw_numbers(
     executor: Executor | None = None,
     *,
     intervention: str | Intervention | None = None,
+    passing: bool = False,
 ) -> ReproductionNumbers:
-    """Return R0 at each draw, and why there is none where there is none; see `reproduction_numbers`."""
-    values, codes, reasons = _all(scenario, draws, executor, intervention, "R0")
+    """Return R0 at each draw, and why there is none where there is none; see `reproduction_numbers`.
+
+    `passing`: a draw at which a parameter that follows has no value, or a given state is off rest, is one without an R0 and
+    is counted, where it is refused otherwise.
+    """
+    values, codes, reasons = _all(scenario, draws, executor, intervention, "R0", passing)
     counted = Counter(codes[codes > 0].tolist())
     return ReproductionNumbers(values, {reasons[code - 1]: n for code, n in sorted(counted.items())})
 
@@ -142,6 +147,7 @@ def _all(
     executor: Executor | None,
     intervention: str | Intervention | None,
     what: str,
+    passing: bool = False,
 ) -> tuple[FloatArray, npt.NDArray[np.int32], list[str]]:
     if isinstance(intervention, str):
         intervention = find_intervention(scenario, intervention)
@@ -150,9 +156,9 @@ def _all(
     size = len(arrays[0])
     pieces = [(start, [a[start : start + TASK] for a in arrays]) for start in range(0, size, TASK)]
     if executor is None:
-        done = [compute(made, start, piece, what) for start, piece in pieces]
+        done = [compute(made, start, piece, what, passing) for start, piece in pieces]
     else:
-        waiting = [executor.submit(compute, made, start, piece, what) for start, piece in pieces]
+        waiting = [executor.submit(compute, made, start, piece, what, passing) for start, piece in pieces]
         done = [future.result() for future in waiting]
     refused = [piece.refused for piece in done if piece.refused is not None]
     if refused:
@@ -183,14 +189,14 @@ class Piece:
     refused: NgmError | None = None
 
 
-def compute(plan: Plan, start: int, arrays: list[FloatArray], what: str = "R0") -> Piece:
+def compute(plan: Plan, start: int, arrays: list[FloatArray], what: str = "R0", passing: bool = False) -> Piece:
     """Return R0 (or K, row by row) at some draws; `start`: how many draws come before them."""
-    return _Work(plan, start, arrays, what).run()
+    return _Work(plan, start, arrays, what, passing).run()
 
 
 class _Work:
-    def __init__(self, plan: Plan, start: int, arrays: list[FloatArray], what: str) -> None:
-        self.plan, self.start, self.arrays, self.what = plan, start, arrays, what
+    def __init__(self, plan: Plan, start: int, arrays: list[FloatArray], what: str, passing: bool) -> None:
+        self.plan, self.start, self.arrays, self.what, self.passing = plan, start, arrays, what, passing
         self.size = len(arrays[0])
         shape = (self.size,) if what == "R0" else (plan.size**2, self.size)
         self.values = np.full(shape, np.nan)
@@ -235,7 +241,14 @@ class _Work:
         for check in plan.checks:
             value = out[check.output]
             if check.kind in ("value", "rest"):
-                bad = np.flatnonzero(self._refuses(check, out) & fine)
+                refused = self._refuses(check, out) & fine
+                if self.passing:
+                    refused &= codes == 0
+                    if refused.any():
+                        told = "has no value, or is negative" if check.kind == "value" else "is not at rest"
+                        codes[refused] = self._code(f"{check.why} {told}")
+                    continue
+                bad = np.flatnonzero(refused)
                 if len(bad) and bad[0] < first:
                     first = int(bad[0])
                     problem = self._refusal(check, out, first, part.start + self.start + first + 1)

@@ -23,7 +23,7 @@ from ngm.expression.tree import Add, Number
 from ngm.results_sensitivity import LocalIndex, Sensitivity
 from ngm.scenario.model import Expression, Parameter, Scenario
 
-__all__ = ["local_indices", "own_value", "sensitivity"]
+__all__ = ["local_indices", "number_rows", "own_value", "own_values", "sensitivity"]
 
 #: Bits of a difference quotient, and its step as a share of the value.
 BITS = 400
@@ -110,7 +110,7 @@ def _floats(values: Any) -> Any:
     return to_floats(values) if values.dtype == object else np.asarray(values, dtype=float)
 
 
-def _rows(scenario: Scenario) -> list[tuple[Parameter, int, str]]:
+def number_rows(scenario: Scenario) -> list[tuple[Parameter, int, str]]:
     """Return what gets a row: each parameter that is a number, group by group."""
     out = []
     for parameter in scenario.parameters.values():
@@ -121,18 +121,18 @@ def _rows(scenario: Scenario) -> list[tuple[Parameter, int, str]]:
 
 
 def _empty(scenario: Scenario) -> tuple[LocalIndex, ...]:
-    values = _own_values(scenario)
-    return tuple(LocalIndex(item, values[item], None, None, None, None) for _, _, item in _rows(scenario))
+    values = own_values(scenario)
+    return tuple(LocalIndex(item, values[item], None, None, None, None) for _, _, item in number_rows(scenario))
 
 
-def _own_values(scenario: Scenario) -> dict[str, float]:
+def own_values(scenario: Scenario) -> dict[str, float]:
     """Return the value of each row in the parameter's own unit."""
     from ngm.derivation.evaluate import FLOATS
     from ngm.derivation.template import Template
 
     evaluator = Template(scenario).evaluator(FLOATS, {})
     out = {}
-    for parameter, k, item in _rows(scenario):
+    for parameter, k, item in number_rows(scenario):
         tree = parameter.values[k if len(parameter.values) > 1 else 0].tree
         out[item] = float(evaluator.value(tree).ravel()[0])
     return out
@@ -140,9 +140,9 @@ def _own_values(scenario: Scenario) -> dict[str, float]:
 
 def own_value(scenario: Scenario, parameter: str) -> float | None:
     """Return the value of a parameter in its own unit (of the first group); None where it follows others."""
-    for owner, _, item in _rows(scenario):
+    for owner, _, item in number_rows(scenario):
         if owner.name == parameter:
-            return _own_values(scenario)[item]
+            return own_values(scenario)[item]
     return None
 
 
@@ -163,7 +163,7 @@ def moved(scenario: Scenario, parameter: Parameter, place: int, step: Fraction) 
 def local_indices(scenario: Scenario, base: Numbers, warnings: list[str]) -> tuple[LocalIndex, ...]:
     """Return the local indices at the scenario's values; `warnings` takes what is to be said of them."""
     exact = len(base.template.types) <= MOST_EXACT
-    values, rows = _own_values(scenario), _rows(scenario)
+    values, rows = own_values(scenario), number_rows(scenario)
     if not exact and len(rows) > MOST_LARGE_ROWS:
         warnings.append(
             f"{len(base.template.types)} types and {len(rows)} values: local indices are worked out for parameters that are "

@@ -21,7 +21,7 @@ from ngm.errors import Problem, ScenarioError
 from ngm.results_sensitivity import Assurance, DrawFigures, Driver, Uncertainty
 from ngm.scenario.model import Distribution, Parameter, Scenario
 
-__all__ = ["MOST_DRAWS", "uncertainty"]
+__all__ = ["MOST_DRAWS", "Input", "inputs_of", "uncertainty"]
 
 #: Draws at the most, and evaluations at the most for the Sobol indices.
 MOST_DRAWS = 10_000_000
@@ -32,7 +32,7 @@ BARS = 40
 
 
 @dataclass(frozen=True)
-class _Input:
+class Input:
     """One column of draws: a parameter, or one group of it, with its distribution."""
 
     name: str
@@ -110,7 +110,7 @@ def _from_distributions(
     assurance: float,
     executor: Executor | None,
 ) -> Uncertainty:
-    inputs = _inputs(scenario)
+    inputs = inputs_of(scenario)
     if not inputs:
         raise ScenarioError(
             Problem(
@@ -187,7 +187,8 @@ def _from_draws(
     )
 
 
-def _inputs(scenario: Scenario) -> list[_Input]:
+def inputs_of(scenario: Scenario) -> list[Input]:
+    """Return what is drawn: each parameter (or group of one) with a range or distribution."""
     out = []
     for parameter in scenario.parameters.values():
         given = parameter.distributions
@@ -196,10 +197,10 @@ def _inputs(scenario: Scenario) -> list[_Input]:
             if low < high:
                 given = (Distribution("uniform", {"low": low, "high": high}),)
         if len(given) == 1:
-            out.append(_Input(parameter.name, parameter, given[0]))
+            out.append(Input(parameter.name, parameter, given[0]))
         elif given:
             items = scenario.items(parameter.name, parameter.by)
-            out += [_Input(item, parameter, d) for item, d in zip(items, given, strict=True)]
+            out += [Input(item, parameter, d) for item, d in zip(items, given, strict=True)]
     return out
 
 
