@@ -12,10 +12,13 @@ from ngm.charts.style import PALETTE, ink, short
 from ngm.results import Matrix
 from ngm.results_mixing import Curve, Mixing, MixingMap, MixingResponses
 
-__all__ = ["MOST_GROUPS", "case_mix", "contacts", "gaps", "map_of_two", "mix_along", "pairs", "response"]
+__all__ = ["MOST_GROUPS", "SMALL", "case_mix", "contacts", "gaps", "map_of_two", "mix_along", "pairs", "response"]
 
 #: More groups than this are no picture with values in its cells; the table beside it has them all.
 MOST_GROUPS = 40
+
+#: Up to so many groups a heat map has cells of a fixed size; larger ones take the width that there is.
+SMALL = 8
 
 #: Marks of the cases beside the one in force.
 SHAPES = ("diamond", "triangle-up", "square", "cross")
@@ -97,10 +100,14 @@ def _heat(
     else:
         scale = alt.Scale(scheme="viridis", reverse=True, domain=[0, largest])
         bright = f"datum.value > {largest / 2}"
-    step = 46 if size <= 8 else 34 if size <= 20 else 26
     base = alt.Chart(alt.InlineData(values=rows)).encode(
-        x=alt.X("to:N", sort=names, title="with", axis=alt.Axis(orient="top", labelAngle=-90, labelLimit=110)),
-        y=alt.Y("from:N", sort=names, title="group", axis=alt.Axis(labelLimit=110)),
+        x=alt.X(
+            "to:N",
+            sort=names,
+            title="with",
+            axis=alt.Axis(orient="top", labelAngle=-90, labelLimit=110, labelOverlap=False),
+        ),
+        y=alt.Y("from:N", sort=names, title="group", axis=alt.Axis(labelLimit=110, labelOverlap=False)),
         tooltip=[
             alt.Tooltip("from:N", title="group"),
             alt.Tooltip("to:N", title="with"),
@@ -110,16 +117,20 @@ def _heat(
     cells = base.mark_rect(stroke=colours.faint, strokeWidth=0.3).encode(
         color=alt.Color("value:Q", scale=scale, legend=alt.Legend(title=value, orient="bottom", gradientLength=180))
     )
-    texts = base.mark_text(fontSize=12 if size <= 8 else 10 if size <= 20 else 8).encode(
+    # On a narrow screen the cells are too small for numbers: these then stand in the table only.
+    letters: Any = 12 if size <= SMALL else alt.ExprRef(f"width < {24 * size} ? 0 : {10 if size <= 20 else 8}")
+    texts = base.mark_text(fontSize=letters).encode(
         text="shown:N", color=alt.condition(bright, alt.value("#ffffff"), alt.value("#10141c"))
     )
     top = sorted(rows, key=lambda row: -abs(row["value"]))[:5]
     spoken = "; ".join(f"{row['from']} with {row['to']} {row['shown']}" for row in top)
-    return alt.LayerChart(layer=[cells, texts]).properties(
-        width=step * size,
-        height=step * size * (1 if size <= 8 else 0.72),
-        description=f"{title}: a table of {size} by {size} groups. The largest: {spoken}.",
-    )
+    told = f"{title}: a table of {size} by {size} groups. The largest: {spoken}."
+    chart = alt.LayerChart(layer=[cells, texts])
+    if size <= SMALL:
+        pad = alt.AutoSizeParams(type="pad", contains="content")
+        return chart.properties(width=46 * size, height=46 * size, autosize=pad, description=told)
+    # Wide ones take the width that the page gives them; the height holds labels, axis and legend too.
+    return chart.properties(height=(24 if size <= 20 else 18) * size + 170, description=told)
 
 
 def _cell(value: float, digits: int) -> str:
@@ -162,6 +173,8 @@ def case_mix(
     if others:
         known = [name for name, _ in others]
         marks = [colours.strong, colours.text, PALETTE[2], PALETTE[5]]
+        # One legend for shape and colour: the same settings for both.
+        legend = alt.Legend(title=f"Bars: {first[0]}. Marks:", orient="bottom", direction="vertical", labelLimit=260)
         layers.append(
             alt.Chart(alt.InlineData(values=_mix_rows(labels, others)))
             .mark_point(size=95, filled=True, opacity=1, stroke=colours.text, strokeWidth=0.8)
@@ -172,11 +185,9 @@ def case_mix(
                 shape=alt.Shape(
                     "case:N",
                     scale=alt.Scale(domain=known, range=list(SHAPES[: len(known)])),
-                    legend=alt.Legend(
-                        title=f"Bars: {first[0]}. Marks:", orient="bottom", labelLimit=260, titleLimit=320
-                    ),
+                    legend=legend,
                 ),
-                fill=alt.Fill("case:N", scale=alt.Scale(domain=known, range=marks[: len(known)]), legend=None),
+                fill=alt.Fill("case:N", scale=alt.Scale(domain=known, range=marks[: len(known)]), legend=legend),
             )
         )
     spoken = "; ".join(
@@ -232,7 +243,7 @@ def response(curve: Curve, title: str, *, dark: bool = False) -> alt.LayerChart 
     )
 
 
-def mix_along(labels: Sequence[str], curve: Curve, title: str, *, dark: bool = False) -> alt.Chart | None:
+def mix_along(labels: Sequence[str], curve: Curve, title: str) -> alt.LayerChart | None:
     """Draw the case mix along one quantity: a column a value, a row a group, the darker the larger the share."""
     known = [(x, mix) for x, mix in zip(curve.x, curve.case_mix, strict=True) if mix is not None]
     if len(known) < 2 or len(labels) > MOST_GROUPS:
@@ -244,31 +255,30 @@ def mix_along(labels: Sequence[str], curve: Curve, title: str, *, dark: bool = F
         for group, share in zip(labels, mix, strict=True)
     ]
     largest = max(row["share"] for row in rows)
-    chart: alt.Chart = (
+    scale = alt.Scale(scheme="viridis", reverse=True, domain=[0, largest])
+    legend = alt.Legend(title="share of new infections", orient="bottom", gradientLength=180)
+    cells = (
         alt.Chart(alt.InlineData(values=rows))
         .mark_rect()
         .encode(
             x=alt.X("x:Q", title=title, scale=alt.Scale(domain=[edges[0], edges[-1]], nice=False)),
             x2="x2:Q",
-            y=alt.Y("group:N", sort=list(labels), title=None, axis=alt.Axis(labelLimit=130)),
-            color=alt.Color(
-                "share:Q",
-                scale=alt.Scale(scheme="viridis", reverse=True, domain=[0, largest]),
-                legend=alt.Legend(title="share of new infections", orient="bottom", gradientLength=180),
-            ),
+            y=alt.Y("group:N", sort=list(labels), title=None, axis=alt.Axis(labelLimit=130, labelOverlap=False)),
+            color=alt.Color("share:Q", scale=scale, legend=legend),
+            # Without a line of its own colour each cell would show a seam.
+            stroke=alt.Stroke("share:Q", scale=scale, legend=None),
             tooltip=[
                 alt.Tooltip("group:N"),
                 alt.Tooltip("at:Q", title=title, format=".4g"),
                 alt.Tooltip("share:Q", format=".4f"),
             ],
         )
-        .properties(
-            height=20 * len(labels) + 110,
-            description=f"Share of each group among new infections along {title}. First: {_spoken(labels, known[0][1])}. "
-            f"Last: {_spoken(labels, known[-1][1])}.",
-        )
     )
-    return chart
+    return alt.LayerChart(layer=[cells]).properties(
+        height=20 * len(labels) + 110,
+        description=f"Share of each group among new infections along {title}. First: {_spoken(labels, known[0][1])}. "
+        f"Last: {_spoken(labels, known[-1][1])}.",
+    )
 
 
 def _spoken(labels: Sequence[str], mix: Sequence[float]) -> str:
@@ -295,11 +305,7 @@ def map_of_two(found: MixingMap) -> alt.LayerChart | None:
     x = alt.X("x:Q", title=found.x.title, scale=alt.Scale(domain=[xs[0], xs[-1]], nice=False))
     y = alt.Y("y:Q", title=found.y.title, scale=alt.Scale(domain=[ys[0], ys[-1]], nice=False))
     # Below 1 purple, above 1 orange; the middle of the scale is the threshold.
-    colour = alt.Color(
-        "R0:Q",
-        scale=alt.Scale(scheme="purpleorange", reverse=True, domain=[0, largest], domainMid=1),
-        legend=alt.Legend(title="R0", orient="bottom", gradientLength=180),
-    )
+    scale = alt.Scale(scheme="purpleorange", domain=[0, largest], domainMid=1)
     cells = (
         alt.Chart(alt.InlineData(values=rows))
         .mark_rect(clip=True)
@@ -308,8 +314,8 @@ def map_of_two(found: MixingMap) -> alt.LayerChart | None:
             x2="x2:Q",
             y=y,
             y2="y2:Q",
-            color=colour,
-            stroke=colour,
+            color=alt.Color("R0:Q", scale=scale, legend=alt.Legend(title="R0", orient="bottom", gradientLength=180)),
+            stroke=alt.Stroke("R0:Q", scale=scale, legend=None),
             tooltip=[
                 alt.Tooltip("ax:Q", title=found.x.title, format=".4g"),
                 alt.Tooltip("ay:Q", title=found.y.title, format=".4g"),

@@ -200,10 +200,11 @@ def factors(shown: Shown, found: Mixing, document: Document, write: Write) -> No
     for k, name in enumerate(found.settings):
         field = f"mixing.factor.{name}"
         with columns[k % len(columns)]:
+            # A new key after each edit of the text: a factor that was written into it is 1 again.
             typed = st.text_input(
                 f"Factor on {plain(name)}",
                 value=state.recall(field, "1"),
-                key=field,
+                key=f"{field}.{state.current().source}",
                 help="1: as it is. 0.6: 40 % less.",
             )
             state.remember(field, typed)
@@ -238,14 +239,15 @@ def factors(shown: Shown, found: Mixing, document: Document, write: Write) -> No
 
 def _take_factors(shown: Shown, found: Mixing, document: Document, wanted: Mapping[str, Decimal]) -> None:
     told = ", ".join(f"{name} times {value}" for name, value in wanted.items())
-    name = st.text_input(
-        "Name of the intervention", value=state.recall("mixing.intervention", told), key=f"mixing.intervention.{told}"
-    )
+    name = st.text_input("Name of the intervention", value=told, key=f"mixing.intervention.{told}")
     left, right = st.columns(2)
-    if left.button("Add as an intervention", key="mixing.intervene", type="primary", disabled=not name.strip()):
-        take(mixing_edits.intervention(name.strip(), wanted))
     held = document.get("intervention")
-    if isinstance(held, list) and any(isinstance(entry, dict) and entry.get("name") == name.strip() for entry in held):
+    taken = isinstance(held, list) and any(isinstance(one, dict) and one.get("name") == name.strip() for one in held)
+    if left.button(
+        "Add as an intervention", key="mixing.intervene", type="primary", disabled=taken or not name.strip()
+    ):
+        take(mixing_edits.intervention(name.strip(), wanted))
+    if taken:
         left.caption("The scenario has an intervention of this name.")
     several = [one for one in wanted if "within" in document["matrices"][one]]
     if several:

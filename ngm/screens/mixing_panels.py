@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from typing import Any
 
 import streamlit as st
 
@@ -42,7 +43,7 @@ def the_matrix(found: Mixing, write: Write) -> None:
     )
     chart = charts.contacts(found, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart, width="content")
+        _heat(chart, len(found.groups))
     with st.expander("As a table, with row and column sums"):
         heads = ["group", "contacts of one member (row sum)", "column sum", "members"]
         sizes = found.sizes
@@ -63,6 +64,10 @@ def the_matrix(found: Mixing, write: Write) -> None:
         f"Assortativity index Q = {plain(index)} (every group weighs the same; 0: as by chance, 1: each group keeps to "
         f"itself); coefficient r = {plain(coefficient)} (every contact weighs the same)."
     )
+
+
+def _heat(chart: Any, groups: int) -> None:
+    st.altair_chart(chart, width="content" if groups <= charts.SMALL else "stretch")
 
 
 def reciprocity(found: Mixing, write: Write) -> None:
@@ -92,7 +97,7 @@ def reciprocity(found: Mixing, write: Write) -> None:
     with st.expander("The gaps, pair by pair", expanded=not found.reciprocal):
         chart = charts.gaps(found, dark=parts.dark())
         if chart is not None:
-            st.altair_chart(chart, width="content")
+            _heat(chart, len(found.groups))
         st.caption(
             "Positive (orange): the row's group counts more than the column's. The other side of a pair has the same gap "
             "with its sign turned."
@@ -173,7 +178,7 @@ def answers(found: MixingResponses, write: Write) -> None:
         curve = found.settings[names.index(chosen)]
         _curve(curve, f"factor on {chosen}", found.mix_labels, write, "mixing.factor")
     rows = [
-        (curve.name, write(curve.elasticity), write(loss))
+        (curve.name, write(_even(curve.elasticity)), write(_even(loss)))
         for curve, loss in zip(found.settings, found.losses, strict=True)
     ]
     parts.table(["setting", "elasticity of R0", "share of R0 lost without it"], rows)
@@ -182,6 +187,11 @@ def answers(found: MixingResponses, write: Write) -> None:
         "the elasticities sum to 1. What is lost without each setting does not."
     )
     _pairs(found, write)
+
+
+def _even(share: float | None) -> float | None:
+    """Return a share without the last digits of rounding: a 1 is then written as 1, which a number beside 1 never is."""
+    return None if share is None else round(share, 13)
 
 
 def _index(names: Sequence[str], field: str, default: str) -> int:
@@ -193,7 +203,7 @@ def _curve(curve: Curve, title: str, labels: Sequence[str], write: Write, key: s
     chart = charts.response(curve, title, dark=parts.dark())
     if chart is not None:
         st.altair_chart(chart)
-    mix = charts.mix_along(labels, curve, title, dark=parts.dark())
+    mix = charts.mix_along(labels, curve, title)
     if mix is not None:
         st.altair_chart(mix)
     with st.expander(f"As a table: R0 and the case mix along the {title}"):
@@ -223,11 +233,11 @@ def _pairs(found: MixingResponses, write: Write) -> None:
         return
     chart = charts.pairs(found, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart, width="content")
+        _heat(chart, len(found.groups))
     told = "" if found.exact else " Taken as differences, since these contacts also move the state without infection."
     st.caption(f"4 in a cell: if this pair meets 1 % more, R0 rises by 0.04 %. Each pair stands once.{told}")
     with st.expander("As tables: by group, by pair, entry by entry"):
-        rows = [(group, write(value)) for group, value in zip(found.groups, found.by_group, strict=True)]
+        rows = [(group, write(_even(value))) for group, value in zip(found.groups, found.by_group, strict=True)]
         parts.table(["group", "elasticity of R0 by all contacts of the group, both ways"], rows)
         st.caption("They sum to more than the setting's elasticity: a pair's contacts belong to two groups.")
         parts.numbers_table(found.pairs, found.groups, write, "pair")
@@ -265,7 +275,7 @@ def the_map(shown: parts.Shown, found: Mixing, parameters: Sequence[str], write:
     if chart is not None:
         st.altair_chart(chart)
     told = (
-        "The black line is R0 = 1: above it an infection can spread."
+        "The black line is R0 = 1; on its orange side an infection can spread."
         if made.line
         else "R0 does not pass 1 on this map."
     )
