@@ -26,12 +26,16 @@ HEAVY = (
     "tomlkit",
     "ngm",
     "ngm.charts.bars",
+    "ngm.charts.control",
     "ngm.charts.graphs",
     "ngm.charts.mixing",
     "ngm.charts.spectrum",
     "ngm.expression.typeset",
     "ngm.analysis.solve",
     "ngm.analysis.control",
+    "ngm.analysis.compare",
+    "ngm.analysis.strength",
+    "ngm.analysis.allocation",
     "ngm.analysis.mixing_scan",
 )
 

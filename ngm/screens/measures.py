@@ -170,7 +170,8 @@ def editor(now: state.Version) -> None:
         st.info("The tables need a text that is TOML. Put it right on the page **Scenario**, or undo the last change.")
         return
     st.caption(
-        "One row a change; changes of an intervention apply in order. A matrix is changed for the rows and columns named. "
+        "One row a change; changes of an intervention apply in order. Click into the last, empty row (or press Enter there) "
+        "to add one; a new name makes a new intervention. A matrix is changed for the rows and columns named. "
         "susceptibility reduces how often a type is infected, infectivity how much an infected state infects."
     )
     edits = _grid("changes", document)

@@ -212,7 +212,7 @@ def sharing(shown: Shown, write: Write) -> None:
 def _shares(found: Allocation, besides: Sequence[str], write: Write) -> None:
     even = next((rule for rule in found.rules if rule.rule == "by population"), None)
     figures = [
-        ("Without the supply", found.R0, found.label if besides else "basic reproduction number R0"),
+        ("Without the supply", found.R0, found.label if besides else "R0, basic reproduction number"),
         ("Best share found", found.best.R0, found.label),
         *([("Shared by population", even.R0, found.label)] if even is not None else []),
     ]
