@@ -176,7 +176,11 @@ def sensitivity(m: Material) -> Section:
     """Show local sensitivity, the largest elasticity first."""
     title, s = "Sensitivity", m.sensitivity
     if s is None or not any(i.derivative is not None for i in s.local):
-        why = "not computed" if s is None else "; ".join(s.warnings) or "R0 has no slope at these values"
+        why = (
+            "not computed"
+            if s is None
+            else "; ".join(w for w in s.warnings if w not in m.solution.warnings) or "R0 has no slope at these values"
+        )
         return Section("sensitivity", title, (), "absent", why)
     order = sorted(range(len(s.local)), key=lambda k: -abs(s.local[k].elasticity or 0.0))
     shown = order[:MOST_ROWS]

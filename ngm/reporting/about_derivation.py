@@ -44,7 +44,10 @@ def infection_free(m: Material, told: set[str]) -> Section:
         )
         for name, value in shown
     )
-    blocks.append(Table(("The infection-free state.",), ("compartment", "formula", "value"), rows, frozenset({2})))
+    heads: tuple[str, ...] = ("compartment", "formula", "value")
+    if not written:
+        rows, heads = tuple((row[0], row[2]) for row in rows), ("compartment", "value")
+    blocks.append(Table(("The infection-free state.",), heads, rows, frozenset({len(heads) - 1})))
     blocks += listed(len(s.infection_free), len(shown), "compartments")
     blocks.append(
         Paragraph(

@@ -96,10 +96,17 @@ def _form(document: Document, ending: str, folder: Path, beside: str) -> bytes:
                 "--embed-resources",
                 "--template=template.html",
                 "--toc",
-                "--toc-depth=1",
+                "--toc-depth=2",
+                "--shift-heading-level-by=1",
             )
         case ".md":
-            return _pandoc(tree(document, "markdown", path), folder, "--to=gfm+tex_math_dollars-yaml_metadata_block")
+            return _pandoc(
+                tree(document, "markdown", path),
+                folder,
+                "--to=gfm-yaml_metadata_block",
+                "--shift-heading-level-by=1",
+                "--wrap=none",
+            )
         case ".tex":
             (folder / "head.tex").write_text(LATEX_HEAD, encoding="utf-8")
             return _pandoc(

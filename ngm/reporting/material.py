@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+from ngm.errors import ExpressionError
 from ngm.expression.typeset import latex_of
 from ngm.reporting.document import Block, Code, Formula, Inline, Line, Maths, Paragraph, Table
 from ngm.reporting.numbers import number
@@ -20,6 +21,8 @@ __all__ = ["Material", "abbreviations", "equation", "inline", "listed", "matrix"
 
 #: Rows of one table; what is left out is told, and is in the companion file.
 MOST_ROWS = 60
+#: A longer expression is not printed within a table.
+MOST_LETTERS = 1200
 #: Types up to which a matrix is set as one; more are listed entry by entry.
 MOST_COLUMNS = 7
 
@@ -55,7 +58,14 @@ class Material:
 
 def inline(text: str, most: float = 34.0) -> Inline:
     """Return an expression within a line: typeset where it is short, as text that can be broken where it is long."""
-    if width(text) > most:
+    try:
+        wide = width(text) > most
+    except ExpressionError:
+        # Shares of moving members are told in words beside the expression.
+        return Code(spaced(text))
+    if len(text) > MOST_LETTERS:
+        return f"an expression of {len(text)} letters: see the JSON result"
+    if wide:
         return Code(spaced(text))
     return Maths(latex_of(text).replace(r"\frac", r"\dfrac"))
 

@@ -42,6 +42,9 @@ NARROW = 76
 def tree(document: Document, form: str, figure: Callable[[Figure], str]) -> str:
     """Return the document as JSON for pandoc. `figure`: figure -> path of its file in this form."""
     blocks: list[Node] = []
+    if form == "markdown":
+        # Markdown has no place of its own for a title; its headings are shifted down by one.
+        blocks.append({"t": "Header", "c": [0, _NO_ATTRIBUTES, _words(_clean(document.title), form)]})
     for line in document.under:
         blocks.append({"t": "Para", "c": _inlines(line, form)})
     for section in document.sections:
@@ -112,7 +115,7 @@ def _inline(piece: Inline, form: str) -> list[Node]:
         case Maths(latex=latex):
             return [{"t": "Math", "c": [{"t": "InlineMath"}, _maths(latex)]}]
         case Number(shown=shown, name=name):
-            return [{"t": "Span", "c": [["", ["number"], [["json", name]]], [{"t": "Str", "c": shown}]]}]
+            return [{"t": "Span", "c": [["", ["number"], [["data-json", name]]], [{"t": "Str", "c": shown}]]}]
 
 
 def _words(text: str, form: str) -> list[Node]:
@@ -126,6 +129,11 @@ def _words(text: str, form: str) -> list[Node]:
     for piece in re.split(r"(\s+)", text):
         if piece.isspace():
             out.append({"t": "Space"})
+        elif form == "markdown" and "&" in piece:
+            # The writer leaves "&amp;" as it is, which a reader of Markdown would take for "&".
+            for k, part in enumerate(piece.split("&")):
+                out += [{"t": "RawInline", "c": ["html", "&amp;"]}] * (k > 0)
+                out += [{"t": "Str", "c": part}] * (part != "")
         elif piece:
             out.append({"t": "Str", "c": piece})
     return out

@@ -17,13 +17,13 @@ HTML = """<!DOCTYPE html>
 :root { color-scheme: light; }
 body { margin: 0; color: #1b1f27; background: #fff; font: 1rem/1.55 "Liberation Sans", Arial, Helvetica, sans-serif; }
 main { max-width: 54rem; margin: 0 auto; padding: 1.5rem 1.25rem 4rem; }
-h1 { font-size: 1.35rem; margin: 2.2rem 0 .6rem; padding-top: .5rem; border-top: 1px solid #c3cad4; line-height: 1.25; }
-h1.title { font-size: 1.8rem; border: 0; margin-top: .5rem; }
+h1 { font-size: 1.8rem; margin: .5rem 0; line-height: 1.25; }
+h2 { font-size: 1.35rem; margin: 2.2rem 0 .6rem; padding-top: .5rem; border-top: 1px solid #c3cad4; line-height: 1.25; }
 nav { background: #f3f6f9; padding: .6rem 1.2rem; border-radius: 6px; }
 nav ul { columns: 2; padding-left: 1.1rem; margin: .4rem 0; }
 nav p { margin: .2rem 0; font-weight: bold; }
 a { color: #0b4f8a; }
-table { border-collapse: collapse; margin: .8rem 0 1.2rem; font-size: .92rem; }
+table { border-collapse: collapse; min-width: min(100%, 32rem); margin: .8rem 0 1.2rem; font-size: .92rem; }
 .wide { overflow-x: auto; }
 caption { text-align: left; caption-side: top; padding: .3rem 0; color: #3c4350; }
 th, td { border-bottom: 1px solid #d5dae1; padding: .28rem .6rem .28rem 0; vertical-align: top;
@@ -37,8 +37,13 @@ figure { margin: 1rem 0; }
 figure img { max-width: 100%; height: auto; }
 figcaption { color: #3c4350; font-size: .92rem; }
 math { font-family: "Noto Sans Math", "STIX Two Math", "Cambria Math", math; }
+/* Brackets do not stretch around a matrix without a font for mathematics: they are drawn as its borders instead. */
+math, mtable { math-style: normal; }
+mo:has(+ mtable), mtable + mo { display: none; }
+mtable { border: solid currentColor; border-width: 0 1.5px; border-radius: .8em; padding: 0 .5em; }
+mtd { padding: .25em .5em; }
 math[display="block"] { overflow-x: auto; overflow-y: hidden; padding: .4rem 0; }
-@media print { nav { display: none; } main { max-width: none; } h1 { break-after: avoid; } tr, figure { break-inside: avoid; } }
+@media print { nav { display: none; } main { max-width: none; } h2 { break-after: avoid; } tr, figure { break-inside: avoid; } }
 </style>
 </head>
 <body>

@@ -31,5 +31,6 @@ PAGES = (
     Page("numbers", "Reproduction numbers"),
     Page("mixing", "Mixing"),
     Page("control", "Control"),
+    Page("report", "Report"),
     Page("versions", "Versions"),
 )

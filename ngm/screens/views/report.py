@@ -1,0 +1,123 @@
+"""The report: its words, a choice of parts, downloads in five forms, and a preview."""
+
+from __future__ import annotations
+
+import io
+import zipfile
+from collections.abc import Callable
+
+import streamlit as st
+
+from ngm.reporting.forms import FORMS
+from ngm.reporting.make import Report
+from ngm.reporting.narrative import SECTIONS
+from ngm.screens import forms, parts, report_cache, state
+from ngm.screens.forms import Edit
+from ngm.screens.parts import Shown
+
+#: Field of `[report]` -> what it is called on the page.
+WORDS = {
+    "question": "Question",
+    "place": "Place",
+    "date": "Date",
+    "author": "Author",
+    "reviewer": "Reviewer",
+    "reviewed_on": "Reviewed on",
+}
+
+
+def words() -> None:
+    """Place the fields that the report begins with, and put what is typed there into the scenario."""
+    now = state.current().now
+    document = forms.document(now.text) if now is not None else None
+    if now is None or document is None:
+        return
+    section = document.get("report")
+    held = section if isinstance(section, dict) else {}
+    edits: list[Edit] = []
+    with st.expander("Question, place, date and people", expanded=not held):
+        for field, label in WORDS.items():
+            before = forms.shown(held.get(field), "text")
+            after = st.text_input(label, value=before, key=f"report.{field}.{state.current().forms}")
+            edits += forms.field_edit("report", field, before, after)
+    state.edit(parts.applied(now.text, edits))
+
+
+def choice() -> tuple[str, ...]:
+    """Place the choice of parts; return those left out."""
+    known = [key for key in SECTIONS if key != "checklist"]
+    held = [key for key in state.recall("report.without").split() if key in known]
+    chosen = st.multiselect(
+        "Parts to leave out", known, default=held, format_func=lambda key: SECTIONS[key], key="report.without"
+    )
+    state.remember("report.without", " ".join(chosen))
+    return tuple(chosen)
+
+
+def downloads(made: Report, name: str) -> None:
+    """Place a button for each form; the form is written when its button is pressed."""
+    places = st.columns(len(FORMS) + 1)
+    for place, (ending, label) in zip(places, FORMS.items(), strict=False):
+        packed = ending in {".md", ".tex"}
+        file = f"{name}.zip" if packed else f"{name}{ending}"
+        place.download_button(
+            label, content(made, ending, name), file, on_click="ignore", key=f"report.download{ending}", width="stretch"
+        )
+    places[-1].download_button(
+        "All numbers (JSON)",
+        made.companion_text,
+        f"{name}.json",
+        on_click="ignore",
+        key="report.companion",
+        width="stretch",
+    )
+
+
+def content(made: Report, ending: str, name: str) -> Callable[[], bytes]:
+    """Return a function that writes a form; one with figures beside it comes as a zip file."""
+
+    def write() -> bytes:
+        files = made.files(ending, name)
+        if not files.beside:
+            return files.main
+        packed = io.BytesIO()
+        with zipfile.ZipFile(packed, "w", zipfile.ZIP_DEFLATED) as archive:
+            archive.writestr(f"{name}{ending}", files.main)
+            for file, data in files.beside.items():
+                archive.writestr(file, data)
+        return packed.getvalue()
+
+    return write
+
+
+def show(shown: Shown) -> None:
+    """Place the choice, the downloads and the preview."""
+    without = choice()
+    made = report_cache.compose(shown.text, shown.folder, without)
+    if not isinstance(made, Report):
+        parts.problem_box(made, "that keep the report from being written")
+        return
+    now = state.current().now
+    name = "".join(
+        c if c.isalnum() or c in "-_" else "-" for c in (now.name if now else "report").removesuffix(".toml")
+    )
+    st.subheader("Save it")
+    downloads(made, name or "report")
+    st.subheader("Preview")
+    if parts.switch("Show the preview", "report.preview"):
+        st.iframe(report_cache.page(shown.text, shown.folder, without), height=900, alt="The report")
+
+
+def page() -> None:
+    """Show the page."""
+    st.title("Report")
+    st.markdown("The derivation, ready to hand in: every number in it is one of those on the other pages.")
+    words()
+    shown = parts.results()
+    if shown is not None:
+        parts.headline(shown.solution)
+        show(shown)
+    parts.cautions()
+
+
+page()
