@@ -72,6 +72,9 @@ def difference(first: Scenario, second: Scenario) -> Difference:
     steps: list[_Step] = []
     _parameters(before, second, changes, steps)
     _structure(before, second, changes, steps)
+    if before.dimensions != second.dimensions:
+        # Nothing stands between two models that group their hosts differently.
+        steps = [_Step("groups, compartments, flows and values", lambda _: second)]
     between = _Between(before, second, steps, one, two)
     moved = _entries(between, one, two, warnings)
     contributions = _contributions(between, warnings)
@@ -254,9 +257,11 @@ class _Between:
     """The first model with some of the changes made; numbers are kept."""
 
     def __init__(self, first: Scenario, second: Scenario, steps: list[_Step], one: Numbers, two: Numbers) -> None:
+        alike = first.dimensions == second.dimensions
         self.first = replace(
             first,
-            parameters={**second.parameters, **first.parameters},
+            parameters={**second.parameters, **first.parameters} if alike else first.parameters,
+            matrices={**second.matrices, **first.matrices} if alike else first.matrices,
             # with other compartments a definition of the second may name what the first has not
             definitions=(
                 {**second.definitions, **first.definitions}

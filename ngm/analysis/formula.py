@@ -304,7 +304,8 @@ class _Comparison:
         responses: dict[str, tuple[float, float]] = {}
         if worst is not None and verdict != "equal":
             used = worst[0].decimals
-            point = {name: float(used[name]) for name in self.scenario.parameters if name in used}
+            items = [i for p in self.scenario.parameters.values() for i in self.scenario.items(p.name, p.by)]
+            point = {name: float(used[name]) for name in items if name in used}
             responses = self._responses(worst[0])
         return FormulaOpinion(
             self.solution.title,

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import random
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from decimal import Context, Decimal, DecimalException, localcontext
 from fractions import Fraction
 from typing import Any
@@ -20,7 +20,7 @@ from ngm.expression.parse import parse
 from ngm.expression.tree import Add, Call, Multiply, Name, Negate, Node, Number, Power, fold
 from ngm.results import Solution
 from ngm.scenario.exact import NoValueError, evaluate
-from ngm.scenario.model import Scenario
+from ngm.scenario.model import Expression, Parameter, Scenario, number
 
 __all__ = ["DIGITS", "Place", "Places", "decimal_value", "exact_value"]
 
@@ -113,18 +113,26 @@ class Places:
         if solution.symbolic.K is not None:
             self.rows = [[parse(text, items=True) for text in row] for row in solution.symbolic.K]
         self.random = random.Random(self.seed)
-        self.free_names = [p.name for p in self.scenario.parameters.values() if not p.follows and not p.by]
+        #: item (``sigma[65+]``) -> its parameter and place; what follows others is computed from these
+        self.numbers_of: dict[str, tuple[Parameter, int]] = {}
+        for parameter in self.scenario.parameters.values():
+            if not parameter.follows:
+                items = self.scenario.items(parameter.name, parameter.by)
+                self.numbers_of |= {item: (parameter, k) for k, item in enumerate(items)}
 
     def typed(self) -> dict[str, Fraction]:
         """Return the values of the file."""
-        return {name: _fraction(self.scenario.parameters[name].values[0].tree) for name in self.free_names}
+        return {
+            item: _fraction(parameter.values[k if len(parameter.values) > 1 else 0].tree)
+            for item, (parameter, k) in self.numbers_of.items()
+        }
 
     def draw(self) -> dict[str, Fraction]:
         """Return a random value for each parameter that is a number: in its range, or around its value."""
         return {name: self._drawn(name, value) for name, value in self.typed().items()}
 
     def _drawn(self, name: str, value: Fraction) -> Fraction:
-        parameter = self.scenario.parameters[name]
+        parameter = self.numbers_of[name][0]
         share = self.random.random()
         if parameter.range is not None and parameter.range[0] < parameter.range[1]:
             low, high = parameter.range
@@ -147,11 +155,7 @@ class Places:
         decimals: dict[str, Decimal] = {}
         scenario = self.scenario
         for name, value in typed.items():
-            self._put(name, value * scenario.parameters[name].factor, exact, decimals)
-        for name, parameter in scenario.parameters.items():
-            if parameter.by and not parameter.follows:
-                for item, node in zip(scenario.items(name, parameter.by), parameter.in_force(), strict=True):
-                    self._put(item, _fraction(node), exact, decimals)
+            self._put(name, value * self.numbers_of[name][0].factor, exact, decimals)
         pending = [p for p in scenario.parameters.values() if p.follows]
         for _ in range(len(pending) + 1):
             for parameter in pending:
@@ -197,13 +201,22 @@ class Places:
     def numbers(self, typed: Mapping[str, Fraction], scenario: Scenario | None = None) -> tuple[float, Any] | None:
         """Return R0 and K by the arrays' own route; None where there is none."""
         try:
-            changed = (scenario or self.scenario).with_values(**{name: _text(value) for name, value in typed.items()})
-            found = decided_numbers(changed)
+            found = decided_numbers(self.changed(scenario or self.scenario, typed))
         except NgmError:
             return None
         if found.no_R0 is not None or found.spectrum is None:
             return None
         return nearest(found.spectrum.root), as_floats(found.K)
+
+    def changed(self, scenario: Scenario, typed: Mapping[str, Fraction]) -> Scenario:
+        """Return the scenario with these values, item by item."""
+        values: dict[str, list[Expression]] = {}
+        for item, value in typed.items():
+            values.setdefault(self.numbers_of[item][0].name, []).append(number(value))
+        parameters = dict(scenario.parameters)
+        for name, given in values.items():
+            parameters[name] = replace(parameters[name], values=tuple(given))
+        return replace(scenario, parameters=parameters)
 
     def _put(self, name: str, value: Fraction, exact: dict[str, Fraction], decimals: dict[str, Decimal]) -> None:
         exact[name] = value
@@ -230,7 +243,3 @@ def _short(value: float) -> Fraction:
     if value == 0 or not math.isfinite(value):
         return Fraction(0)
     return Fraction(f"{value:.4g}")
-
-
-def _text(value: Fraction) -> str:
-    return str(value.numerator) if value.denominator == 1 else f"{value.numerator}/{value.denominator}"
