@@ -79,7 +79,7 @@ def allocation_words(result: Allocation) -> list[str]:
     else:
         out.append(
             f"No share of this supply leaves less than {figure(result.lower_bound)}: what was found lies within "
-            f"{100 * result.gap:.2g} % of the best there is. {result.proof}"
+            f"{'0.0001' if result.gap < 1e-6 else f'{100 * result.gap:.2g}'} % of the best there is. {result.proof}"
         )
     smallest = result.smallest
     if smallest.supply is None:

@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import json
 import math
+import re
+import shlex
+from pathlib import Path
 
 import pytest
 
@@ -14,6 +17,7 @@ from ngm.typed import by_group, number
 from ngm.wording import allocation_words, coverage_words, share, strength_words, whole
 from tests.analysis.packages import TOWN, intervention
 
+README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 FOUR = "scenarios/age-groups-ember-cough.toml"
 
 
@@ -176,6 +180,12 @@ def test_allocation_with_everything_said(capsys):
 )
 def test_wrong_questions_are_refused(capsys, arguments, message):
     assert message in refused(capsys, arguments[0], FOUR, *arguments[1:])
+
+
+def test_what_the_readme_shows_of_an_allocation_is_printed(capsys):
+    block = re.search(r"^```text\n\$ python -m ngm (allocate .*?)\n(.*?)^…\n```$", README, re.MULTILINE | re.DOTALL)
+    lines = printed(capsys, *shlex.split(block[1])).splitlines()
+    assert lines[: len(block[2].splitlines())] == block[2].splitlines()
 
 
 # -- sentences ---------------------------------------------------------------------------------------------------------
