@@ -29,6 +29,8 @@ HEAVY = (
     "ngm.charts.control",
     "ngm.charts.graphs",
     "ngm.charts.mixing",
+    "ngm.charts.plane",
+    "ngm.charts.sensitivity",
     "ngm.charts.spectrum",
     "ngm.expression.typeset",
     "ngm.analysis.solve",
@@ -37,6 +39,8 @@ HEAVY = (
     "ngm.analysis.strength",
     "ngm.analysis.allocation",
     "ngm.analysis.mixing_scan",
+    "ngm.analysis.plane",
+    "ngm.analysis.uncertainty",
 )
 
 

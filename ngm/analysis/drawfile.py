@@ -20,21 +20,28 @@ MOST_BYTES = 512 * 2**20
 MOST_TOLD = 10
 
 
-def read_draws(scenario: Scenario, path: str | Path) -> dict[str, Any]:
+def read_draws(scenario: Scenario, source: str | Path | bytes, name: str = "draws.csv") -> dict[str, Any]:
     """Return the joint draws of a file, by parameter (or ``sigma[65+]`` for one group).
+
+    Parameters
+    ----------
+    scenario : Scenario
+    source : path or bytes
+        The file, or what is in it; then `name` is its name, which tells CSV (in UTF-8) from Parquet.
 
     Raises
     ------
     ngm.ScenarioError
         The file cannot be read; a column is no parameter; a cell is no number: with row and column, up to ten of them.
     """
-    path = Path(path)
+    path = Path(name) if isinstance(source, bytes) else Path(source)
     try:
-        if path.stat().st_size > MOST_BYTES:
+        if (len(source) if isinstance(source, bytes) else path.stat().st_size) > MOST_BYTES:
             raise ScenarioError(Problem(path.name, f"is larger than {MOST_BYTES // 2**20} MB. Take fewer draws."))
+        content = source if isinstance(source, bytes) else path.read_bytes()
         if path.suffix.lower() in (".parquet", ".pq"):
-            return _of_table(scenario, _parquet(path), path.name)
-        text = path.read_bytes().decode("utf-8-sig")
+            return _of_table(scenario, _parquet(content, path.name), path.name)
+        text = content.decode("utf-8-sig")
     except OSError as error:
         raise ScenarioError(Problem(str(path), f"cannot be read ({error.strerror or error}).")) from None
     except UnicodeDecodeError:
@@ -42,13 +49,13 @@ def read_draws(scenario: Scenario, path: str | Path) -> dict[str, Any]:
     return draws_of_text(scenario, text, path.name)
 
 
-def _parquet(path: Path) -> dict[str, list[Any]]:
+def _parquet(content: bytes, name: str) -> dict[str, list[Any]]:
     import pandas
 
     try:
-        frame = pandas.read_parquet(path)
+        frame = pandas.read_parquet(io.BytesIO(content))
     except (ValueError, OSError, ImportError) as error:
-        raise ScenarioError(Problem(path.name, f"is no Parquet file that can be read ({str(error)[:120]}).")) from None
+        raise ScenarioError(Problem(name, f"is no Parquet file that can be read ({str(error)[:120]}).")) from None
     return {str(name): frame[name].tolist() for name in frame.columns}
 
 

@@ -17,24 +17,31 @@ from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_mixing import Mixing, MixingMap, MixingResponses
+from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swings, Uncertainty
 from ngm.screens import jobs
 
 __all__ = [
     "ByGroup",
     "Outcome",
     "allocate",
+    "calibrate",
     "compare",
     "control",
     "conversions",
     "coverage",
+    "drawn",
+    "from_file",
     "latex",
     "mixing",
     "mixing_map",
     "mixing_responses",
     "numbers",
+    "plane",
     "problems",
+    "sensitivity",
     "solve",
     "strength",
+    "swings",
 ]
 
 #: One number for all groups, or (group, number) for each: plain values, so that they can be part of a key.
@@ -201,6 +208,66 @@ def mixing_map(
     """Return R0 over two quantities, or why there is no such map."""
     try:
         return ngm.mixing_map(ngm.loads(text, folder=folder), x, y, within=within)
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=64, show_spinner="Computing how R0 answers to each parameter …")
+def sensitivity(text: str, folder: str | None) -> Sensitivity | tuple[Problem, ...]:
+    """Return the local indices, or why there are none."""
+    try:
+        return ngm.sensitivity(ngm.loads(text, folder=folder))
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=64, show_spinner=False)
+def swings(text: str, folder: str | None) -> Swings | tuple[Problem, ...]:
+    """Return R0 at the ends of each parameter's range, or why there is none."""
+    try:
+        return ngm.swings(ngm.loads(text, folder=folder))
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=32, show_spinner="Drawing the parameters and computing R0 at each draw …")
+def drawn(text: str, folder: str | None, draws: int, seed: int, kind: str) -> Uncertainty | tuple[Problem, ...]:
+    """Return what draws from the parameters' distributions say, or what is wrong with the question."""
+    try:
+        scenario = ngm.loads(text, folder=folder)
+        return ngm.uncertainty(scenario, draws, seed=seed, kind="sobol" if kind == "sobol" else "latin_hypercube")
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=16, show_spinner="Reading the draws and computing R0 at each …")
+def from_file(text: str, folder: str | None, content: bytes, name: str) -> Uncertainty | tuple[Problem, ...]:
+    """Return what the joint draws of a file say, or what is wrong with the file. Only figures are kept, no draw."""
+    try:
+        scenario = ngm.loads(text, folder=folder)
+        return ngm.uncertainty(scenario, ngm.read_draws(scenario, content, name))
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=64, show_spinner="Computing R0 over the plane …")
+def plane(
+    text: str, folder: str | None, x: tuple[str, str], y: tuple[str, str], levels: tuple[float, ...], within: str | None
+) -> Plane | tuple[Problem, ...]:
+    """Return R0 over two quantities with its lines, or why there is no such plane."""
+    try:
+        return ngm.plane(ngm.loads(text, folder=folder), x, y, levels=levels, within=within)
+    except NgmError as error:
+        return error.problems
+
+
+@st.cache_resource(max_entries=128, show_spinner="Searching for the value …")
+def calibrate(
+    text: str, folder: str | None, parameter: str, R0: float | None, growth_rate: float | None
+) -> Calibration | tuple[Problem, ...]:
+    """Return the value of a parameter for a wanted R0 or growth rate, or what can be attained."""
+    try:
+        return ngm.calibrate(ngm.loads(text, folder=folder), parameter, R0, growth_rate=growth_rate)
     except NgmError as error:
         return error.problems
 

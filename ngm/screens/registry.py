@@ -31,6 +31,7 @@ PAGES = (
     Page("numbers", "Reproduction numbers"),
     Page("mixing", "Mixing"),
     Page("control", "Control"),
+    Page("sensitivity", "Sensitivity"),
     Page("report", "Report"),
     Page("versions", "Versions"),
 )
