@@ -17,7 +17,9 @@ if TYPE_CHECKING:
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
+    from ngm.analysis.difference import difference
     from ngm.analysis.drawfile import read_draws
+    from ngm.analysis.formula import formula
     from ngm.analysis.mixing import contact_readings, mixing
     from ngm.analysis.mixing_scan import mixing_map, mixing_responses
     from ngm.analysis.plane import plane, swings

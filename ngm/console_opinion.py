@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from ngm.console import WIDTH, closing, figure, squeezed, table
-from ngm.results_opinion import Difference, FormulaOpinion, ModelChange, Splits, Stay, Units
+from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 
-__all__ = ["change_words", "difference_text", "formula_text", "opinion_text", "splits_text", "stay_words", "units_text"]
+__all__ = ["difference_text", "formula_text", "opinion_text", "splits_text", "units_text"]
 
 
 def opinion_text(result: Units | Splits | FormulaOpinion | Difference) -> str:
@@ -50,20 +50,10 @@ def units_text(result: Units) -> str:
     lines += ["", *table(rows, head)]
     if result.stays:
         lines += ["", "Mean stay in each stage, and how it ends (without infection)"]
-        lines += [f"  {stay_words(stay, result.time_unit)}" for stay in result.stays[:60]]
+        lines += [f"  {stay.words(result.time_unit)}" for stay in result.stays[:60]]
         if len(result.stays) > 60:
             lines.append(f"  … and {len(result.stays) - 60} more; use --json.")
     return squeezed([*lines, *closing(result.warnings)])
-
-
-def stay_words(stay: Stay, time_unit: str) -> str:
-    """Return a stay as a sentence: mean stay in I 5 day; 98 % Recovery, 2 % Death."""
-    if stay.mean is None:
-        return f"{stay.compartment}: nothing leaves"
-    ways = ", ".join(
-        f"{100 * way.probability:.3g} % {way.label}" + (f" ({way.to})" if way.to else " (out)") for way in stay.exits
-    )
-    return f"mean stay in {stay.compartment} {figure(stay.mean)} {time_unit}; {ways}"
 
 
 def splits_text(result: Splits) -> str:
@@ -116,22 +106,12 @@ def formula_text(result: FormulaOpinion) -> str:
     return squeezed([*lines, *closing(result.warnings)])
 
 
-def change_words(change: ModelChange) -> str:
-    """Return one change as a line: parameter gamma changed: 1.4 1/week -> 1.4 1/day."""
-    if change.how == "renamed":
-        return f"{change.before} is renamed {change.after}"
-    text = f"{change.name} {change.how}" if change.what == "flow" else f"{change.what} {change.name} {change.how}"
-    if change.before is not None or change.after is not None:
-        text += f": {change.before or '-'} -> {change.after or '-'}"
-    return text + (f" ({change.note})" if change.note else "")
-
-
 def difference_text(result: Difference) -> str:
     """Return the result of `ngm.difference` as text."""
     lines = _heading(f"{result.first} -> {result.second}")
     lines.append(f"R0 {figure(result.R0[0])} -> {figure(result.R0[1])}")
     lines.append(f"growth rate {figure(result.growth_rate[0])} -> {figure(result.growth_rate[1])}")
-    lines += ["", "What differs", *(f"  {change_words(change)}" for change in result.changes[:80])]
+    lines += ["", "What differs", *(f"  {change.words()}" for change in result.changes[:80])]
     if not result.changes:
         lines.append("  nothing")
     if result.entries:

@@ -69,6 +69,13 @@ class Stay:
     mean: float | None
     exits: tuple[Exit, ...]
 
+    def words(self, time_unit: str) -> str:
+        """Return the stay as a line: mean stay in I 5 day; 98 % Recovery (R), 2 % Death (out)."""
+        if self.mean is None:
+            return f"{self.compartment}: nothing leaves"
+        ways = ", ".join(f"{100 * way.probability:.3g} % {way.label} ({way.to or 'out'})" for way in self.exits)
+        return f"mean stay in {self.compartment} {self.mean:.6g} {time_unit}; {ways}"
+
 
 @dataclass(frozen=True, slots=True)
 class Units:
@@ -181,6 +188,15 @@ class ModelChange:
     before: str | None
     after: str | None
     note: str | None = None
+
+    def words(self) -> str:
+        """Return the change as a line: parameter gamma changed: 1.4 1/week -> 1.4 1/day."""
+        if self.how == "renamed":
+            return f"{self.before} is renamed {self.after}"
+        text = f"{self.name} {self.how}" if self.what == "flow" else f"{self.what} {self.name} {self.how}"
+        if self.before is not None or self.after is not None:
+            text += f": {self.before or '-'} -> {self.after or '-'}"
+        return text + (f" ({self.note})" if self.note else "")
 
 
 @dataclass(frozen=True, slots=True)

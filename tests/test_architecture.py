@@ -67,6 +67,7 @@ MAY_IMPORT: dict[str, set[str]] = {
         "results_control",
         "results_mixing",
         "results_sensitivity",
+        "results_opinion",
         "charts",
         "drafts",
         "wording",

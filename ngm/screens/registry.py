@@ -32,6 +32,7 @@ PAGES = (
     Page("mixing", "Mixing"),
     Page("control", "Control"),
     Page("sensitivity", "Sensitivity"),
+    Page("second_opinion", "Second opinion"),
     Page("report", "Report"),
     Page("versions", "Versions"),
 )
