@@ -256,7 +256,7 @@ def mix_along(labels: Sequence[str], curve: Curve, title: str) -> alt.LayerChart
     ]
     largest = max(row["share"] for row in rows)
     scale = alt.Scale(scheme="viridis", reverse=True, domain=[0, largest])
-    legend = alt.Legend(title="share of new infections", orient="bottom", gradientLength=180)
+    legend = alt.Legend(title="share of new infections", tickCount=3, orient="bottom", gradientLength=180)
     cells = (
         alt.Chart(alt.InlineData(values=rows))
         .mark_rect()
@@ -314,7 +314,9 @@ def map_of_two(found: MixingMap) -> alt.LayerChart | None:
             x2="x2:Q",
             y=y,
             y2="y2:Q",
-            color=alt.Color("R0:Q", scale=scale, legend=alt.Legend(title="R0", orient="bottom", gradientLength=180)),
+            color=alt.Color(
+                "R0:Q", scale=scale, legend=alt.Legend(title="R0", tickCount=3, orient="bottom", gradientLength=180)
+            ),
             stroke=alt.Stroke("R0:Q", scale=scale, legend=None),
             tooltip=[
                 alt.Tooltip("ax:Q", title=found.x.title, format=".4g"),

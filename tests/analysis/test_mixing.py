@@ -365,9 +365,9 @@ def test_a_scenario_without_R0_still_shows_its_matrix():
 
 
 def test_sixteen_groups_answer_in_about_a_second():
-    # Four times the second that is wanted: the machine may be busy.
+    # Processor time, for the machine may be busy; some 1.2 s where it is not.
     scenario = ngm.load(SCENARIOS / "sixteen-ages-marl-cough.toml")
-    start = time.perf_counter()
+    start = time.process_time()
     ngm.mixing_responses(scenario, "school")
     ngm.mixing_map(scenario, ("factor", "school"), ("factor", "elsewhere"))
-    assert time.perf_counter() - start < 8
+    assert time.process_time() - start < 5
