@@ -234,7 +234,7 @@ def uncertainty(m: Material) -> Section:
     ]
     above = g.get("probability_above_one")
     rows.append((("share of draws with R0 above 1",), (number(above, "sensitivity.global.probability_above_one"),)))
-    blocks.append(Table(("R0 over the draws.",), ("", "value"), tuple(rows), frozenset({1})))
+    blocks.append(Table(("R0 over the draws.",), ("of R0", "value"), tuple(rows), frozenset({1})))
     kinds = [k for k in ("prcc", "sobol_first", "sobol_total") if any(v is not None for v in (g.get(k) or {}).values())]
     names = list(g[kinds[0]]) if kinds else []
     if names:

@@ -285,7 +285,7 @@ def _squares(scenario: Scenario, matrix: Matrix) -> list[Block]:
                 ((label,), *((_number(v, f"{key}.values[{b}][{i}][{j}]"),) for j, v in enumerate(row)), sums[i])
                 for i, (label, row) in enumerate(zip(labels, block, strict=True))
             )
-            heads = ("", *labels, "row sum")
+            heads = (matrix.by, *labels, "row sum")
         else:
             rows = tuple(((label,), sums[i]) for i, label in enumerate(labels[:40]))
             heads = (matrix.by, "row sum")

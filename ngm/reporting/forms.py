@@ -13,6 +13,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from ngm.reporting.document import Document, Figure
+from ngm.reporting.letters import declarations
 from ngm.reporting.syntax import tree
 from ngm.reporting.templates import HTML, LATEX_HEAD, TYPST
 from ngm.reporting.word import on_pages
@@ -21,9 +22,9 @@ __all__ = ["FORMS", "Files", "write"]
 
 #: Ending -> what it is.
 FORMS: Mapping[str, str] = {
-    ".html": "one HTML file",
-    ".md": "Markdown with its figures",
-    ".tex": "LaTeX with its figures",
+    ".html": "HTML",
+    ".md": "Markdown",
+    ".tex": "LaTeX",
     ".docx": "Word",
     ".pdf": "PDF",
 }
@@ -109,7 +110,7 @@ def _form(document: Document, ending: str, folder: Path, beside: str) -> bytes:
             )
         case ".tex":
             (folder / "head.tex").write_text(LATEX_HEAD, encoding="utf-8")
-            return _pandoc(
+            latex = _pandoc(
                 tree(document, "latex", path),
                 folder,
                 "--to=latex",
@@ -117,7 +118,8 @@ def _form(document: Document, ending: str, folder: Path, beside: str) -> bytes:
                 "--variable=geometry:margin=22mm",
                 "--variable=papersize:a4",
                 "--variable=colorlinks:true",
-            )
+            ).decode("utf-8")
+            return latex.replace(r"\begin{document}", declarations(latex) + r"\begin{document}", 1).encode("utf-8")
         case ".docx":
             return on_pages(_pandoc(tree(document, "docx", path), folder, "--to=docx", "--output=-"))
         case ".pdf":

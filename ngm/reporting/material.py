@@ -137,7 +137,7 @@ def numbers_table(name: str, values: Matrix, labels: Sequence[str], key: str, wh
             for i, (label, row) in enumerate(zip(labels, values, strict=True))
         )
         caption = (f"{name} in numbers{what}; JSON name ", Code(f"{key}[row][column]"), ", counted from 0.")
-        return [Table(caption, ("", *labels), rows, frozenset(range(1, len(labels) + 1)))]
+        return [Table(caption, ("type", *labels), rows, frozenset(range(1, len(labels) + 1)))]
     cells = [(i, j, value) for i, row in enumerate(values) for j, value in enumerate(row) if value != 0]
     shown = cells[:MOST_ROWS]
     rows = tuple(((name_of(labels[i]),), (name_of(labels[j]),), (number(v, f"{key}[{i}][{j}]"),)) for i, j, v in shown)

@@ -61,7 +61,7 @@ $body$
 </html>
 """
 
-LATEX_HEAD = r"""\usepackage{newunicodechar}
+LATEX_HEAD = r"""\usepackage{iftex}
 \setcounter{MaxMatrixCols}{40}
 \setlength{\emergencystretch}{4em}
 \allowdisplaybreaks

@@ -56,12 +56,16 @@ def choice() -> tuple[str, ...]:
 
 def downloads(made: Report, name: str) -> None:
     """Place a button for each form; the form is written when its button is pressed."""
-    places = st.columns(len(FORMS) + 1)
+    places = [place for _ in range(2) for place in st.columns(3)]
     for place, (ending, label) in zip(places, FORMS.items(), strict=False):
         packed = ending in {".md", ".tex"}
-        file = f"{name}.zip" if packed else f"{name}{ending}"
         place.download_button(
-            label, content(made, ending, name), file, on_click="ignore", key=f"report.download{ending}", width="stretch"
+            f"{label}, with figures (zip)" if packed else label,
+            content(made, ending, name),
+            f"{name}.zip" if packed else f"{name}{ending}",
+            on_click="ignore",
+            key=f"report.download{ending}",
+            width="stretch",
         )
     places[-1].download_button(
         "All numbers (JSON)",
