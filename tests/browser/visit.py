@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from playwright.sync_api import Locator, Page, expect
+from playwright.sync_api import ConsoleMessage, Locator, Page, expect
 from playwright.sync_api import TimeoutError as NotThere
 
 #: Milliseconds until something must be on the screen; machines that build are slow at times.
@@ -20,8 +20,14 @@ class Visit:
         self.complaints: list[str] = []
         page.set_default_timeout(PATIENCE)
         page.on("pageerror", lambda error: self.complaints.append(f"page error: {error}"))
-        page.on("console", lambda m: self.complaints.append(f"console: {m.text}") if m.type == "error" else None)
+        page.on("console", self._hear)
         page.on("request", lambda request: self._look(request.url))
+
+    def _hear(self, message: ConsoleMessage) -> None:
+        # A page opened by its own address first asks below that address where the server is: Streamlit's way to find out.
+        asked = str(message.location.get("url", "")).startswith(self.url) and "/_stcore/" in message.location["url"]
+        if message.type == "error" and not (asked and "404" in message.text):
+            self.complaints.append(f"console: {message.text} {message.location.get('url', '')}")
 
     def _look(self, url: str) -> None:
         if not url.startswith((self.url, self.url.replace("http", "ws", 1), "data:", "blob:")):
@@ -120,8 +126,7 @@ class Visit:
     def add_row(self, title: str, row: int, texts: list[str]) -> None:
         """Add a row to a table, which has `row` rows so far, and type into it; "" leaves a cell empty."""
         grid = self.grid(title)
-        before = grid.locator('[id^="glide-cell-1-"]').count()
-        assert before == row
+        expect(grid.locator('[id^="glide-cell-1-"]')).to_have_count(row, timeout=PATIENCE)
         grid.locator("canvas").first.focus()
         if row:
             self.select(title, row - 1, 1)
