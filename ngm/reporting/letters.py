@@ -16,6 +16,7 @@ _SIGNS = {
     "→": r"\rightarrow",
     "←": r"\leftarrow",
     "−": "-",
+    "↪": r"\hookrightarrow",
     "≤": r"\leq",
     "≥": r"\geq",
     "≠": r"\neq",

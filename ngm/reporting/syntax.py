@@ -37,6 +37,8 @@ Node = dict[str, Any]
 _NO_ATTRIBUTES: list[Any] = ["", [], []]
 #: Columns with less text than this stay as wide as they are.
 NARROW = 76
+#: Letters of a listing on a line of TeX.
+LISTED = 86
 
 
 def tree(document: Document, form: str, figure: Callable[[Figure], str]) -> str:
@@ -69,6 +71,15 @@ def _section(section: Section, form: str, figure: Callable[[Figure], str]) -> li
     return out
 
 
+def _folded(text: str) -> str:
+    """Return text with long lines folded: TeX does not break what stands verbatim. A hooked arrow begins what is folded."""
+    out = []
+    for line in text.split("\n"):
+        out.append(line[:LISTED])
+        out += [f"↪ {line[k : k + LISTED - 2]}" for k in range(LISTED, len(line), LISTED - 2)]
+    return "\n".join(out)
+
+
 def _new_page(form: str) -> list[Node]:
     raw = {
         "typst": ("typst", "#pagebreak(weak: true)"),
@@ -90,7 +101,8 @@ def _block(block: Block, form: str, figure: Callable[[Figure], str]) -> list[Nod
         case Bullets(items=items):
             return [{"t": "BulletList", "c": [[{"t": "Plain", "c": _inlines(item, form)}] for item in items]}]
         case Listing(text=text):
-            return [{"t": "CodeBlock", "c": [_NO_ATTRIBUTES, _clean(text, keep="\n")]}]
+            shown = _clean(text, keep="\n")
+            return [{"t": "CodeBlock", "c": [_NO_ATTRIBUTES, _folded(shown) if form == "latex" else shown]}]
         case Table():
             return [_table(block, form)]
         case Figure():

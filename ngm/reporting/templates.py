@@ -63,6 +63,7 @@ $body$
 
 LATEX_HEAD = r"""\usepackage{iftex}
 \setcounter{MaxMatrixCols}{40}
+\renewcommand{\arraystretch}{1.3}
 \setlength{\emergencystretch}{4em}
 \allowdisplaybreaks
 """

@@ -171,6 +171,9 @@ def test_latex_compiles(made, tmp_path):
         timeout=120,
     )
     assert done.returncode == 0, done.stdout[-2000:]
+    # Nothing stands out into the margin (22 mm) by more than 10 mm.
+    wide = re.findall(rb"Overfull \\hbox \(([\d.]+)pt", done.stdout)
+    assert all(float(size) < 30 for size in wide), wide
 
 
 def test_word(made):
