@@ -42,8 +42,11 @@ def plane(found: Plane) -> alt.LayerChart | None:
         scale=alt.Scale(scheme="purpleorange", domain=[0, largest], domainMid=1, clamp=True),
         legend=alt.Legend(title="R0", orient="bottom", gradientLength=180),
     )
+    import pandas
+
+    # As a table: each row of a plain list is looked at one by one, which takes half a second for a plane.
     cells = (
-        alt.Chart(alt.InlineData(values=rows))
+        alt.Chart(pandas.DataFrame(rows))
         .mark_rect(clip=True)
         .encode(
             x=x,

@@ -123,6 +123,7 @@ def _quantities(shown: Shown, movable: Sequence[str]) -> dict[str, tuple[str, st
     return offered
 
 
+@st.fragment
 def plane(shown: Shown, write: Write) -> None:
     """Let two quantities be chosen and show R0 over them, with the line at 1."""
     st.subheader("Two quantities at once")
@@ -210,6 +211,7 @@ def _show_plane(made: Plane, write: Write) -> None:
         save("Save the plane as CSV", made.to_frame(), "R0-plane.csv", "plane.csv")
 
 
+@st.fragment
 def calibration(shown: Shown, write: Write) -> None:
     """Find the value of a parameter for a wanted R0 or growth rate, and take it over on demand."""
     st.subheader("The value for a wanted R0")

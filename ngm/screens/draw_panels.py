@@ -26,6 +26,7 @@ DESIGNS = {"Latin hypercube": "latin_hypercube", "Scrambled Sobol points": "sobo
 QUANTILES = ("0.025", "0.25", "0.5", "0.75", "0.975")
 
 
+@st.fragment
 def draws(shown: Shown, write: Write) -> None:
     """Show what the spread of the parameters does to R0."""
     st.subheader("How far R0 is known")
