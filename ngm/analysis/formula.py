@@ -13,7 +13,6 @@ import numpy as np
 from ngm.analysis.points import CONTEXT, Place, Places, decimal_value, exact_value
 from ngm.analysis.solve import solve
 from ngm.analysis.splits import splits, with_kinds
-from ngm.engine.control import type_reproduction_number
 from ngm.errors import ExpressionError, Problem, ScenarioError
 from ngm.expression.from_latex import from_latex, is_latex, right_side
 from ngm.expression.names import suggest
@@ -66,7 +65,7 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
     places = Places(scenario, solution, seed)
     found: list[tuple[Place, Decimal | None]] = []
     start = places.at(places.typed())
-    wanted = POINTS if places.closed is not None else POINTS // 2
+    wanted = POINTS if places.quick else POINTS // 2
     for place in (start, *(places.at(places.draw()) for _ in range(wanted))):
         if place is not None:
             found.append((place, decimal_value(tree, place.decimals)))
@@ -196,7 +195,7 @@ class _Comparison:
                 mask[list(members)] = True
 
                 def value(place: Place, mask: Any = mask) -> Decimal | None:
-                    T = None if place.K is None else type_reproduction_number(place.K, mask).T
+                    T = None if place.K is None else _type_number_of(place.K, mask)
                     return None if T is None else Decimal(T)
 
                 if self._some_agree(value, SAME_NUMBER):
@@ -256,13 +255,13 @@ class _Comparison:
             return None
         above = [place for place, _ in self.found if place.R0 > 1]
         below = [place for place, _ in self.found if place.R0 < 1]
-        for _ in range(300 if self.places.closed is not None else 12):
+        for _ in range(300 if self.places.quick else 12):
             if above and below:
                 break
             place = self.places.at(self.places.draw())
             if place is not None:
                 (above if place.R0 > 1 else below).append(place)
-        pairs = list(zip(above, below, strict=False))[: 3 if self.places.closed is not None else 1]
+        pairs = list(zip(above, below, strict=False))[: 3 if self.places.quick else 1]
         if not pairs:
             return None
         for high, low in pairs:
@@ -278,7 +277,7 @@ class _Comparison:
         """Return the formula's value where R0 = 1 on the straight line between two points."""
         a, b = Fraction(0), Fraction(1)
         place: Place | None = None
-        for _ in range(60 if self.places.closed is not None else 34):
+        for _ in range(60 if self.places.quick else 34):
             middle = (a + b) / 2
             typed = {name: high.typed[name] + (low.typed[name] - high.typed[name]) * middle for name in high.typed}
             place = self.places.at(typed)
@@ -363,3 +362,12 @@ def _power(value: Decimal, power: int) -> Decimal:
 def _root(value: Decimal) -> Decimal:
     with localcontext(CONTEXT):
         return value.sqrt()
+
+
+def _type_number_of(K: Any, mask: Any) -> float | None:
+    """Return rho(P K (I - (I - P) K)^-1) in plain doubles: many sets at many points; None where the rest sustains itself."""
+    rest = np.where(mask[:, None], 0.0, K)
+    if np.max(np.abs(np.linalg.eigvals(rest))) >= 1:
+        return None
+    through = np.where(mask[:, None], K, 0.0) @ np.linalg.inv(np.eye(len(K)) - rest)
+    return float(np.max(np.abs(np.linalg.eigvals(through))))

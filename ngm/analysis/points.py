@@ -112,6 +112,8 @@ class Places:
         self.rows = None
         if solution.symbolic.K is not None:
             self.rows = [[parse(text, items=True) for text in row] for row in solution.symbolic.K]
+        #: whether a point costs no computation of the model
+        self.quick = self.rows is not None
         self.random = random.Random(self.seed)
         #: item (``sigma[65+]``) -> its parameter and place; what follows others is computed from these
         self.numbers_of: dict[str, tuple[Parameter, int]] = {}
@@ -177,26 +179,27 @@ class Places:
     def _with_R0(
         self, typed: dict[str, Fraction], exact: dict[str, Fraction], decimals: dict[str, Decimal]
     ) -> Place | None:
-        K = None
-        if self.closed is not None:
-            R0 = decimal_value(self.closed, decimals)
-            if self.rows is not None:
-                entries = [[decimal_value(node, decimals) for node in row] for row in self.rows]
-                if all(value is not None for row in entries for value in row):
-                    K = np.array([[float(value or 0) for value in row] for row in entries])
-            if K is None or (K < 0).any():
-                numbers = self.numbers(typed)
-                K = None if numbers is None else numbers[1]
-                if numbers is None:
-                    return None
-        else:
+        K = self._symbolic_K(decimals)
+        if K is None:
             numbers = self.numbers(typed)
             if numbers is None:
                 return None
-            R0, K = Decimal(numbers[0]), numbers[1]
+            root, K = numbers
+        else:
+            root = float(np.max(np.abs(np.linalg.eigvals(K)))) if K.size and self.closed is None else 0.0
+        R0 = Decimal(root) if self.closed is None else decimal_value(self.closed, decimals)
         if R0 is None or R0 <= 0:
             return None
         return Place(typed, exact, decimals, R0, K, self.scenario)
+
+    def _symbolic_K(self, decimals: Mapping[str, Decimal]) -> np.ndarray[Any, np.dtype[Any]] | None:
+        """Return K from its formulas; None where there are none, or where an entry is negative or none: no M-matrix."""
+        if self.rows is None:
+            return None
+        entries = [[decimal_value(node, decimals) for node in row] for row in self.rows]
+        if any(value is None or value < 0 for row in entries for value in row):
+            return None
+        return np.array([[float(value or 0) for value in row] for row in entries])
 
     def numbers(self, typed: Mapping[str, Fraction], scenario: Scenario | None = None) -> tuple[float, Any] | None:
         """Return R0 and K by the arrays' own route; None where there is none."""
