@@ -87,7 +87,9 @@ def _parser() -> argparse.ArgumentParser:
             sub.add_argument("--seed", metavar="K", type=int, default=0, help="of the draws")
         if verb == "calibrate":
             sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
-            sub.add_argument("--R0", metavar="X", required=True, type=float, help="the wanted R0")
+            wanted = sub.add_mutually_exclusive_group(required=True)
+            wanted.add_argument("--R0", metavar="X", type=float, help="the wanted R0")
+            wanted.add_argument("--growth-rate", metavar="X", type=float, help="the wanted growth rate, per time unit")
         if verb in ("strength", "coverage", "allocate"):
             _needs_options(sub, verb)
         if verb == "formula":
@@ -201,7 +203,7 @@ def _run(options: argparse.Namespace) -> str:
                 draws = ngm.read_draws(scenario, options.draw_file)
             result = ngm.sensitivity(scenario, draws=draws, seed=options.seed)
         case "calibrate":
-            result = ngm.calibrate(scenario, options.parameter, options.R0)
+            result = ngm.calibrate(scenario, options.parameter, options.R0, growth_rate=options.growth_rate)
         case _:
             result = ngm.solve(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)

@@ -81,7 +81,7 @@ def tornado(swings: Sequence[Swing], R0: float, *, over: str = "range", dark: bo
         .encode(x=x, text="shown:N")
         for left in (True, False)
     ]
-    layers = [bars, *words, *_rules([(R0, f"now {short(R0)}", False), (1.0, "1", True)], "R0", x, dark)]
+    layers = [bars, *_rules([(R0, f"now {short(R0)}", False), (1.0, "1", True)], "R0", x, dark), *words]
     spoken = "; ".join(
         f"{swing.parameter} from {short(swing.low)} to {short(swing.high)} {swing.unit}".strip()
         + f": R0 from {short(swing.R0_low)} to {short(swing.R0_high)}"
@@ -118,12 +118,14 @@ def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | Non
         return None
     colours = ink(dark)
     rows: list[dict[str, Any]] = [
-        {"low": low, "high": high, "count": count, "side": "above 1" if (low + high) / 2 > 1 else "up to 1"}
+        {"low": low, "high": high, "count": count, "zero": 0, "side": "above 1" if (low + high) / 2 > 1 else "up to 1"}
         for low, high, count in found.histogram
     ]
     low, middle, high = (figures.quantiles[name] for name in ("0.025", "0.5", "0.975"))
     left, right = min(rows[0]["low"], 1.0), max(rows[-1]["high"], 1.0)
     room = 0.03 * (right - left) or 0.1
+    # Above the bars there is room for the spread.
+    most = 1.15 * max(row["count"] for row in rows)
     x = alt.X(
         "low:Q",
         title="R0 (no unit)",
@@ -132,11 +134,14 @@ def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | Non
     )
     bars = (
         alt.Chart(alt.InlineData(values=rows))
-        .mark_bar(stroke=colours.fill, strokeWidth=0.4)
+        .mark_rect(stroke=colours.fill, strokeWidth=0.4)
         .encode(
             x=x,
             x2="high:Q",
-            y=alt.Y("count:Q", title="draws", axis=alt.Axis(tickCount=4)),
+            y=alt.Y(
+                "count:Q", title="draws", axis=alt.Axis(tickCount=4), scale=alt.Scale(domain=[0, most], nice=False)
+            ),
+            y2="zero:Q",
             color=alt.Color(
                 "side:N",
                 scale=alt.Scale(domain=["up to 1", "above 1"], range=[colours.first, colours.strong]),

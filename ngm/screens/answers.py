@@ -246,9 +246,7 @@ def calibration(shown: Shown, write: Write) -> None:
         + ("" if by_R0 else f" and {'no R0' if found.R0 is None else f'R0 = {plain(short(found.R0))}'}.")
     )
     parts.warnings_box(found.warnings)
-    by_hand = [] if not by_R0 else ["--R0", f"{wanted!r}"]
-    if by_R0:
-        asking.command("calibrate", "--parameter", parameter, *by_hand)
+    asking.command("calibrate", "--parameter", parameter, "--R0" if by_R0 else "--growth-rate", f"{wanted!r}")
     if shown.stale:
         return
     text = parts.applied(shown.text, [forms.Edit("set", ("parameters", parameter, "value"), found.value)])
