@@ -82,7 +82,7 @@ def test_every_dependency_has_a_reason():
     pinned = [line for line in lines if line and not line.startswith("#")]
     for line in pinned:
         name, _, version = line.partition("==")
-        assert re.fullmatch(r"[\d.]+", version), f"{line}: not an exact version"
+        assert re.fullmatch(r"[\d.]+(\.post\d+)?", version), f"{line}: not an exact version"
         assert f"`{name}`" in README, f"{name}: no reason in the README"
 
 
