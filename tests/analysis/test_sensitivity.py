@@ -40,7 +40,8 @@ def test_indices_of_the_seir_model() -> None:
     assert found == pytest.approx(expected, rel=1e-9, abs=1e-30)
 
 
-# Published: Chitnis, Hyman & Cushing (2008) Bull. Math. Biol. 70:1272-1296, model and baselines from memory; indices re-derived.
+# Published: Chitnis, Hyman & Cushing (2008) Bull. Math. Biol. 70:1272-1296; model and baselines from memory, indices
+# re-derived.
 INDICES = {
     "high": {"s_v": 0.8039758350, "b_hv": 0.5, "psi_v": -0.3867273527, "b_vh": 0.3369120881, "mu2v": -0.3039758350,
              "gam": -0.3019615111, "nu_v": 0.2941176471, "s_h": 0.1960241650},
@@ -94,7 +95,7 @@ def test_a_share_moves_what_follows_it() -> None:
 
 @pytest.mark.parametrize("seed", range(7000, 7040))
 def test_rates_weigh_in_with_their_power_of_time(seed: int) -> None:
-    """Common practice, no source: every parameter of these models is a rate: indices sum to 0 for R0, slopes times rates to r."""
+    """Common practice, no source: all parameters here are rates: indices of R0 sum to 0, slopes of r times rates to r."""
     scenario = ngm.loads(draw(seed).scenario_text)
     found = ngm.sensitivity(scenario)
     if found.R0 is None or found.R0 == 0 or found.local[0].derivative is None:

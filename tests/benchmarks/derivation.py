@@ -21,10 +21,17 @@ LIMIT = 20.0
 def quarantine() -> str:
     """Return a model of four infected states in which quarantine and isolation return people."""
     flows = [
-        ("", "S", "births", "x"), ("S", "E", "beta*S*(I + eq*Q + ej*J)/N", "t"), ("E", "I", "k1*E", "x"),
-        ("E", "Q", "g1*E", "x"), ("Q", "J", "k2*Q", "x"), ("I", "J", "g2*I", "x"), ("J", "I", "back*J", "x"), ("I", "R", "s1*I", "x"),
-        ("J", "R", "s2*J", "x"), *((c, "", f"mu*{c}", "x") for c in "SEQIJR"),
-    ]  # fmt: skip
+        ("", "S", "births", "x"),
+        ("S", "E", "beta*S*(I + eq*Q + ej*J)/N", "t"),
+        ("E", "I", "k1*E", "x"),
+        ("E", "Q", "g1*E", "x"),
+        ("Q", "J", "k2*Q", "x"),
+        ("I", "J", "g2*I", "x"),
+        ("J", "I", "back*J", "x"),
+        ("I", "R", "s1*I", "x"),
+        ("J", "R", "s2*J", "x"),
+        *((c, "", f"mu*{c}", "x") for c in "SEQIJR"),
+    ]
     names = ["births", "beta", "eq", "ej", "k1", "g1", "k2", "g2", "back", "s1", "s2", "mu"]
     compartments = [("S", False), ("E", True), ("Q", True), ("I", True), ("J", True), ("R", False)]
     values = {name: 0.1 + 0.05 * k for k, name in enumerate(names)}
