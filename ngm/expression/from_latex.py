@@ -194,6 +194,8 @@ class _Reader:
     def name(self) -> str:
         """Read one name: the longest run of letters that the scenario knows, with its subscript."""
         token = self.take()
+        if not token:
+            raise _wrong("ends where a name, a number or a group in braces is due.")
         if token in _STYLES:
             base = self.word()
         elif token in _LETTERS or token in _VARIANTS:
