@@ -55,9 +55,12 @@ class Job:
         return self._stop.asked
 
     def wait(self, seconds: float) -> bool:
-        """Wait for the end, at most so long; return whether it has ended. Each call shows that somebody is waiting."""
-        self._asked = time.monotonic()
-        return self._done.wait(seconds)
+        """Wait for the end, at most so long; return whether it has ended. Meanwhile somebody is waiting."""
+        end = time.monotonic() + seconds
+        while True:
+            now = self._asked = time.monotonic()
+            if self._done.wait(min(max(end - now, 0), PATIENCE / 4)) or time.monotonic() >= end:
+                return self._done.is_set()
 
     def stop(self) -> None:
         """Stop it."""
