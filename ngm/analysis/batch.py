@@ -7,7 +7,7 @@ that stay in the processor's memory. Each number depends on its own draw only, s
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from concurrent.futures import Executor
 from dataclasses import dataclass, replace
 from fractions import Fraction
@@ -37,6 +37,14 @@ ROUNDING = 1e-12
 TASK = 50_000
 #: Doubles of K, of checks and of the draws' results that are held at a time in one piece.
 MOST_HELD = 1 << 20
+#: What a screen's worst number must be: see `Plan.screens`. No number fails each.
+_SCREENS: dict[str, Callable[[float], bool]] = {
+    "above": lambda x: x > 0,
+    "not below": lambda x: x >= 0,
+    "finite": lambda x: x < np.inf,
+    "largest ratio": lambda x: x <= (1 + AT_REST) / (1 - AT_REST),
+    "smallest ratio": lambda x: x >= (1 - AT_REST) / (1 + AT_REST),
+}
 NO_VALUE = "a rate or an entry of K has no value: it divides by 0 or leaves the range of a function"
 
 
@@ -167,6 +175,8 @@ def _all(
     reasons: list[str] = []
     codes = np.zeros(size, dtype=np.int32)
     for (start, _), piece in zip(pieces, done, strict=True):
+        if not piece.reasons:
+            continue
         reasons += [why for why in piece.reasons if why not in reasons]
         table = np.array([0, *(reasons.index(why) + 1 for why in piece.reasons)], dtype=np.int32)
         codes[start : start + len(piece.codes)] = table[piece.codes]
@@ -199,7 +209,7 @@ class _Work:
         self.plan, self.start, self.arrays, self.what, self.passing = plan, start, arrays, what, passing
         self.size = len(arrays[0])
         shape = (self.size,) if what == "R0" else (plan.size**2, self.size)
-        self.values = np.full(shape, np.nan)
+        self.values = np.empty(shape)
         self.codes = np.zeros(self.size, dtype=np.int32)
         self.reasons: list[str] = []
 
@@ -232,12 +242,16 @@ class _Work:
             state, found = follow_rest(plan.curve.run, inputs, np.array(plan.start))
             redo |= ~found
             inputs += list(state)
-        out = plan.main.run(inputs)
-        if len(out) == 0:
-            out = np.empty((0, n))
+        numbers = plan.main.run(inputs)
+        if not redo.any() and self._passes(numbers):
+            self._reproduce(part, numbers, None)
+            return None
+        assert plan.details is not None
+        out = plan.details.run(inputs)
         codes = self.codes[part]
         fine = ~redo
-        first, problem = n, None
+        first: int = n
+        problem: NgmError | None = None
         for check in plan.checks:
             value = out[check.output]
             if check.kind in ("value", "rest"):
@@ -266,37 +280,49 @@ class _Work:
                         codes[failed & missing] = self._code(NO_VALUE)
         if problem is not None:
             return problem
-        self._reproduce(part, out, codes, redo)
+        self._reproduce(part, numbers, (codes == 0) & ~redo)
         if redo.any():
             self._alone(part, redo)
         return None
 
-    def _reproduce(self, part: slice, out: FloatArray, codes: npt.NDArray[np.int32], redo: Any) -> None:
+    def _passes(self, numbers: FloatArray) -> bool:
+        """Return whether every check holds at every draw of a part."""
+        for row, kind in self.plan.screens:
+            number = numbers[row]
+            worst = number.max() if kind in ("finite", "largest ratio") else number.min()
+            if not _SCREENS[kind](worst):
+                return False
+        return True
+
+    def _reproduce(self, part: slice, numbers: FloatArray, good: npt.NDArray[np.bool_] | None) -> None:
+        """Put in R0 (or K) of a part; `good`: at which draws there is one, None for all."""
         plan = self.plan
         n = part.stop - part.start
-        K = np.zeros((plan.size, plan.size, n))
-        row = 0
-        for i, j, constant in plan.entries:
-            if constant is None:
-                K[i, j] = out[row]
-                row += 1
-            else:
-                K[i, j] = constant
-        good = (codes == 0) & ~redo
+        if [e[2] for e in plan.entries] == [None] * plan.size**2:
+            K = numbers[: plan.size**2].reshape(plan.size, plan.size, n)
+        else:
+            K = np.zeros((plan.size, plan.size, n))
+            row = 0
+            for i, j, constant in plan.entries:
+                if constant is None:
+                    K[i, j] = numbers[row]
+                    row += 1
+                else:
+                    K[i, j] = constant
         if self.what == "K":
-            K[:, :, ~good] = np.nan
+            if good is not None:
+                K[:, :, ~good] = np.nan
             self.values[:, part] = K.reshape(-1, n)
             return
-        if good.all():
+        if good is None:
             roots = perron_roots(K, plan.pattern)
         else:
             roots = np.full(n, np.nan)
-            if good.any():
-                roots[good] = perron_roots(K[:, :, good], plan.pattern)
-        lost = good & np.isnan(roots)
-        if lost.any():
-            codes[lost] = self._code(NO_VALUE)
+            roots[good] = perron_roots(K[:, :, good], plan.pattern)
         self.values[part] = roots
+        lost = np.isnan(roots) if good is None else good & np.isnan(roots)
+        if lost.any():
+            self.codes[part][lost] = self._code(NO_VALUE)
 
     # --- refusals -----------------------------------------------------------------------------------------------------
 
@@ -334,6 +360,7 @@ class _Work:
         """Compute these draws one by one, as `ngm.solve` would."""
         for k in np.flatnonzero(chosen):
             place = part.start + int(k)
+            self.values[..., place] = np.nan
             try:
                 found = decided_numbers(at_draw(self.plan, [float(a[place]) for a in self.arrays]), self._intervention)
             except NgmError as error:

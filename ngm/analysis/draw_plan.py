@@ -65,15 +65,20 @@ class Plan:
     at, size : int
         Types at infection (rows of K).
     entries : tuple of (int, int, float or None)
-        (row, column, value) of the entries of K that are not 0 by structure; those without a constant value are the
-        first outputs of `main`, in this order.
+        (row, column, value) of the entries of K that are not 0 by structure, row by row; those without a constant value
+        are the first outputs of `main`, in this order.
     main : Program or None
         None: draws are done one by one.
+    screens : tuple of (int, str)
+        Outputs of `main` that tell whether any check fails anywhere: the smallest of what must be "above" 0 or "not
+        below" it, the largest of what must be "finite", the largest and the smallest of the ratios that must be 1.
+    details : Program or None
+        What the checks look at.
     checks : tuple of Check
-        On outputs of `main`.
+        On outputs of `details`.
     curve : Program or None
         Where the infection-free state is no affine system: net flow (n) and its slope (n, n) from inputs and state (n).
-        `main` then takes the state after the inputs.
+        `main` and `details` then take the state after the inputs.
     start : tuple of float
         The state at the scenario's own values.
     """
@@ -85,6 +90,8 @@ class Plan:
     size: int
     entries: tuple[tuple[int, int, float | None], ...] = ()
     main: Program | None = None
+    screens: tuple[tuple[int, str], ...] = ()
+    details: Program | None = None
     checks: tuple[Check, ...] = ()
     curve: Program | None = None
     start: tuple[float, ...] = ()
@@ -145,8 +152,8 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
     found = stays(net, [{j: one} for j in at], trace)
     entries: list[tuple[int, int, float | None]] = []
     numbers: list[Traced] = []
-    for b, column in enumerate(found.columns):
-        for a, row in enumerate(at):
+    for a, row in enumerate(at):
+        for b, column in enumerate(found.columns):
             total = trace.constant(0.0)
             for s, stay in column.items():
                 total = total + F[row, s] * stay
@@ -154,8 +161,13 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
                 entries.append((a, b, total.value))
                 if total.value is None:
                     numbers.append(total)
-    checks = _checks(point, F, found, numbers)
+    checks, looked_at = _checks(point, F, found)
+    screens = []
+    for kind, number in _screens(trace, checks, looked_at).items():
+        screens.append((len(numbers), kind))
+        numbers.append(number)
     main = compiled(trace, numbers)
+    details = compiled(trace, looked_at)
     curve, start = None, np.empty(0)
     if point.unknown:
         assert point.slope is not None
@@ -167,6 +179,8 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
         out,
         entries=tuple(entries),
         main=main,
+        screens=tuple(screens),
+        details=details,
         checks=tuple(checks),
         curve=curve,
         start=tuple(start.tolist()),
@@ -197,15 +211,45 @@ def _as_drawn(number: Traced) -> bool:
     return name == "input"
 
 
-def _checks(point: TracedPoint, F: Array, found: Stays, numbers: list[Traced]) -> list[Check]:
-    """Return the checks; the numbers that they look at are appended to the outputs."""
+def _screens(trace: Trace, checks: list[Check], numbers: list[Traced]) -> dict[str, Traced]:
+    """Return few numbers that stand for all that is checked, by what they must be; no number where one of them is none."""
+    out: dict[str, Traced] = {}
+
+    def join(kind: str, number: Traced, function: str = "min") -> None:
+        out[kind] = trace.call(function, (out[kind], number)) if kind in out else number
+
+    for check in checks:
+        number = numbers[check.output]
+        if check.kind in ("above", "redo"):
+            join("above", number)
+        elif check.kind == "rest":
+            ratio = number / numbers[check.output + 1]
+            join("largest ratio", ratio, "max")
+            join("smallest ratio", ratio)
+        else:
+            if not number.nonnegative:
+                join("not below", number)
+            if check.kind == "value":
+                join("finite", number, "max")
+    return out
+
+
+def _checks(point: TracedPoint, F: Array, found: Stays) -> tuple[list[Check], list[Traced]]:
+    """Return the checks, and the numbers that they look at."""
     template, trace = point.template, point.trace
     out: list[Check] = []
+    numbers: list[Traced] = []
     seen: set[tuple[str, int]] = set()
 
     def add(kind: str, number: Traced, why: str, second: Traced | None = None) -> None:
         if (kind, number.place) in seen and second is None:
             return
+        if (
+            number.value is not None
+            and second is None
+            and (number.value > 0 or (kind != "above" and number.value == 0))
+        ):
+            return  # it holds at every draw
         seen.add((kind, number.place))
         out.append(Check(kind, len(numbers), why))
         numbers.append(number)
@@ -244,4 +288,4 @@ def _checks(point: TracedPoint, F: Array, found: Stays, numbers: list[Traced]) -
             add("not below", rate, POSITIVE_V)
     for pivot in found.pivots:
         add("above", pivot, SINGULAR)
-    return out
+    return out, numbers

@@ -97,7 +97,8 @@ def _table(parameter: Parameter, typed: str, values: Any, copies: int) -> FloatA
         return Problem(short(typed), f"its draws have shape {raw.shape}; {shape} is needed.")
     rows = raw.reshape(1, -1) if raw.ndim == 1 else raw
     if raw.dtype.kind not in "iuf":
-        bad = _first_text(rows)
+        # As handed in: an array of numbers and one text has made texts of all.
+        bad = _first_text(np.asarray(values, dtype=object).reshape(rows.shape))
         if bad is not None:
             k, shown = bad
             return Problem(short(typed), f"draw {k + 1} is {shown}, and no number.")

@@ -120,9 +120,9 @@ class Program:
         values: list[Any] = [*inputs, *self.constants, *(row[:full] for row in work)]
         for operation, at, a, b in steps:
             if b < 0:
-                operation(values[a], values[at])
+                operation(values[a], out=values[at])
             else:
-                operation(values[a], values[b], values[at])
+                operation(values[a], values[b], out=values[at])
         for row, at in zip(out, self.outputs, strict=True):
             row[:] = values[at] if isinstance(values[at], float) else values[at][:n]
 

@@ -8,13 +8,14 @@ to be done by the Collatz-Wielandt quotients. What none of them settles goes, dr
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from ngm.engine.perron import reproduction_number
-from ngm.engine.structure import classes, cyclic_sets, period
+from ngm.engine.structure import classes, cyclic_sets
 
 __all__ = ["perron_roots"]
 
@@ -81,6 +82,8 @@ def perron_roots(K: FloatArray, pattern: BoolArray | None = None) -> FloatArray:
 
 def _roots(K: FloatArray, pattern: BoolArray | None) -> FloatArray:
     n = len(K)
+    if n == 1 and K.min() >= 0 and K.max() < np.inf:
+        return np.asarray(K[0, 0])
     flat = K.reshape(n * n, -1)
     # A sum tells in one pass: nan and infinity stay in it. Entries below 0 are looked for by the smallest.
     fine = np.isfinite(flat.sum(axis=0)) & (flat.min(axis=0) >= 0)
@@ -92,14 +95,29 @@ def _roots(K: FloatArray, pattern: BoolArray | None) -> FloatArray:
     if pattern is None:
         return _by_zeros(K, np.ones((n, n), dtype=bool))
     out = np.zeros(K.shape[2])
-    for members in classes(pattern):
+    found = _classes(pattern.tobytes(), n)
+    for members in found:
         if len(members) == 1:
-            np.maximum(out, K[members[0], members[0]], out=out)
-            continue
-        inside = np.ix_(members, members)
-        block = K if len(members) == n else K[inside]
-        np.maximum(out, _class_roots(block, pattern[inside]), out=out)
+            own = K[members[0], members[0]]
+        else:
+            inside = np.ix_(members, members)
+            own = _class_roots(K if len(members) == n else K[inside], pattern[inside])
+        if len(found) == 1:
+            return np.asarray(own)
+        np.maximum(out, own, out=out)
     return out
+
+
+@lru_cache(maxsize=256)
+def _classes(pattern: bytes, n: int) -> list[npt.NDArray[np.intp]]:
+    """Return the classes of a pattern, which comes again with every part of the draws."""
+    return classes(np.frombuffer(pattern, dtype=bool).reshape(n, n))
+
+
+@lru_cache(maxsize=256)
+def _sets(pattern: bytes, n: int) -> list[npt.NDArray[np.intp]]:
+    """Return the sets of types that one class passes through in turn: as many as its period."""
+    return cyclic_sets(np.frombuffer(pattern, dtype=bool).reshape(n, n))
 
 
 def _by_zeros(K: FloatArray, pattern: BoolArray) -> FloatArray:
@@ -134,10 +152,9 @@ def _class_roots(B: FloatArray, pattern: BoolArray) -> FloatArray:
 
 def _full_roots(B: FloatArray, pattern: BoolArray) -> FloatArray:
     """Return the roots of matrices that are positive just where the irreducible pattern is."""
-    h = period(pattern)
-    assert h is not None
-    if h > 1:
-        return _periodic(B, pattern, h)
+    sets = _sets(pattern.tobytes(), len(B))
+    if len(sets) > 1:
+        return _periodic(B, pattern, sets)
     if len(B) <= 4:
         found = _newton(B)
     else:
@@ -167,9 +184,9 @@ def _quadratic(B: FloatArray) -> FloatArray:
     return np.asarray(root)
 
 
-def _periodic(B: FloatArray, pattern: BoolArray, h: int) -> FloatArray:
+def _periodic(B: FloatArray, pattern: BoolArray, sets: list[npt.NDArray[np.intp]]) -> FloatArray:
     """Return the h-th root of the root of one block of B^h, on the smallest of the h sets passed through in turn."""
-    sets = cyclic_sets(pattern)
+    h = len(sets)
     start = min(range(h), key=lambda s: len(sets[s]))
     block: FloatArray | None = None
     there: Any = None
@@ -358,7 +375,7 @@ def _images(B: FloatArray, x: FloatArray) -> FloatArray:
     out = B[:, 0] * x[0]
     for k in range(1, len(x)):
         out += B[:, k] * x[k]
-    return out
+    return np.asarray(out)
 
 
 def _factored(B: FloatArray, shift: FloatArray) -> FloatArray:
