@@ -93,7 +93,7 @@ class Units:
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `units --json` prints."""
-        return _plain(asdict(self))
+        return _record(asdict(self))
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,7 +136,7 @@ class Splits:
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `splits --json` prints."""
-        return _plain(asdict(self))
+        return _record(asdict(self))
 
 
 @dataclass(frozen=True, slots=True)
@@ -175,7 +175,7 @@ class FormulaOpinion:
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `formula --json` prints."""
-        return _plain(asdict(self))
+        return _record(asdict(self))
 
 
 @dataclass(frozen=True, slots=True)
@@ -235,12 +235,17 @@ class Difference:
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `difference --json` prints."""
-        return _plain(asdict(self))
+        return _record(asdict(self))
+
+
+def _record(value: dict[str, Any]) -> dict[str, Any]:
+    """Return a record as JSON knows it."""
+    return {key: _plain(item) for key, item in value.items()}
 
 
 def _plain(value: Any) -> Any:
     if isinstance(value, dict):
-        return {key: _plain(item) for key, item in value.items()}
+        return _record(value)
     if isinstance(value, list | tuple):
         return [_plain(item) for item in value]
     return value
