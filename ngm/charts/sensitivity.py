@@ -15,6 +15,8 @@ __all__ = ["convergence", "histogram", "indices", "ranking", "tornado"]
 #: Bars at the most: past them a table is easier to read.
 MOST_BARS = 20
 BAR = 30
+#: Where a step of the histogram lies.
+SIDES = ("up to 1", "across 1", "above 1")
 #: Height of axis, title and legend together.
 AROUND = 100
 
@@ -111,14 +113,14 @@ def _rules(marks: Sequence[tuple[float, str, bool]], field: str, x: alt.X, dark:
 def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | None:
     """Draw how many draws have R0 in each of the steps, with the median, the middle 95 % and the line at 1.
 
-    Those above 1 and below have two shades and lie on two sides of the line. None without a draw that has an R0.
+    Steps up to 1, across it and above it have shades of their own and lie on either side of the line. None without a draw that has an R0.
     """
     figures = found.R0
     if not found.histogram or figures.quantiles is None:
         return None
     colours = ink(dark)
     rows: list[dict[str, Any]] = [
-        {"low": low, "high": high, "count": count, "zero": 0, "side": "above 1" if (low + high) / 2 > 1 else "up to 1"}
+        {"low": low, "high": high, "count": count, "zero": 0, "side": _side(low, high)}
         for low, high, count in found.histogram
     ]
     low, middle, high = (figures.quantiles[name] for name in ("0.025", "0.5", "0.975"))
@@ -144,7 +146,7 @@ def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | Non
             y2="zero:Q",
             color=alt.Color(
                 "side:N",
-                scale=alt.Scale(domain=["up to 1", "above 1"], range=[colours.first, colours.strong]),
+                scale=alt.Scale(domain=list(SIDES), range=[colours.first, colours.faint, colours.strong]),
                 legend=alt.Legend(title="R0", orient="bottom"),
             ),
             tooltip=[
@@ -170,6 +172,10 @@ def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | Non
         description=f"Distribution of R0 over {figures.draws:,} draws: median {short(middle)}, middle 95 % from {short(low)} "
         f"to {short(high)}.{chance} The bar at the top spans the middle 95 %, the diamond is the median.",
     )
+
+
+def _side(low: float, high: float) -> str:
+    return SIDES[0] if high <= 1 else SIDES[2] if low >= 1 else SIDES[1]
 
 
 def ranking(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | None:

@@ -84,6 +84,8 @@ def test_the_histogram_parts_at_one_and_holds_every_draw():
     assert "median 2, middle 95 % from 0.6 to 4" in told
     assert "Share above 1: 0.75" in told
     assert charts.histogram(replace(DRAWN, histogram=())) is None
+    across = charts.histogram(replace(DRAWN, histogram=((0.5, 1.5, 7.0),)))
+    assert [row["side"] for row in values(across) if "count" in row] == ["across 1"]
 
 
 def test_the_ranking_is_by_size_and_marks_what_misleads():
