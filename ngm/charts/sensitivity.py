@@ -113,7 +113,8 @@ def _rules(marks: Sequence[tuple[float, str, bool]], field: str, x: alt.X, dark:
 def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | None:
     """Draw how many draws have R0 in each of the steps, with the median, the middle 95 % and the line at 1.
 
-    Steps up to 1, across it and above it have shades of their own and lie on either side of the line. None without a draw that has an R0.
+    Steps up to 1, across it and above it have shades of their own and lie on either side of the line. None without a draw
+    that has an R0.
     """
     figures = found.R0
     if not found.histogram or figures.quantiles is None:
