@@ -242,9 +242,10 @@ class _Work:
             state, found = follow_rest(plan.curve.run, inputs, np.array(plan.start))
             redo |= ~found
             inputs += list(state)
-        numbers = plan.main.run(inputs)
+        direct = plan.direct if self.what == "R0" else None
+        numbers = (plan.main if direct is None else direct).run(inputs)
         if not redo.any() and self._passes(numbers):
-            self._reproduce(part, numbers, None)
+            self._reproduce(part, inputs, numbers, None)
             return None
         assert plan.details is not None
         out = plan.details.run(inputs)
@@ -271,37 +272,71 @@ class _Work:
                     redo |= (value <= 0) & (codes == 0)
             else:
                 with np.errstate(invalid="ignore"):
-                    failed = ~(value > 0) if check.kind == "above" else ~(value >= 0)
+                    tests = {"above": value > 0, "not below": value >= 0, "finite": value < np.inf}
+                    failed = ~tests[check.kind]
                 if failed.any():
                     failed &= (codes == 0) & ~redo
-                    missing = np.isnan(value)
+                    missing = ~np.isfinite(value) | (check.kind == "finite")
                     codes[failed & ~missing] = self._code(check.why)
                     if (failed & missing).any():
                         codes[failed & missing] = self._code(NO_VALUE)
         if problem is not None:
             return problem
-        self._reproduce(part, numbers, (codes == 0) & ~redo)
+        self._reproduce(part, inputs, numbers, (codes == 0) & ~redo)
         if redo.any():
             self._alone(part, redo)
         return None
 
     def _passes(self, numbers: FloatArray) -> bool:
         """Return whether every check holds at every draw of a part."""
-        for row, kind in self.plan.screens:
-            number = numbers[row]
-            worst = number.max() if kind in ("finite", "largest ratio") else number.min()
+        screens = self.plan.screens
+        for row, kind in zip(numbers[len(numbers) - len(screens) :], screens, strict=True):
+            worst = row.max() if kind in ("finite", "largest ratio") else row.min()
             if not _SCREENS[kind](worst):
                 return False
         return True
 
-    def _reproduce(self, part: slice, numbers: FloatArray, good: npt.NDArray[np.bool_] | None) -> None:
+    def _reproduce(
+        self, part: slice, inputs: list[FloatArray], numbers: FloatArray, good: npt.NDArray[np.bool_] | None
+    ) -> None:
         """Put in R0 (or K) of a part; `good`: at which draws there is one, None for all."""
         plan = self.plan
-        n = part.stop - part.start
-        if [e[2] for e in plan.entries] == [None] * plan.size**2:
-            K = numbers[: plan.size**2].reshape(plan.size, plan.size, n)
+        if self.what == "K":
+            K = self._matrices(numbers)
+            if good is not None:
+                K[:, :, ~good] = np.nan
+            self.values[:, part] = K.reshape(-1, K.shape[2])
+            return
+        if good is None:
+            roots = numbers[0] if plan.direct is not None else perron_roots(self._matrices(numbers), plan.pattern)
         else:
-            K = np.zeros((plan.size, plan.size, n))
+            roots = np.full(len(good), np.nan)
+            if plan.direct is not None:
+                roots[good] = numbers[0, good]
+            else:
+                roots[good] = perron_roots(self._matrices(numbers)[:, :, good], plan.pattern)
+        if roots.max(initial=0.0) < np.inf:  # neither infinite nor no number
+            self.values[part] = roots
+            return
+        lost = ~np.isfinite(roots) if good is None else good & ~np.isfinite(roots)
+        roots[lost] = np.nan
+        if plan.direct is not None and lost.any():
+            # A square left the range of doubles, maybe, and R0 does not.
+            assert plan.main is not None
+            few = plan.main.run([np.ascontiguousarray(array[lost]) for array in inputs])
+            roots[lost] = perron_roots(self._matrices(few), plan.pattern)
+            lost &= np.isnan(roots)
+        self.values[part] = roots
+        if lost.any():
+            self.codes[part][lost] = self._code(NO_VALUE)
+
+    def _matrices(self, numbers: FloatArray) -> FloatArray:
+        """Return K of each draw, (n, n, N), from the outputs of `Plan.main`."""
+        plan = self.plan
+        if [e[2] for e in plan.entries] == [None] * plan.size**2:
+            K = numbers[: plan.size**2].reshape(plan.size, plan.size, numbers.shape[1])
+        else:
+            K = np.zeros((plan.size, plan.size, numbers.shape[1]))
             row = 0
             for i, j, constant in plan.entries:
                 if constant is None:
@@ -309,20 +344,7 @@ class _Work:
                     row += 1
                 else:
                     K[i, j] = constant
-        if self.what == "K":
-            if good is not None:
-                K[:, :, ~good] = np.nan
-            self.values[:, part] = K.reshape(-1, n)
-            return
-        if good is None:
-            roots = perron_roots(K, plan.pattern)
-        else:
-            roots = np.full(n, np.nan)
-            roots[good] = perron_roots(K[:, :, good], plan.pattern)
-        self.values[part] = roots
-        lost = np.isnan(roots) if good is None else good & np.isnan(roots)
-        if lost.any():
-            self.codes[part][lost] = self._code(NO_VALUE)
+        return K
 
     # --- refusals -----------------------------------------------------------------------------------------------------
 

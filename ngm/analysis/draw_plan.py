@@ -17,10 +17,11 @@ from ngm.analysis.traced import Columns, CurvedBaseline, TracedPoint, TracedTemp
 from ngm.derivation.compile import Program, compiled
 from ngm.derivation.conditions import check_arrivals, check_exits
 from ngm.derivation.expand import assemble
-from ngm.derivation.network import network
+from ngm.derivation.network import network, nonzero
 from ngm.derivation.space import Array
 from ngm.derivation.stays import Stays, stays
 from ngm.derivation.tracing import Trace, Traced
+from ngm.engine.structure import classes
 from ngm.expression.tree import names
 from ngm.scenario.model import Intervention, Scenario
 
@@ -41,9 +42,9 @@ NO_STATE = "no infection-free state with non-negative numbers"
 class Check:
     """What must hold of an output of a program at a draw.
 
-    `kind`: "above" 0 or "not below" 0: else there is no R0, for the reason `why`; "redo" where not above 0: the draw is
-    done by itself; "value": finite and not negative, else the draws are refused; "rest": output and the one after it
-    agree, else the draws are refused.
+    `kind`: "above" 0, "not below" it or "finite": else there is no R0, for the reason `why`; "redo" where not above 0: the
+    draw is done by itself; "value": finite and not negative, else the draws are refused; "rest": output and the one after
+    it agree, else the draws are refused.
     """
 
     kind: str
@@ -69,9 +70,12 @@ class Plan:
         are the first outputs of `main`, in this order.
     main : Program or None
         None: draws are done one by one.
-    screens : tuple of (int, str)
-        Outputs of `main` that tell whether any check fails anywhere: the smallest of what must be "above" 0 or "not
-        below" it, the largest of what must be "finite", the largest and the smallest of the ratios that must be 1.
+    direct : Program or None
+        R0 itself and the screens, where no class of K has more than two types.
+    screens : tuple of str
+        The last outputs of `main` and of `direct`, which tell whether any check fails anywhere: the smallest of what must
+        be "above" 0 or "not below" it, the largest of what must be "finite", the largest and the smallest of the ratios
+        that must be 1.
     details : Program or None
         What the checks look at.
     checks : tuple of Check
@@ -90,7 +94,8 @@ class Plan:
     size: int
     entries: tuple[tuple[int, int, float | None], ...] = ()
     main: Program | None = None
-    screens: tuple[tuple[int, str], ...] = ()
+    direct: Program | None = None
+    screens: tuple[str, ...] = ()
     details: Program | None = None
     checks: tuple[Check, ...] = ()
     curve: Program | None = None
@@ -152,21 +157,22 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
     found = stays(net, [{j: one} for j in at], trace)
     entries: list[tuple[int, int, float | None]] = []
     numbers: list[Traced] = []
+    K: Array = np.empty((len(at), len(at)), dtype=object)
     for a, row in enumerate(at):
         for b, column in enumerate(found.columns):
             total = trace.constant(0.0)
             for s, stay in column.items():
                 total = total + F[row, s] * stay
+            K[a, b] = total
             if total.value != 0:
                 entries.append((a, b, total.value))
                 if total.value is None:
                     numbers.append(total)
-    checks, looked_at = _checks(point, F, found)
-    screens = []
-    for kind, number in _screens(trace, checks, looked_at).items():
-        screens.append((len(numbers), kind))
-        numbers.append(number)
-    main = compiled(trace, numbers)
+    checks, looked_at = _checks(point, F, found, K)
+    screens = _screens(trace, checks, looked_at)
+    main = compiled(trace, [*numbers, *screens.values()])
+    root = _root(trace, K)
+    direct = None if root is None else compiled(trace, [root, *screens.values()])
     details = compiled(trace, looked_at)
     curve, start = None, np.empty(0)
     if point.unknown:
@@ -179,6 +185,7 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
         out,
         entries=tuple(entries),
         main=main,
+        direct=direct,
         screens=tuple(screens),
         details=details,
         checks=tuple(checks),
@@ -211,6 +218,27 @@ def _as_drawn(number: Traced) -> bool:
     return name == "input"
 
 
+def _root(trace: Trace, K: Array) -> Traced | None:
+    """Return the Perron root of K as a formula, None where a class has none of the simple ones.
+
+    One type: its entry. Two types: (a + d)/2 + sqrt(((a - d)/2)^2 + b c). Several classes: the largest of theirs.
+    """
+    out = trace.constant(0.0)
+    there = nonzero(K)
+    half = trace.constant(0.5)
+    for members in classes(there):
+        if len(members) == 1:
+            found = K[members[0], members[0]]
+        elif len(members) == 2:
+            (a, b), (c, d) = K[np.ix_(members, members)]
+            gap = half * (a - d)
+            found = half * (a + d) + trace.call("sqrt", (gap * gap + b * c,))
+        else:
+            return None
+        out = found if out.value == 0 else trace.call("max", (out, found))
+    return out
+
+
 def _screens(trace: Trace, checks: list[Check], numbers: list[Traced]) -> dict[str, Traced]:
     """Return few numbers that stand for all that is checked, by what they must be; no number where one of them is none."""
     out: dict[str, Traced] = {}
@@ -227,14 +255,14 @@ def _screens(trace: Trace, checks: list[Check], numbers: list[Traced]) -> dict[s
             join("largest ratio", ratio, "max")
             join("smallest ratio", ratio)
         else:
-            if not number.nonnegative:
+            if not (number.nonnegative or check.kind == "finite"):
                 join("not below", number)
-            if check.kind == "value":
+            if check.kind in ("value", "finite"):
                 join("finite", number, "max")
     return out
 
 
-def _checks(point: TracedPoint, F: Array, found: Stays) -> tuple[list[Check], list[Traced]]:
+def _checks(point: TracedPoint, F: Array, found: Stays, K: Array) -> tuple[list[Check], list[Traced]]:
     """Return the checks, and the numbers that they look at."""
     template, trace = point.template, point.trace
     out: list[Check] = []
@@ -288,4 +316,9 @@ def _checks(point: TracedPoint, F: Array, found: Stays) -> tuple[list[Check], li
             add("not below", rate, POSITIVE_V)
     for pivot in found.pivots:
         add("above", pivot, SINGULAR)
+    inside = np.zeros(K.shape, dtype=bool)
+    for members in classes(nonzero(K)):
+        inside[np.ix_(members, members)] = True
+    for entry in K[~inside].tolist():  # the others show in the root, where they have no value
+        add("finite", entry, "")
     return out, numbers

@@ -9,7 +9,7 @@ import numpy
 import scipy
 import sympy
 
-from tests.benchmarks import derivation, groups
+from tests.benchmarks import derivation, draws, groups
 
 
 def main() -> None:
@@ -17,7 +17,7 @@ def main() -> None:
     versions = f"numpy {numpy.__version__}, scipy {scipy.__version__}, sympy {sympy.__version__}"
     print(f"{date.today()}, Python {platform.python_version()}, {platform.machine()}, {versions}\n")
     print("| what | measured | to keep |\n| --- | --- | --- |")
-    for module in (derivation, groups):
+    for module in (derivation, groups, draws):
         for what, figure, bound in module.rows():
             print(f"| {what} | {figure} | {bound} |", flush=True)
 

@@ -113,9 +113,9 @@ def rows() -> list[Row]:
 
 
 def closed(path: Path, what: str) -> list[Row]:
-    """Compare a model with a closed form with the loop and with the stack, F and V given to them for nothing."""
+    """Compare a model with a closed form with the loop and with the stack, to which F and V are given for nothing."""
     scenario = ngm.load(path)
-    size, few = 10**6, 20_000
+    size, few = 10**6, 200_000
     draws = draws_of(scenario, size)
     ours = seconds(lambda: ngm.reproduction_numbers(scenario, draws)) / size
     solution = ngm.solve(scenario, limit=0)
@@ -129,7 +129,7 @@ def closed(path: Path, what: str) -> list[Row]:
     def stack() -> None:
         np.abs(np.linalg.eigvals(F @ np.linalg.inv(V))).max(axis=1)
 
-    name = f"{what} with draws of all {len(draws)} parameters"
+    name = f"{what}, draws of all {len(draws)} parameters"
     return [
         (
             f"a loop of `inv` and `eigvals` / `reproduction_numbers`, {name}",
