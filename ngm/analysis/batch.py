@@ -129,7 +129,7 @@ def draw_numbers(
     is counted, where it is refused otherwise.
     """
     values, codes, reasons = _all(scenario, draws, executor, intervention, "R0", passing)
-    counted = Counter(codes[codes > 0].tolist())
+    counted = Counter(codes[codes > 0].tolist() if reasons else [])
     return ReproductionNumbers(values, {reasons[code - 1]: n for code, n in sorted(counted.items())})
 
 

@@ -26,7 +26,7 @@ FloatArray = npt.NDArray[np.float64]
 #: and an exponential may then differ in its last digit.
 LANES = 64
 #: Doubles that one round of operations may use: what a processor keeps close at hand.
-WORKING_SET = 1 << 16
+WORKING_SET = 1 << 17
 MOST_WIDE, LEAST_WIDE = 8192, 128
 
 
