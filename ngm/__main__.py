@@ -69,6 +69,14 @@ def _parser() -> argparse.ArgumentParser:
         sub.add_argument("--json", action="store_true", help="print one JSON object")
         if verb == "control":
             sub.add_argument("--by", metavar="DIMENSION", help="also the number of each group of this dimension")
+            sub.add_argument(
+                "--entry",
+                dest="entries",
+                metavar="INFECTED<-BY",
+                action="append",
+                default=[],
+                help="an entry of K; given more than once: the number of acting on all of them together",
+            )
         if verb == "sensitivity":
             sub.add_argument(
                 "--draws", metavar="N", type=int, help="also draw the parameters N times from their distributions"
@@ -154,6 +162,18 @@ def _values(given: Sequence[str]) -> dict[str, str]:
     return out
 
 
+def _entries(given: Sequence[str]) -> list[tuple[str, str]]:
+    out = []
+    for item in given:
+        row, arrow, column = item.partition("<-")
+        if not arrow or not row.strip() or not column.strip():
+            raise ScenarioError(
+                Problem("--entry", f"expected INFECTED<-BY, for example --entry 'I_h<-I_v', not {item[:80]!r}.")
+            )
+        out.append((row.strip(), column.strip()))
+    return out
+
+
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one verb and return the exit code."""
     if isinstance(sys.stdout, io.TextIOWrapper):
@@ -196,7 +216,7 @@ def _run(options: argparse.Namespace) -> str:
         case "compare":
             result = ngm.compare(scenario, combinations=options.combinations)
         case "control":
-            result = ngm.control(scenario, by=options.by)
+            result = ngm.control(scenario, by=options.by, entries=_entries(options.entries))
         case "sensitivity":
             draws = options.draws
             if options.draw_file is not None:

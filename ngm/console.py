@@ -186,6 +186,16 @@ def control_text(result: ControlResult) -> str:
         lines += ["", title, *table(cells[:80], ["acts on", "T", "share to remove"])]
         if len(cells) > 80:
             lines.append(f"  … and {len(cells) - 80} more; use --json.")
+    chosen = result.entry_set
+    if chosen is not None:
+        effort = (
+            "cannot work"
+            if chosen.T is None
+            else f"T = {figure(chosen.T)}, share to remove {figure(chosen.critical_effort)}"
+        )
+        named = ", ".join(f"{row} <- {column}" for row, column in chosen.entries)
+        lines += ["", f"Together: {named}: {effort}"]
+        reasons += [chosen.why] if chosen.why is not None else []
     if reasons:
         lines += ["", *(f"  {why}" for why in reasons[:20])]
     lines += closing(result.warnings)

@@ -20,6 +20,7 @@ __all__ = [
     "Condition",
     "ControlResult",
     "Effective",
+    "EntrySetNumber",
     "EntryTerm",
     "Solution",
     "StateNumber",
@@ -276,6 +277,16 @@ class TargetNumber:
 
 
 @dataclass(frozen=True, slots=True)
+class EntrySetNumber:
+    """Target reproduction number of a set of entries (row type, column type) of K acted on together."""
+
+    entries: tuple[tuple[str, str], ...]
+    T: float | None
+    critical_effort: float | None
+    why: str | None
+
+
+@dataclass(frozen=True, slots=True)
 class StateNumber:
     """What removing one state's infectivity must undo."""
 
@@ -299,6 +310,8 @@ class ControlResult:
     warnings: tuple[str, ...]
     #: by group of a dimension, where that was asked for
     groups: tuple[TypeNumber, ...] = ()
+    #: of a set of entries of K, where one was asked for
+    entry_set: EntrySetNumber | None = None
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `control --json` prints."""
@@ -327,6 +340,7 @@ class ControlResult:
                 if self.groups
                 else {}
             ),
+            **({} if self.entry_set is None else {"entry_set": _entry_set(self.entry_set)}),
         }
 
     def to_frame(self) -> pandas.DataFrame:
@@ -346,6 +360,15 @@ class ControlResult:
 
 def _numbers(item: TypeNumber | TargetNumber | StateNumber) -> dict[str, Any]:
     return {"T": item.T, "critical_effort": item.critical_effort, "why": item.why}
+
+
+def _entry_set(number: EntrySetNumber) -> dict[str, Any]:
+    return {
+        "entries": [list(entry) for entry in number.entries],
+        "T": number.T,
+        "critical_effort": number.critical_effort,
+        "why": number.why,
+    }
 
 
 def _rows(matrix: Matrix | TextMatrix | None) -> list[list[Any]] | None:

@@ -21,7 +21,8 @@ from ngm.engine.control import (
 )
 from ngm.engine.linear import pattern
 from ngm.errors import Problem, ScenarioError
-from ngm.results import ControlResult, StateNumber, TargetNumber, TypeNumber
+from ngm.expression.names import suggest
+from ngm.results import ControlResult, EntrySetNumber, StateNumber, TargetNumber, TypeNumber
 from ngm.scenario.model import Scenario
 
 __all__ = ["control", "group_numbers"]
@@ -31,10 +32,13 @@ MOST_FOR_SETS = 6
 MOST_FOR_ENTRIES = 10
 
 
-def control(scenario: Scenario, *, by: str | None = None) -> ControlResult:
+def control(
+    scenario: Scenario, *, by: str | None = None, entries: Sequence[tuple[str, str]] | None = None
+) -> ControlResult:
     """Return type-, target- and state-reproduction numbers of a scenario, with the share to remove.
 
-    With `by`, the name of a dimension, also those of its groups (`group_numbers`), for models of any size.
+    With `by`, the name of a dimension, also those of its groups (`group_numbers`), for models of any size. With `entries`,
+    pairs (type infected, type that infects), also the number of that set of entries of K acted on together.
 
     The share to remove is 1 - 1/T where T > 1 and 0 where T <= 1; where what is left alone sustains the infection by
     itself there is no T, and the reason is given.
@@ -52,7 +56,37 @@ def control(scenario: Scenario, *, by: str | None = None) -> ControlResult:
     found = decided_numbers(scenario)
     with precision(found.bits):
         result = _control(found)
+        if entries:
+            result = replace(result, entry_set=_entry_set(found, entries))
     return result if by is None else replace(result, groups=group_numbers(scenario, by))
+
+
+def _entry_set(found: Numbers, entries: Sequence[tuple[str, str]]) -> EntrySetNumber | None:
+    """Return the target reproduction number of a set of entries of K."""
+    at = [found.template.types[k] for k in found.at]
+    problems = [
+        Problem(
+            "control, entries",
+            f"'{name}' is no type at infection." + (f" Did you mean '{near}'?" if (near := suggest(name, at)) else ""),
+        )
+        for name in dict.fromkeys(name for entry in entries for name in entry)
+        if name not in at
+    ]
+    if problems:
+        raise ScenarioError(problems)
+    if found.K is None or found.spectrum is None:
+        return None
+    mask = np.zeros((len(at), len(at)), dtype=bool)
+    for row, column in entries:
+        mask[at.index(row), at.index(column)] = True
+    number = target_reproduction_number(found.K, mask)
+    named = " and ".join(f"{row} by {column}" for row, column in entries)
+    return EntrySetNumber(
+        tuple((row, column) for row, column in entries),
+        number.T,
+        number.critical_effort,
+        _why(number, f"infection of {named}"),
+    )
 
 
 def _control(found: Numbers) -> ControlResult:

@@ -82,9 +82,9 @@ def solve(text: str, folder: str | None) -> Outcome:
 
 
 @st.cache_resource(max_entries=64, show_spinner="Computing control numbers …")
-def control(text: str, folder: str | None) -> ControlResult:
+def control(text: str, folder: str | None, entries: tuple[tuple[str, str], ...] = ()) -> ControlResult:
     """Return type, target and state reproduction numbers of a scenario text that `solve` accepts."""
-    return ngm.control(ngm.loads(text, folder=folder))
+    return ngm.control(ngm.loads(text, folder=folder), entries=entries)
 
 
 @st.cache_resource(max_entries=64, show_spinner="Comparing the interventions …")

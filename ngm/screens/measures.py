@@ -11,6 +11,7 @@ import streamlit as st
 from ngm.charts import control as charts
 from ngm.charts.control import TargetKind
 from ngm.errors import NgmError
+from ngm.results import ControlResult
 from ngm.results_control import Compared, Comparison, Strength
 from ngm.screens import asking, cache, editors, forms, packages, parts, state
 from ngm.screens.parts import Shown, plain
@@ -323,10 +324,27 @@ def targets(shown: Shown, write: Write) -> None:
         parts.table(["target", "T", "critical effort", "why it cannot work alone"], rows)
     else:
         st.caption("None is listed.")
+    if kind == "entries":
+        _together(shown, result, write)
     if kind == "types" and all(len(t.types) == 1 for t in result.type_reproduction):
         st.caption("Sets of types are listed for up to six types. Any set of groups can be chosen under *Coverage*.")
     parts.warnings_box(result.warnings)
     asking.command("control")
+
+
+def _together(shown: Shown, result: ControlResult, write: Write) -> None:
+    """Ask for several routes, and show what acting on all of them together has to reach."""
+    routes = {f"{t.entry[1]} infecting {t.entry[0]}": t.entry for t in result.target_reproduction}
+    chosen = st.multiselect("Act on several of these together", list(routes), key="control.routes")
+    if len(chosen) < 2:
+        return
+    found = cache.control(shown.text, shown.folder, tuple(routes[name] for name in chosen)).entry_set
+    if found is not None:
+        effort = _effort(found.critical_effort, found.T, write)
+        parts.table(
+            ["targets", "T", "critical effort", "why it cannot work"],
+            [(" + ".join(chosen), write(found.T), effort, found.why or "")],
+        )
 
 
 def _effort(effort: float | None, T: float | None, write: Write) -> str:

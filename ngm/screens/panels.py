@@ -49,6 +49,10 @@ def figures(solution: Solution, write: Write) -> None:
             if solution.doubling_time is not None
             else "It does not grow: there is no doubling time."
         )
+    now = solution.effective
+    if now is not None:
+        st.metric("Effective number at the state now", write(now.R), border=True, width="content")
+        st.caption(now.no_R or "Cases caused by one typical case at the immunity of today. This is not R0.")
 
 
 def change_a_value(shown: Shown, write: Write) -> None:

@@ -68,3 +68,20 @@ def test_without_a_state_now_nothing_is_said_of_it() -> None:
 def test_refused_in_words(state: str, message: str) -> None:
     with pytest.raises(ngm.NgmError, match=message):
         ngm.solve(ngm.loads(f"{MODEL}\n[state_now]\n{state}\n"), limit=0)
+
+
+def test_a_set_of_entries_is_acted_on_together() -> None:
+    """Published: part A10: on K = [[.8, 1.5], [.6, .5]] the entries (1,1), (1,2) give T1 = 2.6; all four give R0."""
+    flows = [
+        ("S", "A", "S*(0.8*A + 1.5*B)", "t"), ("S", "B", "S*(0.6*A + 0.5*B)", "t"), ("A", "", "A", "x"), ("B", "", "B", "x"),
+    ]  # fmt: skip
+    scenario = ngm.loads(text([("S", False), ("A", True), ("B", True)], {"unused": 1}, flows, free={"S": 1}))
+    row = ngm.control(scenario, entries=[("A", "A"), ("A", "B")]).entry_set
+    assert row is not None
+    assert row.T == pytest.approx(2.6, rel=1e-9)
+    assert row.critical_effort == pytest.approx(0.6153846154, rel=1e-9)
+    every = ngm.control(scenario, entries=[(i, j) for i in "AB" for j in "AB"]).to_json()["entry_set"]
+    assert every["T"] == pytest.approx(1.610468636, rel=1e-9)
+    with pytest.raises(ngm.ScenarioError, match="'C' is no type at infection"):
+        ngm.control(scenario, entries=[("A", "C")])
+    assert "entry_set" not in ngm.control(scenario).to_json()

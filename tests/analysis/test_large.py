@@ -154,3 +154,77 @@ def test_a_dimension_that_is_not_there_is_told() -> None:
 
     with pytest.raises(ngm.ScenarioError, match="Its dimensions: age, town"):
         group_numbers(ngm.loads(TEXTS[0][1]), "region")
+
+
+def kronecker(ages: int, towns: int) -> str:
+    """Return a model whose K is a product of an age matrix and a town matrix: nothing differs but contacts and mixing."""
+    rng = np.random.default_rng(5)
+    C, M = (np.round(rng.uniform(0.1, 2, (n, n)), 6) for n in (ages, towns))
+    by = 'by = ["age", "town"]'
+    return f"""
+[scenario]
+title = "A product of two matrices"
+time_unit = "day"
+[dimensions]
+age = {[f"a{k}" for k in range(ages)]}
+town = {[f"t{k}" for k in range(towns)]}
+[compartments]
+S = {{ infected = false, {by} }}
+E = {{ infected = true, {by} }}
+I = {{ infected = true, {by} }}
+[parameters]
+beta = {{ value = 0.02 }}
+nu = {{ value = 0.25 }}
+gamma = {{ value = 0.2 }}
+[matrices.C]
+by = "age"
+values = {C.tolist()}
+[matrices.M]
+by = "town"
+values = {M.tolist()}
+[[flow]]
+from = "S"
+to = "E"
+rate = "beta * S * C(M(I))"
+kind = "transmission"
+[[flow]]
+from = "E"
+to = "I"
+rate = "nu * E"
+kind = "transition"
+[[flow]]
+from = "I"
+rate = "gamma * I"
+kind = "transition"
+[infection_free]
+S = 1
+""".replace("'", '"')
+
+
+def root(matrix: list[list[float]]) -> float:
+    return float(np.max(np.abs(np.linalg.eigvals(np.array(matrix)))))
+
+
+@pytest.mark.parametrize("towns", [17, 60])
+def test_a_product_of_matrices_has_the_product_of_their_roots(towns: int) -> None:
+    """By hand: K = (beta/gamma) C x M, so R0 = (beta/gamma) rho(C) rho(M); 578 and 2,040 types."""
+    scenario = ngm.loads(kronecker(17, towns))
+    C, M = ([[float(v) for v in row] for row in scenario.matrices[name].blocks[0]] for name in "CM")
+    solution = ngm.solve(scenario, limit=0)
+    assert len(solution.types) == 2 * 17 * towns
+    assert solution.R0 == pytest.approx(0.1 * root(C) * root(M), rel=1e-10)
+
+
+def test_operators_equal_the_explicit_numbers_at_the_limit_of_what_is_written_out(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """Second route: 476 types, enclosed; the same by operators."""
+    scenario = ngm.loads(kronecker(17, 14))
+    expected = ngm.solve(scenario, limit=0)
+    monkeypatch.setattr(ngm.analysis.point, "MOST_EXACT", 0)
+    monkeypatch.setattr(ngm.engine.large, "MOST_WRITTEN_OUT", 0)
+    found = ngm.solve(scenario, limit=0)
+    assert expected.R0_bounds is not None
+    assert found.R0 == pytest.approx(expected.R0, rel=1e-10)
+    assert found.growth_rate == pytest.approx(expected.growth_rate, rel=1e-9)
+    assert found.right == pytest.approx(expected.right, rel=1e-8)
