@@ -3,6 +3,11 @@
 from __future__ import annotations
 
 import pytest
+from hypothesis import settings
+
+# A busy machine is slow, and that is no fault of the code: speed is measured in tests/benchmarks, as ratios.
+settings.register_profile("no deadline", deadline=None)
+settings.load_profile("no deadline")
 
 
 @pytest.fixture(autouse=True)
