@@ -212,6 +212,15 @@ def polynomial(
                 ]
                 for i, row in enumerate(B)
             ]
-            coefficients = sympy.Matrix(named).charpoly(x).all_coeffs()
-            factors.append(sympy.Add(*(c * x ** (n - k) for k, c in enumerate(coefficients))))
+            # Worked out with one symbol an entry: fractions in a determinant are put over common denominators for ever.
+            meaning: dict[sympy.Symbol, sympy.Expr] = {}
+            plain = sympy.zeros(n, n)
+            for i, row in enumerate(named):
+                for j, entry in enumerate(row):
+                    if entry != 0:
+                        plain[i, j] = sympy.Dummy(f"k{i}{j}")
+                        meaning[plain[i, j]] = entry
+            coefficients = plain.charpoly(x).all_coeffs()
+            total = sympy.Add(*(c * x ** (n - k) for k, c in enumerate(coefficients)))
+            factors.append(total.xreplace(meaning))
     return sympy.Mul(*factors) if factors else sympy.Integer(1)
