@@ -199,6 +199,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def _run(options: argparse.Namespace) -> str:
     import ngm
 
+    if options.verb == "solve":
+        from ngm import worker
+
+        worker.warm()  # the child loads what formulas need while this process reads the file
     scenario = ngm.load(options.file)
     values = _values(options.values)
     if values:
