@@ -23,7 +23,6 @@ HEAVY = (
     "altair",
     "scipy.sparse.csgraph",
     "sympy",
-    "tomlkit",
     "ngm",
     "ngm.charts.bars",
     "ngm.charts.control",

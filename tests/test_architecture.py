@@ -110,7 +110,6 @@ ONLY_IN: dict[str, set[str]] = {
     "flint": {"engine"},
     "altair": {"charts"},
     "streamlit": {"screens", "app"},
-    "tomlkit": {"scenario"},
     "pypandoc": {"reporting.forms"},
     "typst": {"reporting.forms"},
     "vl_convert": {"reporting"},
@@ -233,13 +232,13 @@ def loaded_after(statement: str) -> set[str]:
 def test_importing_the_package_is_light():
     loaded = loaded_after("import ngm")
     assert "ngm" in loaded
-    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy", "tomlkit"}
+    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy"}
 
 
 def test_reading_a_scenario_is_light():
     path = next((ROOT / "scenarios").glob("*.toml"))
     loaded = loaded_after(f"import ngm; ngm.load({str(path)!r})")
-    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy", "tomlkit"}
+    assert not loaded & {"streamlit", "altair", "sympy", "pandas", "scipy"}
 
 
 def test_solving_needs_no_page_and_no_chart():
