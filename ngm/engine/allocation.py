@@ -205,14 +205,15 @@ def same_multiple(problem: Problem, direction: FloatArray, budget: float) -> Flo
     left = budget
     free = (direction > 0) & (problem.upper > 0)
     while free.any() and left > 0:
-        t = left / float(problem.price[free] @ direction[free])
-        full = free & (t * direction >= problem.upper - x)
+        rate = direction / float(np.max(direction[free]))  # of any size, also where only the smallest directions are left
+        t = left / float(problem.price[free] @ rate[free])
+        full = free & (rate * t >= problem.upper - x)
         if not full.any():
-            x[free] += t * direction[free]
+            x[free] += t * rate[free]
             break
         # up to the first groups that fill, then on with the others
-        step = float(np.min((problem.upper[free] - x[free]) / direction[free]))
-        grown = np.minimum(x[free] + step * direction[free], problem.upper[free])
+        step = min(t, float(np.min((problem.upper[full] - x[full]) / rate[full])))
+        grown = np.minimum(x[free] + step * rate[free], problem.upper[free])
         left -= float(problem.price[free] @ (grown - x[free]))
         x[free] = grown
         free &= x < problem.upper * (1 - 1e-15)
@@ -241,6 +242,8 @@ def greedy(problem: Problem, budget: float, portions: int = 40) -> FloatArray:
     x = np.zeros(len(problem.price))
     for _ in range(portions):
         values, slopes = problem.tangents(x)
+        if not len(values):  # no cycle is left: the number is 0
+            break
         gain = -slopes[int(np.argmax(values))] / problem.price
         rest = budget / portions
         for g in np.argsort(-gain, kind="stable"):

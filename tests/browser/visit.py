@@ -44,6 +44,21 @@ class Visit:
         expect(self.page.get_by_test_id("stException")).to_have_count(0)
         expect(self.page.get_by_text("could not be finished")).to_have_count(0)
 
+    def at_rest(self) -> None:
+        """Wait until nothing is drawn any more for a second: pages go on by themselves when an answer is ready."""
+        self.settled()
+        self.page.wait_for_function(
+            """() => {
+                const busy = document.querySelector('[data-testid="stApp"]').dataset.testScriptState !== 'notRunning'
+                    || document.querySelector('[data-stale="true"]') !== null
+                    || document.getAnimations().some(a => a.playState === 'running' && a.effect.getTiming().iterations !== Infinity);
+                const now = performance.now();
+                if (busy || window.quietSince === undefined) window.quietSince = now;
+                return now - window.quietSince > 1000;
+            }"""
+        )
+        self.settled()
+
     def go(self, title: str) -> None:
         self.page.get_by_test_id("stSidebarNav").get_by_role("link", name=title, exact=True).click()
         self.heading(title)

@@ -233,6 +233,15 @@ def test_three_groups_against_a_full_grid(shape, seed):
     assert bound.low >= number * 0.999 - 1e-9  # and proven so
 
 
+@pytest.mark.parametrize("weights", [(0.0, 1e-313), (1.0, 1e-313), (1e300, 1e-300), (5e-324, 5e-324)])
+def test_weights_of_any_size_spend_the_budget_and_no_more(weights):
+    given, budget = drawn("contacts", 0, 2)
+    for share in (0.3, 1.0):
+        spent = given.spend(same_multiple(given, np.array(weights), share * budget))
+        room = given.spend(np.where(np.array(weights) > 0, given.upper, 0.0))  # by hand: only groups with a weight take any
+        assert spent == pytest.approx(min(share * budget, room), rel=1e-9)
+
+
 @settings(max_examples=40, deadline=None)
 @given(shape=st.sampled_from(SHAPES), seed=st.integers(0, 100_000), groups=st.integers(2, 6), data=st.data())
 def test_no_share_beats_the_bound(shape, seed, groups, data):
