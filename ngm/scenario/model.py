@@ -22,11 +22,14 @@ __all__ = [
     "Distribution",
     "Expression",
     "Flow",
+    "GivenMatrix",
     "Intervention",
     "Matrix",
     "Movement",
     "Parameter",
+    "Projection",
     "Scenario",
+    "Season",
     "Unit",
 ]
 
@@ -97,6 +100,20 @@ class Distribution:
 
 
 @dataclass(frozen=True, slots=True)
+class Season:
+    """What a parameter's value is multiplied by in the course of a period, in the scenario's time unit.
+
+    Either 1 + `amplitude` cos(2 pi (t - `peak`) / `period`), or, where `values` is not empty, its k-th entry on the k-th of
+    as many equal parts of the period.
+    """
+
+    period: Fraction
+    amplitude: Fraction = Fraction(0)
+    peak: Fraction = Fraction(0)
+    values: tuple[Fraction, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Parameter:
     """A parameter as typed.
 
@@ -123,6 +140,7 @@ class Parameter:
     range: tuple[float, float] | None = None
     distributions: tuple[Distribution, ...] = ()
     any_sign: bool = False
+    season: Season | None = None
 
     @property
     def follows(self) -> bool:
@@ -221,12 +239,39 @@ class Intervention:
 
 
 @dataclass(frozen=True, slots=True)
+class GivenMatrix:
+    """A next-generation matrix as a paper or a survey gives it, in place of compartments and flows.
+
+    `K`: row by row, [type infected][type that infects]. `sizes`: members of each type, empty where not given.
+    """
+
+    types: tuple[str, ...]
+    K: tuple[tuple[Expression, ...], ...]
+    sizes: tuple[Expression, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Projection:
+    """A population in age or stage classes, projected step by step, in place of compartments and flows.
+
+    `births`[i][j]: new members of stage i by one member of stage j in a step; `transitions`[i][j]: share of stage j that is
+    in stage i a step later.
+    """
+
+    stages: tuple[str, ...]
+    births: tuple[tuple[Expression, ...], ...]
+    transitions: tuple[tuple[Expression, ...], ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Scenario:
     """One model, its values and the interventions compared on it: what one scenario file says.
 
     Mappings keep the order of the file. Built by `ngm.load` and `ngm.loads` only, which check everything first.
     `infection_free`: compartment -> one expression for all groups, or one for each copy (in the order of its `by`).
     `state_now`: the same for the state of today, at rest or not; a compartment left out is as without infection.
+    `discrete`: one step is one `time_unit`, and a flow's rate is the number that moves in a step. `given`, `projection`: the
+    matrices stand in the file, and there are no compartments and no flows.
     `warnings`: what the reader noticed and did not refuse. `text`: the file.
     """
 
@@ -245,6 +290,9 @@ class Scenario:
     report: Mapping[str, str | tuple[str, ...]] = field(default_factory=dict)
     summary: str | None = None
     strict_units: bool = False
+    discrete: bool = False
+    given: GivenMatrix | None = None
+    projection: Projection | None = None
     warnings: tuple[str, ...] = ()
     text: str = ""
     folder: str | None = None
