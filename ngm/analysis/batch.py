@@ -34,7 +34,7 @@ FloatArray = npt.NDArray[np.float64]
 #: Below this size a negative value of a parameter that follows is rounding.
 ROUNDING = 1e-12
 #: Draws that one task of an executor takes.
-TASK = 50_000
+TASK = 1 << 16
 #: Doubles of K, of checks and of the draws' results that are held at a time in one piece.
 MOST_HELD = 1 << 20
 #: What a screen's worst number must be: see `Plan.screens`. No number fails each.
@@ -243,8 +243,8 @@ class _Work:
             redo |= ~found
             inputs += list(state)
         direct = plan.direct if self.what == "R0" else None
-        numbers = (plan.main if direct is None else direct).run(inputs)
-        if not redo.any() and self._passes(numbers):
+        numbers, worst = (plan.main if direct is None else direct).screened(inputs, plan.extremes)
+        if not redo.any() and self._passes(worst):
             self._reproduce(part, inputs, numbers, None)
             return None
         assert plan.details is not None
@@ -287,14 +287,9 @@ class _Work:
             self._alone(part, redo)
         return None
 
-    def _passes(self, numbers: FloatArray) -> bool:
+    def _passes(self, worst: list[float]) -> bool:
         """Return whether every check holds at every draw of a part."""
-        screens = self.plan.screens
-        for row, kind in zip(numbers[len(numbers) - len(screens) :], screens, strict=True):
-            worst = row.max() if kind in ("finite", "largest ratio") else row.min()
-            if not _SCREENS[kind](worst):
-                return False
-        return True
+        return all(_SCREENS[kind](value) for value, kind in zip(worst, self.plan.screens, strict=True))
 
     def _reproduce(
         self, part: slice, inputs: list[FloatArray], numbers: FloatArray, good: npt.NDArray[np.bool_] | None

@@ -5,6 +5,10 @@ A `Plan` is plain data that other processes can be sent.
 
 from __future__ import annotations
 
+import hashlib
+import pickle
+import threading
+from collections import OrderedDict
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from functools import cached_property
@@ -13,6 +17,7 @@ import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.point import Point
+from ngm.analysis.steps_of_time import MORE_THAN_ALL
 from ngm.analysis.traced import Columns, CurvedBaseline, TracedPoint, TracedTemplate, opened
 from ngm.derivation.compile import Program, compiled
 from ngm.derivation.conditions import check_arrivals, check_exits
@@ -31,11 +36,18 @@ __all__ = ["MOST_TRACED", "NO_STATE", "Check", "Plan", "plan"]
 MOST_TRACED = 150
 #: A pivot below this share of its parts has lost too many digits: such a draw is done by itself, with bounds.
 DOUBTFUL = 1e-8
+#: Plans kept: the draws of one scenario under each of its interventions.
+MOST_KEPT = 32
 
 SINGULAR = "V is singular or no M-matrix: some infected compartments are not lost, or grow without any transmission"
 NEGATIVE_F = "F has a negative entry"
 POSITIVE_V = "V has a positive entry off its diagonal"
+OVERDRAWN = "more leave a compartment in one step than there are in it"
 NO_STATE = "no infection-free state with non-negative numbers"
+
+
+_kept: OrderedDict[bytes, Plan] = OrderedDict()
+_lock = threading.Lock()
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,6 +113,11 @@ class Plan:
     curve: Program | None = None
     start: tuple[float, ...] = ()
 
+    @property
+    def extremes(self) -> tuple[str, ...]:
+        """Which end of each screen tells whether a check fails."""
+        return tuple("max" if kind in ("finite", "largest ratio") else "min" for kind in self.screens)
+
     @cached_property
     def pattern(self) -> Array:
         """Which entries of K are not 0 by structure."""
@@ -111,13 +128,29 @@ class Plan:
 
 
 def plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int) -> Plan:
-    """Return how to compute K and R0 for draws of some parameters.
+    """Return how to compute K and R0 for draws of some parameters; plans are kept, by what they are made from.
 
     Raises
     ------
     DerivationError
         The scenario itself, at its own values, has no infection-free state, or V is singular by structure.
     """
+    # The bytes hold every number and tree: two scenarios with the same ones have the same plan, whatever their text says.
+    key = hashlib.sha256(pickle.dumps((scenario, intervention, dict(columns), inputs))).digest()
+    with _lock:
+        made = _kept.get(key)
+        if made is not None:
+            _kept.move_to_end(key)
+            return made
+    made = _plan(scenario, intervention, columns, inputs)
+    with _lock:
+        _kept[key] = made
+        while len(_kept) > MOST_KEPT:
+            _kept.popitem(last=False)
+    return made
+
+
+def _plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int) -> Plan:
     point = Point(scenario, intervention)
     out = Plan(scenario, intervention, columns, inputs, len(point.template.at_infection))
     if len(point.template.types) > MOST_TRACED:
@@ -147,9 +180,11 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
     template, trace = point.template, point.trace
     evaluator = point.evaluator
     trace.doing = ""
-    F, _ = assemble(template, evaluator)
+    F, V = assemble(template, evaluator)
     if template.exponents & _moved(template):
         return out
+    if out.scenario.discrete and point.unknown:
+        return out  # which of several states at rest is stable is decided by moduli: draw by draw
     F = point.scaled(F)
     net = network(template, evaluator, template.arrows, template.infected)
     at = list(template.at_infection)
@@ -168,7 +203,8 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
                 entries.append((a, b, total.value))
                 if total.value is None:
                     numbers.append(total)
-    checks, looked_at = _checks(point, F, found, K)
+    left = _left_over(trace, V) if out.scenario.discrete else []
+    checks, looked_at = _checks(point, F, found, K, left)
     screens = _screens(trace, checks, looked_at)
     main = compiled(trace, [*numbers, *screens.values()])
     root = _root(trace, K)
@@ -192,6 +228,12 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
         curve=curve,
         start=tuple(start.tolist()),
     )
+
+
+def _left_over(trace: Trace, V: Array) -> list[Traced]:
+    """Return the share of each type that a step leaves where it is: the diagonal of T = I - V, with room for rounding."""
+    most = trace.constant(MORE_THAN_ALL)
+    return [most - V[k, k] for k in range(len(V))]
 
 
 def _moved(template: TracedTemplate) -> set[str]:
@@ -262,7 +304,9 @@ def _screens(trace: Trace, checks: list[Check], numbers: list[Traced]) -> dict[s
     return out
 
 
-def _checks(point: TracedPoint, F: Array, found: Stays, K: Array) -> tuple[list[Check], list[Traced]]:
+def _checks(
+    point: TracedPoint, F: Array, found: Stays, K: Array, left: list[Traced]
+) -> tuple[list[Check], list[Traced]]:
     """Return the checks, and the numbers that they look at."""
     template, trace = point.template, point.trace
     out: list[Check] = []
@@ -314,6 +358,8 @@ def _checks(point: TracedPoint, F: Array, found: Stays, K: Array) -> tuple[list[
     for rate in found.rates:
         if not rate.nonnegative:
             add("not below", rate, POSITIVE_V)
+    for share in left:
+        add("not below", share, OVERDRAWN)
     for pivot in found.pivots:
         add("above", pivot, SINGULAR)
     inside = np.zeros(K.shape, dtype=bool)

@@ -19,6 +19,9 @@ FloatArray = npt.NDArray[np.float64]
 
 #: Numbers stay below this, in draws as in files.
 LARGEST = 1e300
+#: Read as whole numbers, the bits of doubles that are not negative have the order of the doubles; those of negative ones,
+#: infinity and nan lie above. So one pass over the draws tells whether all is well.
+_BITS_OF_LARGEST = np.float64(LARGEST).view(np.uint64)
 
 
 def read_draws(
@@ -103,7 +106,7 @@ def _table(parameter: Parameter, typed: str, values: Any, copies: int) -> FloatA
             k, shown = bad
             return Problem(short(typed), f"draw {k + 1} is {shown}, and no number.")
     table = np.asarray(rows, dtype=float)
-    if table.size == 0 or (table.max() < LARGEST and table.min() >= (-LARGEST if parameter.any_sign else 0)):
+    if table.size == 0 or table.view(np.uint64).max() < _BITS_OF_LARGEST:
         return table
     for wrong, what in (
         (~(np.abs(table) < LARGEST), "not finite or too large"),

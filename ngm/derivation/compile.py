@@ -27,7 +27,7 @@ FloatArray = npt.NDArray[np.float64]
 LANES = 64
 #: Doubles that one round of operations may use: what a processor keeps close at hand.
 WORKING_SET = 1 << 17
-MOST_WIDE, LEAST_WIDE = 8192, 128
+MOST_WIDE, LEAST_WIDE = 16384, 128
 
 
 def _step(values: FloatArray, out: FloatArray) -> None:
@@ -83,34 +83,58 @@ class Program:
         wide = WORKING_SET // max(1, min(self.slots + self.inputs, 64))
         return max(LEAST_WIDE, min(MOST_WIDE, wide // LANES * LANES))
 
-    def run(self, inputs: Sequence[FloatArray], out: FloatArray | None = None) -> FloatArray:
+    def run(self, inputs: Sequence[FloatArray]) -> FloatArray:
         """Return the outputs, (len(outputs), N), for inputs of N draws each; what has no value is nan or infinite.
 
         Parameters
         ----------
         inputs : sequence of (N,) arrays
             Contiguous.
-        out : (len(outputs), N) array, optional
-            Where to put the result.
+        """
+        return self.screened(inputs, ())[0]
+
+    def screened(self, inputs: Sequence[FloatArray], extremes: Sequence[str]) -> tuple[FloatArray, list[float]]:
+        """Return the first outputs, and of each of the last ones its largest or smallest value alone.
+
+        Parameters
+        ----------
+        inputs : sequence of (N,) arrays
+            Contiguous.
+        extremes : sequence of {"max", "min"}
+            One for each of the last outputs: these arrays are never written out. The value is nan where one of N is.
+
+        Returns
+        -------
+        out : (len(outputs) - len(extremes), N) array
+        worst : list of float
         """
         if len(inputs) != self.inputs:
             raise ValueError(f"{len(inputs)} inputs for a program of {self.inputs}")
         size = len(inputs[0]) if inputs else 0
-        if out is None:
-            out = np.empty((len(self.outputs), size))
+        kept = len(self.outputs) - len(extremes)
+        out = np.empty((kept, size))
         width = min(self.width, -(-size // LANES) * LANES)
         work = np.empty((self.slots, width))
         spare = np.empty((self.inputs, width))
         steps = [(_OPERATIONS[name], at, a, b) for name, at, a, b in self.steps]
+        reductions = [np.maximum.reduce if kind == "max" else np.minimum.reduce for kind in extremes]
+        seen: list[list[float]] = [[] for _ in extremes]
         with np.errstate(all="ignore"):
             for start in range(0, size, width):
                 stop = min(start + width, size)
-                self._round(steps, [array[start:stop] for array in inputs], work, spare, out[:, start:stop])
-        return out
+                part = out[:, start:stop]
+                values = self._round(steps, [array[start:stop] for array in inputs], work, spare, part)
+                n = stop - start
+                for found, reduce, at in zip(seen, reductions, self.outputs[kept:], strict=True):
+                    value = values[at]
+                    found.append(value if isinstance(value, float) else reduce(value[:n]))
+            worst = [float(reduce(found)) if found else np.nan for found, reduce in zip(seen, reductions, strict=True)]
+        return out, worst
 
     def _round(
         self, steps: list[Any], inputs: list[FloatArray], work: FloatArray, spare: FloatArray, out: FloatArray
-    ) -> None:
+    ) -> list[Any]:
+        """Run the steps for one width of draws, put the first outputs into `out`, and return the value of every place."""
         n = out.shape[1]
         full = -(-n // LANES) * LANES
         if full != n:
@@ -123,8 +147,9 @@ class Program:
                 operation(values[a], out=values[at])
             else:
                 operation(values[a], values[b], out=values[at])
-        for row, at in zip(out, self.outputs, strict=True):
+        for row, at in zip(out, self.outputs, strict=False):
             row[:] = values[at] if isinstance(values[at], float) else values[at][:n]
+        return values
 
 
 def compiled(trace: Trace, outputs: Sequence[Traced]) -> Program:
