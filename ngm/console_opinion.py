@@ -34,7 +34,7 @@ def units_text(result: Units) -> str:
             *(f"  ! {note.where}: {note.message}" for note in result.findings),
         ]
     else:
-        lines.append("The units fit: every flow is in its compartment's unit per time, and no sum mixes units.")
+        lines.append(result.fits)
     rows = []
     for p in result.parameters[:80]:
         rows.append(
@@ -60,12 +60,10 @@ def splits_text(result: Splits) -> str:
     """Return the result of `ngm.splits` as text."""
     lines = _heading(result.title)
     if not result.choices:
-        lines.append(
-            "No flow's kind is a choice: nothing enters an infected compartment but by infection or by a step forward."
-        )
+        lines.append(result.none)
     else:
         lines += ["Flows whose kind is a choice", *(f"  flow {k}: {why}" for k, why in result.choices.items())]
-        hosts = list(result.splits[0].hosts)
+        hosts = result.shown_hosts
         rows, refused = [], []
         for number, split in enumerate(result.splits, 1):
             name = f"{number}" + (" (the file)" if split.as_typed else "")
@@ -85,9 +83,9 @@ def splits_text(result: Splits) -> str:
         if refused:
             lines += ["", "No valid split", *refused]
         if result.agree:
-            lines += ["", f"The same in all valid splits: {', '.join(result.agree)}."]
+            lines += ["", f"The same in all valid splits: {result.words(result.agree)}."]
         if result.differ:
-            lines.append(f"Not to be compared between models that split differently: {', '.join(result.differ)}.")
+            lines.append(f"Not to be compared between models that split differently: {result.words(result.differ)}.")
         lines.append("F, V and K of each split: use --json.")
     return squeezed([*lines, *closing(result.warnings)])
 

@@ -22,6 +22,9 @@ __all__ = [
     "Units",
 ]
 
+#: Type numbers that are listed beside each other.
+MOST_HOSTS = 4
+
 
 @dataclass(frozen=True, slots=True)
 class UnitNote:
@@ -90,6 +93,8 @@ class Units:
     expressions: Mapping[str, str | None]
     stays: tuple[Stay, ...]
     warnings: tuple[str, ...] = ()
+    #: what there is to say where there is no finding
+    fits: str = "The units fit: every flow is in its compartment's unit per time, and no sum mixes units."
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `units --json` prints."""
@@ -133,6 +138,21 @@ class Splits:
     agree: tuple[str, ...]
     differ: tuple[str, ...]
     warnings: tuple[str, ...] = ()
+    #: what there is to say where there is no choice
+    none: str = "No flow's kind is a choice: nothing enters an infected compartment but by infection of the uninfected."
+
+    @property
+    def shown_hosts(self) -> tuple[str, ...]:
+        """The hosts whose type numbers fit beside each other: all together and a few."""
+        hosts = list(self.splits[0].hosts)
+        return tuple(hosts) if len(hosts) <= MOST_HOSTS else tuple(hosts[:3])
+
+    def words(self, names: tuple[str, ...]) -> str:
+        """Return `agree` or `differ` as words; many type numbers are counted and not listed."""
+        numbers = [name for name in names if name.startswith("T(")]
+        if len(numbers) <= MOST_HOSTS:
+            return ", ".join(names)
+        return ", ".join([*(n for n in names if n not in numbers), f"{len(numbers)} type numbers of hosts"])
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `splits --json` prints."""

@@ -81,7 +81,7 @@ def _read(scenario: Scenario, solution: Solution, text: str) -> Node:
     if is_latex(own):
         own = from_latex(own, known)
     tree = parse(own, where="formula", items="[" in own)
-    items = set(known) | set(solution.infection_free)
+    items = set(known) | set(solution.infection_free or {})
     for name, parameter in scenario.parameters.items():
         items |= set(scenario.items(name, parameter.by))
     for node in walk(tree):
@@ -107,6 +107,8 @@ class _Comparison:
         self.scenario, self.solution, self.text, self.tree = scenario, solution, text, tree
         self.places = places
         self.found = found
+        #: whether the first point holds the values of the file
+        self.at_the_file = found[0][0].typed == places.typed() if found else False
         self.same = SAME_DIGITS if places.closed is not None else SAME_NUMBER
         self.compared: list[FormulaMatch] = []
 
@@ -219,9 +221,10 @@ class _Comparison:
         return agreed >= 3
 
     def _other_split(self) -> tuple[str, str] | None:
-        rows = [row for row in splits(self.scenario).splits if row.refused is None and not row.as_typed]
         place, own = self.found[0]
-        for row in rows:
+        for row in splits(self.scenario).splits:
+            if row.refused is not None or row.as_typed or not row.R0 or own is None:
+                continue
             kinds: dict[int, Kind] = {
                 int(number): "transmission" if kind == "transmission" else "transition"
                 for number, kind in row.kinds.items()
@@ -233,8 +236,8 @@ class _Comparison:
                 return None if numbers is None else _power(Decimal(numbers[0]), power)
 
             for power in (1, 2):
-                first = value(place, power=power)
-                if first is None or own is None or not _close(own, first, SAME_NUMBER):
+                first = _power(Decimal(row.R0), power) if self.at_the_file else value(place, power=power)
+                if first is None or not _close(own, first, SAME_NUMBER):
                     continue
                 if self._some_agree(lambda p, v=value, k=power: v(p, power=k), SAME_NUMBER, SPLIT_POINTS):  # type: ignore[misc]
                     moved = ", ".join(

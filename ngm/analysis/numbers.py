@@ -12,6 +12,7 @@ import numpy as np
 
 from ngm.analysis.large import difference, faults, stray_losses
 from ngm.analysis.point import Point, refuse_huge
+from ngm.analysis.state import InfectionFree
 from ngm.derivation.conditions import check_arrivals, check_exits
 from ngm.derivation.outline import thumbnail
 from ngm.derivation.template import Template
@@ -39,9 +40,18 @@ class Numbers:
 
     bits = PRECISION
 
-    def __init__(self, scenario: Scenario, intervention: Intervention | None = None, *, moved: bool = False) -> None:
+    def __init__(
+        self,
+        scenario: Scenario,
+        intervention: Intervention | None = None,
+        *,
+        moved: bool = False,
+        state: InfectionFree | None = None,
+    ) -> None:
         self.scenario, self._moved = scenario, moved
         self.point = Point(scenario, intervention)
+        if state is not None:  # known from the same flows under other kinds
+            self.point.infection_free = state
         template = self.template = self.point.template
         floats = self.point.plain_tables
         check_arrivals(template, floats)

@@ -38,10 +38,12 @@ def choices(scenario: Scenario) -> dict[int, str]:
     """Return the flows whose kind is a choice, with the reason, the likeliest first.
 
     They arrive in an infected compartment and come from outside (shedding, vertical transmission) or from another
-    infected one, where somebody who is infected already becomes another type at infection (conversion of strains,
-    failed treatment) or returns to an earlier stage (relapse). A plain step forward in the course of one infection is
-    none: to count it as a new infection is an error, and not another view.
+    infected one: where new infections arrive too (conversion of strains, failed treatment), back to an earlier stage
+    (relapse), or, last, a step forward in the course of one infection, which some papers count as a new infection all
+    the same.
     """
+    if is_stated(scenario):
+        return {}
     infected = {name for name, compartment in scenario.compartments.items() if compartment.infected}
     entered = {
         flow.target
@@ -51,24 +53,28 @@ def choices(scenario: Scenario) -> dict[int, str]:
     steps: list[tuple[str | None, str | None]] = [
         (f.source, f.target) for f in scenario.flows if f.source in infected and f.target in infected
     ]
-    first: dict[int, str] = {}
-    second: dict[int, str] = {}
-    third: dict[int, str] = {}
+    ranked: tuple[dict[int, str], ...] = ({}, {}, {}, {})
     for number, flow in enumerate(scenario.flows, 1):
-        if flow.target not in infected:
+        if flow.target not in infected or flow.source == flow.target:
             continue
         if flow.source is None:
-            first[number] = f"enters {flow.target} from outside: birth or shedding, or new infection"
-        elif flow.source in infected:
-            if flow.kind == "transmission":
-                second[number] = f"moves infected of {flow.source} to {flow.target}, and is counted as new infection"
-            elif flow.target in entered:
-                second[number] = f"moves infected of {flow.source} to {flow.target}, where new infections arrive too"
-            elif _leads(steps, flow.target, flow.source):
-                third[number] = f"takes infected of {flow.source} back to {flow.target}"
-    # Of a loop that is entered at its head every arrow leads back; only the one against the course is a relapse.
-    third = {k: why for k, why in third.items() if _against(scenario, k, entered, steps)}
-    return dict([*first.items(), *second.items(), *third.items()])
+            ranked[0][number] = f"enters {flow.target} from outside: birth or shedding, or new infection"
+            continue
+        if flow.source not in infected:
+            continue
+        way = f"infected of {flow.source}"
+        if flow.kind == "transmission":
+            ranked[1][number] = f"moves {way} to {flow.target}, and is counted as new infection"
+        elif flow.target in entered:
+            ranked[1][number] = f"moves {way} to {flow.target}, where new infections arrive too"
+        elif _leads(steps, flow.target, flow.source) and _against(scenario, number, entered, steps):
+            # Of a loop that is entered at its head every arrow leads back; only the one against the course is a relapse.
+            ranked[2][number] = f"takes {way} back to {flow.target}"
+        else:
+            ranked[3][number] = (
+                f"moves {way} on to {flow.target}: a step in the course of one infection, rarely counted as a new one"
+            )
+    return {number: why for rank in ranked for number, why in rank.items()}
 
 
 def _leads(steps: list[tuple[str | None, str | None]], start: str | None, end: str | None) -> bool:
@@ -102,7 +108,8 @@ def _against(
 def splits(scenario: Scenario) -> Splits:
     """Return F, V, K, R0, the hosts' type numbers and the growth rate under every division of the flows that is a choice.
 
-    At most 16 combinations, the one of the file first. A combination that is no valid split (V singular or no M-matrix, F
+    At most 16 combinations, the one of the file first; of more than four choices the likeliest four are varied, and a
+    warning names those that keep the kind of the file. A combination that is no valid split (V singular or no M-matrix, F
     with a negative entry, no new infections at all) is kept with the condition that fails. The growth rate and whether
     R0 exceeds 1 are properties of the flows and agree in all valid splits; R0 itself does not.
 
@@ -123,7 +130,10 @@ def splits(scenario: Scenario) -> Splits:
         found = {}
     if len(found) > MOST_CHOICES:
         left = ", ".join(flow_name(scenario, number) for number in list(found)[MOST_CHOICES:])
-        warnings.append(f"More than {MOST_CHOICES} flows are a choice; these keep the kind of the file: {left}.")
+        warnings.append(
+            f"{len(found)} flows are a choice: the likeliest {MOST_CHOICES} are varied, in {2**MOST_CHOICES} combinations; "
+            f"these keep the kind of the file: {left}."
+        )
         found = dict(list(found.items())[:MOST_CHOICES])
     hosts = _hosts(scenario, typed)
     numbers = list(found)
@@ -132,7 +142,7 @@ def splits(scenario: Scenario) -> Splits:
     rows = []
     for kinds in combinations:
         chosen = dict(zip(numbers, kinds, strict=True))
-        rows.append(_split(scenario, chosen, hosts, typed if kinds == own else None))
+        rows.append(_split(scenario, chosen, hosts, typed, typed=kinds == own))
     agree, differ = _agreement([row for row in rows if row.refused is None])
     return Splits(
         scenario.title,
@@ -143,6 +153,7 @@ def splits(scenario: Scenario) -> Splits:
         agree,
         differ,
         tuple(warnings),
+        *((NO_FLOWS,) if is_stated(scenario) else ()),
     )
 
 
@@ -159,18 +170,21 @@ def _hosts(scenario: Scenario, typed: Numbers) -> tuple[str, ...]:
     return tuple(item for item in items if item in at)
 
 
-def _split(scenario: Scenario, kinds: dict[int, Kind], hosts: tuple[str, ...], known: Numbers | None) -> Split:
+def _split(
+    scenario: Scenario, kinds: dict[int, Kind], hosts: tuple[str, ...], as_typed: Numbers, *, typed: bool
+) -> Split:
     shown = {str(number): kind for number, kind in kinds.items()}
-    typed = known is not None
     changed = with_kinds(scenario, kinds)
     if not any(flow.kind == "transmission" for flow in changed.flows):
         return Split(shown, typed, "no flow makes new infections: F is 0.")
     try:
-        found = known or decided_numbers(changed)
+        found = as_typed if typed else _numbers(changed, as_typed)
     except DerivationError as error:
         return Split(shown, typed, str(error))
     if found.no_R0 is not None:
-        return Split(shown, typed, found.no_R0)
+        # A sign that is wrong in F, or off the diagonal of V, comes from a rate that A1 and A2 exclude.
+        signs = found.broken is None or "off-diagonal" in found.no_R0
+        return Split(shown, typed, f"{'A1 or A2' if signs else 'A5'} fails: {found.no_R0}")
     types = [found.template.types[int(k)] for k in found.at]
     with precision(found.bits):
         root = 0.0 if found.spectrum is None else nearest(found.spectrum.root)
@@ -193,6 +207,14 @@ def _split(scenario: Scenario, kinds: dict[int, Kind], hosts: tuple[str, ...], k
         growth,
         members,
     )
+
+
+def _numbers(changed: Scenario, as_typed: Numbers) -> Numbers:
+    """Return the numbers under other kinds; the state without infection does not depend on them."""
+    with precision(as_typed.bits):
+        found = Numbers(changed, state=as_typed.point.infection_free)
+    found.bits = as_typed.bits
+    return found if found.decided else decided_numbers(changed)
 
 
 def _rows(matrix: object) -> tuple[tuple[float, ...], ...]:

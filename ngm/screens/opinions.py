@@ -68,7 +68,7 @@ def units_panel(shown: Shown) -> None:
     for note in found.findings:
         st.warning(f"**{plain(note.where)}**: {plain(note.message)}")
     if not found.findings:
-        st.markdown("✓ The units fit: every flow is in its compartment's unit per time, and no sum mixes units.")
+        st.markdown(f"✓ {found.fits}")
     rows = [
         [
             row.parameter,
@@ -102,13 +102,11 @@ def splits_panel(shown: Shown, write: Write) -> None:
         parts.problem_box(found, "with the splits")
         return
     if not found.choices:
-        st.markdown(
-            "No flow's kind is a choice here: nobody enters an infected compartment but by infection or a step forward."
-        )
+        st.markdown(plain(found.none))
         return
     for number, why in found.choices.items():
         st.markdown(f"- flow {number}: {plain(why)}")
-    hosts = list(found.splits[0].hosts)
+    hosts = found.shown_hosts
     rows = []
     for k, split in enumerate(found.splits, 1):
         numbers = [split.R0, split.growth_rate, *(split.hosts.get(host) for host in hosts)]
@@ -126,9 +124,9 @@ def splits_panel(shown: Shown, write: Write) -> None:
         if split.refused:
             st.markdown(f"Split {k} is none: {plain(split.refused)}")
     if found.agree:
-        st.markdown(f"The same in all valid splits: **{plain(', '.join(found.agree))}**.")
+        st.markdown(f"The same in all valid splits: **{plain(found.words(found.agree))}**.")
     if found.differ:
-        st.markdown(f"Not to be compared between models that split differently: **{plain(', '.join(found.differ))}**.")
+        st.markdown(f"Not to be compared between models that split differently: **{plain(found.words(found.differ))}**.")
     if len(found.types) <= MOST_TYPES:
         with st.expander("F, V and K of each split"):
             for k, split in enumerate(found.splits, 1):

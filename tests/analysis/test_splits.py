@@ -31,14 +31,29 @@ def test_both_splits_of_the_waterborne_model():
 
 def test_failed_treatment_is_a_choice():
     result = ngm.splits(TREATMENT.scenario)
-    assert list(result.choices) == ["3"]
-    assert [split.R0 for split in result.splits] == pytest.approx([1.609787508, 1.548032407], rel=1e-9)  # published
+    assert list(result.choices) == ["3", "4"]  # I -> E, then the step forward
+    assert "where new infections arrive too" in result.choices["3"]
+    by_kind = {tuple(split.kinds.values()): split.R0 for split in result.splits}
+    assert by_kind["transition", "transition"] == pytest.approx(1.609787508, rel=1e-9)  # published
+    assert by_kind["transmission", "transition"] == pytest.approx(1.548032407, rel=1e-9)  # published
 
 
-def test_a_step_forward_is_none():
+def test_a_step_forward_comes_last_and_only_adds_a_generation():
     result = ngm.splits(SEIR.scenario)
-    assert result.choices == {}
-    assert len(result.splits) == 1
+    assert list(result.choices) == ["3"]
+    assert "rarely" in result.choices["3"]
+    first, second = result.splits
+    assert second.R0 == pytest.approx(first.R0**0.5, rel=1e-12)  # by hand: E -> I -> E is a cycle of two then
+    assert second.hosts["E"] == pytest.approx(first.R0, rel=1e-12)
+
+
+def test_more_than_four_choices():
+    result = ngm.splits(ngm.load(SCENARIOS / "staged-chronic-hollin-disease.toml"))
+    assert len(result.choices) == 4
+    assert len(result.splits) == 16
+    assert next(iter(result.choices)) == "7"  # relapse before the steps forward
+    assert any("keep the kind of the file" in warning and "flow 6" in warning for warning in result.warnings)
+    assert set(result.agree) == {"growth rate", "whether R0 exceeds 1", "T(I1)"}
 
 
 def test_an_invalid_split_says_which_condition_fails():
@@ -55,7 +70,7 @@ def test_an_invalid_split_says_which_condition_fails():
     assert first.R0 == pytest.approx(max(0.5 / 0.3, 0.3 / 0.2))
     refused = [split for split in result.splits if split.refused is not None]
     assert refused
-    assert all("M-matrix" in split.refused or "new infections" in split.refused for split in refused)
+    assert all("A5 fails: V is no M-matrix" in s.refused or "no flow makes new infections" in s.refused for s in refused)
 
 
 def test_up_to_sixteen():
