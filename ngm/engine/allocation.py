@@ -240,10 +240,8 @@ def first_then_even(problem: Problem, group: int, budget: float) -> FloatArray:
 def greedy(problem: Problem, budget: float, portions: int = 40) -> FloatArray:
     """Return the coverage that gives each portion where the number falls most for its price at that moment."""
     x = np.zeros(len(problem.price))
-    for _ in range(portions):
+    for _ in range(portions if problem.parts else 0):  # without a cycle the number is 0 as it is
         values, slopes = problem.tangents(x)
-        if not len(values):  # no cycle is left: the number is 0
-            break
         gain = -slopes[int(np.argmax(values))] / problem.price
         rest = budget / portions
         for g in np.argsort(-gain, kind="stable"):
@@ -272,6 +270,8 @@ def best_share(problem: Problem, budget: float, starts: Sequence[FloatArray]) ->
     """
     if problem.spend(problem.upper) <= budget:
         return problem.upper.copy()
+    if not problem.parts:
+        return np.zeros(len(problem.price))
     ranked = sorted((problem.value(x), k) for k, x in enumerate(starts))
     many = len(problem.price) > _MANY
     chosen = [starts[k] for _, k in ranked[: 1 if many or problem.shift == 0.0 else 6]]

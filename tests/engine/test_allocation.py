@@ -242,6 +242,14 @@ def test_weights_of_any_size_spend_the_budget_and_no_more(weights):
         assert spent == pytest.approx(min(share * budget, room), rel=1e-9)
 
 
+@pytest.mark.parametrize(("seed", "groups"), [(9, 2), (37, 3), (59, 2), (248, 3)])  # found by a scan of seeds
+def test_without_a_cycle_nothing_need_be_spent(seed, groups):
+    given, budget = drawn("sparse", seed, groups)
+    x, bound = solved(given, budget)
+    assert max(abs(np.linalg.eigvals(given.K))) == 0  # numpy, as the second route
+    assert given.number(x) == bound.low == 0
+
+
 @settings(max_examples=40, deadline=None)
 @given(shape=st.sampled_from(SHAPES), seed=st.integers(0, 100_000), groups=st.integers(2, 6), data=st.data())
 def test_no_share_beats_the_bound(shape, seed, groups, data):
