@@ -344,7 +344,8 @@ def _trouble(cell: str, *, signed: bool = False) -> str:
         return f"'{text}' is not a number.{advice}"
     if value < 0 and not signed:
         return f"{text} is negative. Entries are positive or zero."
-    return f"{text} is too large. Numbers stay below 1e300 in size." if abs(value) >= _LARGEST else ""
+    # `abs` would round, and overflow at 1e999999999
+    return f"{text} is too large. Numbers stay below 1e300 in size." if value.copy_abs() >= _LARGEST else ""
 
 
 def _cut(text: str) -> str:

@@ -64,7 +64,8 @@ def read_text(path: str | Path) -> str:
     if len(raw) > LARGEST_FILE:
         _refuse("the file is larger than 16 MB. Put large matrices into CSV files (file = …).", where)
     try:
-        return raw.decode("utf-8")
+        # editors of some systems put a byte order mark before UTF-8
+        return raw.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = raw.count(b"\n", 0, error.start) + 1
         _refuse(f"line {line} is not UTF-8. Save the file as UTF-8.", where)
@@ -117,8 +118,6 @@ def _check_characters(text: str) -> None:
         _refuse(f"line {text.count(chr(10), 0, error.start) + 1} holds half a character. Save the file as UTF-8.")
     if size > LARGEST_FILE:
         _refuse("the text is larger than 16 MB. Put large matrices into CSV files (file = …).")
-    if text.startswith("\ufeff"):
-        _refuse("the file begins with a byte order mark. Save it as UTF-8 without one.", "line 1")
     long = _LONG_KEY.search(text)
     if long is not None:
         line = text.count("\n", 0, long.start()) + 1

@@ -54,6 +54,8 @@ def loads(text: str, folder: str | None = None) -> Scenario:
     ScenarioError
         With every problem found (`problems`).
     """
+    # the mark that some editors put before UTF-8 is no part of the text
+    text = text.removeprefix("\ufeff")
     data = to_data(text)
     draft = Draft(Findings())
     with suppress(EnoughError):

@@ -56,7 +56,7 @@ def uploaded(name: str, content: bytes) -> str | Refused:
     if not name.lower().endswith(".toml"):
         return Refused("The name does not end in .toml. A scenario is a TOML text file.")
     try:
-        text = content.decode("utf-8")
+        text = content.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         return Refused(f"Byte {error.start + 1} is not UTF-8 text. Save the file as plain text in UTF-8 and try again.")
     if "\x00" in text:

@@ -30,7 +30,6 @@ from tests.scenario.models import PLAIN
         ("a = " + "9" * 5000, ("too many digits",)),
         ("a = 0." + "9" * 10_000, ("more than 5,000 digits",)),
         ("a = 2024-02-31", ("not valid TOML: invalid date",)),
-        ("\ufeffa = 1", ("line 1: the file begins with a byte order mark",)),
         ("a = '\ud800'", ("half a character",)),
         ("a" + ".a" * 100_000 + " = 1", ("line 1: a key has more than 50 parts",)),
         ("[a" + ".a" * 100_000 + "]", ("line 1: a key has more than 50 parts",)),
@@ -46,6 +45,13 @@ def test_texts(text: str, parts: tuple[str, ...]) -> None:
     for part in parts:
         assert part in str(caught.value)
     assert len(str(caught.value)) < 2000
+
+
+def test_a_byte_order_mark_is_no_part_of_the_text(tmp_path: Path) -> None:
+    assert loads("\ufeff" + PLAIN).text == PLAIN
+    path = tmp_path / "marked.toml"
+    path.write_bytes(b"\xef\xbb\xbf" + PLAIN.encode())
+    assert load(path).text == PLAIN
 
 
 def test_numbers_stay_decimal() -> None:
