@@ -205,7 +205,7 @@ def same_multiple(problem: Problem, direction: FloatArray, budget: float) -> Flo
     left = budget
     free = (direction > 0) & (problem.upper > 0)
     while free.any() and left > 0:
-        rate = direction / float(np.max(direction[free]))  # of any size, also where only the smallest directions are left
+        rate = direction / float(np.max(direction[free]))  # whatever the size of what is left
         t = left / float(problem.price[free] @ rate[free])
         full = free & (rate * t >= problem.upper - x)
         if not full.any():

@@ -68,6 +68,8 @@ def lower_bound(problem: Problem, budget: float, x: FloatArray) -> Bound:
     """
     if problem.spend(problem.upper) <= budget:
         return Bound(problem.number(problem.upper), "all", problem.upper.copy())
+    if not problem.parts:
+        return Bound(0.0, "convex", x)
     number = problem.value(x)
     shift = problem.shift
     if shift == 0.0:

@@ -238,7 +238,8 @@ def test_weights_of_any_size_spend_the_budget_and_no_more(weights):
     given, budget = drawn("contacts", 0, 2)
     for share in (0.3, 1.0):
         spent = given.spend(same_multiple(given, np.array(weights), share * budget))
-        room = given.spend(np.where(np.array(weights) > 0, given.upper, 0.0))  # by hand: only groups with a weight take any
+        # by hand: only groups with a weight take any
+        room = given.spend(np.where(np.array(weights) > 0, given.upper, 0.0))
         assert spent == pytest.approx(min(share * budget, room), rel=1e-9)
 
 
