@@ -172,9 +172,10 @@ class FormulaMatch:
 class FormulaOpinion:
     """The result of `ngm.formula`.
 
-    `verdict`: "equal", "square", "root", "type number", "other split", "threshold only", "different" or
-    "undecided" (too few points with an R0). `exact`: whether
-    the agreement was also shown with symbols. `counterexample`: values in force of the parameters at a point where the
+    `verdict`: "equal", "square", "root", "type number", "target number", "other split", "threshold only",
+    "different" or "undecided" (too few points with an R0). `exact`: whether the agreement was shown without rounding; `proof`: how, as
+    "symbols" (the difference of the two is 0 as an expression) or "fractions" (at every point), else None.
+    `counterexample`: values in force of the parameters at a point where the
     two differ, with both numbers; None where none was found. `responses`: parameters to which they respond
     differently there: name -> (elasticity of R0, elasticity of the formula).
     """
@@ -184,6 +185,7 @@ class FormulaOpinion:
     verdict: str
     message: str
     exact: bool
+    proof: str | None
     points: int
     largest_difference: float | None
     counterexample: Mapping[str, float] | None

@@ -16,15 +16,16 @@ import struct
 import subprocess
 import sys
 import threading
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextvars import ContextVar
 from pathlib import Path
 from typing import IO, Any
 
+from ngm.expression.tree import Node
 from ngm.results import Symbolic
 from ngm.scenario.model import Scenario
 
-__all__ = ["LIMIT", "Stop", "WorkerFailed", "stoppable", "symbols", "warm"]
+__all__ = ["LIMIT", "Stop", "WorkerFailed", "identical", "stoppable", "symbols", "warm"]
 
 #: Seconds for the symbols of one scenario.
 LIMIT = 10.0
@@ -165,6 +166,25 @@ def symbols(
     WorkerFailed
         The limit on time or memory was reached, or no process could be started.
     """
+    answer = _asked("symbols", (scenario, dict(state), dict(values), dict(branches)), options, limit)
+    if isinstance(answer, Symbolic):
+        return answer
+    raise WorkerFailed(str(answer))
+
+
+def identical(
+    first: Node, second: Node, meanings: Mapping[str, Node], any_sign: Sequence[str] = (), limit: float = LIMIT
+) -> bool:
+    """Return `ngm.derivation.identity.identical` of the same arguments, computed in a child; False where no proof came."""
+    try:
+        answer = _asked("identical", (first, second, dict(meanings), tuple(any_sign)), {}, limit)
+    except WorkerFailed:
+        return False
+    return answer is True
+
+
+def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], limit: float) -> Any:
+    """Return what a child answers; text where the job failed."""
     with _lock:
         child = _idle.pop() if _idle else None
     try:
@@ -172,16 +192,14 @@ def symbols(
             child = _Child()
     except OSError as error:
         raise WorkerFailed(f"no process for the formulas could be started ({error.strerror}).") from None
-    answer = child.ask((scenario, dict(state), dict(values), dict(branches), options), limit)
+    answer = child.ask((job, arguments, dict(options)), limit)
     with _lock:
         if len(_idle) < 2:
             _idle.append(child)
             child = None
     if child is not None:
         child.kill()
-    if isinstance(answer, Symbolic):
-        return answer
-    raise WorkerFailed(str(answer))
+    return answer
 
 
 @atexit.register
@@ -217,16 +235,18 @@ def serve() -> None:
         resource.setrlimit(resource.RLIMIT_AS, (MEMORY, MEMORY))
     with contextlib.suppress(OSError, AttributeError):
         os.nice(5)
+    from ngm.derivation.identity import identical as proven
     from ngm.derivation.symbols import derive_symbols
     from ngm.errors import NgmError
 
+    jobs: dict[str, Callable[..., object]] = {"symbols": derive_symbols, "identical": proven}
     while True:
         try:
-            scenario, state, values, branches, options = _receive(sys.stdin.buffer)
+            job, arguments, options = _receive(sys.stdin.buffer)
         except (EOFError, OSError):
             os._exit(0)
         try:
-            answer: object = derive_symbols(scenario, state, values, branches, **options)
+            answer: object = jobs[job](*arguments, **options)
         except NgmError as error:
             answer = f"the formulas could not be written ({error.problems[0].message})"
         except RecursionError:

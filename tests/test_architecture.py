@@ -26,7 +26,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     "scenario": {"errors", "expression"},
     # The classes of a graph are arrays in, arrays out: the one thing of the engine that symbols need too.
     "derivation": {"errors", "expression", "scenario", "results", "engine.structure"},
-    "worker": {"errors", "results", "scenario", "derivation"},
+    "worker": {"errors", "expression.tree", "results", "scenario", "derivation"},
     "analysis": {
         "errors",
         "expression",

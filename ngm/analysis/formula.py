@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from decimal import Decimal, localcontext
 from fractions import Fraction
-from itertools import combinations
+from itertools import combinations, product
 from typing import Any
 
 import numpy as np
@@ -17,10 +17,11 @@ from ngm.errors import ExpressionError, Problem, ScenarioError
 from ngm.expression.from_latex import from_latex, is_latex, right_side
 from ngm.expression.names import suggest
 from ngm.expression.parse import parse
-from ngm.expression.tree import Apply, Name, Node, Total, walk
+from ngm.expression.tree import Apply, Name, Node, Number, Total, walk
 from ngm.results import Solution
 from ngm.results_opinion import FormulaMatch, FormulaOpinion
 from ngm.scenario.model import Kind, Scenario
+from ngm.worker import identical
 
 __all__ = ["formula"]
 
@@ -31,6 +32,7 @@ LEAST = 8
 SAME_DIGITS = Decimal("1e-40")
 SAME_NUMBER = Decimal("1e-10")
 MOST_FOR_SETS = 6
+MOST_FOR_TARGETS = 6
 #: Points at which other splits are computed anew.
 SPLIT_POINTS = 4
 
@@ -59,10 +61,10 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
         As `ngm.solve`.
     """
     solution = solve(scenario)
-    tree = _read(scenario, solution, text)
     if solution.R0 is None:
         raise ScenarioError(Problem("formula", f"the model has no R0 to compare with: {solution.no_R0}"))
     places = Places(scenario, solution, seed)
+    tree = _read(scenario, solution, places, text)
     found: list[tuple[Place, Decimal | None]] = []
     start = places.at(places.typed())
     wanted = POINTS if places.quick else POINTS // 2
@@ -72,7 +74,7 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
     return _Comparison(scenario, solution, text, tree, places, found).opinion()
 
 
-def _read(scenario: Scenario, solution: Solution, text: str) -> Node:
+def _read(scenario: Scenario, solution: Solution, places: Places, text: str) -> Node:
     uninfected = [name for name, compartment in scenario.compartments.items() if not compartment.infected]
     known = [*scenario.parameters, *scenario.definitions, *uninfected]
     own = right_side(text)
@@ -81,7 +83,7 @@ def _read(scenario: Scenario, solution: Solution, text: str) -> Node:
     if is_latex(own):
         own = from_latex(own, known)
     tree = parse(own, where="formula", items="[" in own)
-    items = set(known) | set(solution.infection_free or {})
+    items = set(known) | set(solution.infection_free or {}) | set(places.entries)
     for name, parameter in scenario.parameters.items():
         items |= set(scenario.items(name, parameter.by))
     for node in walk(tree):
@@ -133,24 +135,40 @@ class _Comparison:
             return self._verdict(
                 "undecided",
                 f"Only {len(self.found)} of the points tried have an R0: too few to conclude anything.",
-                False,
+                None,
             )
         if self.matches("R0", lambda place: place.R0):
-            exact = self._is_exact()
-            how = (
-                "in exact fractions" if exact else "to 40 digits" if self.places.closed is not None else "to 10 digits"
-            )
+            proof = "symbols" if self._is_proven() else "fractions" if self._is_exact() else None
+            rounded = "to 40 digits" if self.places.closed is not None else "to 10 digits"
+            how = {"symbols": "and proven with symbols", "fractions": "in exact fractions"}.get(proof or "", rounded)
             return self._verdict(
-                "equal", f"The formula is the model's R0: equal at all {len(self.found)} points, {how}.", exact
+                "equal", f"The formula is the model's R0: equal at all {len(self.found)} points, {how}.", proof
             )
         for verdict, name, value in self._powers():
             if self.matches(name, value):
-                return self._verdict(verdict, self._power_words(verdict, name), False)
-        for find in (self._type_number, self._other_split, self._threshold):
+                return self._verdict(verdict, self._power_words(verdict, name), None)
+        for find in (self._type_number, self._target_number, self._other_split, self._threshold):
             verdict_message = find()
             if verdict_message is not None:
-                return self._verdict(*verdict_message, False)
-        return self._verdict("different", "The formula is not the model's R0, and no number related to it.", False)
+                return self._verdict(*verdict_message, None)
+        return self._verdict("different", "The formula is not the model's R0, and no number related to it.", None)
+
+    def _is_proven(self) -> bool:
+        closed = self.places.closed
+        if closed is None:
+            return False
+        scenario = self.scenario
+        meanings: dict[str, Node] = {
+            name: definition.expression.tree for name, definition in scenario.definitions.items() if not definition.by
+        }
+        meanings |= dict.fromkeys(self.solution.types, Number(Fraction(0)))
+        meanings |= self.places.free
+        for parameter in scenario.parameters.values():
+            if parameter.follows:
+                items = scenario.items(parameter.name, parameter.by)
+                meanings |= {item: value.tree for item, value in zip(items, parameter.values, strict=True)}
+        any_sign = [item for p in scenario.parameters.values() if p.any_sign for item in scenario.items(p.name, p.by)]
+        return identical(self.tree, closed, meanings, any_sign)
 
     def _is_exact(self) -> bool:
         closed = self.places.closed
@@ -206,6 +224,23 @@ class _Comparison:
                         f"The formula is the type-reproduction number of {named}, and not R0: what control of {named} alone "
                         "must undo. Both are 1 together."
                     )
+        return None
+
+    def _target_number(self) -> tuple[str, str] | None:
+        at = list(self.solution.types_at_infection)
+        if not 1 < len(at) <= MOST_FOR_TARGETS:
+            return None
+        for i, j in product(range(len(at)), repeat=2):
+
+            def value(place: Place, i: int = i, j: int = j) -> Decimal | None:
+                T = None if place.K is None else _target_number_of(place.K, i, j)
+                return None if T is None else Decimal(T)
+
+            if self._some_agree(value, SAME_NUMBER):
+                return "target number", (
+                    f"The formula is the target reproduction number of infections of {at[i]} by {at[j]}, and not R0: what "
+                    "control of these alone must undo. Both are 1 together."
+                )
         return None
 
     def _some_agree(self, value: Callable[[Place], Decimal | None], same: Decimal, most: int | None = None) -> bool:
@@ -294,7 +329,7 @@ class _Comparison:
 
     # --- the answer ---------------------------------------------------------------------------------------------------
 
-    def _verdict(self, verdict: str, message: str, exact: bool) -> FormulaOpinion:
+    def _verdict(self, verdict: str, message: str, proof: str | None) -> FormulaOpinion:
         worst: tuple[Place, Decimal | None] | None = None
         largest = Decimal(0)
         for place, own in self.found:
@@ -314,7 +349,8 @@ class _Comparison:
             self.text,
             verdict,
             message,
-            exact,
+            proof is not None,
+            proof,
             len(self.found),
             float(largest) if largest.is_finite() else None,
             point,
@@ -374,3 +410,12 @@ def _type_number_of(K: Any, mask: Any) -> float | None:
         return None
     through = np.where(mask[:, None], K, 0.0) @ np.linalg.inv(np.eye(len(K)) - rest)
     return float(np.max(np.abs(np.linalg.eigvals(through))))
+
+
+def _target_number_of(K: Any, i: int, j: int) -> float | None:
+    """Return K_ij times the ways back from i to j past the entry itself; None where the rest sustains itself."""
+    rest = K.copy()
+    rest[i, j] = 0.0
+    if not K[i, j] or np.max(np.abs(np.linalg.eigvals(rest))) >= 1:
+        return None
+    return float(K[i, j] * np.linalg.inv(np.eye(len(K)) - rest)[j, i])

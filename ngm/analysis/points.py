@@ -112,8 +112,16 @@ class Places:
         self.rows = None
         if solution.symbolic.K is not None:
             self.rows = [[parse(text, items=True) for text in row] for row in solution.symbolic.K]
-        #: whether a point costs no computation of the model
-        self.quick = self.rows is not None
+        #: entries of the matrices that are used as the file has them; balanced ones follow sizes
+        self.entries: dict[str, Fraction] = {}
+        for matrix in self.scenario.matrices.values():
+            if not matrix.reciprocal and matrix.within is None:
+                groups = self.scenario.dimensions[matrix.by].groups
+                self.entries |= {
+                    f"{matrix.name}[{row},{column}]": Fraction(matrix.blocks[0][i][j])
+                    for i, row in enumerate(groups)
+                    for j, column in enumerate(groups)
+                }
         self.random = random.Random(self.seed)
         #: item (``sigma[65+]``) -> its parameter and place; what follows others is computed from these
         self.numbers_of: dict[str, tuple[Parameter, int]] = {}
@@ -121,6 +129,11 @@ class Places:
             if not parameter.follows:
                 items = self.scenario.items(parameter.name, parameter.by)
                 self.numbers_of |= {item: (parameter, k) for k, item in enumerate(items)}
+        if self.closed is not None and self.at(self.typed()) is None:
+            # It names what has no value here, such as an entry of a balanced matrix: the model is computed instead.
+            self.closed = self.rows = None
+        #: whether a point costs no computation of the model
+        self.quick = self.rows is not None
 
     def typed(self) -> dict[str, Fraction]:
         """Return the values of the file."""
@@ -158,6 +171,8 @@ class Places:
         scenario = self.scenario
         for name, value in typed.items():
             self._put(name, value * self.numbers_of[name][0].factor, exact, decimals)
+        for name, value in self.entries.items():
+            self._put(name, value, exact, decimals)
         pending = [p for p in scenario.parameters.values() if p.follows]
         for _ in range(len(pending) + 1):
             for parameter in pending:

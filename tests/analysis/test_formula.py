@@ -6,15 +6,16 @@ Formulas: published or textbook, as in `tests/published` (which says what was re
 from __future__ import annotations
 
 import math
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import pytest
 
 import ngm
 from tests.published.models import evaluate
-from tests.published.test_groups import CORE, PROPORTIONATE
+from tests.published.test_groups import CORE, MULTIGROUP, PROPORTIONATE, TWO_SEXES
 from tests.published.test_one_host import (
     BRANCH,
+    BRANCH_AT_INFECTION,
     SEIR,
     SHED_TRANSITION,
     SHED_TRANSMISSION,
@@ -37,6 +38,44 @@ PROPORTIONATE_CORE = replace(
     CORE.but(arrows="S->I t: b*c*S*sum(c*I)/sum(c*N); I->S x: I/D"),
     values={name: value for name, value in CORE.values.items() if name != "eps"},
 )
+
+
+@dataclass(frozen=True)
+class Given:
+    """A next-generation matrix as a paper gives it, by the names of its entries."""
+
+    name: str
+    values: dict
+
+    def but(self, **values):
+        return replace(self, values={**self.values, **values})
+
+    @property
+    def scenario(self):
+        rows = sorted({name[1] for name in self.values})
+        lines = ["[scenario]", f'title = "{self.name}"', 'time_unit = "day"', "[parameters]"]
+        lines += [f"{name} = {{ value = {value} }}" for name, value in self.values.items()]
+        lines += ["[next_generation]", f"types = {[f'type{row}' for row in rows]}".replace("'", '"')]
+        lines += [f"K = {[[f'k{i}{j}' for j in rows] for i in rows]}".replace("'", '"')]
+        return ngm.loads("\n".join(lines))
+
+    def solve(self):
+        return ngm.solve(self.scenario)
+
+
+# Matrix ours; formulas of the type and target numbers from memory (Roberts & Heesterbeek 2003; Shuai et al. 2013).
+TWO_TYPES = Given("Two types", {"k11": 0.8, "k12": 1.5, "k21": 0.6, "k22": 0.5})
+LARGER_ROOT = "({a} + {d} + sqrt(({a} - {d})^2 + 4*{b}*{c}))/2"
+ROOT_OF_TWO = LARGER_ROOT.format(a="k11", b="k12", c="k21", d="k22")
+
+# B_ij S_i over what leaves the infectious of j; the larger root of the quadratic is by hand.
+SUSCEPTIBLES = "b[{0}]*(d[{0}]*(1 - p[{0}]) + s[{0}])/(d[{0}]*(d[{0}] + th[{0}] + s[{0}]))"
+ENTRY = {(i, j): f"({SUSCEPTIBLES.format(i)}*B[{i},{j}]/(d[{j}] + g[{j}] + e[{j}]))" for i in (1, 2) for j in (1, 2)}
+GENERAL = LARGER_ROOT.format(a=ENTRY[1, 1], b=ENTRY[1, 2], c=ENTRY[2, 1], d=ENTRY[2, 2])
+
+WEIGHTED = "(c{0}[low]^2*n{0}[low] + c{0}[high]^2*n{0}[high])/(c{0}[low]*n{0}[low] + c{0}[high]*n{0}[high])"
+SEXES = f"sqrt(bfm*bmf*Dm*Df*{WEIGHTED.format('m')}*{WEIGHTED.format('f')})"
+BRANCHES = "beta*sigma/(sigma + mu)*(p/(gI + mu) + q*(1 - p)/(gA + mu))"
 
 #: model, its published formula, slips: a survival dropped, a sign, two rates swapped, survival of another stage
 FORMULAS = [
@@ -126,6 +165,40 @@ FORMULAS = [
             "beta*sigma/(sigma + mu)*(p/(gA + mu) + q*(1 - p)/(gI + mu))",
         ],
     ),
+    (
+        BRANCH_AT_INFECTION,
+        BRANCHES,
+        [
+            BRANCHES.replace("*sigma/(sigma + mu)", ""),
+            BRANCHES.replace("p/(gI + mu) + q*(1 - p)/(gA + mu)", "p/(gA + mu) + q*(1 - p)/(gI + mu)"),
+            BRANCHES.replace("(1 - p)", "(1 + p)"),
+        ],
+    ),
+    (
+        MULTIGROUP,
+        GENERAL,
+        [
+            GENERAL.replace("+ sqrt", "- sqrt"),
+            GENERAL.replace("(1 - p[1])", "(1 + p[1])"),
+            GENERAL.replace("(d[1] + g[1] + e[1])", "(d[2] + g[2] + e[2])"),
+            f"{ENTRY[1, 1]} + {ENTRY[2, 2]}",
+        ],
+    ),
+    (
+        TWO_SEXES,
+        SEXES,
+        [SEXES.replace("Dm*Df", "Dm*Dm"), SEXES.replace("cm[low]^2", "cm[low]"), SEXES.replace("bfm*", "")],
+    ),
+    (
+        TWO_TYPES,
+        ROOT_OF_TWO,
+        [
+            ROOT_OF_TWO.replace("4*k12*k21", "4*k12*k22"),
+            ROOT_OF_TWO.replace("+ 4*", "- 4*"),
+            "k11 + k12*k21/(1 + k22)",
+            "k12*k21/((1 - k11)*(1 + k22))",
+        ],
+    ),
     (LEAKY, "beta/(gamma + mu)*(1 - eps*phi)", ["beta/(gamma + mu)*(1 - phi)", "beta/(gamma + mu)*(1 + eps*phi)"]),
     (ALL_OR_NOTHING, "beta/(gamma + mu)*(1 - eps*phi)", ["beta/(gamma + mu)*(1 - eps*phi)^2/(1 - phi)"]),
     (
@@ -195,6 +268,22 @@ def test_other_splits_and_type_numbers_are_told():
     found = ngm.formula(TREATMENT.scenario, "nu*(beta1 + p*r2)/((d + nu + r1)*(d + r2))")
     assert found.verdict == "other split"
     assert "flow 3 as transmission" in found.message
+
+
+def test_type_and_target_numbers_of_a_given_matrix():
+    found = ngm.formula(TWO_TYPES.scenario, "k11 + k12*k21/(1 - k22)")
+    assert found.verdict == "type number"
+    assert "of type1," in found.message
+    found = ngm.formula(TWO_TYPES.scenario, "k12*k21/((1 - k11)*(1 - k22))")
+    assert found.verdict == "target number"
+    assert "type1 by type2" in found.message
+    assert found.formula_there == pytest.approx(9)  # printed
+
+
+def test_equality_is_proven_with_symbols_where_there_is_a_closed_form():
+    found = ngm.formula(SEIR.scenario, "sigma*beta/(gamma*sigma + gamma*mu + mu*sigma + mu^2)")
+    assert (found.verdict, found.exact, found.proof) == ("equal", True, "symbols")
+    assert found.to_json()["proof"] == "symbols"
 
 
 def test_a_threshold_is_never_called_equal():

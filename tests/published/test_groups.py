@@ -184,28 +184,31 @@ def close_pair(*values):
     return pytest.approx(values, rel=1e-9)
 
 
+# From memory (same sources): R0 = sqrt(b_fm b_mf D_m D_f [sum c_m^2 N_m/sum c_m N_m][sum c_f^2 N_f/sum c_f N_f]).
+TWO_SEXES = Model(
+    "Two sexes",
+    "Im If",
+    "Sm Sf",
+    "Sm->Im t: bfm*cm*Sm*sum(cf*If)/sum(cf*nf); Im->Sm x: Im/Dm; Sf->If t: bmf*cf*Sf*sum(cm*Im)/sum(cm*nm)"
+    "; If->Sf x: If/Df",
+    {
+        "bfm": 0.3,
+        "bmf": 0.2,
+        "Dm": 0.5,
+        "Df": 1,
+        "cm": [1.5, 12],
+        "nm": [900, 100],
+        "cf": [1.6, 20.6],
+        "nf": [950, 50],
+    },
+    free={"Sm": "nm", "Sf": "nf"},
+    groups=("low", "high"),
+    formula=lambda p: math.sqrt(p.bfm * p.bmf * p.Dm * p.Df * _weighted(p.cm, p.nm) * _weighted(p.cf, p.nf)),
+)
+
+
 def test_two_sexes():
-    # From memory (same sources): R0 = sqrt(b_fm b_mf D_m D_f [sum c_m^2 N_m/sum c_m N_m][sum c_f^2 N_f/sum c_f N_f]).
-    model = Model(
-        "Two sexes",
-        "Im If",
-        "Sm Sf",
-        "Sm->Im t: bfm*cm*Sm*sum(cf*If)/sum(cf*nf); Im->Sm x: Im/Dm; Sf->If t: bmf*cf*Sf*sum(cm*Im)/sum(cm*nm)"
-        "; If->Sf x: If/Df",
-        {
-            "bfm": 0.3,
-            "bmf": 0.2,
-            "Dm": 0.5,
-            "Df": 1,
-            "cm": [1.5, 12],
-            "nm": [900, 100],
-            "cf": [1.6, 20.6],
-            "nf": [950, 50],
-        },
-        free={"Sm": "nm", "Sf": "nf"},
-        groups=("low", "high"),
-        formula=lambda p: math.sqrt(p.bfm * p.bmf * p.Dm * p.Df * _weighted(p.cm, p.nm) * _weighted(p.cf, p.nf)),
-    )
+    model = TWO_SEXES
     solution = model.solve()
     assert solution.R0 == close(1.338716785)
     assert model.published() == close(1.338716785)
