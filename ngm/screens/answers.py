@@ -12,7 +12,7 @@ from ngm.charts.plane import plane as plane_chart
 from ngm.charts.style import short
 from ngm.results_mixing import Mixing
 from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swing, Swings
-from ngm.screens import asking, cache, forms, parts, state
+from ngm.screens import asking, cache, forms, parts, state, taking
 from ngm.screens.parts import Shown, plain
 
 __all__ = ["calibration", "local", "plane", "save"]
@@ -91,7 +91,7 @@ def _tornado(moved: Swings, write: Write) -> None:
     kind = "range" if over == RANGES else "tenth"
     chart = charts.tornado(rows, moved.R0, over=kind, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, f"R0-by-parameter-{kind}", "the picture of the parameters")
     st.caption(
         "One parameter at a time, the others as they are; at each end of a bar the value it stands for. The dashed line is R0 "
         "= 1. "
@@ -190,7 +190,7 @@ def _first_table(shown: Shown, matrix: str) -> str | None:
 def _show_plane(made: Plane, write: Write) -> None:
     chart = plane_chart(made)
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "R0-plane", "the picture of the plane")
     told = (
         "The thick line is R0 = 1: on its orange side an infection can spread, on its purple side it dies out."
         if dict(made.lines).get(1.0)

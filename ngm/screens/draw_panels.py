@@ -11,7 +11,7 @@ from ngm.charts import sensitivity as charts
 from ngm.charts.style import short
 from ngm.errors import Problem, ScenarioError
 from ngm.results_sensitivity import DrawFigures, Uncertainty
-from ngm.screens import asking, cache, parts, state
+from ngm.screens import asking, cache, parts, state, taking
 from ngm.screens.answers import save
 from ngm.screens.parts import Shown, plain
 
@@ -125,7 +125,7 @@ def _distribution(found: Uncertainty, write: Write) -> None:
     st.caption(f"{told}. P is the share of draws with R0 above 1, under the assumptions of the scenario.")
     chart = charts.histogram(found, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "R0-distribution", "the distribution")
         st.caption("The bar at the top spans the middle 95 % of the draws, its diamond is the median; dashed: R0 = 1.")
     with st.expander("The distribution as a table"):
         parts.table(["figure", "R0"], _figures(figures, write))
@@ -135,7 +135,7 @@ def _distribution(found: Uncertainty, write: Write) -> None:
     with st.expander("Have the figures settled?"):
         settled = charts.convergence(found, dark=parts.dark())
         if settled is not None:
-            st.altair_chart(settled)
+            taking.picture(settled, "R0-settled", "the picture of the figures settling")
         st.caption("Figures of the first draws alone: they should move no further than their 95 % intervals.")
         parts.table(
             ["first draws", "mean", "median", "P(R0 > 1)"],
@@ -183,14 +183,14 @@ def _drivers(found: Uncertainty, write: Write) -> None:
     st.markdown("**What drives the spread**")
     chart = charts.ranking(found, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "ranking", "the picture of the ranking")
         st.caption(
             "Partial rank correlation: how closely R0 goes with one parameter, the others' part taken out; its sign is the "
             "direction. It misleads where R0 both rises and falls."
         )
     second = charts.indices(found, dark=parts.dark())
     if second is not None:
-        st.altair_chart(second)
+        taking.picture(second, "sobol-indices", "the picture of the indices")
         st.caption(
             "Sobol indices: the share of R0's variance that a parameter explains by itself (bar) and with all its interplay "
             "(diamond), with 95 % intervals."

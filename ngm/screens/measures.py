@@ -13,7 +13,7 @@ from ngm.charts.control import TargetKind
 from ngm.errors import NgmError
 from ngm.results import ControlResult
 from ngm.results_control import Compared, Comparison, Strength
-from ngm.screens import asking, cache, editors, forms, packages, parts, state
+from ngm.screens import asking, cache, editors, forms, packages, parts, state, taking
 from ngm.screens.parts import Shown, plain
 from ngm.wording import share, strength_words
 
@@ -56,7 +56,7 @@ def side_by_side(shown: Shown, write: Write) -> None:
     rows = [found.baseline, *sorted(found.interventions, key=ORDERS[order])]
     chart = charts.interventions(rows, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "interventions", "the picture of the interventions")
     st.caption(
         "Dashed line: 1, below which the infection dies out. With an intervention in force the number is a control "
         "reproduction number; R0 is the baseline's alone."
@@ -268,7 +268,7 @@ def strengths(shown: Shown, write: Write) -> None:
     one = next(one for one in found if one.name == name)
     chart = charts.strength(one, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, f"strength-{one.name}", "the picture of the strength")
     with st.expander("This curve as a table"):
         parts.table(["strength", one.label], [(write(x), "none" if y is None else write(y)) for x, y in one.curve])
     parts.warnings_box(dict.fromkeys(warning for one in found for warning in one.warnings))
@@ -304,7 +304,7 @@ def targets(shown: Shown, write: Write) -> None:
         )
     chart = charts.efforts(result, kind, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, f"efforts-{kind}", "the picture of the efforts")
     if kind == "types":
         rows = [
             (" + ".join(t.types), write(t.T), _effort(t.critical_effort, t.T, write), t.why or "")

@@ -11,7 +11,7 @@ from ngm.charts import mixing as charts
 from ngm.charts.style import short
 from ngm.results import Matrix
 from ngm.results_mixing import Curve, MixCase, Mixing, MixingMap, MixingResponses
-from ngm.screens import cache, parts, state
+from ngm.screens import cache, parts, state, taking
 from ngm.screens.parts import plain
 
 __all__ = ["answers", "cases", "csv_of", "mix_table", "reciprocity", "the_map", "the_matrix"]
@@ -43,7 +43,7 @@ def the_matrix(found: Mixing, write: Write) -> None:
     )
     chart = charts.contacts(found, dark=parts.dark())
     if chart is not None:
-        _heat(chart, len(found.groups))
+        _heat(chart, len(found.groups), "contacts")
     with st.expander("As a table, with row and column sums"):
         heads = ["group", "contacts of one member (row sum)", "column sum", "members"]
         sizes = found.sizes
@@ -66,8 +66,8 @@ def the_matrix(found: Mixing, write: Write) -> None:
     )
 
 
-def _heat(chart: Any, groups: int) -> None:
-    st.altair_chart(chart, width="content" if groups <= charts.SMALL else "stretch")
+def _heat(chart: Any, groups: int, file: str) -> None:
+    taking.picture(chart, file, "the picture of the matrix", width="content" if groups <= charts.SMALL else "stretch")
 
 
 def reciprocity(found: Mixing, write: Write) -> None:
@@ -97,7 +97,7 @@ def reciprocity(found: Mixing, write: Write) -> None:
     with st.expander("The gaps, pair by pair", expanded=not found.reciprocal):
         chart = charts.gaps(found, dark=parts.dark())
         if chart is not None:
-            _heat(chart, len(found.groups))
+            _heat(chart, len(found.groups), "gaps")
         st.caption(
             "Positive (orange): the row's group counts more than the column's. The other side of a pair has the same gap "
             "with its sign turned."
@@ -139,7 +139,9 @@ def mix_table(labels: Sequence[str], shown: Sequence[MixCase], write: Write, key
         st.caption("There is no case mix to show.")
         return
     if len(labels) <= charts.MOST_GROUPS:
-        st.altair_chart(charts.case_mix(labels, mixes, dark=parts.dark()))
+        taking.picture(
+            charts.case_mix(labels, mixes, dark=parts.dark()), f"case-mix-{key}", "the picture of the case mix"
+        )
     with st.expander("The case mix as a table"):
         rows = [(label, *(write(mix[k]) for _, mix in mixes)) for k, label in enumerate(labels)]
         parts.table(["group", *(name for name, _ in mixes)], rows)
@@ -202,10 +204,10 @@ def _index(names: Sequence[str], field: str, default: str) -> int:
 def _curve(curve: Curve, title: str, labels: Sequence[str], write: Write, key: str) -> None:
     chart = charts.response(curve, title, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, f"R0-along-{title}-{key}", "the picture of R0")
     mix = charts.mix_along(labels, curve, title)
     if mix is not None:
-        st.altair_chart(mix)
+        taking.picture(mix, f"case-mix-along-{title}-{key}", "the picture of the case mix")
     with st.expander(f"As a table: R0 and the case mix along the {title}"):
         heads = [title, "R0", *labels]
         rows = [
@@ -233,7 +235,7 @@ def _pairs(found: MixingResponses, write: Write) -> None:
         return
     chart = charts.pairs(found, dark=parts.dark())
     if chart is not None:
-        _heat(chart, len(found.groups))
+        _heat(chart, len(found.groups), "pairs")
     told = "" if found.exact else " Taken as differences, since these contacts also move the state without infection."
     st.caption(f"4 in a cell: if this pair meets 1 % more, R0 rises by 0.04 %. Each pair stands once.{told}")
     with st.expander("As tables: by group, by pair, entry by entry"):
@@ -273,7 +275,7 @@ def the_map(shown: parts.Shown, found: Mixing, parameters: Sequence[str], write:
         return
     chart = charts.map_of_two(made)
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "R0-map", "the map")
     told = (
         "The black line is R0 = 1; on its orange side an infection can spread."
         if made.line

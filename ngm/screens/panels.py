@@ -9,7 +9,7 @@ import streamlit as st
 from ngm.charts import bars, graphs
 from ngm.charts.spectrum import eigenvalues
 from ngm.results import ControlResult, Solution
-from ngm.screens import cache, forms, parts, state
+from ngm.screens import cache, forms, parts, state, taking
 from ngm.screens.forms import TABLES
 from ngm.screens.parts import Shown, plain
 
@@ -97,7 +97,14 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
     st.subheader("Who infects whom")
     graph = graphs.who_infects_whom(solution, dark=parts.dark())
     if graph is not None:
-        st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
+        types = solution.types_at_infection
+        arrows = [
+            (types[j], types[i], value)
+            for i, row in enumerate(solution.K or ())
+            for j, value in enumerate(row)
+            if value != 0
+        ]
+        taking.diagram(graph, "who-infects-whom", [("infects", "infected", "infections caused by one case"), *arrows])
         st.caption(
             "An arrow leads from the type that infects to the type infected; beside it, the infections that one case "
             "causes. A box is a class: within it each type leads to each. That with the largest R0 has a solid box."
@@ -119,18 +126,23 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
                 "R0 is no measure of speed."
             )
     if solution.K is not None:
+        taking.matrix("K", solution.K, solution.types_at_infection)
         with st.expander("K in numbers: row infected, column infecting"):
             parts.numbers_table(solution.K, solution.types_at_infection, write, "K")
 
 
-def spectrum(solution: Solution) -> None:
+def spectrum(solution: Solution, write: Write) -> None:
     """Show the eigenvalues of K in the complex plane."""
     st.subheader("Eigenvalues of K")
     chart = eigenvalues(solution, dark=parts.dark())
     if chart is None:
         st.caption("K is too large for its eigenvalues to be listed.")
         return
-    st.altair_chart(chart, width="content")
+    heads, rows = ["real part", "imaginary part"], solution.eigenvalues
+    what = "the picture of the eigenvalues"
+    taking.picture(chart, "eigenvalues", what, width="content", rows=[heads, *rows])
+    with st.expander("The eigenvalues as a table"):
+        parts.table(heads, [tuple(map(write, row)) for row in rows])
     st.caption("R0 is the largest eigenvalue in size. Others on the same circle mean a period, or classes that tie.")
 
 
@@ -146,12 +158,12 @@ def vectors(solution: Solution, write: Write) -> None:
         st.markdown("**Stable distribution**: the mix of new infections, once it has settled")
         chart = bars.stable_distribution(solution, dark=parts.dark())
         if chart is not None:
-            st.altair_chart(chart)
+            taking.picture(chart, "stable-distribution", "the picture of the case mix")
     with second:
         st.markdown("**Reproductive value**: what one case of a type counts for all later generations")
         chart = bars.reproductive_values(solution, dark=parts.dark())
         if chart is not None:
-            st.altair_chart(chart)
+            taking.picture(chart, "reproductive-values", "the picture of the reproductive values")
     with st.expander("Both as a table"):
         rows = [
             (t, write(right[k] if right else None), write(left[k] if left else None))
@@ -170,7 +182,7 @@ def control(result: ControlResult, write: Write) -> None:
     )
     chart = bars.efforts(result, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "efforts", "the picture of the efforts")
     heads = ["target", "T", "critical effort", "why there is none"]
     groups: list[tuple[str, list[tuple[str, ...]]]] = [
         (

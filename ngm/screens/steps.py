@@ -8,7 +8,7 @@ from collections.abc import Callable, Sequence
 import streamlit as st
 
 from ngm.results import Matrix, Solution, Symbolic, TextMatrix
-from ngm.screens import parts
+from ngm.screens import parts, taking
 from ngm.screens.parts import latex, plain
 
 __all__ = [
@@ -173,6 +173,7 @@ def root(solution: Solution) -> None:
     if solution.closed_form is not None:
         st.markdown("Closed form, for all values of the parameters:")
         parts.display(rf"\mathcal{{R}}_0 = {latex(solution.closed_form)}")
+        taking.formula("R0", solution.closed_form)
         with st.expander("The closed form as text"):
             st.code(solution.closed_form, language=None, wrap_lines=True)
     else:
@@ -184,6 +185,7 @@ def _matrix(name: str, text: TextMatrix | None, numbers: Matrix | None, labels: 
     typeset = parts.latex_matrix(text, labels) if text is not None else None
     if typeset is not None:
         parts.display(f"{name} = {typeset}")
+    taking.matrix(name, numbers, labels, text)
     if numbers is None:
         if typeset is None:
             st.caption(f"{name} is too large to be shown.")

@@ -11,7 +11,7 @@ import streamlit as st
 
 from ngm.charts import control as charts
 from ngm.results_control import Allocation, Coverage
-from ngm.screens import asking, cache, editors, forms, packages, parts, state
+from ngm.screens import asking, cache, editors, forms, packages, parts, state, taking
 from ngm.screens.asking import Entries
 from ngm.screens.cache import ByGroup
 from ngm.screens.forms import Column
@@ -225,12 +225,12 @@ def _shares(found: Allocation, besides: Sequence[str], write: Write) -> None:
         st.markdown("**The number that each way of sharing leaves**")
         chart = charts.shares(found, dark=parts.dark())
         if chart is not None:
-            st.altair_chart(chart)
+            taking.picture(chart, "allocation", "the picture of the ways of sharing")
     with second:
         st.markdown("**Who gets it: coverage of each group**")
         chart = charts.coverages(found, dark=parts.dark())
         if chart is not None:
-            st.altair_chart(chart)
+            taking.picture(chart, "coverages", "the picture of the coverages")
     ways = [found.best, *found.rules]
     parts.table(
         ["way of sharing", found.label, "above the best", "spent"],

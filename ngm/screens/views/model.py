@@ -10,7 +10,7 @@ from streamlit.delta_generator import DeltaGenerator
 
 from ngm.charts.graphs import flow_diagram
 from ngm.errors import Problem
-from ngm.screens import cache, editors, forms, parts, sketch, state
+from ngm.screens import cache, editors, forms, parts, sketch, state, taking
 from ngm.screens.forms import TABLES, Edit
 
 WORDS = {
@@ -52,7 +52,8 @@ def overview(document: Mapping[str, Any]) -> None:
     if graph is None:
         st.caption("The flow diagram appears here (for up to 60 compartments).")
         return
-    st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
+    arrows = [(a.source, a.target, a.rate, a.kind, a.label) for a in sketch.arrows(document)]
+    taking.diagram(graph, "flow-diagram", [("from", "to", "rate", "kind", "label"), *arrows])
     st.caption(
         "Thick dashed arrows marked “transmission” are new infections (F); thin solid ones are transitions (V). "
         "Infected compartments have a double border; words without a box stand outside."

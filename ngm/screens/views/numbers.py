@@ -23,7 +23,7 @@ def page() -> None:
     if solution.R0 is None:
         return
     panels.who_infects_whom(solution, write)
-    panels.spectrum(solution)
+    panels.spectrum(solution, write)
     panels.vectors(solution, write)
     panels.control(cache.control(shown.text, shown.folder), write)
 
