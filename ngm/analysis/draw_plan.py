@@ -92,6 +92,10 @@ class Plan:
         What the checks look at.
     checks : tuple of Check
         On outputs of `details`.
+    growth : Program or None
+        The entries of F - V that `slopes` leaves open, where they are asked for.
+    slopes : tuple of (int, int, float or None)
+        As `entries`, of F - V.
     curve : Program or None
         Where the infection-free state is no affine system: net flow (n) and its slope (n, n) from inputs and state (n).
         `main` and `details` then take the state after the inputs.
@@ -110,6 +114,8 @@ class Plan:
     screens: tuple[str, ...] = ()
     details: Program | None = None
     checks: tuple[Check, ...] = ()
+    growth: Program | None = None
+    slopes: tuple[tuple[int, int, float | None], ...] = ()
     curve: Program | None = None
     start: tuple[float, ...] = ()
 
@@ -127,8 +133,12 @@ class Plan:
         return out
 
 
-def plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int) -> Plan:
+def plan(
+    scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int, *, growth: bool = False
+) -> Plan:
     """Return how to compute K and R0 for draws of some parameters; plans are kept, by what they are made from.
+
+    `growth`: also how to compute F - V.
 
     Raises
     ------
@@ -136,13 +146,13 @@ def plan(scenario: Scenario, intervention: Intervention | None, columns: Columns
         The scenario itself, at its own values, has no infection-free state, or V is singular by structure.
     """
     # The bytes hold every number and tree: two scenarios with the same ones have the same plan, whatever their text says.
-    key = hashlib.sha256(pickle.dumps((scenario, intervention, dict(columns), inputs))).digest()
+    key = hashlib.sha256(pickle.dumps((scenario, intervention, dict(columns), inputs, growth))).digest()
     with _lock:
         made = _kept.get(key)
         if made is not None:
             _kept.move_to_end(key)
             return made
-    made = _plan(scenario, intervention, columns, inputs)
+    made = _plan(scenario, intervention, columns, inputs, growth)
     with _lock:
         _kept[key] = made
         while len(_kept) > MOST_KEPT:
@@ -150,7 +160,7 @@ def plan(scenario: Scenario, intervention: Intervention | None, columns: Columns
     return made
 
 
-def _plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int) -> Plan:
+def _plan(scenario: Scenario, intervention: Intervention | None, columns: Columns, inputs: int, growth: bool) -> Plan:
     point = Point(scenario, intervention)
     out = Plan(scenario, intervention, columns, inputs, len(point.template.at_infection))
     if len(point.template.types) > MOST_TRACED:
@@ -162,7 +172,7 @@ def _plan(scenario: Scenario, intervention: Intervention | None, columns: Column
     drawn = tuple(trace.input(nonnegative=not any_sign) for any_sign in _signs(scenario, columns, inputs))
     traced = TracedPoint(opened(scenario, columns), intervention, trace, drawn, columns)
     try:
-        return _traced_plan(out, traced, state)
+        return _traced_plan(out, traced, state, growth)
     except CurvedBaseline:
         return out
 
@@ -176,7 +186,7 @@ def _signs(scenario: Scenario, columns: Columns, inputs: int) -> list[bool]:
     return signs
 
 
-def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> Plan:
+def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array], growth: bool) -> Plan:
     template, trace = point.template, point.trace
     evaluator = point.evaluator
     trace.doing = ""
@@ -190,8 +200,6 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
     at = list(template.at_infection)
     one = trace.constant(1.0)
     found = stays(net, [{j: one} for j in at], trace)
-    entries: list[tuple[int, int, float | None]] = []
-    numbers: list[Traced] = []
     K: Array = np.empty((len(at), len(at)), dtype=object)
     for a, row in enumerate(at):
         for b, column in enumerate(found.columns):
@@ -199,10 +207,7 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
             for s, stay in column.items():
                 total = total + F[row, s] * stay
             K[a, b] = total
-            if total.value != 0:
-                entries.append((a, b, total.value))
-                if total.value is None:
-                    numbers.append(total)
+    entries, numbers = _open(K)
     left = _left_over(trace, V) if out.scenario.discrete else []
     checks, looked_at = _checks(point, F, found, K, left)
     screens = _screens(trace, checks, looked_at)
@@ -210,6 +215,7 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
     root = _root(trace, K)
     direct = None if root is None else compiled(trace, [root, *screens.values()])
     details = compiled(trace, looked_at)
+    slopes, rates = _open(F - V) if growth else ([], [])
     curve, start = None, np.empty(0)
     if point.unknown:
         assert point.slope is not None
@@ -225,6 +231,8 @@ def _traced_plan(out: Plan, point: TracedPoint, state: Mapping[str, Array]) -> P
         screens=tuple(screens),
         details=details,
         checks=tuple(checks),
+        growth=compiled(trace, rates) if growth else None,
+        slopes=tuple(slopes),
         curve=curve,
         start=tuple(start.tolist()),
     )
@@ -234,6 +242,13 @@ def _left_over(trace: Trace, V: Array) -> list[Traced]:
     """Return the share of each type that a step leaves where it is: the diagonal of T = I - V, with room for rounding."""
     most = trace.constant(MORE_THAN_ALL)
     return [most - V[k, k] for k in range(len(V))]
+
+
+def _open(matrix: Array) -> tuple[list[tuple[int, int, float | None]], list[Traced]]:
+    """Return the entries that are not 0 by structure, with their values where these are constant, and the others."""
+    rows: list[list[Traced]] = matrix.tolist()
+    found = [(i, j, number) for i, row in enumerate(rows) for j, number in enumerate(row) if number.value != 0]
+    return [(i, j, number.value) for i, j, number in found], [number for _, _, number in found if number.value is None]
 
 
 def _moved(template: TracedTemplate) -> set[str]:

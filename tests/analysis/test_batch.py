@@ -13,7 +13,7 @@ import numpy as np
 import pytest
 
 import ngm
-from ngm.analysis import batch
+from ngm.analysis import batch, draw_work
 from ngm.analysis.batch import draw_numbers, next_generation_matrices
 from ngm.analysis.numbers import decided_numbers
 from ngm.derivation.compile import formulas
@@ -361,7 +361,7 @@ def test_a_draw_does_not_depend_on_its_neighbours(stem, monkeypatch):
     whole = ngm.reproduction_numbers(scenario, draws)
     for task, held in ((1, 1 << 20), (77, 1 << 10), (333, 1 << 20)):
         monkeypatch.setattr(batch, "TASK", task if task > 1 else 1000)
-        monkeypatch.setattr(batch, "MOST_HELD", held)
+        monkeypatch.setattr(draw_work, "MOST_HELD", held)
         part = {name: table[..., : 1 if task == 1 else 1000] for name, table in draws.items()}
         found = ngm.reproduction_numbers(scenario, part)
         assert found.tobytes() == whole[: len(found)].tobytes()
