@@ -79,6 +79,8 @@ def solve_text(result: Solution) -> str:
         lines.append(
             f"effective number at the state now = {figure(result.effective.R)} (not R0: it holds at today's immunity)"
         )
+    if result.growth_factor is not None:
+        lines.append(f"growth factor = {figure(result.growth_factor)} per step of one {unit}, rho(F + T), T = I - V")
     lines.append(f"growth rate = {figure(result.growth_rate)} per {unit}")
     if result.doubling_time is not None:
         lines.append(f"doubling time = {figure(result.doubling_time)} {unit}")

@@ -146,7 +146,8 @@ class Symbolic:
 class Solution:
     """The derivation and the numbers of a scenario at its values: the result of `ngm.solve`.
 
-    Units: F, V and `growth_rate` per time unit (`time_unit`); K and R0 have none. `types` labels rows and columns of F,
+    Units: F, V and `growth_rate` per time unit (`time_unit`); K and R0 have none. `growth_rate` is None in discrete time where
+    a step leaves nothing. `types` labels rows and columns of F,
     V and K_large, `types_at_infection` those of K and both Perron vectors.
     """
 
@@ -171,7 +172,7 @@ class Solution:
     right: Vector | None
     left: Vector | None
     structure: Structure | None
-    growth_rate: float
+    growth_rate: float | None
     doubling_time: float | None
     conditions: tuple[Condition, ...]
     warnings: tuple[str, ...]
@@ -179,6 +180,9 @@ class Solution:
     eigenvalues: tuple[tuple[float, float], ...] = ()
     #: what each entry of F and V is made of, flow by flow
     terms: tuple[EntryTerm, ...] = ()
+    #: whether one step is one time unit; then `growth_factor` is rho(F + T), and None elsewhere
+    discrete: bool = False
+    growth_factor: float | None = None
     #: the number at the state now, where the file gives one
     effective: Effective | None = None
 
@@ -225,6 +229,7 @@ class Solution:
                     ],
                 }
             ),
+            **({"growth_factor": self.growth_factor} if self.discrete else {}),
             "growth_rate": self.growth_rate,
             "doubling_time": self.doubling_time,
             "conditions": [{"name": c.name, "holds": c.holds, "detail": c.detail} for c in self.conditions],

@@ -61,7 +61,7 @@ class Sensitivity:
     time_unit: str
     digest: str
     R0: float | None
-    growth_rate: float
+    growth_rate: float | None
     types_at_infection: tuple[str, ...]
     local: tuple[LocalIndex, ...]
     entry_sensitivity: Matrix | None

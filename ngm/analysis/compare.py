@@ -110,7 +110,7 @@ def _row(
                 mix = tuple(as_floats(found.spectrum.right).tolist())
     now = effective(found)
     r = found.growth
-    doubling, halving = doubling_time(r), doubling_time(-r)
+    doubling, halving = (None, None) if r is None else (doubling_time(r), doubling_time(-r))
     return Compared(
         name=name,
         label=label,

@@ -13,6 +13,7 @@ import numpy as np
 
 from ngm.analysis.large import block_slopes, difference, faults, scaled
 from ngm.analysis.numbers import Numbers
+from ngm.analysis.steps_of_time import overdrawn
 from ngm.derivation.expand import assemble
 from ngm.derivation.rest import RestSystem, choose_branches
 from ngm.derivation.template import Template
@@ -68,6 +69,8 @@ def effective(found: Numbers) -> Effective | None:
     why = None
     if any(F[i, j] < 0 for i, j in zip(*np.nonzero(possible(F)), strict=True)):
         why = "F has a negative entry at this state."
+    elif found.scenario.discrete and overdrawn(V):
+        why = "more leave a compartment in a step than there are in it at this state."
     elif m_matrix(V).verdict != "yes":
         why = "V is no M-matrix at this state."
     if why is not None:

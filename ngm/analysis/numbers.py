@@ -12,13 +12,14 @@ import numpy as np
 
 from ngm.analysis.large import difference, faults, stray_losses
 from ngm.analysis.point import Point, refuse_huge
+from ngm.analysis.steps_of_time import refuse_overdrawn, refuse_overdrawn_blocks
 from ngm.analysis.state import InfectionFree
 from ngm.derivation.conditions import check_arrivals, check_exits
 from ngm.derivation.outline import thumbnail
 from ngm.derivation.template import Template
 from ngm.engine.balls import PRECISION, interval, nearest, precision
 from ngm.engine.enclosure import MMatrix, inverse, m_matrix
-from ngm.engine.growth import class_growth_rate, growth_rate
+from ngm.engine.growth import class_growth_rate, growth_factor, growth_rate, logarithm
 from ngm.engine.large import NextGeneration
 from ngm.engine.linear import matmul, possible
 from ngm.engine.spectrum import Spectrum, spectrum
@@ -31,6 +32,8 @@ __all__ = ["Numbers", "decided_numbers"]
 
 #: Bits tried in turn until every zero, sign and tie is decided; a tie that outlasts them all is a tie.
 PRECISIONS = (PRECISION, 4 * PRECISION, 16 * PRECISION)
+#: A growth factor of a large model up to this size is rounding.
+ROUNDING = 1e-13
 #: Types up to which more bits are tried.
 MOST_REFINED = 60
 
@@ -70,6 +73,8 @@ class Numbers:
         self._class_growth: list[float | None] = []
         if self.point.exact:
             self.F, self.V = self.point.F_and_V
+            if scenario.discrete:
+                refuse_overdrawn(template, self.point.evaluator, self.V)
             self._reproduce()
         else:
             self._reproduce_large()
@@ -130,6 +135,8 @@ class Numbers:
         """Find R0 and the rest of a model whose matrices are never written out."""
         slopes, infected = self.point.blocks, self.template.infected
         V = difference(slopes.losses, slopes.gains)
+        if self.scenario.discrete:
+            refuse_overdrawn_blocks(self.template, V)
         negative, stray = faults(slopes.F), stray_losses(slopes.losses)
         if negative is not None:
             i, j = negative
@@ -187,23 +194,44 @@ class Numbers:
         self._growth = operator.growth_rate(start) if not single else max([*core, operator.growth_rate(start)])
 
     @cached_property
+    def factor_ball(self) -> Any:
+        """In discrete time rho(F + T), what a step multiplies the infection by, as a ball; None in continuous time."""
+        if not self.scenario.discrete:
+            return None
+        if self._growth is not None:
+            factor = 1 + self._growth
+            return interval(factor, factor) if factor > ROUNDING else interval(0.0, 0.0)
+        return growth_factor(self.F, self.V)
+
+    @property
+    def factor(self) -> float | None:
+        """In discrete time rho(F + T), what a step multiplies the infection by; None in continuous time."""
+        return None if self.factor_ball is None else nearest(self.factor_ball)
+
+    @cached_property
     def growth_ball(self) -> Any:
-        """The largest real part of the eigenvalues of F - V, per time unit, as a ball."""
+        """The growth rate per time unit as a ball: of F - V the largest real part of the eigenvalues, or ln rho(F + T)."""
+        if self.factor_ball is not None:
+            return logarithm(self.factor_ball)
         if self._growth is not None:
             return interval(self._growth, self._growth)
         return growth_rate(self.F, self.V)
 
     @property
-    def growth(self) -> float:
-        """The largest real part of the eigenvalues of F - V, per time unit."""
-        return nearest(self.growth_ball)
+    def growth(self) -> float | None:
+        """The growth rate per time unit; None in discrete time where a step leaves nothing."""
+        return None if self.growth_ball is None else nearest(self.growth_ball)
 
     def class_growth(self, number: int) -> float | None:
         """Return the growth rate of one class of K, as if it were alone; None for a zero class."""
         if self._class_growth:
-            return self._class_growth[number]
-        assert self.spectrum is not None
-        rate = class_growth_rate(self.F, self.V, self.at[self.spectrum.classes[number]])
+            found = self._class_growth[number]
+            rate = None if found is None else interval(found, found)
+        else:
+            assert self.spectrum is not None
+            rate = class_growth_rate(self.F, self.V, self.at[self.spectrum.classes[number]])
+        if rate is not None and self.scenario.discrete:
+            rate = logarithm(1 + rate)
         return None if rate is None else nearest(rate)
 
     def _why_none(self, verdict: MMatrix) -> str:
@@ -222,9 +250,10 @@ class Numbers:
                 f"V is singular at these values: of {named} nobody is lost, so the time spent there has no finite mean. "
                 "Check the rates out of it."
             )
+        root = ": rho(T) >= 1" if self.scenario.discrete else ""
         return (
             f"V is no M-matrix at these values: {named} grows without any transmission (what arises there exceeds what "
-            "leaves), so the infection-free state is unstable by itself."
+            f"leaves{root}), so the infection-free state is unstable by itself."
         )
 
 

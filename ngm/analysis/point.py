@@ -265,10 +265,11 @@ class Point:
         moving = tuple(name for name in self.template.uninfected if name in self.template.depended_on)
         if not self.exact and len(self.template.items_of(moving)) > MOST_EXACT:
             return is_large_stable(self.template, self.evaluator, self.template.arrows, moving)
-        slope = self.uninfected_slope
-        if is_stable(slope):
+        slope, discrete = self.uninfected_slope, self.scenario.discrete
+        if is_stable(slope, discrete=discrete):
             return True
-        top = float(np.max(np.linalg.eigvals(slope).real))
+        values = np.linalg.eigvals(slope)
+        top = float(np.max(np.abs(1 + values)) - 1) if discrete else float(np.max(values.real))
         return None if top <= 1e-10 * max(1e-300, float(np.max(np.abs(slope)))) else False
 
     def reciprocity_warnings(self) -> list[str]:

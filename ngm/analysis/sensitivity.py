@@ -180,7 +180,13 @@ def local_indices(scenario: Scenario, base: Numbers, warnings: list[str]) -> tup
             try:
                 slopes = _quotient(scenario, middle, parameter, place, step, exact)
             except NgmError as error:
-                raise _told(error, item) from None
+                if not scenario.discrete:
+                    raise _told(error, item) from None
+                # Where all leave in a step, more cannot: the slope is that towards less.
+                try:
+                    slopes = _quotient(scenario, middle, parameter, place, -step, exact)
+                except NgmError:
+                    raise _told(error, item) from None
             out.append(_index(item, value, middle, slopes))
     return tuple(out)
 
@@ -199,6 +205,8 @@ def _quotient(
     assert low.spectrum is not None
     by = Fraction(1) / width
     dR = (above.spectrum.root - low.spectrum.root) * by.numerator / by.denominator
+    if above.growth_ball is None or low.growth_ball is None:
+        return nearest_or_middle(dR, exact), None
     dr = (above.growth_ball - low.growth_ball) * by.numerator / by.denominator
     return nearest_or_middle(dR, exact), nearest_or_middle(dr, exact)
 
@@ -213,7 +221,7 @@ def _index(item: str, value: float, middle: Numbers, slopes: tuple[float | None,
     assert middle.spectrum is not None
     R0, r = nearest(middle.spectrum.root), middle.growth
     elasticity = None if dR is None or R0 == 0 else dR * value / R0
-    growth_elasticity = None if dr is None or r == 0 else dr * value / r
+    growth_elasticity = None if dr is None or not r else dr * value / r
     return LocalIndex(item, value, dR, elasticity, dr, growth_elasticity)
 
 

@@ -77,7 +77,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
     if len(found.at) == 0:
         warnings.append("No flow makes new infections near the infection-free state: R0 is 0.")
     r = found.growth
-    doubling = doubling_time(r)
+    doubling = None if r is None else doubling_time(r)
     spec = found.spectrum
     R0: float | None = None
     bounds: tuple[float, float] | None = None
@@ -132,6 +132,8 @@ def _numbers(found: Numbers) -> dict[str, Any]:
         "left": left,
         "structure": structure,
         "growth_rate": r,
+        "growth_factor": found.factor,
+        "discrete": scenario.discrete,
         "doubling_time": None if doubling is None else nearest_of(doubling),
         "conditions": tuple(conditions),
         "warnings": warnings,
@@ -143,7 +145,8 @@ def _numbers(found: Numbers) -> dict[str, Any]:
 def _conditions(found: Numbers, warnings: list[str]) -> list[Any]:
     conditions = first_conditions(found.template, found.plain_matrices)
     regular = found.broken is None
-    conditions.append(fifth_condition(found.point.is_stable_without_infection(), regular, found.no_R0))
+    stable = found.point.is_stable_without_infection()
+    conditions.append(fifth_condition(stable, regular, found.no_R0, discrete=found.scenario.discrete))
     for condition in conditions:
         if not condition.holds:
             warnings.append(f"{condition.name} does not hold: {condition.detail}")

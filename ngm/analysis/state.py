@@ -77,7 +77,9 @@ class _Finder:
             if not exact and len(system.labels) > MOST_DENSE:
                 found = find_large_rest(system)
             else:
-                found = find_rest(floats, system if exact else None, len(system.labels))
+                found = find_rest(
+                    floats, system if exact else None, len(system.labels), discrete=self.scenario.discrete
+                )
         except FreeStates as free:
             raise self._left_free(system, free) from None
         x = self._choose(system, found)

@@ -54,15 +54,26 @@ class _Trials:
 
 
 def first_conditions(template: Template, matrices: Mapping[str, Array]) -> list[Condition]:
-    """Return A1, A2, A3 and A4. `matrices` as doubles. A4 is refused before (`check_arrivals`); A3 by the reader."""
+    """Return A1, A2, A3 and A4; in discrete time A1 says of T as well that it has no negative entry (checked before).
+
+    `matrices` as doubles. A4 is refused before (`check_arrivals`); A3 by the reader.
+    """
     with np.errstate(all="ignore"):
         trials = _Trials(template, matrices)
         return [
-            _rates_not_negative(template, trials),
+            _in_steps(template, _rates_not_negative(template, trials)),
             _nothing_leaves_empty(template, trials),
             Condition("A3", True, "Every transmission flow arrives in an infected compartment."),
             Condition("A4", True, "With nobody infected, every flow into an infected compartment is 0."),
         ]
+
+
+def _in_steps(template: Template, condition: Condition) -> Condition:
+    """Return A1 as it is said in discrete time."""
+    if not template.scenario.discrete or not condition.holds:
+        return condition
+    more = " Exits add up to no more than all members of a compartment: T = I - V has no negative entry."
+    return Condition(condition.name, True, condition.detail + more)
 
 
 def _rates_not_negative(template: Template, trials: _Trials) -> Condition:
@@ -239,8 +250,11 @@ def check_exits(template: Template) -> None:
         raise DerivationError(list(dict.fromkeys(problems)))
 
 
-def fifth_condition(stable: bool | None, regular: bool, why: str | None) -> Condition:
-    """Return A5: `stable` is that of the uninfected block (None: neutral), `regular` whether V is a non-singular M-matrix."""
+def fifth_condition(stable: bool | None, regular: bool, why: str | None, *, discrete: bool = False) -> Condition:
+    """Return A5: `stable` is that of the uninfected block (None: neutral), `regular` whether V is a non-singular M-matrix.
+
+    In discrete time: no eigenvalue of T, and of the step among the uninfected, has a modulus of 1 or more.
+    """
     if not regular:
         return Condition("A5", False, f"Without new infections the infected compartments do not empty: {why}")
     if stable is None:
@@ -253,4 +267,5 @@ def fifth_condition(stable: bool | None, regular: bool, why: str | None) -> Cond
         )
     if not stable:
         return Condition("A5", False, "The state without infection is unstable even without infection.")
-    return Condition("A5", True, "Without new infections the infection-free state is stable.")
+    proof = " (a step without new infections leaves less and less: rho(T) < 1)" if discrete else ""
+    return Condition("A5", True, f"Without new infections the infection-free state is stable{proof}.")

@@ -13,7 +13,7 @@ from ngm.engine.enclosure import metzler_root
 from ngm.engine.linear import below_zero, pattern, square, zeros
 from ngm.engine.structure import IntArray, classes, leading_to, reachable
 
-__all__ = ["class_growth_rate", "doubling_time", "growth_rate"]
+__all__ = ["class_growth_rate", "doubling_time", "growth_factor", "growth_rate", "logarithm"]
 
 #: Eigenvalues of a class with mixed signs are enclosed up to this size; larger ones are computed in doubles.
 _ENCLOSED = 24
@@ -49,6 +49,45 @@ def growth_rate(F: Array, V: Array) -> arb:
     if F.shape != V.shape:
         raise ValueError(f"F has shape {F.shape}, V has {V.shape}")
     return _abscissa(F - V)
+
+
+def growth_factor(F: Array, V: Array) -> arb:
+    """Return the growth factor per step in discrete time: rho(F + T), T = I - V.
+
+    F + T = I + (F - V) is non-negative where F is, and then its Perron root is 1 + s(F - V), enclosed as `growth_rate` is.
+    Otherwise it is the largest modulus of the eigenvalues.
+
+    Parameters
+    ----------
+    F, V : (m, m) arrays of balls or float
+        New infections by one member in a step, and I - T; T >= 0. F may have negative entries.
+
+    Returns
+    -------
+    arb
+        Without unit; exactly 0 where it is not proven positive.
+
+    References
+    ----------
+    Allen & van den Driessche (2008) J. Difference Equ. Appl. 14:1127-1147 (from memory)
+
+    Examples
+    --------
+    >>> F, T = np.array([[0, 0.3], [0, 0]]), np.array([[0.6, 0], [0.4, 0.8]])
+    >>> round(float(growth_factor(F, np.eye(2) - T).mid()), 9)
+    1.060555128
+    """
+    F, V = square(F, "F"), square(V, "V")
+    if not below_zero(F).any():
+        factor = 1 + growth_rate(F, V)
+    else:
+        factor = arb(float(np.max(np.abs(np.linalg.eigvals(np.eye(len(F)) + to_floats(F - V))))))
+    return factor if factor > 0 else arb(0)
+
+
+def logarithm(factor: arb) -> arb | None:
+    """Return the growth rate per step that a growth factor is; None where it is 0."""
+    return factor.log() if factor > 0 else None
 
 
 def _abscissa(matrix: Array) -> arb:

@@ -64,21 +64,28 @@ class RestStates:
     stable: tuple[bool, ...]
 
 
-def is_stable(slope: FloatArray) -> bool:
-    """Return whether every eigenvalue of the slope has a negative real part, beyond rounding."""
+def is_stable(slope: FloatArray, *, discrete: bool = False) -> bool:
+    """Return whether deviations die out: eigenvalues of the slope have negative real parts, beyond rounding.
+
+    `discrete`: the slope is that of what a step adds, and the eigenvalues of I + slope have a modulus below 1.
+    """
     if not len(slope):
         return True
     values = np.linalg.eigvals(slope)
+    if discrete:
+        return bool(np.max(np.abs(1 + values)) < 1 - 1e-13)
     return bool(np.max(values.real) < -1e-13 * max(1e-300, float(np.max(np.abs(slope)))))
 
 
-def find_rest(floats: System, exact: System | None, size: int) -> RestStates:
+def find_rest(floats: System, exact: System | None, size: int, *, discrete: bool = False) -> RestStates:
     """Return the states at rest of a system of `size` unknowns.
 
     Parameters
     ----------
     floats, exact : System
         The same equations in doubles and in balls; without `exact` the states are doubles.
+    discrete : bool
+        The net flow is what a step adds: stability is decided by I + slope.
 
     Raises
     ------
@@ -88,12 +95,12 @@ def find_rest(floats: System, exact: System | None, size: int) -> RestStates:
     if size == 0:
         return RestStates((np.empty(0, dtype=object if exact is not None else float),), (True,), (True,))
     with np.errstate(all="ignore"):
-        return _Search(floats, exact, size).run()
+        return _Search(floats, exact, size, discrete).run()
 
 
 class _Search:
-    def __init__(self, floats: System, exact: System | None, size: int) -> None:
-        self.floats, self.exact, self.n = floats, exact, size
+    def __init__(self, floats: System, exact: System | None, size: int, discrete: bool) -> None:
+        self.floats, self.exact, self.n, self.discrete = floats, exact, size, discrete
         self.rng = np.random.default_rng(20030)
         probes = [np.exp(self.rng.normal(size=size)) * scale for scale in (1.0, 37.0, 1e-3)]
         slopes = [np.asarray(self._slope(x)) for x in probes]
@@ -119,7 +126,7 @@ class _Search:
             numbers = to_floats(x) if x.dtype == object else x
             nonnegative.append(bool(np.all(numbers >= -1e-12 * max(1e-300, float(np.max(np.abs(numbers)))))))
             slope = np.asarray(self._slope(numbers))
-            stable.append(bool(np.all(np.isfinite(slope))) and is_stable(slope))
+            stable.append(bool(np.all(np.isfinite(slope))) and is_stable(slope, discrete=self.discrete))
         return RestStates(tuple(states), tuple(nonnegative), tuple(stable))
 
     # --- affine systems ---------------------------------------------------------------------------

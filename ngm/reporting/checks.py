@@ -48,8 +48,9 @@ def check(m: Material) -> Checks:
     root = None
     if s.eigenvalues:
         root = abs(max(math.hypot(re, im) for re, im in s.eigenvalues) - s.R0)
-    near = abs(s.R0 - 1) < 1e-9 or abs(s.growth_rate) < 1e-12
-    sign = None if near or not s.types_at_infection else (s.R0 > 1) == (s.growth_rate > 0)
+    r = s.growth_rate
+    near = r is None or abs(s.R0 - 1) < 1e-9 or abs(r) < 1e-12
+    sign = None if r is None or near or not s.types_at_infection else (s.R0 > 1) == (r > 0)
     return Checks(product, root, _closed(m), sign)
 
 

@@ -59,6 +59,7 @@ class Draft:
     summary: str | None = None
     time_unit: str = ""
     strict_units: bool = False
+    discrete: bool = False
     dimensions: dict[str, Dimension] = field(default_factory=dict)
     compartments: dict[str, Compartment] = field(default_factory=dict)
     parameters: dict[str, Parameter] = field(default_factory=dict)

@@ -111,6 +111,7 @@ def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
         report=draft.report,
         summary=draft.summary,
         strict_units=draft.strict_units,
+        discrete=draft.discrete,
         warnings=tuple(draft.found.warnings),
         text=text,
         folder=folder,

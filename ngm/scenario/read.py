@@ -161,10 +161,10 @@ def _scenario(draft: Draft, data: Mapping[str, Any]) -> None:
     if check not in (None, "warn", "strict"):
         table.problem("units", f'\'{short(check or "")}\' is not known. Write "warn" or "strict", or leave it out.')
     time = table.text("time")
-    if time == "discrete":
-        table.problem("time", '"discrete" is not supported yet by this version. Leave it out for continuous time.')
-    elif time is not None:
-        table.problem("time", f"'{short(time)}' is not known. Leave it out for continuous time.")
+    draft.discrete = time == "discrete"
+    if time not in (None, "discrete"):
+        hint = closest(time, ("discrete",)) or ' Write "discrete", or leave it out for continuous time.'
+        table.problem("time", f"'{short(time)}' is not known.{hint}")
 
 
 def _dimensions(draft: Draft, members: Mapping[str, Any]) -> None:

@@ -90,6 +90,12 @@ def _unit(draft: Draft, table: Table, text: str | None, follows: bool) -> Unit |
     reading = units.read_unit(text, draft.time_unit)
     if reading.refusal is not None:
         table.problem("unit", reading.refusal)
+    elif draft.discrete and units.is_share_of_another_step(reading.unit, draft.time_unit):
+        table.problem(
+            "unit",
+            f"'{short(text)}' is a share in another unit of time than the step of one {draft.time_unit}, and shares do not add "
+            f"up over time. Give the share per {draft.time_unit}: of p in a step that is n times as short it is 1 - (1 - p)^n.",
+        )
     elif reading.converts is not None and follows:
         table.problem(
             "unit",

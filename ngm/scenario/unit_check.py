@@ -87,7 +87,8 @@ class _Checker:
     def meaning(self, word: str) -> str | None:
         """Return the unit that a word stands for; None for a pure number."""
         if word in SECONDS or word == self.scenario.time_unit:
-            return self.scenario.time_unit
+            # A step is counted, not measured: a share and a share per step are the same number.
+            return None if self.scenario.discrete else self.scenario.time_unit
         single = singular(word)
         if single.lower() in HOSTS:
             return INDIVIDUAL
@@ -349,7 +350,7 @@ def _flow(checker: _Checker, number: int, flow: Flow) -> _Value:
     value = checker.value(flow.rate.tree, where, key)
     if value.powers is None:
         return value
-    time = {checker.scenario.time_unit: Fraction(1)}
+    time: Powers = {} if checker.scenario.discrete else {checker.scenario.time_unit: Fraction(1)}
     seen: list[Powers] = []
     for end in (flow.target, flow.source):
         if end is None or checker.compartment(end) in seen:

@@ -14,7 +14,7 @@ from functools import lru_cache
 
 from ngm.scenario.model import Unit
 
-__all__ = ["UnitReading", "is_word", "read_unit", "time_unit_name"]
+__all__ = ["UnitReading", "is_share_of_another_step", "is_word", "read_unit", "time_unit_name"]
 
 _DAY = Fraction(86_400)
 #: the units of time and their length in seconds
@@ -141,6 +141,25 @@ def read_unit(text: str, time_unit: str) -> UnitReading:
         converts = converts or word
         factor *= (SECONDS[word] / SECONDS[home]) ** power
     return UnitReading(Unit(text, shown, factor), converts, refusal, doubt)
+
+
+def is_share_of_another_step(unit: Unit, time_unit: str) -> bool:
+    """Return whether a unit says "share, or chance, per time" with another unit of time than the step's.
+
+    A number of members or of events per time (``person/day``, ``contacts/day``) adds up over the days of a week, and is
+    converted; what is left over of a group does not.
+
+    Examples
+    --------
+    >>> is_share_of_another_step(read_unit("1/day", "week").unit, "week")
+    True
+    >>> is_share_of_another_step(read_unit("person/day", "week").unit, "week")
+    False
+    """
+    powers = {word: power for word, power in (unit.powers or {}).items() if power}
+    home = time_unit_name(time_unit) or time_unit
+    other = [word for word in powers if word in SECONDS and word != home]
+    return any(powers[word] < 0 for word in other) and not any(power > 0 for power in powers.values())
 
 
 class _NoUnitError(Exception):

@@ -35,7 +35,7 @@ ON_PLAIN: list[tuple[str, str, tuple[str, ...]]] = [
     ('time_unit = "day"', 'time_unit = "day"\nformat = "1"', ("scenario, format: expected the number 1",)),
     ('time_unit = "day"', 'time_unit = "day"\nformat = true', ("scenario, format: expected the number 1, not true",)),
     ('time_unit = "day"', 'time_unit = "day"\nunits = "loose"', ("scenario, units: 'loose' is not known",)),
-    ('time_unit = "day"', 'time_unit = "day"\ntime = "discrete"', ("scenario, time", "not supported yet")),
+    ('time_unit = "day"', 'time_unit = "day"\ntime = "discreet"', ("scenario, time", "Did you mean 'discrete'?")),
     ('time_unit = "day"', 'time_unit = "day"\ntime = "continuous"', ("scenario, time: 'continuous' is not known",)),
     # sections
     ("[definitions]", "[definitons]", ("definitons: is not a section", "Did you mean 'definitions'?")),
