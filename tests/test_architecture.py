@@ -43,6 +43,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     },
     "wording": {"results", "results_control"},
     "typed": {"errors"},
+    "meanings": set(),
     "progress": set(),
     "spreadsheet": set(),
     "charts": {"results", "results_control", "results_mixing", "results_sensitivity"},
@@ -66,6 +67,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     },
     "screens": {
         "ngm",
+        "meanings",
         "reporting",
         "errors",
         "results",

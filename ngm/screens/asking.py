@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import hashlib
+import math
 import shlex
 from collections.abc import Sequence
+from typing import Any
 
 import streamlit as st
 
@@ -21,13 +23,19 @@ class Entries:
     def __init__(self) -> None:
         self.problems: list[Problem] = []
 
-    def number(
-        self, label: str, field: str, default: str, place: st.delta_generator.DeltaGenerator, hint: str = ""
-    ) -> float | None:
+    def number(self, label: str, field: str, default: str, place: Any, hint: str = "") -> float | None:
         """Place a field; return the number typed there, None (and a problem) where it is none; empty means `default`."""
         typed = place.text_input(label, value=state.recall(field, default), key=field, help=hint or None)
         state.remember(field, typed)
         return self.read(typed if typed.strip() else default, label)
+
+    def positive(self, label: str, field: str, default: str, place: Any, hint: str = "") -> float | None:
+        """As `number`, for what must be above 0."""
+        value = self.number(label, field, default, place, hint)
+        if value is not None and not (0 < value < math.inf):
+            self.problems.append(Problem(label, "a number above 0 is needed."))
+            return None
+        return value
 
     def read(self, text: str, label: str) -> float | None:
         """Return the number that a text says; None, with the problem kept, where it is none."""

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import desk, state
+from ngm.screens import desk, parts, state
 from ngm.screens.registry import PAGES
 
 
@@ -12,11 +12,13 @@ def main() -> None:
     """Run one page."""
     # The icon is an emoji: a named one would be fetched from another server.
     st.set_page_config(page_title="Next-generation matrices", page_icon="🧮", layout="wide")
-    page = st.navigation([st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES])
+    offered = [st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES]
+    page = st.navigation(offered)
     told = state.arrive()
     status = st.sidebar.container()
     notices = st.container()
     page.run()
+    parts.explanations(next((entry.explains for entry in PAGES if entry.title == page.title), ()))
     # After the page, so that both speak of the text as the page has just left it.
     with notices:
         desk.notices(told)

@@ -8,6 +8,7 @@ import streamlit as st
 
 from ngm.charts import bars, graphs
 from ngm.charts.spectrum import eigenvalues
+from ngm.meanings import help_text
 from ngm.results import ControlResult, Solution
 from ngm.screens import cache, forms, parts, state, taking
 from ngm.screens.forms import TABLES
@@ -28,14 +29,14 @@ def figures(solution: Solution, write: Write) -> None:
     period = solution.structure.period if solution.structure is not None else None
     with second:
         if period is not None and period > 1:
-            st.metric("R0 per cycle", write(solution.per_cycle), border=True)
+            st.metric("R0 per cycle", write(solution.per_cycle), border=True, help=help_text("per_cycle"))
             st.caption(
                 f"An infection comes back to where it began every {period} generations (host to vector to host, say). "
                 f"Per cycle it multiplies by R0 to the power of {period}. Both numbers pass 1 together; "
                 "say which one you quote."
             )
         elif solution.R0 is not None:
-            st.metric("R0 per cycle", write(solution.per_cycle), border=True)
+            st.metric("R0 per cycle", write(solution.per_cycle), border=True, help=help_text("per_cycle"))
             st.caption(
                 "A cycle is one generation here: the number is R0 itself."
                 if period == 1
@@ -43,7 +44,7 @@ def figures(solution: Solution, write: Write) -> None:
             )
     with third:
         unit = plain(solution.time_unit)
-        st.metric(f"Growth rate, per {unit}", write(solution.growth_rate), border=True)
+        st.metric(f"Growth rate, per {unit}", write(solution.growth_rate), border=True, help=help_text("growth_rate"))
         st.caption(
             f"Early growth, exponential. Doubling time: {plain(write(solution.doubling_time))} {unit}s."
             if solution.doubling_time is not None
@@ -94,7 +95,7 @@ def change_a_value(shown: Shown, write: Write) -> None:
 
 def who_infects_whom(solution: Solution, write: Write) -> None:
     """Show K as a graph with its classes, and as a table."""
-    st.subheader("Who infects whom")
+    st.subheader("Who infects whom", help=help_text("K"))
     graph = graphs.who_infects_whom(solution, dark=parts.dark())
     if graph is not None:
         types = solution.types_at_infection
@@ -133,7 +134,7 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
 
 def spectrum(solution: Solution, write: Write) -> None:
     """Show the eigenvalues of K in the complex plane."""
-    st.subheader("Eigenvalues of K")
+    st.subheader("Eigenvalues of K", help=help_text("eigenvalues"))
     chart = eigenvalues(solution, dark=parts.dark())
     if chart is None:
         st.caption("K is too large for its eigenvalues to be listed.")
@@ -174,7 +175,7 @@ def vectors(solution: Solution, write: Write) -> None:
 
 def control(result: ControlResult, write: Write) -> None:
     """Show what control has to reach, target by target."""
-    st.subheader("What control has to reach")
+    st.subheader("What control has to reach", help=help_text("T"))
     st.markdown(
         "T counts the infections that control of the target must undo; the critical effort 1 - 1/T is the share of "
         "them to prevent for the infection to die out. It equals 1 - 1/R0 only where all types are treated alike. "

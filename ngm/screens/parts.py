@@ -15,6 +15,8 @@ import streamlit as st
 
 from ngm.charts.style import short
 from ngm.errors import NgmError, Problem, excerpt
+from ngm.meanings import help_text
+from ngm.meanings import table as meanings_table
 from ngm.results import Matrix, Solution, TextMatrix
 from ngm.screens import cache, forms, state
 
@@ -28,6 +30,7 @@ __all__ = [
     "digits",
     "display",
     "earlier_result",
+    "explanations",
     "grid",
     "headline",
     "latex",
@@ -44,6 +47,9 @@ __all__ = [
 
 #: Problems listed in one box; the others are counted.
 MOST_PROBLEMS = 10
+
+#: Conversions told above a result.
+MOST_CONVERTED = 8
 
 #: A typeset matrix may have this many types and characters of LaTeX; past it nobody can read it.
 MOST_TYPES = 12
@@ -142,6 +148,13 @@ def cautions() -> None:
     )
 
 
+def explanations(keys: Sequence[str]) -> None:
+    """Say at the foot of a page what its quantities mean, each with its formula, unit and source."""
+    if keys and state.current().now is not None:
+        with st.expander("What these numbers mean: formulas, units, sources"):
+            st.markdown(meanings_table(keys))
+
+
 def nothing_open() -> None:
     """Say that no scenario is open, and where to open one."""
     st.info("No scenario is open yet. Open one, upload one or start a new one on the page **Scenario**.")
@@ -156,6 +169,7 @@ def results() -> Shown | None:
         return None
     outcome = cache.solve(now.text, now.folder)
     if outcome.solution is not None:
+        conversions(now.text, now.folder, outcome.solution.time_unit)
         return Shown(now.text, now.folder, outcome.solution, False)
     problem_box(outcome.problems, "in what is typed now")
     if now.valid is None:
@@ -175,7 +189,7 @@ def headline(
     if solution.R0 is None:
         st.error(f"**No R0 at these values.** {plain(solution.no_R0 or '')}")
         return
-    st.metric("R0: basic reproduction number", write(solution.R0), border=True, width=width)
+    st.metric("R0: basic reproduction number", write(solution.R0), border=True, width=width, help=help_text("R0"))
     if solution.R0_bounds is not None:
         low, high = solution.R0_bounds
         st.caption(f"proven: {low!r} ≤ R0 ≤ {high!r}")
@@ -195,8 +209,12 @@ def earlier_result() -> None:
 def conversions(text: str, folder: str | None, time_unit: str) -> None:
     """Say which values are converted, as typed and as used."""
     told = [f"{plain(name)}: {plain(value)}" for name, value in cache.conversions(text, folder)]
+    more = f"; {len(told) - MOST_CONVERTED} more on the page Second opinion" if len(told) > MOST_CONVERTED else ""
     if told:
-        st.caption(f"Converted for the computation (time in units of one {plain(time_unit)}): {'; '.join(told)}.")
+        st.caption(
+            f"Converted for the computation (time in units of one {plain(time_unit)}): "
+            f"{'; '.join(told[:MOST_CONVERTED])}{more}."
+        )
 
 
 def latex(text: str) -> str:

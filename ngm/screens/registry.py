@@ -13,10 +13,11 @@ __all__ = ["PAGES", "Page"]
 
 @dataclass(frozen=True, slots=True)
 class Page:
-    """One page: its file in `views/`, its address, its title."""
+    """One page: its file in `views/`, its address, its title, and the quantities that it explains at its foot."""
 
     name: str
     title: str
+    explains: tuple[str, ...] = ()
 
     @property
     def path(self) -> str:
@@ -27,12 +28,19 @@ class Page:
 PAGES = (
     Page("scenario", "Scenario"),
     Page("model", "Model"),
-    Page("derivation", "Derivation"),
-    Page("numbers", "Reproduction numbers"),
-    Page("mixing", "Mixing"),
-    Page("control", "Control"),
-    Page("sensitivity", "Sensitivity"),
+    Page("derivation", "Derivation", ("infection_free", "F", "V", "stays", "K", "R0", "bounds")),
+    Page(
+        "numbers",
+        "Reproduction numbers",
+        (
+            *("R0", "bounds", "per_cycle", "growth_rate", "doubling_time", "effective", "K", "class", "eigenvalues"),
+            *("stable_distribution", "reproductive_value", "T", "critical_effort"),
+        ),
+    ),
+    Page("mixing", "Mixing", ("R0", "reciprocity", "assortativity", "stable_distribution", "elasticity")),
+    Page("control", "Control", ("R0", "control", "T", "critical_effort", "coverage")),
+    Page("sensitivity", "Sensitivity", ("R0", "elasticity", "above_one", "rank_correlation", "sobol")),
     Page("second_opinion", "Second opinion"),
     Page("report", "Report"),
-    Page("versions", "Versions"),
+    Page("versions", "Versions", ("R0", "F", "V", "K", "growth_rate")),
 )

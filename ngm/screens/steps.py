@@ -7,6 +7,7 @@ from collections.abc import Callable, Sequence
 
 import streamlit as st
 
+from ngm.meanings import help_text
 from ngm.results import Matrix, Solution, Symbolic, TextMatrix
 from ngm.screens import parts, taking
 from ngm.screens.parts import latex, plain
@@ -46,7 +47,7 @@ def types(solution: Solution) -> None:
 
 def infection_free(solution: Solution, write: Write) -> None:
     """Show the infection-free state and how near to rest it is."""
-    st.subheader("2. Infection-free state")
+    st.subheader("2. Infection-free state", help=help_text("infection_free"))
     st.markdown("All infected compartments are empty, and every other one is at rest.")
     written = solution.symbolic.infection_free or {}
     if not solution.infection_free:
@@ -68,7 +69,7 @@ def infection_free(solution: Solution, write: Write) -> None:
 
 def transmission_and_transition(solution: Solution, write: Write) -> None:
     """Show F and V, and the flows behind each entry."""
-    st.subheader("3. Transmission F and transition V")
+    st.subheader("3. Transmission F and transition V", help=help_text("F"))
     st.markdown(
         f"Rates per {plain(solution.time_unit)} at the infection-free state. Row: the type that is gained or lost; "
         "column: the type that causes it. F counts new infections; V counts everything else, with its sign turned."
@@ -97,7 +98,7 @@ def conditions(solution: Solution) -> None:
 def residence(solution: Solution) -> None:
     """Show the elimination that leads to the inverse of V."""
     steps = [step for step in solution.symbolic.steps if step.kind == "residence"]
-    st.subheader("5. Mean stays: the inverse of V")
+    st.subheader("5. Mean stays: the inverse of V", help=help_text("stays"))
     if not steps:
         st.markdown("Nothing is written out here: the inverse of V is known in numbers only, or there is none.")
         return
@@ -121,7 +122,7 @@ def residence(solution: Solution) -> None:
 
 def next_generation(solution: Solution, write: Write) -> None:
     """Show K."""
-    st.subheader("6. Next-generation matrix K")
+    st.subheader("6. Next-generation matrix K", help=help_text("K"))
     if solution.K is None and solution.no_R0:
         st.markdown("There is none at these values.")
         return
@@ -156,7 +157,7 @@ def on_the_template(solution: Solution) -> None:
 
 def root(solution: Solution) -> None:
     """Show the characteristic polynomial, the classes and the closed form, or say that there is none."""
-    st.subheader("7. R0, the spectral radius of K")
+    st.subheader("7. R0, the spectral radius of K", help=help_text("R0"))
     if solution.R0 is None:
         st.markdown("There is none at these values.")
         return

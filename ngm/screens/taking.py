@@ -15,6 +15,7 @@ import streamlit as st
 
 from ngm.results import Matrix, TextMatrix
 from ngm.screens import parts
+from ngm.spreadsheet import safe
 
 __all__ = ["diagram", "formula", "matrix", "picture", "table_of", "text_of"]
 
@@ -178,8 +179,7 @@ def table_of(rows: Sequence[Sequence[object]]) -> str:
 
 def _cell(value: object) -> str:
     if isinstance(value, bool) or not isinstance(value, float | int):
-        text = "" if value is None else str(value)
-        return f"'{text}" if text[:1] in "=+-@\t\r" and text else text
+        return str(safe("" if value is None else str(value)))
     return repr(value)
 
 

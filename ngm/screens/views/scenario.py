@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import cache, forms, parts, shelf, state
+from ngm.screens import cache, forms, parts, shelf, start, state
 from ngm.screens.forms import Edit
 
 
@@ -30,6 +30,7 @@ def choose() -> None:
                 state.remember("scenario.upload", file.file_id)
     with third, st.container(border=True):
         st.markdown("Start a new one")
+        st.button("With five questions", key="scenario.guided", on_click=start.begin)
         if st.button("With S, I and R to begin with", key="scenario.new"):
             state.open_text(shelf.THREE_COMPARTMENTS, "untitled.toml")
         if st.button("Quite empty", key="scenario.empty"):
@@ -86,6 +87,9 @@ def page() -> None:
         "One scenario holds one model, its values and the interventions compared on it. From its compartments and "
         "flows follow F, V, the next-generation matrix K and R0."
     )
+    if start.under_way():
+        start.guided()
+        return
     choose()
     now = state.current().now
     if now is None:
