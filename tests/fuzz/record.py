@@ -34,10 +34,19 @@ class Record:
         self.waiting["executions"] = self.waiting.get("executions", 0) + 1
         self.waiting[verdict.kind] = self.waiting.get(verdict.kind, 0) + 1
         if verdict.kind == "crash":
-            name = hashlib.sha256(verdict.place.encode()).hexdigest()[:12]
-            if not (self.crashes / name).exists():
-                (self.crashes / name).write_bytes(data)
-                (self.crashes / f"{name}.txt").write_text(f"{verdict.place}\n\n{verdict.told}\n", encoding="utf-8")
+            self.keep(verdict, data)
+
+    def count_crash(self, verdict: Verdict, data: bytes) -> None:
+        """Count one more fault of an execution that has been counted."""
+        self.add(crash=1)
+        self.keep(verdict, data)
+
+    def keep(self, verdict: Verdict, data: bytes) -> None:
+        """Keep the input of a crash, unless one at the same place is there already."""
+        name = hashlib.sha256(verdict.place.encode()).hexdigest()[:12]
+        if not (self.crashes / name).exists():
+            (self.crashes / name).write_bytes(data)
+            (self.crashes / f"{name}.txt").write_text(f"{verdict.place}\n\n{verdict.told}\n", encoding="utf-8")
 
     def add(self, **counts: float) -> None:
         """Count something else: seconds, runs."""
