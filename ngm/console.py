@@ -14,6 +14,9 @@ CAUTION = (
     "A model's number is no forecast, and says nothing of speed or severity. It holds for this model, at these values, near "
     "the infection-free state. Decisions belong to the responsible authority under local rules and licensed practice."
 )
+STATED_CAUTION = CAUTION.replace(
+    "for this model, at these values, near the infection-free state", "for the matrix of this file, at these values"
+)
 #: Types up to which matrices are printed.
 MOST_PRINTED = 12
 WIDTH = 110
@@ -64,6 +67,8 @@ def solve_text(result: Solution) -> str:
         assert result.R0_bounds is not None
         low, high = result.R0_bounds
         lines.append(f"R0 = {figure(result.R0)}   proven: {low!r} <= R0 <= {high!r}")
+        if result.form == "projection":
+            lines.append("   the net reproduction number: new members by one new member in its life")
         if result.closed_form is not None:
             lines.append(f"   = {result.closed_form}")
         else:
@@ -81,19 +86,17 @@ def solve_text(result: Solution) -> str:
         )
     if result.growth_factor is not None:
         lines.append(f"growth factor = {figure(result.growth_factor)} per step of one {unit}, rho(F + T), T = I - V")
-    lines.append(f"growth rate = {figure(result.growth_rate)} per {unit}")
+    if result.form == "K as given":
+        lines.append(
+            "K as given: there are no flows behind it, so there is no growth rate and no infection-free state."
+        )
+    else:
+        lines.append(f"growth rate = {figure(result.growth_rate)} per {unit}")
     if result.doubling_time is not None:
         lines.append(f"doubling time = {figure(result.doubling_time)} {unit}")
-    lines += ["", "Infection-free state"]
-    symbolic = result.symbolic.infection_free or {}
-    shown = list(result.infection_free.items())
-    for name, value in shown[:40]:
-        formula = symbolic.get(name)
-        tail = f" = {formula}" if formula is not None and not _is_number(formula) else ""
-        lines.append(f"  {name}{tail} = {figure(value)}")
-    if len(shown) > 40:
-        lines.append(f"  … and {len(shown) - 40} more; use --json.")
-    lines += ["", "What F and V are made of"]
+    lines += _population(result)
+    lines += _infection_free(result)
+    lines += ["", "What F and V are made of"] if result.terms else []
     for term in result.terms[:80]:
         sign = "+" if term.sign > 0 else "-"
         source = f"flow {term.flow} " if term.flow is not None else ""
@@ -112,10 +115,48 @@ def solve_text(result: Solution) -> str:
         lines += ["", f"det({name} I - K) = {result.symbolic.characteristic_polynomial}"]
     lines += _blocks(result)
     lines += _structure(result)
-    lines += ["", "Conditions (van den Driessche & Watmough 2002)"]
+    lines += ["", "Conditions (van den Driessche & Watmough 2002)"] if result.conditions else []
     lines += [f"  {c.name} {'holds' if c.holds else 'DOES NOT HOLD'}: {c.detail}" for c in result.conditions]
-    lines += closing(result.warnings)
+    lines += closing(result.warnings, CAUTION if result.form == "flows" else STATED_CAUTION)
     return squeezed(lines)
+
+
+def _infection_free(result: Solution) -> list[str]:
+    """Return the infection-free state, nothing where the matrices stand in the file."""
+    if result.infection_free is None:
+        return []
+    lines = ["", "Infection-free state"]
+    symbolic = result.symbolic.infection_free or {}
+    shown = list(result.infection_free.items())
+    for name, value in shown[:40]:
+        formula = symbolic.get(name)
+        tail = f" = {formula}" if formula is not None and not _is_number(formula) else ""
+        lines.append(f"  {name}{tail} = {figure(value)}")
+    if len(shown) > 40:
+        lines.append(f"  … and {len(shown) - 40} more; use --json.")
+    return lines
+
+
+def _population(result: Solution) -> list[str]:
+    """Return what the vectors of F + T say of a projected population."""
+    about = result.projected
+    if about is None:
+        return []
+    lines = [f"The population {about.fate(result.growth_factor)}."]
+    if about.stable_structure is None or about.reproductive_values is None:
+        return lines
+    rows = [
+        [stage, figure(share), figure(value)]
+        for stage, share, value in zip(about.stages, about.stable_structure, about.reproductive_values, strict=True)
+    ]
+    lines += ["", *table(rows[:40], ["stage", "share in the long run", "reproductive value"])]
+    for name, entries in (("births", about.elasticity_births), ("transitions", about.elasticity_transitions)):
+        if entries is not None and len(about.stages) <= MOST_PRINTED:
+            rows = [
+                [stage, *(figure(round(v, 9)) for v in row)] for stage, row in zip(about.stages, entries, strict=True)
+            ]
+            lines += ["", f"Elasticity of the growth factor by entry of {name}", *table(rows, ["", *about.stages])]
+    return lines
 
 
 def _blocks(result: Solution) -> list[str]:
@@ -152,13 +193,15 @@ def _structure(result: Solution) -> list[str]:
         ]
         for c in structure.classes[:40]
     ]
-    lines += table(rows, ["class", "R0", "period", f"growth per {result.time_unit}"])
+    head = ["class", "R0", "period", f"growth per {result.time_unit}"]
+    lines += table(rows, head) if result.form != "K as given" else table([row[:3] for row in rows], head[:3])
     if result.right is not None and result.left is not None and len(result.right) <= 40:
         rows = [
             [name, figure(share), figure(value)]
             for name, share, value in zip(result.types_at_infection, result.right, result.left, strict=True)
         ]
-        lines += ["", *table(rows, ["type", "share of new infections", "reproductive value"])]
+        new = "births" if result.form == "projection" else "new infections"
+        lines += ["", *table(rows, ["type", f"share of {new}", "reproductive value"])]
     return lines
 
 
@@ -327,12 +370,12 @@ def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Ca
             return calibrate_text(result)
 
 
-def closing(warnings: Sequence[str]) -> list[str]:
+def closing(warnings: Sequence[str], caution: str = CAUTION) -> list[str]:
     """Return the lines that every text ends in: warnings, and the caution."""
     lines: list[str] = []
     if warnings:
         lines += ["", "Warnings", *(f"  ! {warning}" for warning in warnings)]
-    return [*lines, "", CAUTION]
+    return [*lines, "", caution]
 
 
 def _is_number(text: str) -> bool:

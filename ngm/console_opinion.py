@@ -2,10 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from ngm.console import WIDTH, closing, figure, squeezed, table
 from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 
-__all__ = ["difference_text", "formula_text", "opinion_text", "splits_text", "units_text"]
+__all__ = ["conversions_text", "difference_text", "formula_text", "opinion_text", "splits_text", "units_text"]
+
+
+def conversions_text(pairs: Sequence[tuple[str, str]], time_unit: str) -> str:
+    """Return what is converted as lines that stand above every result; empty where nothing is."""
+    if not pairs:
+        return ""
+    lines = [f"Converted (time in {time_unit})", *(f"  {name}: {text}" for name, text in pairs[:MOST_CONVERTED])]
+    if len(pairs) > MOST_CONVERTED:
+        lines.append(f"  and {len(pairs) - MOST_CONVERTED} more: python -m ngm units FILE")
+    return "\n".join([*lines, "", ""])
 
 
 def opinion_text(result: Units | Splits | FormulaOpinion | Difference) -> str:
@@ -19,6 +31,10 @@ def opinion_text(result: Units | Splits | FormulaOpinion | Difference) -> str:
             return formula_text(result)
         case Difference():
             return difference_text(result)
+
+
+#: Conversions that are listed.
+MOST_CONVERTED = 12
 
 
 def _heading(title: str) -> list[str]:

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 if TYPE_CHECKING:
     import pandas
@@ -22,6 +22,7 @@ __all__ = [
     "Effective",
     "EntrySetNumber",
     "EntryTerm",
+    "Projected",
     "Solution",
     "StateNumber",
     "Step",
@@ -142,6 +143,42 @@ class Symbolic:
     blocks: BlockForm | None = None
 
 
+@dataclass(frozen=True, slots=True)
+class Projected:
+    """What A = F + T, births and transitions, says of a population projected step by step.
+
+    Attributes
+    ----------
+    stages : tuple of str
+    stable_structure : tuple of float or None
+        Right vector of A, sums to 1: the shares of the stages in the long run. None where it is not unique.
+    reproductive_values : tuple of float or None
+        Left vector of A, 1 for the first stage that is not 0: what a member is worth for the size in the long run.
+    period : int or None
+        Of the stages that decide on the growth factor: past 1 the structure keeps oscillating. None where classes of
+        different periods share it, or where it is 0.
+    elasticity_births, elasticity_transitions : Matrix or None
+        (a/l) dl/da for each entry a of F and of T, l the growth factor; together they add up to 1.
+    notes : tuple of str
+        What must be said of them.
+    """
+
+    stages: tuple[str, ...]
+    stable_structure: Vector | None
+    reproductive_values: Vector | None
+    period: int | None
+    elasticity_births: Matrix | None
+    elasticity_transitions: Matrix | None
+    notes: tuple[str, ...] = ()
+
+    @staticmethod
+    def fate(growth_factor: float | None) -> str:
+        """Return what becomes of the population in the long run, in words."""
+        if growth_factor is None or growth_factor == 1:
+            return "neither grows nor dies out"
+        return "grows in the long run" if growth_factor > 1 else "dies out in the long run"
+
+
 @dataclass(frozen=True, eq=False, slots=True)
 class Solution:
     """The derivation and the numbers of a scenario at its values: the result of `ngm.solve`.
@@ -156,7 +193,7 @@ class Solution:
     digest: str
     types: tuple[str, ...]
     type_labels: Mapping[str, str]
-    infection_free: Mapping[str, float]
+    infection_free: Mapping[str, float] | None
     residual: float
     F: Matrix | None
     V: Matrix | None
@@ -183,6 +220,11 @@ class Solution:
     #: whether one step is one time unit; then `growth_factor` is rho(F + T), and None elsewhere
     discrete: bool = False
     growth_factor: float | None = None
+    #: where the matrices come from; of a K as given F, V and K_large are None, and so is what has time in it
+    form: Literal["flows", "K as given", "projection"] = "flows"
+    #: of a projection; and the members of each type, where a K as given has them
+    projected: Projected | None = None
+    sizes: Vector | None = None
     #: the number at the state now, where the file gives one
     effective: Effective | None = None
 
@@ -193,7 +235,7 @@ class Solution:
         return {
             "title": self.title,
             "types": list(self.types),
-            "infection_free": dict(self.infection_free),
+            "infection_free": None if self.infection_free is None else dict(self.infection_free),
             "F": _rows(self.F),
             "V": _rows(self.V),
             "K_large": _rows(self.K_large),
@@ -234,6 +276,7 @@ class Solution:
             "doubling_time": self.doubling_time,
             "conditions": [{"name": c.name, "holds": c.holds, "detail": c.detail} for c in self.conditions],
             "warnings": list(self.warnings),
+            **({} if self.projected is None else _projected(self.projected)),
             **({} if now is None else {"effective": {"R": now.R, "state": dict(now.state)}}),
         }
 
@@ -361,6 +404,19 @@ class ControlResult:
 
     def _repr_html_(self) -> str:
         return str(self.to_frame().to_html(escape=True))
+
+
+def _projected(about: Projected) -> dict[str, Any]:
+    """Return what `solve --json` prints of a projected population besides."""
+    return {
+        "stable_structure": None if about.stable_structure is None else list(about.stable_structure),
+        "reproductive_values": None if about.reproductive_values is None else list(about.reproductive_values),
+        "growth_factor_period": about.period,
+        "growth_factor_elasticity": {
+            "births": _rows(about.elasticity_births),
+            "transitions": _rows(about.elasticity_transitions),
+        },
+    }
 
 
 def _numbers(item: TypeNumber | TargetNumber | StateNumber) -> dict[str, Any]:

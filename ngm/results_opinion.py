@@ -139,7 +139,9 @@ class Splits:
     differ: tuple[str, ...]
     warnings: tuple[str, ...] = ()
     #: what there is to say where there is no choice
-    none: str = "No flow's kind is a choice: nothing enters an infected compartment but by infection of the uninfected."
+    none: str = (
+        "No flow's kind is a choice: nothing enters an infected compartment but by infection of the uninfected."
+    )
 
     @property
     def shown_hosts(self) -> tuple[str, ...]:

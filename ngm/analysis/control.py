@@ -109,7 +109,7 @@ def _control(found: Numbers) -> ControlResult:
         else:
             kinds = _types(found, at)
             targets = _targets(found, at, warnings)
-            states = [
+            states = [] if scenario.given is not None else [
                 StateNumber(types[k], number.T, number.critical_effort, _why(number, f"the infectivity of {types[k]}"))
                 for k, number in state_reproduction_numbers(found.F, found.V)
             ]

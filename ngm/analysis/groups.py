@@ -8,6 +8,7 @@ import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers
+from ngm.analysis.stated_entries import sizes_of
 
 __all__ = ["HostGroup", "host_groups"]
 
@@ -36,9 +37,13 @@ def host_groups(found: Numbers) -> tuple[HostGroup, ...]:
 
     Compartments that flows link belong to one kind of hosts: susceptible people are not counted among midges. A kind is
     split by the groups of its types at infection. Where there is one kind, a label names the group ("65+", or "everybody"
-    without groups); where there are several, it names the types at infection ("E_h", "I1[65+] + I2[65+]").
+    without groups); where there are several, it names the types at infection ("E_h", "I1[65+] + I2[65+]"). Of a K as given
+    each type is a group, with its size where the file has one.
     """
     scenario, template = found.scenario, found.template
+    if scenario.given is not None:
+        sizes_given = sizes_of(scenario, found.point.evaluator) or [None] * len(template.types)
+        return tuple(HostGroup(label, (k,), sizes_given[k]) for k, label in enumerate(template.types))
     kinds = _kinds(found)
     rows: dict[_Key, list[int]] = {}
     places = [

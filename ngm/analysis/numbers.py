@@ -12,8 +12,9 @@ import numpy as np
 
 from ngm.analysis.large import difference, faults, stray_losses
 from ngm.analysis.point import Point, refuse_huge
-from ngm.analysis.steps_of_time import refuse_overdrawn, refuse_overdrawn_blocks
 from ngm.analysis.state import InfectionFree
+from ngm.analysis.stated_entries import is_stated, negative_entry, refuse_negative_shares, without_end
+from ngm.analysis.steps_of_time import refuse_overdrawn, refuse_overdrawn_blocks
 from ngm.derivation.conditions import check_arrivals, check_exits
 from ngm.derivation.outline import thumbnail
 from ngm.derivation.template import Template
@@ -73,7 +74,9 @@ class Numbers:
         self._class_growth: list[float | None] = []
         if self.point.exact:
             self.F, self.V = self.point.F_and_V
-            if scenario.discrete:
+            if scenario.projection is not None:
+                refuse_negative_shares(template, self.V)
+            elif scenario.discrete:
                 refuse_overdrawn(template, self.point.evaluator, self.V)
             self._reproduce()
         else:
@@ -95,6 +98,8 @@ class Numbers:
                 f"F has a negative entry: {types[j]} takes away new infections of {types[i]}. "
                 "A rate of new infections must not fall when an infected compartment grows."
             )
+            if is_stated(self.scenario):
+                self.no_R0 = negative_entry(self.scenario, types[i], types[j])
             return
         verdict = m_matrix(self.V)
         if verdict.verdict == "singular" and verdict.members is not None:
@@ -111,7 +116,7 @@ class Numbers:
 
     def _refuse_structure(self, members: list[str]) -> None:
         """Refuse a V that is singular whatever the values: it still is with every number of the file moved at random."""
-        if self._moved:
+        if self._moved or self.scenario.projection is not None:
             return
         rng = random.Random(2002)
         for _ in range(2):
@@ -211,6 +216,8 @@ class Numbers:
     @cached_property
     def growth_ball(self) -> Any:
         """The growth rate per time unit as a ball: of F - V the largest real part of the eigenvalues, or ln rho(F + T)."""
+        if self.scenario.given is not None:
+            return None
         if self.factor_ball is not None:
             return logarithm(self.factor_ball)
         if self._growth is not None:
@@ -219,11 +226,13 @@ class Numbers:
 
     @property
     def growth(self) -> float | None:
-        """The growth rate per time unit; None in discrete time where a step leaves nothing."""
+        """The growth rate per time unit; None in discrete time where a step leaves nothing, and of a K as given."""
         return None if self.growth_ball is None else nearest(self.growth_ball)
 
     def class_growth(self, number: int) -> float | None:
         """Return the growth rate of one class of K, as if it were alone; None for a zero class."""
+        if self.scenario.given is not None:
+            return None
         if self._class_growth:
             found = self._class_growth[number]
             rate = None if found is None else interval(found, found)
@@ -244,6 +253,8 @@ class Numbers:
                 "F V^-1 is then no next-generation matrix."
             )
         members = [] if verdict.members is None else [types[int(k)] for k in verdict.members]
+        if self.scenario.projection is not None:
+            return without_end(members)
         named = ", ".join(members[:6]) + (", …" if len(members) > 6 else "")
         if verdict.verdict == "singular":
             return (

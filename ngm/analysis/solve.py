@@ -9,6 +9,7 @@ import numpy as np
 from ngm.analysis.effective import effective
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.stated import as_stated, conditions_of, symbols_as_stated
 from ngm.derivation.conditions import fifth_condition, first_conditions
 from ngm.derivation.outline import outline
 from ngm.derivation.terms import entry_terms
@@ -49,11 +50,12 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
         warm()  # the child gets ready while the numbers are computed
     found = decided_numbers(scenario)
     with precision(found.bits):
-        out = _numbers(found)
+        out = as_stated(found, _numbers(found))
         out["effective"] = effective(found)
         if out["effective"] is not None and out["effective"].no_R is not None:
             out["warnings"].append(f"No effective number: {out['effective'].no_R}")
     symbolic, more = _symbols(found, limit)
+    symbolic = symbols_as_stated(found, symbolic)
     out["warnings"] += more
     out["warnings"] = tuple(dict.fromkeys(out["warnings"]))
     closed = symbolic.closed_form if out["R0"] is not None else None
@@ -143,6 +145,10 @@ def _numbers(found: Numbers) -> dict[str, Any]:
 
 
 def _conditions(found: Numbers, warnings: list[str]) -> list[Any]:
+    if found.scenario.given is not None:
+        return []  # there are no flows that they could be tested on
+    if found.scenario.projection is not None:
+        return list(conditions_of(found))
     conditions = first_conditions(found.template, found.plain_matrices)
     regular = found.broken is None
     stable = found.point.is_stable_without_infection()

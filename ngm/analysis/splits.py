@@ -11,6 +11,7 @@ import numpy as np
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.stated_entries import is_stated
 from ngm.derivation.template import flow_name
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import type_reproduction_number
@@ -24,6 +25,8 @@ __all__ = ["choices", "splits", "with_kinds"]
 MOST_CHOICES = 4
 #: Numbers that differ by less than this share are one number.
 SAME = 1e-9
+
+NO_FLOWS = "The matrix stands in the file: there are no flows that could be divided otherwise."
 
 KINDS: tuple[Kind, ...] = ("transition", "transmission")
 

@@ -23,6 +23,7 @@ __all__ = [
     "check_target",
     "chosen_groups",
     "coverage_needed",
+    "lasting_of",
     "number_of",
     "shares_of",
     "strength_needed",
@@ -179,7 +180,7 @@ def coverage_needed(
     check_target(target)
     if kind not in ("leaky", "all-or-nothing"):
         raise ScenarioError(Problem("kind", f"'{short(kind)}' is no kind of vaccine. Write leaky or all-or-nothing."))
-    lasting = _lasting(turnover, waning)
+    lasting = lasting_of(turnover, waning)
     found = decided_numbers(scenario, intervention)
     with precision(found.bits):
         return _coverage(found, groups, efficacy, against_spread, kind, lasting, target)
@@ -263,7 +264,8 @@ def share_mask(size: int, chosen: Sequence[HostGroup]) -> np.ndarray[tuple[int],
     return mask
 
 
-def _lasting(turnover: float | None, waning: float) -> float:
+def lasting_of(turnover: float | None, waning: float) -> float:
+    """Return the share of coverage that protects where protection wanes; 1 where it lasts."""
     if waning == 0:
         return 1.0
     if turnover is None or not (turnover > 0 and waning > 0):
@@ -277,6 +279,14 @@ def _lasting(turnover: float | None, waning: float) -> float:
 
 def chosen_groups(found: Numbers, labels: Sequence[str] | None) -> tuple[HostGroup, ...]:
     """Return the groups of hosts of these labels, or single types where a label is that of a type; all without labels."""
+    if found.scenario.projection is not None:
+        raise ScenarioError(
+            Problem(
+                "groups",
+                "a projected population is not vaccinated: nobody in it is infected. Write what lowers births or survival as "
+                "an intervention, and ask for the strength that is needed.",
+            )
+        )
     every = host_groups(found)
     if labels is None:
         return every

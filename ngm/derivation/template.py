@@ -399,6 +399,8 @@ class Template:
     @cached_property
     def at_infection(self) -> tuple[int, ...]:
         """Rows of F that are not identically zero: the types at infection."""
+        if self.scenario.given is not None:
+            return tuple(range(len(self.types)))
         evaluator, offsets = self.pattern_evaluator, self.offsets(self.infected)
         infects = np.zeros(len(self.types), dtype=bool)
         for arrow in self.arrows:

@@ -16,7 +16,7 @@ from ngm.scenario.fields import Key, closest, short
 from ngm.scenario.following import parameter_order, values_in_force
 from ngm.scenario.graph import arrows, order
 from ngm.scenario.groups import Varies, check_within, varies
-from ngm.scenario.model import Expression, Parameter
+from ngm.scenario.model import Change, Expression, Parameter
 
 __all__ = ["check"]
 
@@ -69,6 +69,14 @@ def _used(draft: Draft) -> Iterator[Placed]:
         yield from entries
     for _, placed in _populations(draft):
         yield placed
+    yield from _stated(draft)
+
+
+def _stated(draft: Draft) -> Iterator[Placed]:
+    """Yield every entry of the matrices that stand in the file."""
+    for rows in draft.stated.values():
+        for row in rows:
+            yield from row
 
 
 def _given(draft: Draft) -> Iterator[tuple[str, str, tuple[Placed, ...]]]:
@@ -251,6 +259,8 @@ def _groups(draft: Draft, ordered: list[str]) -> None:
         matrix = draft.matrices[name]
         allowed = frozenset({matrix.by} if matrix.within is None else {matrix.by, matrix.within})
         check_within(draft, placed, varies(draft, placed, lookup), allowed, lookup, f"the matrix {name} has")
+    for placed in _stated(draft):
+        check_within(draft, placed, varies(draft, placed, lookup), frozenset(), lookup, "an entry of a matrix has")
     typed_parameters: dict[str | int, str] = {draft.typed[name]: name for name in draft.parameters}
     for placed in _parameter_values(draft):
         name = typed_parameters[placed.key[1]]
@@ -323,7 +333,11 @@ def _interventions(draft: Draft, ordered: list[str]) -> None:
                 continue
             where = f'intervention "{short(intervention.name)}", change {place + 1}'
             key: Key = ("intervention", number, "change", place, change.what)
-            if change.name not in draft.infected:
+            if draft.form is not None:
+                message = _stated_change(draft, change)
+                if not message:
+                    continue
+            elif change.name not in draft.infected:
                 message = (
                     f'{change.what} = "{change.name}": {change.name} is not infected. Name an infected compartment.'
                 )
@@ -336,6 +350,23 @@ def _interventions(draft: Draft, ordered: list[str]) -> None:
             else:
                 continue
             draft.found.add(where, message, key)
+
+
+def _stated_change(draft: Draft, change: Change) -> str:
+    """Return what is wrong with acting on a type of a matrix that stands in the file; empty where nothing is."""
+    rows = draft.stated.get("K") or draft.stated.get("births")
+    if rows is None:
+        return ""
+    place = draft.types.index(change.name)
+    if change.what == "infectivity" and all(_is_zero(row[place]) for row in rows):
+        return f"the column of {change.name} is 0: it causes nothing that could be reduced. Name another one."
+    if change.what == "susceptibility" and draft.form == "projection" and all(map(_is_zero, rows[place])):
+        return f"the row of {change.name} is 0: nobody is born into it. Name another one."
+    return ""
+
+
+def _is_zero(placed: Placed) -> bool:
+    return exact.is_closed(placed.expression.tree) and exact.evaluate(placed.expression.tree) == 0
 
 
 def _reached(tree: Node, reach: dict[str, set[str]]) -> set[str]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 from math import prod
-from typing import Any
+from typing import Any, Literal
 
 from ngm.expression.names import canonical
 from ngm.scenario.fields import Findings, Key, closest, listed, short
@@ -73,6 +73,10 @@ class Draft:
     )
     interventions: list[Intervention] = field(default_factory=list)
     report: dict[str, str | tuple[str, ...]] = field(default_factory=dict)
+    #: matrices that stand in the file in place of compartments and flows: which form, labels, name -> rows of entries
+    form: Literal["next_generation", "projection"] | None = None
+    types: tuple[str, ...] = ()
+    stated: dict[str, tuple[tuple[Placed, ...], ...]] = field(default_factory=dict)
     #: kinds of flow and states of infection that the file names, readable or not
     kinds: set[str] = field(default_factory=set)
     infected: set[str] = field(default_factory=set)
@@ -99,6 +103,18 @@ class Draft:
             return None
         hint = closest(name or text, self.of_role(role)) or self.choice(role)
         self.found.add(where, f"'{short(text)}' is not {ARTICLE[role]} of this file.{hint}", key)
+        return None
+
+    def resolve_type(self, text: object, where: str, key: Key) -> str | None:
+        """Return the label of a type or stage of a matrix that stands in the file; None with the problem noted."""
+        what = "type" if self.form == "next_generation" else "stage"
+        if not isinstance(text, str):
+            self.found.add(where, f"expected the label of a {what} in quotes.", key)
+        elif text in self.types:
+            return text
+        elif self.types:
+            hint = closest(text, self.types) or f" The {what}s: {listed(self.types)}."
+            self.found.add(where, f"'{short(text)}' is not a {what} of this file.{hint}", key)
         return None
 
     def choice(self, role: Role) -> str:

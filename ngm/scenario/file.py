@@ -16,8 +16,9 @@ from ngm.scenario.document import read_text, to_data
 from ngm.scenario.draft import Draft
 from ngm.scenario.edit import delete, insert, move, rename, set_value
 from ngm.scenario.fields import EnoughError, Findings
-from ngm.scenario.model import Expression, Scenario
+from ngm.scenario.model import Expression, GivenMatrix, Intervention, Projection, Scenario
 from ngm.scenario.read import read
+from ngm.scenario.stated import compartments_of, flows_of, internal_names
 from ngm.scenario.unit_check import check_units
 
 __all__ = ["delete", "insert", "load", "loads", "move", "rename", "set_value"]
@@ -86,7 +87,9 @@ def _with_units(draft: Draft, scenario: Scenario) -> Scenario:
     ]
     if open_ones:
         named = ", ".join(open_ones[:6]) + (", …" if len(open_ones) > 6 else "")
-        wrong.append(f"Units: the flows need a unit for {named}, and the file gives none.")
+        wrong.append(
+            f"Units: the {'flows' if draft.form is None else 'entries'} need a unit for {named}, and the file gives none."
+        )
     return replace(scenario, warnings=(*scenario.warnings, *wrong))
 
 
@@ -94,24 +97,57 @@ def _state(draft: Draft, section: str) -> dict[str, tuple[Expression, ...]]:
     return {name: tuple(placed.expression for placed in entries) for name, entries in draft.states[section].items()}
 
 
+def _stated(draft: Draft) -> tuple[GivenMatrix | None, Projection | None]:
+    """Return the matrices that stand in the file, as one of the two forms."""
+    rows = {
+        name: tuple(tuple(placed.expression for placed in row) for row in table) for name, table in draft.stated.items()
+    }
+    if draft.form == "next_generation":
+        return GivenMatrix(draft.types, rows["K"], rows["sizes"][0] if "sizes" in rows else ()), None
+    if draft.form == "projection":
+        return None, Projection(draft.types, rows["births"], rows["transitions"])
+    return None, None
+
+
+def _renamed(draft: Draft, names: dict[str, str]) -> list[Intervention]:
+    """Return the interventions with types under the names that they have as compartments."""
+    out = []
+    for intervention in draft.interventions:
+        changes = tuple(
+            replace(change, name=names[change.name]) if change.what in ("susceptibility", "infectivity") else change
+            for change in intervention.changes
+        )
+        out.append(replace(intervention, changes=changes))
+    return out
+
+
 def _scenario(draft: Draft, text: str, folder: str | None) -> Scenario:
+    given, projection = _stated(draft)
+    names = internal_names(draft.types, draft.roles)
+    stated = given or projection
+    if stated is not None:
+        draft.compartments = compartments_of(names, draft.types)
     return Scenario(
         title=draft.title,
         time_unit=draft.time_unit,
         compartments=draft.compartments,
         parameters=draft.parameters,
         definitions=draft.definitions,
-        flows=tuple(flow for flow, _ in draft.flows),
+        flows=tuple(flow for flow, _ in draft.flows) if stated is None else flows_of(stated, names),
         dimensions=draft.dimensions,
         matrices=draft.matrices,
         movements=tuple(draft.movements),
         infection_free=_state(draft, "infection_free"),
         state_now=_state(draft, "state_now"),
-        interventions=tuple(draft.interventions),
+        interventions=tuple(
+            draft.interventions if stated is None else _renamed(draft, dict(zip(draft.types, names, strict=True)))
+        ),
         report=draft.report,
         summary=draft.summary,
         strict_units=draft.strict_units,
         discrete=draft.discrete,
+        given=given,
+        projection=projection,
         warnings=tuple(draft.found.warnings),
         text=text,
         folder=folder,

@@ -271,7 +271,7 @@ class Scenario:
     `infection_free`: compartment -> one expression for all groups, or one for each copy (in the order of its `by`).
     `state_now`: the same for the state of today, at rest or not; a compartment left out is as without infection.
     `discrete`: one step is one `time_unit`, and a flow's rate is the number that moves in a step. `given`, `projection`: the
-    matrices stand in the file, and there are no compartments and no flows.
+    matrices stand in the file; `compartments` and `flows` are then the arrows that make them (`ngm.scenario.stated`).
     `warnings`: what the reader noticed and did not refuse. `text`: the file.
     """
 
@@ -320,7 +320,8 @@ class Scenario:
     def items(self, name: str, by: tuple[str, ...]) -> tuple[str, ...]:
         """Return the names that results give to the copies: ``("E[0-4,North]", …)``, or ``("E",)`` ungrouped."""
         if not by:
-            return (name,)
+            # a type that shares its label with a parameter is a compartment under a marked name
+            return (name.removesuffix("'"),)
         return tuple(f"{name}[{','.join(groups)}]" for groups in self.copies(by))
 
 

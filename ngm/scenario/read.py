@@ -16,10 +16,10 @@ from ngm.scenario.model import Compartment, Definition, Dimension, Flow, Kind, M
 from ngm.scenario.read_interventions import read_interventions
 from ngm.scenario.read_matrices import read_matrices
 from ngm.scenario.read_parameters import read_parameters
+from ngm.scenario.read_stated import FORMS, read_labels, read_stated
 
 __all__ = ["read"]
 
-_LATER = ("next_generation", "projection")
 _SECTIONS = (
     "scenario",
     "dimensions",
@@ -33,6 +33,7 @@ _SECTIONS = (
     "state_now",
     "intervention",
     "report",
+    *FORMS,
 )
 _REPORT_TEXTS = ("question", "audience", "place", "date", "author", "reviewer", "reviewed_on", "comparison", "funding")
 _REPORT_LISTS = ("assumptions", "limits", "changes")
@@ -52,12 +53,12 @@ def read(draft: Draft, data: Mapping[str, Any], folder: str | None) -> None:
     """
     found = draft.found
     for name in data:
-        if name in _LATER:
-            found.add(f"[{name}]", "is not supported yet by this version.", (name,))
-        elif name not in _SECTIONS:
-            hint = closest(name, _SECTIONS) or f" The sections are: {listed(_SECTIONS, 12)}."
+        if name not in _SECTIONS:
+            hint = closest(name, _SECTIONS) or f" The sections are: {listed(_SECTIONS, len(_SECTIONS))}."
             found.add(short(name), f"is not a section of a scenario file.{hint}", (name,))
     _scenario(draft, data)
+    stated = any(name in data for name in FORMS)
+    draft.discrete = draft.discrete or (stated and "next_generation" not in data)
     sections = {
         name: _section(draft, data, name)
         for name in ("dimensions", "compartments", "parameters", "matrices", "definitions")
@@ -65,15 +66,17 @@ def read(draft: Draft, data: Mapping[str, Any], folder: str | None) -> None:
     members = {name: _declare(draft, name, section) for name, section in sections.items()}
     found.matrices = frozenset(draft.of_role("matrix"))
     _dimensions(draft, members["dimensions"])
-    later = any(name in data for name in _LATER)
-    _compartments(draft, members["compartments"], required=not later)
+    _compartments(draft, members["compartments"], required=not stated)
     read_parameters(draft, members["parameters"])
     read_matrices(draft, members["matrices"], folder)
     _definitions(draft, members["definitions"])
-    _flows(draft, data, required=not later)
-    _movements(draft, data)
-    for section in ("infection_free", "state_now"):
-        _state(draft, data, section)
+    if stated:
+        read_stated(draft, data)
+    else:
+        _flows(draft, data, required=True)
+        _movements(draft, data)
+        for section in ("infection_free", "state_now"):
+            _state(draft, data, section)
     read_interventions(draft, entries(draft, data, "intervention"))
     _report(draft, data)
 
@@ -185,23 +188,7 @@ def _groups(draft: Draft, raw: list[Any], where: str, key: Key) -> tuple[str, ..
     if len(raw) > MOST_TYPES:
         draft.found.add(where, f"has {len(raw):,} groups. A model has at most {MOST_TYPES:,} types.", key)
         return None
-    seen: set[str] = set()
-    good = True
-    for label in raw:
-        if not isinstance(label, str):
-            trouble = f"expected the label of a group in quotes, not {describe(label)}."
-        elif not label.strip():
-            trouble = "a group has an empty label. Give it one."
-        elif any(character in ",[]\"'" for character in label):
-            trouble = f"'{short(label)}' holds a comma, a square bracket or a quote, which a label cannot."
-        elif label in seen:
-            trouble = f"'{short(label)}' stands twice. Each group has a label of its own."
-        else:
-            seen.add(label)
-            continue
-        draft.found.add(where, trouble, key)
-        good = False
-    return tuple(raw) if good else None
+    return read_labels(draft.found, raw, where, key, "group")
 
 
 def _compartments(draft: Draft, members: Mapping[str, Any], *, required: bool) -> None:

@@ -90,7 +90,10 @@ def _change(draft: Draft, parent: Table, number: int, raw: dict[str, Any]) -> Ch
     table = Table(draft.found, raw, where, key, (form, *_ACTIONS, *extra))
     roles: dict[What, Role] = {"parameter": "parameter", "matrix": "matrix"}
     role = roles.get(form, "compartment")
-    name = draft.resolve(raw[form], role, table.at(form), (*key, form))
+    if draft.form is not None and role == "compartment":
+        name = draft.resolve_type(raw[form], table.at(form), (*key, form))
+    else:
+        name = draft.resolve(raw[form], role, table.at(form), (*key, form))
     amount = _amount(draft, table, form, name)
     groups, rows, columns = _groups(draft, table, form, name)
     if name is None or amount is None or len(draft.found.problems) > before:
@@ -153,9 +156,9 @@ def _groups(
         none = f"{name} is the same everywhere: it has no within. Name groups of {matrix.by} by rows and columns."
     else:
         owner = draft.parameters.get(name or "") if form == "parameter" else draft.compartments.get(name or "")
-        if owner is None:
+        if owner is None and (draft.form is None or form == "parameter" or name is None):
             return {}, None, None
-        by = owner.by
+        by = () if owner is None else owner.by
         none = f"{name} is not grouped. Leave group out."
     if not table.has("group"):
         return {}, rows, columns

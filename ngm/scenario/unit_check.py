@@ -21,6 +21,7 @@ from fractions import Fraction
 
 from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total, fold, names
 from ngm.expression.write import write
+from ngm.scenario.graph import order
 from ngm.scenario.model import Flow, Scenario
 from ngm.scenario.unit_powers import (
     EVENTS,
@@ -36,6 +37,7 @@ from ngm.scenario.unit_powers import (
     times,
     words_of,
 )
+from ngm.scenario.unit_stated import check_entries
 from ngm.scenario.units import SECONDS, read_unit
 
 __all__ = ["UnitCheck", "UnitFinding", "check_units"]
@@ -58,7 +60,7 @@ class _Equation:
 
 
 @dataclass
-class _Checker:
+class Checker:
     scenario: Scenario
     words: set[str] = field(default_factory=set)
     equations: list[_Equation] = field(default_factory=list)
@@ -90,6 +92,10 @@ class _Checker:
             # A step is counted, not measured: a share and a share per step are the same number.
             return None if self.scenario.discrete else self.scenario.time_unit
         single = singular(word)
+        stated = self.scenario.given is not None or self.scenario.projection is not None
+        # Entries of a matrix are members per member: what counts members is a pure number there, eggs included.
+        if stated and (single.lower() not in MEASURES or single.lower() == "egg"):
+            return None
         if single.lower() in HOSTS:
             return INDIVIDUAL
         if single in self.words or single.lower() in MEASURES:
@@ -261,7 +267,7 @@ def check_units(scenario: Scenario) -> UnitCheck:
     UnitCheck
         No finding where every unit fits and every parameter that decides has one.
     """
-    checker = _Checker(scenario)
+    checker = Checker(scenario)
     checker.start()
     for name in _in_order(scenario):
         definition = scenario.definitions[name]
@@ -270,7 +276,11 @@ def check_units(scenario: Scenario) -> UnitCheck:
         if parameter.follows:
             _follows(checker, name)
     _states(checker)
-    rates = [_flow(checker, number, flow) for number, flow in enumerate(scenario.flows, 1)]
+    if scenario.given is not None or scenario.projection is not None:
+        rates = []
+        check_entries(checker)
+    else:
+        rates = [_flow(checker, number, flow) for number, flow in enumerate(scenario.flows, 1)]
     checker.solve()
     implied = _missing(checker)
     _rows_of_K(checker)
@@ -279,30 +289,19 @@ def check_units(scenario: Scenario) -> UnitCheck:
         reduced = None if value.powers is None else checker.reduced(value.powers)
         expressions[name] = None if reduced is None or not is_known(reduced) else words_of(reduced)
     given = any(p.unit is not None and p.unit.powers is not None for p in scenario.parameters.values())
-    order = {"follows": 0, "sum": 1, "argument": 1, "state": 2, "flow": 3, "matrix": 4, "K": 5, "missing": 6}
-    found = sorted(dict.fromkeys(checker.findings), key=lambda finding: order[finding.kind])
+    rank = {"follows": 0, "sum": 1, "argument": 1, "state": 2, "flow": 3, "entry": 3, "matrix": 4, "K": 5, "missing": 6}
+    found = sorted(dict.fromkeys(checker.findings), key=lambda finding: rank[finding.kind])
     own_units = any(c.unit is not None for c in scenario.compartments.values())
     return UnitCheck(tuple(found), implied, expressions, given or own_units)
 
 
 def _in_order(scenario: Scenario) -> Iterator[str]:
-    """Yield the definitions, each after those that it uses, without recursion."""
-    done: set[str] = set()
-    for start in scenario.definitions:
-        stack = [start]
-        while stack:
-            name = stack[-1]
-            waiting = sorted((names(scenario.definitions[name].expression.tree) & set(scenario.definitions)) - done)
-            if waiting:
-                stack.append(waiting[0])
-                continue
-            stack.pop()
-            if name not in done:
-                done.add(name)
-                yield name
+    """Yield the definitions, each after those that it uses."""
+    needs = {name: sorted(names(item.expression.tree)) for name, item in scenario.definitions.items()}
+    return (name for name in order(needs)[0] if name in needs)
 
 
-def _follows(checker: _Checker, name: str) -> None:
+def _follows(checker: Checker, name: str) -> None:
     own = checker.parameter(name)
     for expression in dict.fromkeys(checker.scenario.parameters[name].values):
         where, key = f"parameters.{name}, value", ("parameters", name, "value")
@@ -322,7 +321,7 @@ def _follows(checker: _Checker, name: str) -> None:
         checker.require(times(value.powers, own, Fraction(-1)), told)
 
 
-def _states(checker: _Checker) -> None:
+def _states(checker: Checker) -> None:
     for section, state in (
         ("infection_free", checker.scenario.infection_free),
         ("state_now", checker.scenario.state_now),
@@ -344,7 +343,7 @@ def _states(checker: _Checker) -> None:
                 checker.require(times(value.powers, own, Fraction(-1)), told)
 
 
-def _flow(checker: _Checker, number: int, flow: Flow) -> _Value:
+def _flow(checker: Checker, number: int, flow: Flow) -> _Value:
     where = f'flow {number} "{flow.label}", rate' if flow.label else f"flow {number}, rate"
     key = ("flow", number - 1, "rate")
     value = checker.value(flow.rate.tree, where, key)
@@ -369,7 +368,7 @@ def _flow(checker: _Checker, number: int, flow: Flow) -> _Value:
     return value
 
 
-def _hint(checker: _Checker, flow: Flow, rest: Powers) -> str:
+def _hint(checker: Checker, flow: Flow, rest: Powers) -> str:
     """Return what is the likely slip behind a flow's wrong unit, as a sentence; empty where there is none."""
     scenario = checker.scenario
     used: set[str] = set()
@@ -404,7 +403,7 @@ def _hint(checker: _Checker, flow: Flow, rest: Powers) -> str:
     return ""
 
 
-def _missing(checker: _Checker) -> dict[str, str]:
+def _missing(checker: Checker) -> dict[str, str]:
     """Tell of each parameter without a unit where one decides, and return what the flows need of each."""
     scenario = checker.scenario
     implied: dict[str, str] = {}
@@ -433,7 +432,7 @@ def _missing(checker: _Checker) -> dict[str, str]:
     return implied
 
 
-def _rows_of_K(checker: _Checker) -> None:
+def _rows_of_K(checker: Checker) -> None:
     """Say that K is not free of units where a flow of new infections is in the wrong unit."""
     rows: dict[str, list[str]] = {}
     for finding in checker.findings:

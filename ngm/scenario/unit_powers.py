@@ -57,8 +57,8 @@ class UnitFinding:
     """One thing about the units that does not fit, or that cannot be decided.
 
     `kind`: "sum" (terms of different units are added), "flow", "follows" (a value that follows others), "state", "argument"
-    (of exp, log or a power), "matrix", "K", or "missing" (a parameter without a unit where one decides). `key`: the field
-    in the file.
+    (of exp, log or a power), "matrix", "entry" (of a matrix that stands in the file), "K", or "missing" (a parameter
+    without a unit where one decides). `key`: the field in the file.
     """
 
     kind: str

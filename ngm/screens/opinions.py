@@ -126,7 +126,9 @@ def splits_panel(shown: Shown, write: Write) -> None:
     if found.agree:
         st.markdown(f"The same in all valid splits: **{plain(found.words(found.agree))}**.")
     if found.differ:
-        st.markdown(f"Not to be compared between models that split differently: **{plain(found.words(found.differ))}**.")
+        st.markdown(
+            f"Not to be compared between models that split differently: **{plain(found.words(found.differ))}**."
+        )
     if len(found.types) <= MOST_TYPES:
         with st.expander("F, V and K of each split"):
             for k, split in enumerate(found.splits, 1):

@@ -42,8 +42,6 @@ ON_PLAIN: list[tuple[str, str, tuple[str, ...]]] = [
     ("[infection_free]", "[state_now]\nI = 1\n[infection_free]", ("state_now.I: I is infected",)),
     ("[infection_free]", "[state_now]\nS = -1\n[infection_free]", ("state_now.S: -1 is negative",)),
     ("[infection_free]", "[state_now]\nX = 1\n[infection_free]", ("state_now",)),
-    ("[infection_free]", "[projection]\nstages = []\n[infection_free]", ("[projection]: is not supported yet",)),
-    ("[infection_free]", "[next_generation]\ntypes = []\n[infection_free]", ("[next_generation]: is not supported",)),
     ("[[intervention]]", "[intervention]", ("[intervention]: expected a list of tables", "[[intervention]]")),
     # names
     ("[definitions]", '[definitions]\n"2x" = "1"', ("definitions.2x: '2x' is not a name",)),

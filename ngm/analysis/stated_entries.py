@@ -1,0 +1,69 @@
+"""Entries of matrices that stand in the file, at their values: what is refused, and what is said where there is no R0."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from ngm.analysis.matrices import as_floats
+from ngm.derivation.evaluate import Evaluator
+from ngm.derivation.space import Array
+from ngm.derivation.template import Template
+from ngm.errors import DerivationError, Problem
+from ngm.scenario.model import Scenario
+
+__all__ = ["is_stated", "negative_entry", "refuse_negative_shares", "sizes_of", "without_end"]
+
+MOST_TOLD = 5
+
+
+def is_stated(scenario: Scenario) -> bool:
+    """Return whether the matrices of a scenario stand in its file: a K as given, or a projection."""
+    return scenario.given is not None or scenario.projection is not None
+
+
+def sizes_of(scenario: Scenario, evaluator: Evaluator) -> tuple[float, ...] | None:
+    """Return the members of each type of a K as given, None where the file does not say."""
+    if scenario.given is None or not scenario.given.sizes:
+        return None
+    return tuple(float(as_floats(evaluator.value(size.tree)).ravel()[0]) for size in scenario.given.sizes)
+
+
+def refuse_negative_shares(template: Template, V: Array) -> None:
+    """Refuse a projection in which an entry of T = I - V is negative at its values.
+
+    Raises
+    ------
+    DerivationError
+        With the entries.
+    """
+    problems = []
+    stages = template.types
+    for i, j in np.argwhere(as_floats(V) > np.eye(len(V))):
+        share = (1 if i == j else 0) - V[i, j]
+        if share < 0:
+            problems.append(
+                Problem(
+                    f"projection, transitions[{stages[i]}, {stages[j]}]",
+                    f"is {float(as_floats(np.array([share]))[0]):.6g} at these values. A share is positive or zero: check the "
+                    "values of its parameters.",
+                    key=("projection", "transitions", int(i), int(j)),
+                )
+            )
+    if problems:
+        raise DerivationError(problems[:MOST_TOLD])
+
+
+def negative_entry(scenario: Scenario, row: str, column: str) -> str:
+    """Return why there is no R0 where an entry of K, or of births, is negative."""
+    if scenario.given is not None:
+        return f"K[{row}, {column}] is negative at these values. A number of new infections is positive or zero."
+    return f"births[{row}, {column}] is negative at these values. A number of new members is positive or zero."
+
+
+def without_end(members: list[str]) -> str:
+    """Return why a projection has no net reproduction number: without births its members are not gone in the end."""
+    named = ", ".join(members[:6]) + (", …" if len(members) > 6 else "")
+    return (
+        f"rho(T) >= 1 at these values: without births the members of {named} are not all gone in the end, so the number of "
+        "births in a life has no finite mean. The growth factor is that of F + T all the same. Check the shares of transitions."
+    )
