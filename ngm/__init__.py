@@ -13,6 +13,7 @@ from ngm.errors import DerivationError, ExpressionError, NgmError, ScenarioError
 
 if TYPE_CHECKING:
     from ngm.analysis.allocation import allocate
+    from ngm.analysis.assurance import assured_coverage, assured_strength
     from ngm.analysis.batch import reproduction_numbers
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
@@ -27,12 +28,13 @@ if TYPE_CHECKING:
     from ngm.analysis.solve import solve
     from ngm.analysis.splits import splits
     from ngm.analysis.strength import coverage_needed, strength_needed
-    from ngm.analysis.uncertainty import uncertainty
+    from ngm.analysis.uncertainty import draw_table, uncertainty
     from ngm.analysis.units import units
     from ngm.reporting.make import report
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
     from ngm.scenario.packages import combined
+    from ngm.scenario.slips import conversions
 
 __all__ = [
     "DerivationError",
@@ -41,13 +43,17 @@ __all__ = [
     "Scenario",
     "ScenarioError",
     "allocate",
+    "assured_coverage",
+    "assured_strength",
     "calibrate",
     "combined",
     "compare",
     "contact_readings",
     "control",
+    "conversions",
     "coverage_needed",
     "difference",
+    "draw_table",
     "formula",
     "load",
     "loads",
@@ -71,10 +77,13 @@ __all__ = [
 _HOMES = {
     "Scenario": "ngm.scenario.model",
     "allocate": "ngm.analysis.allocation",
+    "assured_coverage": "ngm.analysis.assurance",
+    "assured_strength": "ngm.analysis.assurance",
     "combined": "ngm.scenario.packages",
     "compare": "ngm.analysis.compare",
     "contact_readings": "ngm.analysis.mixing",
     "control": "ngm.analysis.control",
+    "conversions": "ngm.scenario.slips",
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
@@ -90,6 +99,7 @@ _HOMES = {
     "strength_needed": "ngm.analysis.strength",
     "swings": "ngm.analysis.plane",
     "uncertainty": "ngm.analysis.uncertainty",
+    "draw_table": "ngm.analysis.uncertainty",
     "read_draws": "ngm.analysis.drawfile",
     "difference": "ngm.analysis.difference",
     "formula": "ngm.analysis.formula",

@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from ngm.results import Matrix
+from ngm.results_draws import Assurance, Assured, DrawFigures, DrawTable, Driver, Spread, Uncertainty
 from ngm.results_mixing import Piece, Scale
 
 if TYPE_CHECKING:
@@ -17,12 +18,15 @@ if TYPE_CHECKING:
 
 __all__ = [
     "Assurance",
+    "Assured",
     "Calibration",
     "DrawFigures",
+    "DrawTable",
     "Driver",
     "LocalIndex",
     "Plane",
     "Sensitivity",
+    "Spread",
     "Swing",
     "Swings",
     "Uncertainty",
@@ -80,6 +84,7 @@ class Sensitivity:
                 "elasticity": None if self.entry_elasticity is None else [list(r) for r in self.entry_elasticity],
             },
             "global": None if self.uncertainty is None else self.uncertainty.to_json(),
+            **({} if self.uncertainty is None else self.uncertainty.more_json()),
             "warnings": list(self.warnings),
         }
 
@@ -90,102 +95,6 @@ class Sensitivity:
         columns = ["parameter", "value", "derivative", "elasticity", "growth_derivative", "growth_elasticity"]
         rows = [{name: getattr(index, name) for name in columns} for index in self.local]
         rows.sort(key=lambda row: -abs(row["elasticity"] or 0.0))
-        return pandas.DataFrame(rows, columns=columns)
-
-    def _repr_html_(self) -> str:
-        return str(self.to_frame().to_html(escape=True))
-
-
-@dataclass(frozen=True, slots=True)
-class DrawFigures:
-    """What a set of draws says of one number; None where there are too few values.
-
-    `rejected` of `draws` have no value; the figures are of the rest. `quantiles`: 0.025, 0.25, 0.5, 0.75, 0.975.
-    `above_one`: share of the values above 1, with Wilson's 95 % interval for independent draws.
-    """
-
-    draws: int
-    rejected: int
-    mean: float | None
-    sd: float | None
-    quantiles: Mapping[str, float] | None
-    above_one: float | None
-    mean_error: float | None
-    above_one_interval: tuple[float, float] | None
-
-
-@dataclass(frozen=True, slots=True)
-class Driver:
-    """How much one parameter drives the spread: partial rank correlation, first and total Sobol index.
-
-    `monotone` is False where R0 both rises and falls with the parameter: then the rank correlation misleads.
-    """
-
-    parameter: str
-    prcc: float | None
-    why: str | None
-    monotone: bool | None
-    first: float | None
-    first_interval: tuple[float, float] | None
-    total: float | None
-    total_interval: tuple[float, float] | None
-
-
-@dataclass(frozen=True, slots=True)
-class Assurance:
-    """The control reproduction number of an intervention over the draws, and the share of them in which it is below 1."""
-
-    intervention: str
-    figures: DrawFigures
-    below_one: float | None
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class Uncertainty:
-    """What the spread of the parameters does to R0: the result of `ngm.uncertainty`.
-
-    `running`: the same figures at a half, a quarter, … of the draws, to see whether they have settled. `uniform_effort`:
-    the share of all infections to prevent, in all types alike, that is enough in the share `assurance` of the draws.
-    """
-
-    title: str
-    digest: str
-    how: str
-    seed: int | None
-    R0: DrawFigures
-    histogram: tuple[tuple[float, float, float], ...]
-    running: tuple[DrawFigures, ...]
-    drivers: tuple[Driver, ...]
-    interventions: tuple[Assurance, ...]
-    assurance: float
-    uniform_effort: float | None
-    warnings: tuple[str, ...]
-
-    def to_json(self) -> dict[str, Any]:
-        """Return the `global` object that `sensitivity --draws --json` prints."""
-        told = self.R0
-        return {
-            "draws": told.draws,
-            "rejected": told.rejected,
-            "seed": self.seed,
-            "R0": {
-                "mean": told.mean,
-                "sd": told.sd,
-                "quantiles": None if told.quantiles is None else dict(told.quantiles),
-            },
-            "probability_above_one": told.above_one,
-            "prcc": {d.parameter: d.prcc for d in self.drivers},
-            "sobol_first": {d.parameter: d.first for d in self.drivers},
-            "sobol_total": {d.parameter: d.total for d in self.drivers},
-        }
-
-    def to_frame(self) -> pandas.DataFrame:
-        """Return one row a parameter, largest total index (or rank correlation) first."""
-        import pandas
-
-        columns = ["parameter", "prcc", "monotone", "first", "total"]
-        rows = [{name: getattr(driver, name) for name in columns} for driver in self.drivers]
-        rows.sort(key=lambda row: -abs(row["total"] if row["total"] is not None else row["prcc"] or 0.0))
         return pandas.DataFrame(rows, columns=columns)
 
     def _repr_html_(self) -> str:
@@ -290,7 +199,8 @@ class Plane:
 class Calibration:
     """The value of a parameter at which R0 (or the growth rate) is what is wanted: the result of `ngm.calibrate`.
 
-    `R0` is the wanted one; where a growth rate is wanted, the one that goes with it, None where there is none.
+    `R0` is the wanted one; where a growth rate is wanted, the one that goes with it, None where there is none. `values`: all
+    that were found, `value` the smallest; `attainable`: what the number goes from and to over the search.
     """
 
     parameter: str
@@ -298,6 +208,8 @@ class Calibration:
     R0: float | None
     warnings: tuple[str, ...]
     growth_rate: float | None = None
+    values: tuple[float, ...] = ()
+    attainable: tuple[float, float] | None = None
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `calibrate --json` prints."""
@@ -307,5 +219,7 @@ class Calibration:
             "value": self.value,
             "R0": self.R0,
             **wanted,
+            "values": list(self.values),
+            "attainable": None if self.attainable is None else list(self.attainable),
             "warnings": list(self.warnings),
         }

@@ -7,6 +7,7 @@ from collections.abc import Callable
 from itertools import pairwise
 
 from ngm.analysis.numbers import Numbers
+from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import PRECISION, nearest, precision
 from ngm.engine.roots import root_between
 from ngm.errors import NgmError, Problem, ScenarioError
@@ -41,6 +42,7 @@ def calibrate(
     ngm.ScenarioError
         The parameter is unknown, what is wanted is no such number, or it is not attained: with the interval that is.
     """
+    refuse_season(scenario, "the value for a wanted R0")
     if parameter not in scenario.parameters:
         near = suggest(parameter, list(scenario.parameters))
         hint = f" Did you mean '{near}'?" if near else f" Parameters: {', '.join(list(scenario.parameters)[:20])}."
@@ -81,9 +83,16 @@ def calibrate(
         )
     if any(value is None for _, value in points):
         warnings.append(f"At some values of {parameter} in the search there is no {name}; they were passed over.")
-    if R0 is None:
-        return Calibration(parameter, found[0], _Search(scenario, parameter).at(found[0]), tuple(warnings), growth_rate)
-    return Calibration(parameter, found[0], R0, tuple(warnings))
+    known = [value for _, value in points if value is not None]
+    return Calibration(
+        parameter,
+        found[0],
+        _Search(scenario, parameter).at(found[0]) if R0 is None else R0,
+        tuple(warnings),
+        growth_rate,
+        values=tuple(found),
+        attainable=(min(known), max(known)),
+    )
 
 
 class _Search:

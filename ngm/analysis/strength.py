@@ -9,6 +9,7 @@ import numpy as np
 from ngm.analysis.groups import HostGroup, host_groups
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
+from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import critical_effort, type_reproduction_number
 from ngm.engine.roots import last_fall, respond, root_between
@@ -62,6 +63,7 @@ def strength_needed(
     ngm.ScenarioError
         No intervention of this name, or a target that is none.
     """
+    refuse_season(scenario, "the strength needed")
     package = find_intervention(scenario, intervention) if isinstance(intervention, str) else intervention
     check_target(target)
     before = () if with_also is None else with_also.changes
@@ -177,6 +179,7 @@ def coverage_needed(
     Smith, Rodrigues & Fine (1984) Int. J. Epidemiol. 13:87-93 (from memory); Roberts & Heesterbeek (2003) Proc. R. Soc.
     B 270:1359
     """
+    refuse_season(scenario, "the coverage needed")
     check_target(target)
     if kind not in ("leaky", "all-or-nothing"):
         raise ScenarioError(Problem("kind", f"'{short(kind)}' is no kind of vaccine. Write leaky or all-or-nothing."))

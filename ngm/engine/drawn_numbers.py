@@ -37,7 +37,7 @@ def growth_rates(slope: FloatArray, pattern: BoolArray | None = None) -> FloatAr
     E to I at 0.5, I infects at 0.6 and is lost at 0.2: r solves (r + 0.5)(r + 0.2) = 0.3.
 
     >>> slope = np.array([[[-0.5], [0.6]], [[0.5], [-0.2]]])
-    >>> growth_rates(slope).round(12).tolist()
+    >>> growth_rates(slope).round(9).tolist()
     [0.217890835]
     """
     m, size = len(slope), slope.shape[-1]
