@@ -7,7 +7,7 @@ import streamlit as st
 from ngm.charts.style import short
 from ngm.drafts import DraftError
 from ngm.results import Solution
-from ngm.screens import cache, jobs, lines, state
+from ngm.screens import cache, finding, jobs, lines, state
 from ngm.screens.parts import Shown, plain
 
 __all__ = ["formulas", "notices", "show_difference", "status"]
@@ -108,6 +108,7 @@ def status() -> None:
         if outcome.solution is None:
             count = len(outcome.problems)
             st.markdown(f"⚠ {count} problem{'s' if count > 1 else ''} to put right")
+            finding.jumps(outcome.problems, "status")
         elif outcome.solution.R0 is None:
             st.markdown("No R0 at these values")
         else:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import desk, parts, state
+from ngm.screens import desk, finding, parts, state
 from ngm.screens.registry import PAGES
 
 
@@ -18,6 +18,7 @@ def main() -> None:
     status = st.sidebar.container()
     notices = st.container()
     page.run()
+    finding.arrive()
     parts.explanations(next((entry.explains for entry in PAGES if entry.title == page.title), ()))
     # After the page, so that both speak of the text as the page has just left it.
     with notices:

@@ -18,7 +18,7 @@ from ngm.errors import NgmError, Problem, excerpt
 from ngm.meanings import help_text
 from ngm.meanings import table as meanings_table
 from ngm.results import Matrix, Solution, TextMatrix
-from ngm.screens import cache, forms, state
+from ngm.screens import cache, finding, forms, state
 
 __all__ = [
     "Shown",
@@ -172,6 +172,7 @@ def results() -> Shown | None:
         conversions(now.text, now.folder, outcome.solution.time_unit)
         return Shown(now.text, now.folder, outcome.solution, False)
     problem_box(outcome.problems, "in what is typed now")
+    finding.jumps(outcome.problems, "results")
     if now.valid is None:
         st.info("There are no results until these are put right, on the page **Model** or **Scenario**.")
         return None

@@ -150,7 +150,9 @@ def matrix(
     entries = text if text is not None else tuple(tuple(repr(value) for value in row) for row in numbers or ())
     latex = parts.latex_matrix(entries, types, columns or None)
     if latex is not None:
-        texts.append(("LaTeX", f"{name} = {latex}"))
+        # Without the distance of rows that the page sets for itself.
+        body = latex[latex.index(r"\begin") :]
+        texts.append(("LaTeX", f"{name} = {body}"))
     texts.append(("plain text", table_of([["", *heads], *([t, *row] for t, row in zip(types, entries, strict=True))])))
     _buttons(name, name, verb="Copy", texts=texts, show=True, is_picture=False)
 

@@ -10,7 +10,7 @@ from streamlit.delta_generator import DeltaGenerator
 
 from ngm.charts.graphs import flow_diagram
 from ngm.errors import Problem
-from ngm.screens import cache, editors, forms, parts, sketch, state, taking
+from ngm.screens import cache, editors, finding, forms, parts, pasting, sketch, state, taking
 from ngm.screens.forms import TABLES, Edit
 
 WORDS = {
@@ -82,6 +82,7 @@ def page() -> None:
         return
     top = st.container()
     boxes: dict[str, DeltaGenerator] = {}
+    pasting.panel(document)
     edits = tables(PLAIN, document, boxes)
     with st.expander("Groups, matrices and movements", expanded=any(document.get(name) for name in GROUPED)):
         edits += tables(GROUPED, document, boxes)
@@ -89,15 +90,14 @@ def page() -> None:
     state.edit(text)
     outcome = cache.solve(text, now.folder)
     rest = sort_out(outcome.problems, boxes)
-    if outcome.solution is not None:
-        with boxes["parameters"]:
-            parts.conversions(text, now.folder, outcome.solution.time_unit)
     with top:
         overview(forms.document(text) or document)
         if outcome.solution is not None:
+            parts.conversions(text, now.folder, outcome.solution.time_unit)
             parts.headline(outcome.solution)
         else:
             parts.problem_box(rest, "besides those at the tables" if len(rest) < len(outcome.problems) else "")
+            finding.jumps(outcome.problems, "model")
             parts.earlier_result()
 
 

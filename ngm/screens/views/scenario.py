@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import cache, forms, parts, shelf, start, state
+from ngm.screens import cache, finding, forms, parts, shelf, start, state
 from ngm.screens.forms import Edit
 
 
@@ -67,7 +67,9 @@ def source() -> None:
     )
     outcome = cache.solve(now.text, now.folder)
     parts.problem_box(outcome.problems, "to put right")
+    finding.jumps(outcome.problems, "scenario")
     if outcome.solution is not None:
+        parts.conversions(now.text, now.folder, outcome.solution.time_unit)
         parts.headline(outcome.solution)
         st.caption("The derivation and all other numbers are on the pages **Derivation** and **Reproduction numbers**.")
     st.subheader("The text of the scenario")
