@@ -32,6 +32,9 @@ LIMIT = 10.0
 #: Bytes of address space of a child.
 MEMORY = 4 * 2**30
 
+#: Bytes of memory up to which a child that has answered is kept for the next question; one that has grown is ended.
+MOST_KEPT = 400_000_000
+
 _HEADER = struct.Struct(">Q")
 
 
@@ -192,9 +195,9 @@ def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], lim
             child = _Child()
     except OSError as error:
         raise WorkerFailed(f"no process for the formulas could be started ({error.strerror}).") from None
-    answer = child.ask((job, arguments, dict(options)), limit)
+    answer, peak = child.ask((job, arguments, dict(options)), limit)
     with _lock:
-        if len(_idle) < 2:
+        if len(_idle) < 2 and peak <= MOST_KEPT:
             _idle.append(child)
             child = None
     if child is not None:
@@ -256,7 +259,16 @@ def serve() -> None:
         except Exception as error:  # the numbers do not depend on this, so a fault here must not lose them
             print(repr(error), file=sys.stderr)
             answer = f"the formulas could not be written ({type(error).__name__}); the numbers stand by themselves."
-        _send(answers, answer)
+        _send(answers, (answer, _peak()))
+
+
+def _peak() -> int:
+    """Return the largest memory that this process has had, in bytes; 0 where nobody can say."""
+    try:
+        import resource
+    except ImportError:
+        return 0
+    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * (1 if sys.platform == "darwin" else 1024)
 
 
 if __name__ == "__main__":

@@ -61,6 +61,15 @@ def test_a_child_that_dies_is_told_and_replaced() -> None:
     assert ngm.solve(ngm.loads(endless(2))).closed_form is not None
 
 
+def test_a_child_that_has_grown_gives_its_memory_back(monkeypatch: pytest.MonkeyPatch) -> None:
+    ngm.solve(ngm.loads(endless(2)))
+    kept = worker._idle[-1]
+    monkeypatch.setattr(worker, "MOST_KEPT", 1_000_000)  # less than any child has
+    assert ngm.solve(ngm.loads(endless(2))).closed_form is not None
+    assert kept.process.poll() is not None
+    assert kept not in worker._idle
+
+
 def test_a_child_ends_with_its_input() -> None:
     child = worker._Child()
     assert child.process.stdin is not None
