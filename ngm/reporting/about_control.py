@@ -83,7 +83,7 @@ def interventions(m: Material) -> Section:
     if not m.scenario.interventions:
         return Section("interventions", title, (), "missing", "the scenario has no interventions")
     if c is None:
-        return Section("interventions", title, (), "absent", "not computed")
+        return Section("interventions", title, (), "absent", m.why.get("interventions", "not computed"))
 
     def row(x: Compared, key: str, first: bool) -> tuple[Line, ...]:
         none: Line = (f"none: {x.no_R0}",)
@@ -127,48 +127,82 @@ def interventions(m: Material) -> Section:
 
 
 def allocation(m: Material) -> Section:
-    """Show the best share of a supply, where one was asked for."""
+    """Show the best share of a supply beside simple rules, and the smallest supply that is enough."""
     title, a = "Allocation of a supply", m.allocation
     if a is None:
-        return Section("allocation", title, (), "absent", "not computed: no supply was given")
-    ways = (a.best, *a.rules)
-    numbers: tuple[tuple[Line, ...], ...] = tuple(
-        (
-            (way.rule,),
-            (number(way.R0, f"allocation.shares[{k}].R0"),),
-            (number(way.spent, f"allocation.shares[{k}].spent"),),
+        return Section("allocation", title, (), "absent", m.why.get("allocation", "not computed: no supply was given"))
+    rules: list[tuple[Line, ...]] = [(("none",), (number(a.R0, "allocate.R0"),), ("0",))]
+    for key, way in [("best", a.best), *((f"rules[{k}]", rule) for k, rule in enumerate(a.rules))]:
+        spent = number(way.spent, f"allocate.{key}.spent")
+        rules.append(((way.rule,), (number(way.R0, f"allocate.{key}.R0"),), (spent,)))
+    costs = any(cost != 1 for cost in a.costs)
+    best: list[tuple[Line, ...]] = []
+    for k, group in enumerate(a.groups[:MOST_ROWS]):
+        best.append(
+            (
+                (group,),
+                (number(a.sizes[k], f"allocate.sizes[{k}]"),),
+                (number(a.efficacies[k], f"allocate.efficacies[{k}]"),),
+                *([(number(a.costs[k], f"allocate.costs[{k}]"),)] if costs else []),
+                share(a.best.coverage[k], f"allocate.best.coverage[{k}]"),
+                (number(a.best.doses[k], f"allocate.best.doses[{k}]"),),
+            )
         )
-        for k, way in enumerate(ways)
-    )
-    best: tuple[tuple[Line, ...], ...] = tuple(
-        (
-            (group,),
-            (number(a.sizes[k], f"allocation.sizes[{k}]"),),
-            share(a.best.coverage[k], f"allocation.shares[0].coverage[{k}]"),
-            (number(a.best.doses[k], f"allocation.shares[0].doses[{k}]"),),
+    asked: Line = ("A supply of ", number(a.supply, "allocate.supply"))
+    if not m.supplied:
+        asked = (
+            "No supply was given, so this is the smallest one found that brings the number to ",
+            number(a.smallest.target, "allocate.smallest.target"),
+            ", ",
+            number(a.supply, "allocate.supply"),
         )
-        for k, group in enumerate(a.groups)
-    )
     blocks: list[Block] = [
         Paragraph(
             (
-                "A supply of ",
-                number(a.supply, "allocation.supply"),
-                " shared among the groups so that the control reproduction number is as small as possible. No "
-                "share leaves less than ",
-                number(a.lower_bound, "allocation.lower_bound"),
+                *asked,
+                ", shared among the groups so that the control reproduction number is as small as possible. No share "
+                "of it leaves less than ",
+                number(a.lower_bound, "allocate.lower_bound"),
                 f". {a.proof}",
             )
         ),
-        Table(("Ways to share the supply.",), ("share", "number left", "spent"), numbers, frozenset({1, 2})),
+        Paragraph(
+            (
+                "Efficacy: against infection and onward spread together; what it is here is an assumption"
+                + ("." if m.supplied else ", full protection unless said otherwise.")
+                + " The vaccinated are drawn from the whole group, immune or not.",
+            )
+        ),
+        Table(
+            ("Ways to share the supply, and the control reproduction number that each leaves.",),
+            ("share", "number left", "spent"),
+            tuple(rules),
+            frozenset({1, 2}),
+        ),
         Table(
             ("The best share found.",),
-            ("group", "members", "coverage", "doses"),
-            best[:MOST_ROWS],
-            frozenset({1, 2, 3}),
+            ("group", "members", "efficacy", *(["cost a head"] if costs else []), "coverage", "doses"),
+            tuple(best),
+            frozenset(range(1, 6 + costs)),
         ),
+        *listed(len(a.groups), len(best), "groups"),
     ]
-    blocks += [Note((w,)) for w in a.warnings]
+    least = a.smallest
+    if m.supplied and least.supply is not None:
+        blocks.append(
+            Paragraph(
+                (
+                    "The smallest supply found that brings the number to ",
+                    number(least.target, "allocate.smallest.target"),
+                    " is ",
+                    number(least.supply, "allocate.smallest.supply"),
+                    ".",
+                )
+            )
+        )
+    elif m.supplied:
+        blocks.append(Paragraph((f"No supply brings the number to {least.target:g}: {least.why}",)))
+    blocks += [Note((w,)) for w in a.warnings if w not in m.solution.warnings]
     return Section("allocation", title, tuple(blocks))
 
 
@@ -177,7 +211,7 @@ def sensitivity(m: Material) -> Section:
     title, s = "Sensitivity", m.sensitivity
     if s is None or not any(i.derivative is not None for i in s.local):
         why = (
-            "not computed"
+            m.why.get("sensitivity", "not computed")
             if s is None
             else "; ".join(w for w in s.warnings if w not in m.solution.warnings) or "R0 has no slope at these values"
         )

@@ -5,6 +5,7 @@ from __future__ import annotations
 from ngm.expression.typeset import latex_of
 from ngm.reporting.document import Block, Bullets, Code, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import (
+    MOST_ENTRIES,
     MOST_ROWS,
     Material,
     abbreviations,
@@ -174,7 +175,7 @@ def next_generation(m: Material, told: set[str]) -> Section:
             )
         )
         blocks += abbreviations(s, [step.formula or "" for step in stays], told)
-        shown = stays[:MOST_ROWS]
+        shown = stays[:MOST_ENTRIES]
         rows = tuple(((name_of(t.name),), (name_of(t.about),), (inline(t.formula or "0"),)) for t in shown)
         blocks.append(
             Table(

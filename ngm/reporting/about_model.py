@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from decimal import Decimal
 
 from ngm.reporting import figures
-from ngm.reporting.document import Block, Bullets, Code, Inline, Line, Number, Paragraph, Section, Strong, Table
-from ngm.reporting.material import Material, inline, listed, name_of
-from ngm.reporting.numbers import number
+from ngm.reporting.document import Block, Bullets, Code, Inline, Line, Note, Number, Paragraph, Section, Strong, Table
+from ngm.reporting.material import MOST_SQUARE, Material, inline, listed, name_of, square
+from ngm.reporting.numbers import number, share
 from ngm.reporting.width import spaced
+from ngm.results_mixing import Mixing
 from ngm.scenario.model import Distribution, Flow, Matrix, Parameter, Scenario
 
 __all__ = ["compartments", "diagram", "flows", "groups", "parameters", "question"]
@@ -27,7 +29,6 @@ _WORDS = (
 #: What a report should have; the others are said where they are given.
 _WANTED = ("question", "place", "date", "author", "reviewer")
 MOST_ROWS = 80
-MOST_SQUARE = 8
 
 
 def question(m: Material) -> Section:
@@ -241,10 +242,13 @@ def groups(m: Material) -> Section:
             f" ({matrix.label})" if matrix.label else "",
             f". {told} ",
         ]
+        found = m.mixing.get(matrix.name, ())
         words += _balance(matrix)
         words += ["Source: ", *((matrix.source,) if matrix.source else (Strong("missing"),)), "."]
         blocks.append(Paragraph(tuple(words)))
         blocks += _squares(scenario, matrix)
+        for b, mixing in enumerate(found):
+            blocks += _balanced(m, mixing, b)
     missing = [x.name for x in scenario.matrices.values() if not x.source]
     if missing:
         return Section("groups", title, tuple(blocks), "missing", f"no source is given for matrix {', '.join(missing)}")
@@ -270,30 +274,60 @@ def _balance(matrix: Matrix) -> list[Inline]:
 
 
 def _squares(scenario: Scenario, matrix: Matrix) -> list[Block]:
-    labels = scenario.dimensions[matrix.by].groups
     outer = scenario.dimensions[matrix.within].groups if matrix.within else (None,)
+    key = f'report.matrices["{matrix.name}"]'
     out: list[Block] = []
-    rows: tuple[tuple[Line, ...], ...]
     for b, (block, group) in enumerate(zip(matrix.blocks, outer, strict=True)):
         if b == 3:
             return [*out, *listed(len(matrix.blocks), 3, f"tables of {matrix.name}")]
         where = f" in {matrix.within} {group}" if group is not None else ""
-        key = f'report.matrices["{matrix.name}"]'
-        sums: list[Line] = [(_number(sum(row), f"{key}.row_sums[{b}][{i}]"),) for i, row in enumerate(block)]
-        if len(labels) <= MOST_SQUARE:
-            rows = tuple(
-                ((label,), *((_number(v, f"{key}.values[{b}][{i}][{j}]"),) for j, v in enumerate(row)), sums[i])
-                for i, (label, row) in enumerate(zip(labels, block, strict=True))
-            )
-            heads = (matrix.by, *labels, "row sum")
-        else:
-            rows = tuple(((label,), sums[i]) for i, label in enumerate(labels[:40]))
-            heads = (matrix.by, "row sum")
-        caption = (f"Matrix {matrix.name}{where}" + (" (row sums only)" if len(labels) > MOST_SQUARE else "") + ".",)
-        out.append(Table(caption, heads, rows, frozenset(range(1, len(heads)))))
-        if len(labels) > MOST_SQUARE:
-            out += listed(len(labels), len(rows), "rows")
+        labels = scenario.dimensions[matrix.by].groups
+        sums = [_number(sum(row), f"{key}.row_sums[{b}][{i}]") for i, row in enumerate(block)]
+        body = (
+            [[_number(v, f"{key}.values[{b}][{i}][{j}]") for j, v in enumerate(row)] for i, row in enumerate(block)]
+            if len(labels) <= MOST_SQUARE
+            else []
+        )
+        out += _contacts(f"Matrix {matrix.name}{where}, as the file gives it", matrix.by, labels, body, sums)
     return out
+
+
+def _contacts(
+    caption: str, by: str, labels: Sequence[str], body: Sequence[Sequence[Inline]], sums: Sequence[Inline]
+) -> list[Block]:
+    """Return a square of contacts with its row sums; of one that is too large the row sums alone."""
+    if len(labels) > MOST_SQUARE:
+        rows = tuple(((label,), (total,)) for label, total in zip(labels[:MOST_SQUARE], sums, strict=False))
+        table = Table((f"{caption}: row sums only.",), (by, "row sum"), rows, frozenset({1}))
+        return [table, *listed(len(labels), len(rows), "rows")]
+    whole = [[*row, total] for row, total in zip(body, sums, strict=True)]
+    return square((caption,), by, (*labels, "row sum"), [(label,) for label in labels], whole)
+
+
+def _balanced(m: Material, x: Mixing, b: int) -> list[Block]:
+    """Say how far a matrix of contacts is from balance, and show it as it is used where it was balanced."""
+    key = f'report.matrices["{x.matrix}"]'
+    where = f" in {m.scenario.matrices[x.matrix].within} {x.within}" if x.within is not None else ""
+    if x.gaps is None:
+        return []
+    if x.gaps.is_reciprocal:
+        return [Paragraph((f"Balance of {x.matrix}{where}: both counts of every pair agree; there is no breach.",))]
+    pair = f", in what {x.gaps.pair[0]} counts with {x.gaps.pair[1]} more than the other way" if x.gaps.pair else ""
+    words: list[Inline] = [
+        Strong(f"Breach of balance of {x.matrix}{where}, as given: "),
+        "the largest gap between both counts of a pair is ",
+        *share(x.gaps.largest, f"{key}.breach[{b}].largest"),
+        f" of their mean{pair}; over all pairs it is ",
+        *share(x.gaps.overall, f"{key}.breach[{b}].overall"),
+        ".",
+    ]
+    if not x.reciprocal:
+        words.append(f" It is used as it is. Sizes: {x.sizes_from}.")
+        return [Note(tuple(words))]
+    body = [[number(v, f"{key}.balanced[{b}][{i}][{j}]") for j, v in enumerate(row)] for i, row in enumerate(x.table)]
+    sums = [number(total, f"{key}.balanced_row_sums[{b}][{i}]") for i, total in enumerate(x.row_sums)]
+    caption = f"Matrix {x.matrix}′{where}: balanced, as it is used"
+    return [Paragraph(tuple(words)), *_contacts(caption, x.by, x.groups, body, sums)]
 
 
 def _number(value: Decimal | int, name: str) -> Number:

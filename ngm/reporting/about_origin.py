@@ -181,9 +181,9 @@ def names(document: Document) -> Section:
         ((Code(item.name),), (Number(repr(float(item.value)), item.value, item.name),)) for item in shown
     )
     told = (
-        "solve, control, compare and sensitivity: the objects that the commands of these names print with "
-        "--json; report: what "
-        "the companion file of this report adds. Counted from 0; entries that are 0 are left out."
+        "A name begins with the command that prints the number with --json: solve, control, compare, sensitivity, "
+        "allocate, units, splits, formula, difference; report: what the companion file of this report adds. Counted "
+        "from 0; entries that are 0 are left out."
     )
     blocks: list[Block] = [Table(("Numbers at full precision.",), ("name", "value"), rows, frozenset({1}))]
     if len(order) > len(shown):

@@ -81,9 +81,10 @@ class Note:
 
 @dataclass(frozen=True, slots=True)
 class Formula:
-    """A formula on a line of its own, as LaTeX mathematics."""
+    """A formula on a line of its own, as LaTeX mathematics. `wide`: it needs a page on its side."""
 
     latex: str
+    wide: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,13 +105,14 @@ class Listing:
 class Table:
     """A table with its caption; the first column heads the rows.
 
-    `numeric`: columns set to the right. `widths`: relative widths, found from the texts where empty.
+    `numeric`: columns set to the right. `wide`: it needs a page on its side, where its columns fit as they are.
     """
 
     caption: Line
     heads: tuple[str, ...]
     rows: tuple[tuple[Line, ...], ...]
     numeric: frozenset[int] = frozenset()
+    wide: bool = False
 
 
 @dataclass(frozen=True, slots=True)

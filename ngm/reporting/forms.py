@@ -15,7 +15,7 @@ from pathlib import Path
 from ngm.reporting.document import Document, Figure
 from ngm.reporting.letters import declarations
 from ngm.reporting.syntax import tree
-from ngm.reporting.templates import HTML, LATEX_HEAD, TYPST
+from ngm.reporting.templates import LATEX_HEAD, TYPST, html
 from ngm.reporting.word import on_pages
 
 __all__ = ["FORMS", "Files", "write"]
@@ -88,7 +88,7 @@ def _form(document: Document, ending: str, folder: Path, beside: str) -> bytes:
 
     match ending:
         case ".html":
-            (folder / "template.html").write_text(HTML, encoding="utf-8")
+            (folder / "template.html").write_text(html(), encoding="utf-8")
             return _pandoc(
                 tree(document, "html", path),
                 folder,

@@ -3,29 +3,38 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Collection, Mapping
+from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
 from datetime import date
 from pathlib import Path
-from typing import Any
+from typing import Any, TypeVar
 
 import ngm
 from ngm.errors import NgmError, Problem, ScenarioError
-from ngm.reporting.checks import check
+from ngm.reporting.companion import companion as companion_of
 from ngm.reporting.document import Document
 from ngm.reporting.forms import FORMS, Files, write
 from ngm.reporting.material import Material
 from ngm.reporting.narrative import SECTIONS, narrate
-from ngm.results_control import Allocation, Comparison
-from ngm.results_sensitivity import Sensitivity
+from ngm.results import Solution
+from ngm.results_control import Allocation
+from ngm.results_mixing import Mixing
 from ngm.scenario.exact import evaluate
 from ngm.scenario.following import values_in_force
 from ngm.scenario.model import Expression, Parameter, Scenario
 
 __all__ = ["Report", "compose", "report"]
 
-#: Types up to which sensitivities are computed for a report: each parameter takes two solutions.
+T = TypeVar("T")
+
+#: Types up to which sensitivities, splits and mixing are computed for a report: each takes many solutions.
 MOST_TYPES = 120
+#: Types at infection up to which a supply is shared without being asked for.
+MOST_SHARED = 40
+#: Groups whose own matrix of contacts is looked at, where there is one for each.
+MOST_WITHIN = 3
+#: Parts that are absent for a reason that is no warning.
+_QUIET = frozenset({"allocation"})
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -68,8 +77,12 @@ def report(
     sections: Collection[str] | None = None,
     companion: bool = False,
     allocation: Allocation | None = None,
+    supply: float | None = None,
+    sharing: Mapping[str, Any] | None = None,
     draws: int | None = None,
     seed: int = 0,
+    formula: str | None = None,
+    before: Scenario | None = None,
     made_on: str | None = None,
     command: str | None = None,
 ) -> Report:
@@ -86,9 +99,16 @@ def report(
     companion : bool
         Whether to write ``NAME.json`` beside it: all results, and each number of the report with its name.
     allocation : Allocation or None
-        A result of `ngm.allocate` to be told as well.
+        A result of `ngm.allocate` to be told.
+    supply, sharing : float or None, mapping or None
+        Where there is no `allocation`: the supply to be shared, and what else `ngm.allocate` takes by keyword. Without a
+        supply, a model with groups is told the smallest that is enough and its best share.
     draws, seed : int or None, int
         Draws from the distributions of the parameters, for the section on uncertainty; None: no draws.
+    formula : str or None
+        A formula from elsewhere to be compared with R0, as `ngm.formula` takes it.
+    before : Scenario or None
+        Another version of the model; what differs from it is told.
     made_on, command : str or None
         The date and the command that the report names; today and the plain command where left out.
 
@@ -115,8 +135,12 @@ def report(
         scenario,
         sections=sections,
         allocation=allocation,
+        supply=supply,
+        sharing=sharing,
         draws=draws,
         seed=seed,
+        formula=formula,
+        before=before,
         made_on=made_on,
         command=command or f"python -m ngm report FILE --to {path.name}",
     )
@@ -139,45 +163,106 @@ def compose(
     *,
     sections: Collection[str] | None = None,
     allocation: Allocation | None = None,
+    supply: float | None = None,
+    sharing: Mapping[str, Any] | None = None,
     draws: int | None = None,
     seed: int = 0,
+    formula: str | None = None,
+    before: Scenario | None = None,
     made_on: str | None = None,
     command: str = "python -m ngm report FILE --to report.pdf",
 ) -> Report:
-    """Compute what a report tells and return it, written nowhere."""
+    """Compute what a report tells and return it, written nowhere; parameters as those of `report`."""
     unknown = [key for key in sections or () if key not in SECTIONS]
     if unknown:
         raise ScenarioError([Problem("sections", f"{unknown[0][:80]!r} is none of {', '.join(SECTIONS)}.")])
     wanted = set(SECTIONS if sections is None else sections)
     solution = ngm.solve(scenario)
-    control = ngm.control(scenario) if wanted & {"summary", "control"} else None
-    said: list[str] = []
-    comparison: Comparison | None = None
-    sensitivity: Sensitivity | None = None
-    if "interventions" in wanted and scenario.interventions:
-        try:
-            comparison = ngm.compare(scenario)
-        except NgmError as error:
-            said.append(f"Interventions could not be compared: {error}")
-    if wanted & {"sensitivity", "uncertainty"} and len(solution.types) <= MOST_TYPES:
-        try:
-            sensitivity = ngm.sensitivity(scenario, draws=draws, seed=seed) if draws else ngm.sensitivity(scenario)
-        except NgmError as error:
-            said.append(f"Sensitivity could not be computed: {error}")
+    said = _Said()
+    small = len(solution.types) <= MOST_TYPES
+    shared = allocation
+    if shared is None and "allocation" in wanted:
+        if supply is not None:
+            shared = ngm.allocate(scenario, supply, **(sharing or {}))
+        else:
+            shared = said.tried("allocation", lambda: _least_supply(scenario, solution, sharing or {}, said))
     material = Material(
-        scenario,
-        solution,
-        control,
-        comparison,
-        sensitivity,
-        allocation,
-        _values(scenario),
-        made_on or date.today().isoformat(),
-        command,
+        scenario=scenario,
+        solution=solution,
+        control=ngm.control(scenario) if wanted & {"summary", "control"} else None,
+        comparison=said.tried("interventions", lambda: ngm.compare(scenario))
+        if "interventions" in wanted and scenario.interventions
+        else None,
+        sensitivity=said.tried(
+            "sensitivity",
+            lambda: ngm.sensitivity(scenario, draws=draws, seed=seed) if draws else ngm.sensitivity(scenario),
+        )
+        if wanted & {"summary", "sensitivity", "uncertainty"} and small
+        else None,
+        allocation=shared,
+        values=_values(scenario),
+        made_on=made_on or date.today().isoformat(),
+        command=command,
+        mixing=_mixing(scenario) if "groups" in wanted and small else {},
+        supplied=allocation is not None or supply is not None,
+        units=said.tried("units", lambda: ngm.units(scenario)) if "units" in wanted else None,
+        splits=said.tried("splits", lambda: ngm.splits(scenario)) if "splits" in wanted and small else None,
+        # What was asked for in so many words is refused in words, and not left out.
+        formula=ngm.formula(scenario, formula) if formula is not None and "formula" in wanted else None,
+        difference=ngm.difference(before, scenario) if before is not None and "difference" in wanted else None,
+        why=said.why,
     )
     document = narrate(material, sections)
-    warnings = tuple(dict.fromkeys([*scenario.warnings, *solution.warnings, *said]))
-    return Report(document, _companion(material, document), warnings=warnings)
+    warnings = tuple(dict.fromkeys([*scenario.warnings, *solution.warnings, *said.warnings]))
+    return Report(document, companion_of(material, document), warnings=warnings)
+
+
+class _Said:
+    """What could not be computed, and why: a report on the rest is still worth having."""
+
+    def __init__(self) -> None:
+        self.why: dict[str, str] = {}
+
+    def tried(self, part: str, compute: Callable[[], T]) -> T | None:
+        """Return a result, or None and keep the reason."""
+        try:
+            return compute()
+        except NgmError as error:
+            self.why[part] = " ".join(str(error).split())
+            return None
+
+    @property
+    def warnings(self) -> list[str]:
+        """The reasons as warnings."""
+        return [f"{SECTIONS[part]}: {why}" for part, why in self.why.items() if part not in _QUIET]
+
+
+def _least_supply(scenario: Scenario, solution: Solution, sharing: Mapping[str, Any], said: _Said) -> Allocation | None:
+    """Return the best share of the smallest supply that is enough, where there are groups."""
+    if not scenario.dimensions:
+        said.why["allocation"] = "not computed: no supply was given"
+    elif solution.R0 is None or solution.R0 <= 1:
+        said.why["allocation"] = "not computed: no supply was given, and R0 is not above 1"
+    elif len(solution.types_at_infection) > MOST_SHARED:
+        said.why["allocation"] = "not computed: no supply was given, and the model is large"
+    else:
+        least = ngm.allocate(scenario, 0.0, **sharing).smallest
+        if least.supply is not None:
+            return ngm.allocate(scenario, least.supply, **sharing)
+        said.why["allocation"] = f"no supply was given, and none is enough: {least.why}"
+    return None
+
+
+def _mixing(scenario: Scenario) -> dict[str, tuple[Mixing, ...]]:
+    """Return what is to be said of each matrix of contacts; matrices by which members move are none."""
+    out: dict[str, tuple[Mixing, ...]] = {}
+    for name, matrix in scenario.matrices.items():
+        places = scenario.dimensions[matrix.within].groups[:MOST_WITHIN] if matrix.within else (None,)
+        try:
+            out[name] = tuple(ngm.mixing(scenario, name, within=place) for place in places)
+        except NgmError:
+            continue
+    return out
 
 
 def _values(scenario: Scenario) -> dict[str, tuple[float, ...]]:
@@ -200,58 +285,3 @@ def _values(scenario: Scenario) -> dict[str, tuple[float, ...]]:
             found = {key: float(evaluate(node)) for key, node in seen.items()}
             out[name] = tuple(found[id(node)] for node in nodes)
     return out
-
-
-def _companion(m: Material, document: Document) -> dict[str, Any]:
-    found = check(m)
-    bounds = m.solution.R0_bounds
-    matrices = {
-        name: {
-            "values": [[[float(v) for v in row] for row in block] for block in matrix.blocks],
-            "row_sums": [[float(sum(row)) for row in block] for block in matrix.blocks],
-        }
-        for name, matrix in m.scenario.matrices.items()
-        if sum(len(block) ** 2 for block in matrix.blocks) <= 100_000
-    }
-    own = m.sensitivity.local if m.sensitivity is not None else ()
-    tree: dict[str, Any] = {
-        "title": m.scenario.title,
-        "digest": m.solution.digest,
-        "written_on": m.made_on,
-        "solve": m.solution.to_json(),
-        "control": None if m.control is None else m.control.to_json(),
-        "compare": None if m.comparison is None else m.comparison.to_json(),
-        "sensitivity": None if m.sensitivity is None else m.sensitivity.to_json(),
-        "allocation": None if m.allocation is None else _allocation(m.allocation),
-        "report": {
-            "residual": m.solution.residual,
-            "parameters": {name: list(values[:1000]) for name, values in m.values.items()},
-            "matrices": matrices,
-            "sensitivity": [{"value": index.value} for index in own],
-            "checks": {
-                "product": found.product,
-                "root": found.root,
-                "closed": found.closed,
-                "width": None if bounds is None else bounds[1] - bounds[0],
-            },
-        },
-    }
-    tree["numbers"] = [
-        {"name": item.name, "value": item.value, "shown": item.shown, "section": key}
-        for key, item in document.numbers()
-    ]
-    return tree
-
-
-def _allocation(a: Allocation) -> dict[str, Any]:
-    ways = (a.best, *a.rules)
-    return {
-        "groups": list(a.groups),
-        "sizes": list(a.sizes),
-        "supply": a.supply,
-        "lower_bound": a.lower_bound,
-        "shares": [
-            {"rule": w.rule, "R0": w.R0, "spent": w.spent, "coverage": list(w.coverage), "doses": list(w.doses)}
-            for w in ways
-        ],
-    }

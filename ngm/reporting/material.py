@@ -4,34 +4,53 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from ngm.errors import ExpressionError
 from ngm.expression.typeset import latex_of
-from ngm.reporting.document import Block, Code, Formula, Inline, Line, Maths, Paragraph, Table
+from ngm.reporting.document import Block, Code, Formula, Inline, Line, Maths, Number, Paragraph, Table
 from ngm.reporting.numbers import number
-from ngm.reporting.width import LINE, spaced, width
+from ngm.reporting.width import LINE, SIDE_LINE, columns, spaced, width
 from ngm.results import ControlResult, Matrix, Solution, TextMatrix
 from ngm.results_control import Allocation, Comparison
+from ngm.results_mixing import Mixing
+from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 from ngm.results_sensitivity import Sensitivity
 from ngm.scenario.model import Scenario
 
-__all__ = ["Material", "abbreviations", "equation", "inline", "listed", "matrix", "name_of", "numbers_table", "term"]
+__all__ = [
+    "Material",
+    "abbreviations",
+    "equation",
+    "inline",
+    "listed",
+    "matrix",
+    "name_of",
+    "numbers_table",
+    "square",
+    "term",
+]
 
 #: Rows of one table; what is left out is told, and is in the companion file.
 MOST_ROWS = 60
 #: A longer expression is not printed within a table.
 MOST_LETTERS = 1200
-#: Types up to which a matrix is set as one; more are listed entry by entry.
-MOST_COLUMNS = 7
+#: Entries of a matrix, and steps of the derivation, up to which none is left out.
+MOST_ENTRIES = 250
+#: Types up to which a matrix is set as one whatever is in it; as one on a page on its side; and in parts.
+MOST_COLUMNS, MOST_WIDE, MOST_SQUARE = 7, 14, 40
+#: Entries up to which a larger matrix is listed one by one; one with more than `MOST_WIDE` columns: three a row.
+FEW = 24
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Material:
     """Everything that is said somewhere in the report. What was not computed is None.
 
-    `values`: parameter -> its values in force, one for each group. `made_on`: the date of writing.
+    `values`: parameter -> its values in force, one for each group. `made_on`: the date of writing. `mixing`: matrix of
+    contacts -> what was found of it, one for each group that it is given within. `supplied`: whether the supply that is
+    allocated was asked for; else it is the smallest that is enough. `why`: part -> why it was not computed.
     """
 
     scenario: Scenario
@@ -43,6 +62,13 @@ class Material:
     values: Mapping[str, tuple[float, ...]]
     made_on: str
     command: str
+    mixing: Mapping[str, tuple[Mixing, ...]] = field(default_factory=dict)
+    supplied: bool = True
+    units: Units | None = None
+    splits: Splits | None = None
+    formula: FormulaOpinion | None = None
+    difference: Difference | None = None
+    why: Mapping[str, str] = field(default_factory=dict)
 
     @property
     def unit(self) -> str:
@@ -101,18 +127,20 @@ def listed(count: int, shown: int, what: str) -> list[Block]:
 
 
 def matrix(name: str, entries: TextMatrix, labels: Sequence[str]) -> list[Block]:
-    """Return a matrix of expressions: as one where it fits on the line, else its entries that are not zero, one by one."""
+    """Return a matrix of expressions: as one where it fits on a page, else its entries that are not zero, one by one."""
     if not labels:
         return []
-    columns = [max(width(row[k]) for row in entries) + 3 for k in range(len(labels))]
-    if len(labels) <= MOST_COLUMNS and sum(columns) <= LINE - 6:
-        body = r" \\ ".join(" & ".join(latex_of(entry) for entry in row) for row in entries)
-        body = body.replace(r"\frac", r"\dfrac")
-        return [Formula(rf"{name} = \begin{{pmatrix}} {body} \end{{pmatrix}}")]
+    wide = sum(max(width(row[k]) for row in entries) + 3 for k in range(len(labels)))
     cells = [
         (labels[i], labels[j], entry) for i, row in enumerate(entries) for j, entry in enumerate(row) if entry != "0"
     ]
-    shown = cells[:MOST_ROWS]
+    fits = len(labels) <= MOST_COLUMNS and wide <= LINE - 6
+    # A matrix that is nearly empty is read more easily as a list than on a page of its own.
+    if fits or (len(labels) <= MOST_WIDE and wide <= SIDE_LINE - 6 and len(cells) > FEW):
+        body = r" \\ ".join(" & ".join(latex_of(entry) for entry in row) for row in entries)
+        body = body.replace(r"\frac", r"\dfrac")
+        return [Formula(rf"{name} = \begin{{pmatrix}} {body} \end{{pmatrix}}", wide=not fits)]
+    shown = cells[:MOST_ENTRIES]
     rows = tuple(((name_of(i),), (name_of(j),), (inline(entry),)) for i, j, entry in shown)
     table = Table(
         (
@@ -128,24 +156,52 @@ def matrix(name: str, entries: TextMatrix, labels: Sequence[str]) -> list[Block]
 
 
 def numbers_table(name: str, values: Matrix, labels: Sequence[str], key: str, what: str) -> list[Block]:
-    """Return a matrix of numbers with its labels, or its entries that are not zero where it is wide."""
+    """Return a matrix of numbers with its labels, on a page on its side or in parts where it is wide.
+
+    One that is large and nearly empty is listed entry by entry, as is one with more than `MOST_SQUARE` columns.
+    """
     if not labels:
         return []
-    if len(labels) <= MOST_COLUMNS:
-        rows = tuple(
-            ((name_of(label),), *((number(value, f"{key}[{i}][{j}]"),) for j, value in enumerate(row)))
-            for i, (label, row) in enumerate(zip(labels, values, strict=True))
-        )
-        caption = (f"{name} in numbers{what}; JSON name ", Code(f"{key}[row][column]"), ", counted from 0.")
-        return [Table(caption, ("type", *labels), rows, frozenset(range(1, len(labels) + 1)))]
     cells = [(i, j, value) for i, row in enumerate(values) for j, value in enumerate(row) if value != 0]
-    shown = cells[:MOST_ROWS]
+    few = FEW if len(labels) <= MOST_WIDE else 3 * len(labels)
+    if len(labels) <= MOST_COLUMNS or (len(labels) <= MOST_SQUARE and len(cells) > few):
+        kept = [i for i, row in enumerate(values) if len(labels) <= MOST_COLUMNS or any(row)]
+        left_out = "" if len(kept) == len(labels) else "; rows that are left out are 0"
+        caption = (f"{name} in numbers{what}; JSON name ", Code(f"{key}[row][column]"), f", counted from 0{left_out}")
+        body = [[number(value, f"{key}[{i}][{j}]") for j, value in enumerate(values[i])] for i in kept]
+        return square(caption, "type", labels, [(name_of(labels[i]),) for i in kept], body)
+    shown = cells[:MOST_ENTRIES]
     rows = tuple(((name_of(labels[i]),), (name_of(labels[j]),), (number(v, f"{key}[{i}][{j}]"),)) for i, j, v in shown)
     caption = (f"Entries of {name} that are not zero{what}; JSON name ", Code(f"{key}[row][column]"), ".")
     return [
         Table(caption, ("row", "column", name), rows, frozenset({2})),
         *listed(len(cells), len(shown), f"entries of {name}"),
     ]
+
+
+def square(
+    caption: Line, corner: str, heads: Sequence[str], rows: Sequence[Line], body: Sequence[Sequence[Inline]]
+) -> list[Block]:
+    """Return a table of numbers in as many parts as it takes to keep each on the page; `caption` ends without a stop."""
+
+    def letters(piece: Inline) -> int:
+        return len(piece.shown) if isinstance(piece, Number) else len(piece) if isinstance(piece, str) else 8
+
+    sizes = [max(len(head), *(letters(row[k]) for row in body)) for k, head in enumerate(heads)]
+    layout = columns(max(len(corner), *map(len, heads)), sizes)
+    out: list[Block] = []
+    for first, last in layout.parts:
+        part = f", columns {first + 1} to {last} of {len(heads)}" if len(layout.parts) > 1 else ""
+        out.append(
+            Table(
+                (*caption, f"{part}."),
+                (corner, *heads[first:last]),
+                tuple((label, *((piece,) for piece in row[first:last])) for label, row in zip(rows, body, strict=True)),
+                frozenset(range(1, last - first + 1)),
+                layout.wide,
+            )
+        )
+    return out
 
 
 def abbreviations(solution: Solution, texts: Sequence[str], told: set[str]) -> list[Block]:
@@ -163,7 +219,7 @@ def abbreviations(solution: Solution, texts: Sequence[str], told: set[str]) -> l
     if not names:
         return []
     about = {step.name: step.about for step in solution.symbolic.steps if step.kind == "elimination"}
-    shown = names[:MOST_ROWS]
+    shown = names[:MOST_ENTRIES]
     rows: tuple[tuple[Line, ...], ...] = tuple(
         ((name_of(name),), (inline(written[name]),), (about.get(name, ""),)) for name in shown
     )

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Collection
+from dataclasses import replace
 
-from ngm.reporting import about_control, about_derivation, about_model, about_numbers, about_origin
-from ngm.reporting.document import Block, Bullets, Document, Line, Note, Paragraph, Section, Strong
+from ngm.reporting import about_control, about_derivation, about_model, about_numbers, about_opinion, about_origin
+from ngm.reporting.document import Block, Bullets, Document, Formula, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import Material, term
 from ngm.reporting.numbers import number
 
@@ -20,19 +21,23 @@ SECTIONS: dict[str, str] = {
     "flows": "Flows",
     "parameters": "Parameters",
     "groups": "Groups and contacts",
+    "units": "Units and mean stays",
     "infection_free": "Infection-free state",
     "transmission": "Transmission F and transition V",
     "conditions": "Conditions A1 to A5",
     "next_generation": "Next-generation matrix K",
     "closed_form": "Closed form",
+    "formula": "A formula compared",
     "R0": "R0, growth and doubling time",
     "classes": "Classes and period",
     "who_infects_whom": "Who infects whom",
     "control": "What control must reach",
+    "splits": "Other splits of the flows",
     "interventions": "Interventions compared",
     "allocation": "Allocation of a supply",
     "sensitivity": "Sensitivity",
     "uncertainty": "Uncertainty",
+    "difference": "Difference from another version",
     "limits": "Limits and cautions",
     "checks": "How it was checked",
     "provenance": "Provenance",
@@ -61,26 +66,30 @@ def narrate(m: Material, sections: Collection[str] | None = None) -> Document:
         "flows": lambda: about_model.flows(m),
         "parameters": lambda: about_model.parameters(m),
         "groups": lambda: about_model.groups(m),
+        "units": lambda: about_opinion.units(m),
         "infection_free": lambda: about_derivation.infection_free(m, told),
         "transmission": lambda: about_derivation.transmission(m, told),
         "conditions": lambda: about_derivation.conditions(m),
         "next_generation": lambda: about_derivation.next_generation(m, told),
         "closed_form": lambda: about_derivation.closed_form(m, told),
+        "formula": lambda: about_opinion.formula(m),
         "R0": lambda: about_numbers.reproduction_number(m),
         "classes": lambda: about_numbers.classes(m),
         "who_infects_whom": lambda: about_numbers.who_infects_whom(m),
         "control": lambda: about_control.control(m),
+        "splits": lambda: about_opinion.splits(m),
         "interventions": lambda: about_control.interventions(m),
         "allocation": lambda: about_control.allocation(m),
         "sensitivity": lambda: about_control.sensitivity(m),
         "uncertainty": lambda: about_control.uncertainty(m),
+        "difference": lambda: about_opinion.difference(m),
         "limits": lambda: about_origin.limits(m),
         "checks": lambda: about_origin.checks(m),
         "provenance": lambda: about_origin.provenance(m),
         "references": lambda: about_origin.references(m),
     }
     wanted = set(SECTIONS if sections is None else sections)
-    made = [make() for key, make in makers.items() if key in wanted]
+    made = [_wide_last(make()) for key, make in makers.items() if key in wanted]
     under: list[Line] = [(f"Written on {m.made_on} from scenario ", m.solution.digest, ".")]
     if "names" in wanted:
         made.append(about_origin.names(Document(m.scenario.title, tuple(under), tuple(made))))
@@ -88,6 +97,16 @@ def narrate(m: Material, sections: Collection[str] | None = None) -> Document:
         out = [(key, title) for key, title in SECTIONS.items() if key not in wanted]
         made.append(about_origin.checklist(made, out))
     return Document(m.scenario.title, tuple(under), tuple(made))
+
+
+def _wide_last(section: Section) -> Section:
+    """Return a section with what needs pages on their sides at its end, so that it breaks no page in two."""
+    wide = [block for block in section.blocks if isinstance(block, Table | Formula) and block.wide]
+    rest = [block for block in section.blocks if block not in wide]
+    if not wide or section.blocks[-len(wide) :] == tuple(wide):
+        return section
+    told = Paragraph(("What is too wide for the page stands at the end of this part.",))
+    return replace(section, blocks=(*rest, told, *wide))
 
 
 def summary(m: Material) -> Section:
@@ -175,7 +194,12 @@ def _sure(m: Material) -> Line:
     drawn = m.spread is not None
     words = ""
     if m.solution.R0 is not None:
-        words = "the arithmetic is certain to the last digits (proven bounds). The values are not covered by that: "
+        sure = (
+            "certain to the last digits (proven bounds)"
+            if m.solution.season is None
+            else "good to the error that is told"
+        )
+        words = f"the arithmetic is {sure}. The values are not covered by that: "
     words += (
         f"{missing} of {len(m.scenario.parameters)} parameters have no source"
         if missing

@@ -10,6 +10,7 @@ import json
 import re
 import unicodedata
 from collections.abc import Callable, Sequence
+from itertools import groupby
 from typing import Any
 
 from ngm.reporting.document import (
@@ -30,6 +31,7 @@ from ngm.reporting.document import (
     Strong,
     Table,
 )
+from ngm.reporting.word import SIDEWAYS
 
 __all__ = ["tree"]
 
@@ -66,9 +68,27 @@ def _section(section: Section, form: str, figure: Callable[[Figure], str]) -> li
     if section.key == "checklist":
         out += _new_page(form)
     out.append({"t": "Header", "c": [1, [f"section-{section.key}", [], []], _words(section.title, form)]})
-    for block in section.blocks:
-        out += _block(block, form, figure)
+    for wide, group in groupby(section.blocks, key=_is_wide):
+        inside = [node for block in group for node in _block(block, form, figure)]
+        out += _on_its_side(inside, form) if wide else inside
     return out
+
+
+def _is_wide(block: Block) -> bool:
+    return isinstance(block, Table | Formula) and block.wide
+
+
+def _on_its_side(nodes: list[Node], form: str) -> list[Node]:
+    """Return blocks on pages laid on their sides, in the forms that have pages."""
+    around = {
+        "typst": ("typst", "#page(flipped: true)[", "]"),
+        "latex": ("latex", r"\begin{landscape}", r"\end{landscape}"),
+        "docx": ("openxml", *SIDEWAYS),
+    }.get(form)
+    if around is None:
+        return nodes
+    kind, before, after = around
+    return [{"t": "RawBlock", "c": [kind, before]}, *nodes, {"t": "RawBlock", "c": [kind, after]}]
 
 
 def _folded(text: str) -> str:
@@ -104,7 +124,13 @@ def _block(block: Block, form: str, figure: Callable[[Figure], str]) -> list[Nod
             shown = _clean(text, keep="\n")
             return [{"t": "CodeBlock", "c": [_NO_ATTRIBUTES, _folded(shown) if form == "latex" else shown]}]
         case Table():
-            return [_table(block, form)]
+            table = _table(block, form)
+            if block.wide and form == "html":
+                # It scrolls where the screen is narrow; by keyboard, too.
+                told = " ".join(_text(block.caption).split())
+                named = [["role", "region"], ["tabindex", "0"], ["aria-label", _clean(told)]]
+                return [{"t": "Div", "c": [["", ["wide"], named], [table]]}]
+            return [table]
         case Figure():
             return [_figure(block, form, figure(block))]
 
@@ -167,7 +193,7 @@ def _maths(latex: str) -> str:
 
 def _table(table: Table, form: str) -> Node:
     columns = len(table.heads)
-    shares = _shares(table)
+    shares = None if table.wide else _shares(table)
     specs = [
         [
             {"t": "AlignRight" if k in table.numeric else "AlignLeft"},

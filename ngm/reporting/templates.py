@@ -2,10 +2,18 @@
 
 from __future__ import annotations
 
-__all__ = ["HTML", "LATEX_HEAD", "TYPST"]
+from base64 import b64encode
+from functools import cache
+from pathlib import Path
+
+__all__ = ["LATEX_HEAD", "TYPST", "html"]
+
+#: A subset of Noto Sans Math (SIL Open Font License, beside it): brackets and roots stretch only where a font for
+#: mathematics is there, and most readers have none.
+_FONT = Path(__file__).parent / "fonts" / "noto-sans-math-subset.woff2"
 
 #: Nothing may be fetched: the policy says so to the browser, too.
-HTML = """<!DOCTYPE html>
+_HTML = """<!DOCTYPE html>
 <html lang="en">
 <head>
 <meta charset="utf-8">
@@ -25,8 +33,9 @@ nav p { margin: .2rem 0; font-weight: bold; }
 a { color: #0b4f8a; }
 table { border-collapse: collapse; min-width: min(100%, 32rem); margin: .8rem 0 1.2rem; font-size: .92rem; }
 .wide { overflow-x: auto; }
+.wide th, .wide td { overflow-wrap: normal; white-space: nowrap; }
 caption { text-align: left; caption-side: top; padding: .3rem 0; color: #3c4350; }
-th, td { border-bottom: 1px solid #d5dae1; padding: .28rem .6rem .28rem 0; vertical-align: top;
+th, td { border-bottom: 1px solid #d5dae1; padding: .28rem 1rem .28rem 0; vertical-align: top;
   text-align: left; overflow-wrap: anywhere; }
 thead th { border-bottom: 2px solid #1b1f27; }
 tbody th { font-weight: 600; }
@@ -36,12 +45,10 @@ blockquote { margin: .8rem 0; padding: .1rem 1rem; border-left: 4px solid #b3470
 figure { margin: 1rem 0; }
 figure img { max-width: 100%; height: auto; }
 figcaption { color: #3c4350; font-size: .92rem; }
-math { font-family: "Noto Sans Math", "STIX Two Math", "Cambria Math", math; }
-/* Brackets do not stretch around a matrix without a font for mathematics: they are drawn as its borders instead. */
+@font-face { font-family: "Report Math"; src: url("data:font/woff2;base64,MATH_FONT") format("woff2"); }
+math { font-family: "Report Math", math, "STIX Two Math", "Cambria Math", "Latin Modern Math"; }
 math, mtable { math-style: normal; }
-mo:has(+ mtable), mtable + mo { display: none; }
-mtable { border: solid currentColor; border-width: 0 1.5px; border-radius: .8em; padding: 0 .5em; }
-mtd { padding: .25em .5em; }
+mtd { padding: .3em .5em; text-align: center !important; }
 math[display="block"] { overflow-x: auto; overflow-y: hidden; padding: .4rem 0; }
 @media print { nav { display: none; } main { max-width: none; } h2 { break-after: avoid; } tr, figure { break-inside: avoid; } }
 </style>
@@ -61,11 +68,19 @@ $body$
 </html>
 """
 
+
+@cache
+def html() -> str:
+    """Return the template of the HTML form with the font for mathematics in it."""
+    return _HTML.replace("MATH_FONT", b64encode(_FONT.read_bytes()).decode("ascii"))
+
+
 LATEX_HEAD = r"""\usepackage{iftex}
 \setcounter{MaxMatrixCols}{40}
 \renewcommand{\arraystretch}{1.3}
 \setlength{\emergencystretch}{4em}
 \allowdisplaybreaks
+\IfFileExists{pdflscape.sty}{\usepackage{pdflscape}}{\usepackage{lscape}}
 """
 
 #: Formulas that are a little too wide are made smaller; figures keep their size but never pass the margins.
@@ -87,6 +102,12 @@ TYPST = r"""#set document(title: [$title$])
 #show figure.caption: set text(size: 9pt)
 #show figure.where(kind: table): it => { show figure.caption: c => block(sticky: true, c); it }
 #show figure.where(kind: table): set align(left)
+#show figure.where(kind: table): it => { show align: a => { set align(left); a.body }; it }
+#show table: it => { show math.equation.where(block: false): e => context {
+  // A line makes too little room for a fraction: what it lacks is added.
+  let high = measure(math.equation(block: true, e.body)).height
+  box(inset: (y: if high > 1.6em.to-absolute() { 0.36em } else { 0pt }), e) }
+  it }
 #show raw: set text(size: 8.5pt)
 #show raw.where(block: false): it => { show regex("[^\s]{24,}"): m => m.text.clusters().join(sym.zws); it }
 #show quote.where(block: true): it => block(width: 100%, inset: (left: 9pt, y: 4pt),

@@ -3,15 +3,23 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
+from itertools import pairwise
+from typing import NamedTuple
 
 from ngm.expression.names import GREEK
 from ngm.expression.parse import parse
 from ngm.expression.tree import Add, Apply, Call, Multiply, Name, Negate, Node, Number, Power, Total, fold
 
-__all__ = ["LINE", "spaced", "width"]
+__all__ = ["LINE", "SIDE_LINE", "Columns", "columns", "spaced", "width"]
 
-#: Letters of a formula that fit on a line of the page.
+#: Letters of a formula that fit on a line of the page, and of a page on its side.
 LINE = 78.0
+SIDE_LINE = 116.0
+
+#: Letters of a table that fit on a line, and on that of a page on its side; and those lost between two columns. The
+#: form with the widest letters decides: TeX and Word.
+TABLE, SIDE_TABLE, GAP = 88.0, 138.0, 2.6
 
 #: One letter wide, however they are spelt.
 _GREEK = {spelling.lower() for spelling in GREEK.values()}
@@ -42,6 +50,39 @@ def _width(node: Node, parts: list[float]) -> float:
         case Negate() | Call() | Total() | Apply():
             return sum(parts) + 4
     raise TypeError(type(node).__name__)
+
+
+class Columns(NamedTuple):
+    """How the columns of a table are laid out: parts from one column to before another, and whether on the side."""
+
+    parts: tuple[tuple[int, int], ...]
+    wide: bool
+
+
+def columns(head: float, letters: Sequence[float]) -> Columns:
+    """Return how columns of so many letters are set beside a first one that heads the rows.
+
+    As one table where that fits on the page, else on a page on its side, else in parts that fit, of about the same width.
+
+    Examples
+    --------
+    >>> columns(3, [8] * 7)
+    Columns(parts=((0, 7),), wide=False)
+    >>> columns(3, [8] * 10)
+    Columns(parts=((0, 10),), wide=True)
+    >>> columns(3, [8] * 20)
+    Columns(parts=((0, 7), (7, 13), (13, 20)), wide=False)
+    """
+    first = head + GAP
+    sizes = [size + GAP for size in letters]
+    whole = first + sum(sizes)
+    if whole <= SIDE_TABLE:
+        return Columns(((0, len(sizes)),), whole > TABLE)
+    for count in range(2, len(sizes)):
+        ends = [round(k * len(sizes) / count) for k in range(count + 1)]
+        if all(first + sum(sizes[a:b]) <= TABLE for a, b in pairwise(ends)):
+            return Columns(tuple(pairwise(ends)), False)
+    return Columns(tuple((k, k + 1) for k in range(len(sizes))), first + max(sizes) > TABLE)
 
 
 def spaced(text: str) -> str:

@@ -7,13 +7,27 @@ import re
 import zipfile
 from collections.abc import Callable
 
-__all__ = ["on_pages"]
+__all__ = ["SIDEWAYS", "on_pages"]
 
 #: A4 in twentieths of a point, and the margins.
-_PAGE = (
-    '<w:footerReference w:type="default" r:id="rIdPageNumbers"/>'
-    '<w:pgSz w:w="11906" w:h="16838"/>'
+_FOOTER_HERE = '<w:footerReference w:type="default" r:id="rIdPageNumbers"/>'
+_MARGINS = (
     '<w:pgMar w:top="1200" w:right="1100" w:bottom="1200" w:left="1100" w:header="600" w:footer="600" w:gutter="0"/>'
+)
+_PAGE = f'{_FOOTER_HERE}<w:pgSz w:w="11906" w:h="16838"/>{_MARGINS}'
+
+
+def _ends(size: str) -> str:
+    """Return a paragraph, nearly without height, that ends a run of pages of a size."""
+    small = '<w:spacing w:before="0" w:after="0" w:line="20" w:lineRule="exact"/>'
+    section = f"<w:sectPr>{_FOOTER_HERE}{size}{_MARGINS}</w:sectPr>"
+    return f"<w:p><w:pPr>{small}{section}</w:pPr></w:p>"
+
+
+#: What stands before and after blocks that need pages on their sides.
+SIDEWAYS = (
+    _ends('<w:pgSz w:w="11906" w:h="16838"/>'),
+    _ends('<w:pgSz w:w="16838" w:h="11906" w:orient="landscape"/>'),
 )
 _TEXT_WIDTH = 11906 - 2 * 1100
 #: The width for which pandoc lays out the columns of tables.
