@@ -207,6 +207,17 @@ def _run(options: argparse.Namespace) -> str:
     values = _values(options.values)
     if values:
         scenario = scenario.with_values(**values)
+    answer = _answer(options, scenario)
+    if options.json or options.verb in ("units", "report"):
+        return answer
+    from ngm.console_opinion import conversions_text
+
+    return conversions_text(ngm.conversions(scenario), scenario.time_unit) + answer
+
+
+def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
+    import ngm
+
     if options.verb in ("strength", "coverage", "allocate"):
         return _needs(options, scenario)
     if options.verb == "report":

@@ -18,6 +18,7 @@ from ngm.expression.write import write
 from ngm.results_opinion import Contribution, Difference, EntryChange, ModelChange
 from ngm.scenario.exact import NoValueError, evaluate
 from ngm.scenario.model import Flow, Parameter, Scenario
+from ngm.scenario.slips import mixed_up
 
 __all__ = ["difference"]
 
@@ -27,17 +28,6 @@ MOST_IN_ORDER = 40
 MOST_TYPES = 60
 #: Entries that differ by less than this share did not move.
 SAME = 1e-9
-#: Factors between units that people mix up.
-SLIPS = {
-    7.0: "week and day",
-    30.4375: "month and day",
-    365.25: "year and day",
-    24.0: "day and hour",
-    12.0: "year and month",
-    365.25 / 7: "year and week",
-    60.0: "hour and minute",
-    100.0: "% and a share",
-}
 
 
 @dataclass(frozen=True)
@@ -137,11 +127,8 @@ def _slip(old: Parameter, new: Parameter) -> str | None:
             return None
     if not ratios or max(ratios) - min(ratios) > 1e-9 * abs(max(ratios)) or ratios[0] <= 0:
         return None
-    size = max(ratios[0], 1 / ratios[0])
-    for factor, words in SLIPS.items():
-        if math.isclose(size, factor, rel_tol=2e-3):
-            return f"changed by the factor {factor:g}: were {words} mixed up?"
-    return None
+    found = mixed_up(ratios[0], 1.002)
+    return None if found is None else f"changed by the factor {found[0]:g}: were {found[1]} mixed up?"
 
 
 def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], steps: list[_Step]) -> None:

@@ -14,6 +14,7 @@ from ngm.expression.tree import Node
 from ngm.results_opinion import Exit, ParameterUnit, Stay, UnitNote, Units
 from ngm.scenario.exact import evaluate
 from ngm.scenario.model import Parameter, Scenario
+from ngm.scenario.slips import slips
 from ngm.scenario.unit_check import check_units
 from ngm.scenario.units import time_unit_name
 
@@ -47,7 +48,7 @@ def units(scenario: Scenario) -> Units:
         scenario.title,
         scenario.time_unit,
         scenario.strict_units,
-        tuple(UnitNote(finding.kind, finding.where, finding.message) for finding in check.findings),
+        tuple(UnitNote(finding.kind, finding.where, finding.message) for finding in (*check.findings, *slips(scenario))),
         tuple(_parameter(scenario, p, check.implied.get(p.name)) for p in scenario.parameters.values()),
         {name: compartment.unit or "individual" for name, compartment in scenario.compartments.items()},
         check.expressions,

@@ -18,6 +18,7 @@ from ngm.scenario.edit import delete, insert, move, rename, set_value
 from ngm.scenario.fields import EnoughError, Findings
 from ngm.scenario.model import Expression, GivenMatrix, Intervention, Projection, Scenario
 from ngm.scenario.read import read
+from ngm.scenario.slips import slips
 from ngm.scenario.stated import compartments_of, flows_of, internal_names
 from ngm.scenario.unit_check import check_units
 
@@ -64,7 +65,8 @@ def loads(text: str, folder: str | None = None) -> Scenario:
         check(draft)
     if draft.found.problems:
         raise ScenarioError(draft.found.problems)
-    return _with_units(draft, _scenario(draft, text, folder))
+    scenario = _with_units(draft, _scenario(draft, text, folder))
+    return replace(scenario, warnings=(*scenario.warnings, *(f"Units: {finding}" for finding in slips(scenario))))
 
 
 def _with_units(draft: Draft, scenario: Scenario) -> Scenario:

@@ -7,12 +7,10 @@ the scenario and the folder that its matrix files lie in; nothing about a person
 from __future__ import annotations
 
 from dataclasses import dataclass
-from fractions import Fraction
 
 import streamlit as st
 
 import ngm
-from ngm.charts.style import short
 from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
@@ -276,22 +274,9 @@ def calibrate(
 def conversions(text: str, folder: str | None) -> tuple[tuple[str, str], ...]:
     """Return each parameter that is converted for the computation, with its value in force; none where it is no model."""
     try:
-        scenario = ngm.loads(text, folder=folder)
+        return ngm.conversions(ngm.loads(text, folder=folder))
     except NgmError:
         return ()
-    out: list[tuple[str, str]] = []
-    for parameter in scenario.parameters.values():
-        if parameter.factor != 1:
-            typed = dict.fromkeys(value.text for value in parameter.values)
-            used = dict.fromkeys(_number(node, parameter.factor) for node in parameter.in_force())
-            unit = parameter.unit.text if parameter.unit is not None else ""
-            out.append((parameter.name, f"{', '.join(typed)} {unit} = {', '.join(used)}"))
-    return tuple(out)
-
-
-def _number(node: object, factor: Fraction) -> str:
-    value = getattr(node, "value", None)
-    return short(float(value), 6) if isinstance(value, Fraction) else f"the value times {short(float(factor), 6)}"
 
 
 @st.cache_resource(max_entries=4096, show_spinner=False)
