@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import csv
+import io
+from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     import pandas
 
-__all__ = ["csv_text", "safe"]
+__all__ = ["csv_rows", "csv_text", "safe"]
 
 #: What a spreadsheet program takes for the beginning of a formula.
 FORMULA = ("=", "+", "-", "@", "\t", "\r")
@@ -40,3 +43,16 @@ def csv_text(frame: pandas.DataFrame, *, index: bool = False) -> str:
             out[name] = out[name].map(safe)
     out.columns = [safe(str(name)) for name in out.columns]
     return str(out.to_csv(index=False))
+
+
+def csv_rows(rows: Iterable[Iterable[object]]) -> str:
+    """Return rows as CSV, numbers at full precision, every text `safe`; None is an empty cell."""
+    out = io.StringIO()
+    csv.writer(out, lineterminator="\n").writerows([[_cell(value) for value in row] for row in rows])
+    return out.getvalue()
+
+
+def _cell(value: object) -> str:
+    if isinstance(value, bool) or not isinstance(value, float | int):
+        return str(safe("" if value is None else str(value)))
+    return repr(value)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import csv
 import io
+import re
 from collections.abc import Sequence
 from decimal import Decimal, InvalidOperation
 from pathlib import Path
@@ -33,6 +34,7 @@ _SEPARATORS = (",", ";", "\t")
 #: The header of the long form, in any order and case.
 LONG = ("from", "to", "value")
 _LARGEST = Decimal("1e300")
+_KEPT_AS_TEXT = re.compile(r"^'(?=[=+@\t-])")
 
 Rows = list[tuple[int, list[str]]]
 Block = tuple[tuple[Decimal, ...], ...]
@@ -146,6 +148,9 @@ def rows_of(text: str) -> Rows:
         raise MatrixFileError(f"line {reader.line_num} cannot be read as CSV: {error}.") from None
     if not rows:
         raise MatrixFileError("the file is empty.")
+    if "'" in text:
+        # no label holds an apostrophe: one that keeps a label such as -1 from being a formula is taken off
+        rows = [(line, [_KEPT_AS_TEXT.sub("", cell) for cell in cells]) for line, cells in rows]
     return rows
 
 

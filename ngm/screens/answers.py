@@ -14,6 +14,7 @@ from ngm.results_mixing import Mixing
 from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swing, Swings
 from ngm.screens import asking, cache, forms, parts, state, taking
 from ngm.screens.parts import Shown, plain
+from ngm.spreadsheet import csv_text
 
 __all__ = ["calibration", "local", "plane", "save"]
 
@@ -29,7 +30,7 @@ BY_R0, BY_GROWTH = "R0", "growth rate"
 def save(label: str, frame: Any, name: str, key: str) -> None:
     """Place a button that saves a table as CSV, at full precision."""
     st.download_button(
-        label, lambda: frame.to_csv(index=False).encode(), name, "text/csv", on_click="ignore", key=f"sensitivity.{key}"
+        label, lambda: csv_text(frame).encode(), name, "text/csv", on_click="ignore", key=f"sensitivity.{key}"
     )
 
 

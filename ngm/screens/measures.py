@@ -15,6 +15,7 @@ from ngm.results import ControlResult
 from ngm.results_control import Compared, Comparison, Strength
 from ngm.screens import asking, cache, editors, forms, packages, parts, state, taking
 from ngm.screens.parts import Shown, plain
+from ngm.spreadsheet import csv_text
 from ngm.wording import share, strength_words
 
 __all__ = ["editor", "side_by_side", "strengths", "targets"]
@@ -64,7 +65,7 @@ def side_by_side(shown: Shown, write: Write) -> None:
     _table(found, rows, write)
     st.download_button(
         "Download this comparison (CSV)",
-        lambda: found.to_frame().to_csv(index=False),
+        lambda: csv_text(found.to_frame()),
         "comparison.csv",
         "text/csv",
         on_click="ignore",

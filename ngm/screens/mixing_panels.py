@@ -13,6 +13,7 @@ from ngm.results import Matrix
 from ngm.results_mixing import Curve, MixCase, Mixing, MixingMap, MixingResponses
 from ngm.screens import cache, parts, state, taking
 from ngm.screens.parts import plain
+from ngm.spreadsheet import csv_rows
 
 __all__ = ["answers", "cases", "csv_of", "mix_table", "reciprocity", "the_map", "the_matrix"]
 
@@ -21,9 +22,7 @@ Write = Callable[[float | None], str]
 
 def csv_of(groups: Sequence[str], table: Matrix) -> str:
     """Return a matrix as CSV with labels on both sides, as the importer takes it."""
-    lines = [",".join(["from/to", *groups])]
-    lines += [",".join([group, *(repr(value) for value in row)]) for group, row in zip(groups, table, strict=True)]
-    return "\n".join(lines) + "\n"
+    return csv_rows([["from/to", *groups], *([group, *row] for group, row in zip(groups, table, strict=True))])
 
 
 def download(label: str, groups: Sequence[str], table: Matrix, name: str, key: str) -> None:
@@ -145,9 +144,8 @@ def mix_table(labels: Sequence[str], shown: Sequence[MixCase], write: Write, key
     with st.expander("The case mix as a table"):
         rows = [(label, *(write(mix[k]) for _, mix in mixes)) for k, label in enumerate(labels)]
         parts.table(["group", *(name for name, _ in mixes)], rows)
-        lines = [",".join(["group", *(name for name, _ in mixes)])]
-        lines += [",".join([label, *(repr(mix[k]) for _, mix in mixes)]) for k, label in enumerate(labels)]
-        text = "\n".join(lines) + "\n"
+        head = ["group", *(name for name, _ in mixes)]
+        text = csv_rows([head, *([label, *(mix[k] for _, mix in mixes)] for k, label in enumerate(labels))])
         st.download_button(
             "Save the case mix as CSV", text, "case-mix.csv", "text/csv", on_click="ignore", key=f"{key}.csv"
         )
@@ -215,15 +213,14 @@ def _curve(curve: Curve, title: str, labels: Sequence[str], write: Write, key: s
             for x, R0, mixed in zip(curve.x, curve.R0, curve.case_mix, strict=True)
         ]
         parts.grid(heads, rows)
-        lines = [",".join(heads), *(",".join(row) for row in _full(curve, len(labels)))]
-        text = "\n".join(lines) + "\n"
+        text = csv_rows([heads, *_full(curve, len(labels))])
         st.download_button("Save as CSV", text, f"{title}.csv", "text/csv", on_click="ignore", key=key)
 
 
-def _full(curve: Curve, size: int) -> list[list[str]]:
-    """Return the rows of a curve at full precision."""
+def _full(curve: Curve, size: int) -> list[list[float | None]]:
+    """Return the rows of a curve, None where there is no number."""
     return [
-        [repr(x), "" if R0 is None else repr(R0), *([""] * size if mix is None else [repr(share) for share in mix])]
+        [x, R0, *([None] * size if mix is None else mix)]
         for x, R0, mix in zip(curve.x, curve.R0, curve.case_mix, strict=True)
     ]
 
@@ -288,12 +285,8 @@ def the_map(shown: parts.Shown, found: Mixing, parameters: Sequence[str], write:
         heads = [f"{made.y.title} \\ {made.x.title}", *(short(value, 3) for value in made.x.values)]
         rows = [(short(y, 3), *(write(R0) for R0 in row)) for y, row in zip(made.y.values, made.R0, strict=True)]
         parts.grid(heads, rows)
-        lines = [",".join([f"{made.y.title} / {made.x.title}", *(repr(x) for x in made.x.values)])]
-        lines += [
-            ",".join([repr(y), *("" if R0 is None else repr(R0) for R0 in row)])
-            for y, row in zip(made.y.values, made.R0, strict=True)
-        ]
-        text = "\n".join(lines) + "\n"
+        head = [f"{made.y.title} / {made.x.title}", *made.x.values]
+        text = csv_rows([head, *([y, *row] for y, row in zip(made.y.values, made.R0, strict=True))])
         st.download_button(
             "Save the map as CSV", text, "R0-map.csv", "text/csv", on_click="ignore", key="mixing.map.csv"
         )

@@ -16,6 +16,7 @@ from ngm.screens.asking import Entries
 from ngm.screens.cache import ByGroup
 from ngm.screens.forms import Column
 from ngm.screens.parts import Shown, plain
+from ngm.spreadsheet import csv_text
 from ngm.wording import allocation_words, coverage_words, share, whole
 
 __all__ = ["coverage", "sharing"]
@@ -262,7 +263,7 @@ def _shares(found: Allocation, besides: Sequence[str], write: Write) -> None:
     parts.warnings_box(found.warnings)
     st.download_button(
         "Download the shares (CSV)",
-        lambda: found.to_frame().to_csv(),
+        lambda: csv_text(found.to_frame(), index=True),
         "shares.csv",
         "text/csv",
         on_click="ignore",

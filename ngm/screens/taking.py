@@ -6,8 +6,6 @@ one button. The script is ours and fixed; the scenario's text reaches it as data
 
 from __future__ import annotations
 
-import csv
-import io
 from collections.abc import Mapping, Sequence
 from typing import Any, Literal
 
@@ -15,9 +13,9 @@ import streamlit as st
 
 from ngm.results import Matrix, TextMatrix
 from ngm.screens import parts
-from ngm.spreadsheet import safe
+from ngm.spreadsheet import csv_rows
 
-__all__ = ["diagram", "formula", "matrix", "picture", "table_of", "text_of"]
+__all__ = ["diagram", "formula", "matrix", "picture", "table_of"]
 
 #: A picture drawn from more rows offers no CSV here: the page has a button of its own for what is large.
 MOST_ROWS = 5_000
@@ -128,13 +126,13 @@ def picture(
         drawn = _drawn(chart)
         heads = list(dict.fromkeys(key for row in drawn for key in row))
         rows = [heads, *([row.get(head, "") for head in heads] for row in drawn)] if drawn else []
-    _buttons(file, what, csv=text_of(rows) if rows else "")
+    _buttons(file, what, csv=csv_rows(rows) if rows else "")
 
 
 def diagram(graph: Any, file: str, rows: Sequence[Sequence[object]]) -> None:
     """Show a diagram of arrows, and below it the ways to save it; `rows`: its arrows as a table, heads first."""
     st.graphviz_chart(graph.dot, alt=graph.alt, width="content")
-    _buttons(file, "the diagram", csv=text_of(rows))
+    _buttons(file, "the diagram", csv=csv_rows(rows))
 
 
 def matrix(
@@ -146,7 +144,7 @@ def matrix(
     heads = list(columns) or list(types)
     texts = []
     if numbers is not None:
-        texts.append(("CSV", text_of([["", *heads], *([t, *row] for t, row in zip(types, numbers, strict=True))])))
+        texts.append(("CSV", csv_rows([["", *heads], *([t, *row] for t, row in zip(types, numbers, strict=True))])))
     entries = text if text is not None else tuple(tuple(repr(value) for value in row) for row in numbers or ())
     latex = parts.latex_matrix(entries, types, columns or None)
     if latex is not None:
@@ -163,13 +161,6 @@ def formula(name: str, text: str) -> None:
     _buttons(name, name, verb="Copy", texts=texts, show=True, is_picture=False)
 
 
-def text_of(rows: Sequence[Sequence[object]]) -> str:
-    """Return rows as CSV; text that a spreadsheet would take for a formula is kept from being one."""
-    out = io.StringIO()
-    csv.writer(out, lineterminator="\n").writerows([[_cell(value) for value in row] for row in rows])
-    return out.getvalue()
-
-
 def table_of(rows: Sequence[Sequence[object]]) -> str:
     """Return rows as columns of plain text."""
     cells = [[str(value) for value in row] for row in rows]
@@ -177,12 +168,6 @@ def table_of(rows: Sequence[Sequence[object]]) -> str:
     return "\n".join(
         "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip() for row in cells
     )
-
-
-def _cell(value: object) -> str:
-    if isinstance(value, bool) or not isinstance(value, float | int):
-        return str(safe("" if value is None else str(value)))
-    return repr(value)
 
 
 def _drawn(chart: Any) -> list[dict[str, Any]]:

@@ -47,4 +47,4 @@ def test_what_a_picture_is_drawn_from_is_offered_as_csv(offered, monkeypatch):
 
 
 def test_text_that_a_spreadsheet_would_run_is_kept_from_it():
-    assert taking.text_of([["=1+1", "@x", -2.0, "a"]]) == "'=1+1,'@x,-2.0,a\n"
+    assert taking.csv_rows([["=1+1", "@x", -2.0, "a"]]) == "'=1+1,'@x,-2.0,a\n"
