@@ -88,11 +88,9 @@ def _parser() -> argparse.ArgumentParser:
                 "--from", dest="draw_file", metavar="TABLE", help="take joint draws from a CSV or Parquet file"
             )
         if verb == "report":
-            sub.add_argument("--to", metavar="PATH", required=True, help="the file: .html .md .tex .docx .pdf")
-            sub.add_argument("--sections", metavar="KEY,KEY", help="only these parts; all where left out")
-            sub.add_argument("--companion", action="store_true", help="also NAME.json: every number with its name")
-            sub.add_argument("--draws", metavar="N", type=int, help="draws for the section on uncertainty")
-            sub.add_argument("--seed", metavar="K", type=int, default=0, help="of the draws")
+            from ngm.console_report import add_options
+
+            add_options(sub)
         if verb == "calibrate":
             sub.add_argument("--parameter", metavar="NAME", required=True, help="the parameter to find")
             wanted = sub.add_mutually_exclusive_group(required=True)
@@ -221,7 +219,9 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
     if options.verb in ("strength", "coverage", "allocate"):
         return _needs(options, scenario)
     if options.verb == "report":
-        return _report(options, scenario)
+        from ngm.console_report import write_report
+
+        return write_report(options, scenario)
     if options.verb in OPINIONS:
         return _opinion(options, scenario)
     from ngm.console import result_text
@@ -242,29 +242,6 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
         case _:
             result = ngm.solve(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)
-
-
-def _report(options: argparse.Namespace, scenario: Scenario) -> str:
-    """Write a report, with the command that makes it again in it."""
-    import ngm
-
-    rest = [f"--set {item}" for item in options.values]
-    rest += [f"--sections {options.sections}"] * (options.sections is not None)
-    rest += [f"--draws {options.draws} --seed {options.seed}"] * (options.draws is not None)
-    made = ngm.report(
-        scenario,
-        options.to,
-        sections=None if options.sections is None else [key.strip() for key in options.sections.split(",")],
-        companion=options.companion,
-        draws=options.draws,
-        seed=options.seed,
-        command=" ".join(["python -m ngm report", options.file, "--to", options.to, *rest]),
-    )
-    told = made.to_json()
-    if options.json:
-        return json.dumps(told, ensure_ascii=False)
-    lines = [f"{told['path']} ({told['form']})", f"sections: {', '.join(told['sections'])}"]
-    return "\n".join([*lines, *(f"warning: {warning}" for warning in told["warnings"])])
 
 
 def _opinion(options: argparse.Namespace, scenario: Scenario) -> str:

@@ -96,6 +96,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     "console": {"errors", "results", "results_control", "results_season", "results_sensitivity", "results_draws"},
     "console_course": {"console", "results_course", "results_season"},
     "console_opinion": {"console", "results_opinion"},
+    "console_report": {"ngm", "errors", "typed", "reporting"},
     "console_control": {"console", "results_control", "wording", "results_draws"},
     "__main__": {
         "ngm",
@@ -108,6 +109,7 @@ MAY_IMPORT: dict[str, set[str]] = {
         "console",
         "console_control",
         "console_opinion",
+        "console_report",
         "typed",
         "worker",
         "spreadsheet",
