@@ -42,3 +42,8 @@ def population(
         f"[projection]\nstages = {json.dumps(names)}\nbirths = {rows(births)}\ntransitions = {rows(transitions)}\n"
     )
     return HEAD + parameters(values or {}) + section + tail
+
+
+def change(text: str) -> str:
+    """Return an intervention with one change."""
+    return f'[[intervention]]\nname = "x"\nchange = [{{ {text} }}]\n'

@@ -8,6 +8,7 @@ import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.point import MOST_WRITTEN, Point
+from ngm.analysis.stated_entries import is_stated
 from ngm.derivation.expand import arrow_blocks
 from ngm.errors import DerivationError
 from ngm.expression.tree import Node
@@ -19,6 +20,8 @@ from ngm.scenario.unit_check import check_units
 from ngm.scenario.units import time_unit_name
 
 __all__ = ["stays", "units"]
+
+ENTRIES_FIT = "The units fit: every entry of the matrices is a pure number, and no sum mixes units."
 
 
 def units(scenario: Scenario) -> Units:
@@ -38,7 +41,9 @@ def units(scenario: Scenario) -> Units:
     found: tuple[Stay, ...] = ()
     try:
         point = Point(scenario)
-        if point.exact and len(point.template.types) <= MOST_WRITTEN:
+        if is_stated(scenario):
+            pass  # nobody moves from stage to stage by flows
+        elif point.exact and len(point.template.types) <= MOST_WRITTEN:
             found = stays(point)
         else:
             warnings.append("Too many types: the stays are not listed.")
@@ -50,10 +55,13 @@ def units(scenario: Scenario) -> Units:
         scenario.strict_units,
         tuple(UnitNote(finding.kind, finding.where, finding.message) for finding in (*check.findings, *slips(scenario))),
         tuple(_parameter(scenario, p, check.implied.get(p.name)) for p in scenario.parameters.values()),
-        {name: compartment.unit or "individual" for name, compartment in scenario.compartments.items()},
+        {}
+        if is_stated(scenario)
+        else {name: compartment.unit or "individual" for name, compartment in scenario.compartments.items()},
         check.expressions,
         found,
         tuple(warnings),
+        *((ENTRIES_FIT,) if is_stated(scenario) else ()),
     )
 
 

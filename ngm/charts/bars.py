@@ -7,9 +7,9 @@ from typing import Any
 import altair as alt
 
 from ngm.charts.style import ink, short
-from ngm.results import ControlResult, Solution
+from ngm.results import ControlResult, Projected, Solution
 
-__all__ = ["MOST_BARS", "efforts", "reproductive_values", "stable_distribution"]
+__all__ = ["MOST_BARS", "efforts", "reproductive_values", "stable_distribution", "stage_shares", "stage_values"]
 
 #: More bars than this are no picture; the table beside it has them all.
 MOST_BARS = 60
@@ -40,6 +40,33 @@ def reproductive_values(solution: Solution, *, dark: bool = False) -> alt.LayerC
         return None
     rows = _rows(solution, solution.left)
     return _bars(rows, "reproductive value (relative)", "Reproductive value of each type", dark)
+
+
+def stage_shares(about: Projected, *, dark: bool = False) -> alt.LayerChart | None:
+    """Draw the share of each stage of a population in the long run (right vector of F + T).
+
+    Shares have no unit and sum to 1. None where the vector does not exist or has more than `MOST_BARS` entries.
+    """
+    return _stages(about, about.stable_structure, "share in the long run", "Stable structure of the population", dark)
+
+
+def stage_values(about: Projected, *, dark: bool = False) -> alt.LayerChart | None:
+    """Draw what one member of each stage counts for the size in the long run (left vector of F + T).
+
+    Relative values without unit, 1 for the first stage that is not 0. None where the vector does not exist or has more
+    than `MOST_BARS` entries.
+    """
+    title = "Reproductive value of each stage"
+    return _stages(about, about.reproductive_values, "reproductive value (relative)", title, dark)
+
+
+def _stages(
+    about: Projected, vector: tuple[float, ...] | None, axis: str, title: str, dark: bool
+) -> alt.LayerChart | None:
+    if vector is None or len(vector) > MOST_BARS:
+        return None
+    rows = [{"type": s, "value": v, "shown": short(v)} for s, v in zip(about.stages, vector, strict=True)]
+    return _bars(rows, axis, title, dark)
 
 
 def efforts(result: ControlResult, *, dark: bool = False) -> alt.LayerChart | None:

@@ -25,6 +25,8 @@ SECTIONS = (
     "parameters",
     "matrices",
     "definitions",
+    "next_generation",
+    "projection",
     "flow",
     "movement",
     "infection_free",

@@ -25,7 +25,11 @@ def figures(solution: Solution, write: Write) -> None:
     with first:
         parts.headline(solution, write, "stretch")
         if solution.R0 is not None:
-            st.caption("Cases caused by one typical case, per generation, where nobody is infected yet.")
+            st.caption(
+                "New members that one new member has in its whole life."
+                if solution.form == "projection"
+                else "Cases caused by one typical case, per generation, where nobody is infected yet."
+            )
     period = solution.structure.period if solution.structure is not None else None
     with second:
         if period is not None and period > 1:
@@ -44,6 +48,9 @@ def figures(solution: Solution, write: Write) -> None:
             )
     with third:
         unit = plain(solution.time_unit)
+        if solution.form == "K as given":
+            st.caption("A K as given has no time in it: how fast the infection grows is not known.")
+            return
         st.metric(f"Growth rate, per {unit}", write(solution.growth_rate), border=True, help=help_text("growth_rate"))
         st.caption(
             f"Early growth, exponential. Doubling time: {plain(write(solution.doubling_time))} {unit}s."
@@ -95,7 +102,8 @@ def change_a_value(shown: Shown, write: Write) -> None:
 
 def who_infects_whom(solution: Solution, write: Write) -> None:
     """Show K as a graph with its classes, and as a table."""
-    st.subheader("Who infects whom", help=help_text("K"))
+    born = solution.form == "projection"
+    st.subheader("Births of a life, stage by stage" if born else "Who infects whom", help=help_text("K"))
     graph = graphs.who_infects_whom(solution, dark=parts.dark())
     if graph is not None:
         types = solution.types_at_infection
@@ -107,7 +115,9 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
         ]
         taking.diagram(graph, "who-infects-whom", [("infects", "infected", "infections caused by one case"), *arrows])
         st.caption(
-            "An arrow leads from the type that infects to the type infected; beside it, the infections that one case "
+            "An arrow leads from the stage in which a life begins to the stage of its young; beside it, their number."
+            if born
+            else "An arrow leads from the type that infects to the type infected; beside it, the infections that one case "
             "causes. A box is a class: within it each type leads to each. That with the largest R0 has a solid box."
         )
     structure = solution.structure
@@ -116,7 +126,9 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
             (str(k), ", ".join(c.types), write(c.R0), "–" if c.period is None else str(c.period), write(c.growth_rate))
             for k, c in enumerate(structure.classes, 1)
         ]
-        parts.table(["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"], rows)
+        heads = ["class", "types", "R0", "period", f"growth rate, per {solution.time_unit}"]
+        timeless = solution.form == "K as given"
+        parts.table(heads[:4] if timeless else heads, [row[:4] for row in rows] if timeless else rows)
         if len(structure.classes) > 1:
             st.caption("K has several classes: R0 is the largest of theirs.")
         growing = [c for c in structure.classes if c.growth_rate is not None]
@@ -173,13 +185,14 @@ def vectors(solution: Solution, write: Write) -> None:
         parts.table(["type", "share of new infections", "reproductive value"], rows)
 
 
-def control(result: ControlResult, write: Write) -> None:
+def control(result: ControlResult, write: Write, form: str = "flows") -> None:
     """Show what control has to reach, target by target."""
     st.subheader("What control has to reach", help=help_text("T"))
+    born = form == "projection"
     st.markdown(
-        "T counts the infections that control of the target must undo; the critical effort 1 - 1/T is the share of "
-        "them to prevent for the infection to die out. It equals 1 - 1/R0 only where all types are treated alike. "
-        "Where T does not exist, no effort on that target alone is enough."
+        f"T counts the {'births' if born else 'infections'} that control of the target must undo; the critical effort 1 - 1/T "
+        f"is the share of them to prevent for the {'population' if born else 'infection'} to die out. It equals 1 - 1/R0 only "
+        "where all types are treated alike. Where T does not exist, no effort on that target alone is enough."
     )
     chart = bars.efforts(result, dark=parts.dark())
     if chart is not None:
@@ -187,22 +200,31 @@ def control(result: ControlResult, write: Write) -> None:
     heads = ["target", "T", "critical effort", "why there is none"]
     groups: list[tuple[str, list[tuple[str, ...]]]] = [
         (
-            "Types: infections of these types prevented",
+            "Stages: births into these stages prevented" if born else "Types: infections of these types prevented",
             [(", ".join(t.types), write(t.T), write(t.critical_effort), t.why or "") for t in result.type_reproduction],
         ),
         (
-            "Entries: infections of one type by another prevented",
+            "Entries: births into one stage by another prevented"
+            if born
+            else "Entries: infections of one type by another prevented",
             [
-                (f"{t.entry[1]} infecting {t.entry[0]}", write(t.T), write(t.critical_effort), t.why or "")
+                (
+                    f"{t.entry[1]} {'bearing' if born else 'infecting'} {t.entry[0]}",
+                    write(t.T),
+                    write(t.critical_effort),
+                    t.why or "",
+                )
                 for t in result.target_reproduction
             ],
         ),
         (
-            "States: infectivity in one state removed",
+            "Stages: births by one stage prevented" if born else "States: infectivity in one state removed",
             [(t.state, write(t.T), write(t.critical_effort), t.why or "") for t in result.state_reproduction],
         ),
     ]
     for title, rows in groups:
+        if form == "K as given" and title.startswith("States"):
+            continue  # a K as given has no states beside its types
         st.markdown(f"**{title}**")
         if rows:
             parts.table(heads, rows)

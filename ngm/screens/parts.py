@@ -134,8 +134,17 @@ def warnings_box(warnings: Iterable[str]) -> None:
         st.warning("\n".join(["**Please note**", *lines]))
 
 
-def cautions() -> None:
+def cautions(form: str = "flows") -> None:
     """Say what these numbers are not. Stands wherever they are read."""
+    if form == "projection":
+        st.info(
+            "**Read with care**\n"
+            "- These are numbers of a model under its assumptions: no forecast of how many there will be. They hold while "
+            "births and survival stay as they are.\n"
+            "- R0 counts new members in a life, the growth factor what a step multiplies by. Both pass 1 together.\n"
+            "- Decisions on measures belong to the authority responsible, under its own rules."
+        )
+        return
     st.info(
         "**Read with care**\n"
         "- These are numbers of a model under its assumptions: no forecast, and no better than its inputs.\n"
@@ -190,7 +199,8 @@ def headline(
     if solution.R0 is None:
         st.error(f"**No R0 at these values.** {plain(solution.no_R0 or '')}")
         return
-    st.metric("R0: basic reproduction number", write(solution.R0), border=True, width=width, help=help_text("R0"))
+    label = "R0: net reproduction number" if solution.form == "projection" else "R0: basic reproduction number"
+    st.metric(label, write(solution.R0), border=True, width=width, help=help_text("R0"))
     if solution.R0_bounds is not None:
         low, high = solution.R0_bounds
         st.caption(f"proven: {low!r} ≤ R0 ≤ {high!r}")

@@ -33,16 +33,23 @@ MOST_TERMS = 80
 
 def types(solution: Solution) -> None:
     """Say which the types are, and which of them are types at infection."""
-    st.subheader("1. Types")
+    what = "Stages" if solution.form == "projection" else "Types"
+    st.subheader(f"1. {what}")
     listed = solution.types[:MOST_LINES]
     names = [
         f"{plain(t)} ({plain(solution.type_labels[t])})" if solution.type_labels.get(t, t) != t else plain(t)
         for t in listed
     ]
     more = f" and {len(solution.types) - len(listed)} more" if len(solution.types) > len(listed) else ""
-    st.markdown(f"The infected types, in the order of the matrices: {', '.join(names)}{more}.")
     born = [plain(t) for t in solution.types_at_infection[:MOST_LINES]]
-    st.markdown(f"Types at infection, those that new infections enter: {', '.join(born) or 'none'}.")
+    if solution.form == "K as given":
+        st.markdown(f"The types of the matrix, in its order: {', '.join(names)}{more}. Each is a type at infection.")
+    elif solution.form == "projection":
+        st.markdown(f"The stages, in the order of the matrices: {', '.join(names)}{more}.")
+        st.markdown(f"Stages that new members are born into: {', '.join(born) or 'none'}.")
+    else:
+        st.markdown(f"The infected types, in the order of the matrices: {', '.join(names)}{more}.")
+        st.markdown(f"Types at infection, those that new infections enter: {', '.join(born) or 'none'}.")
 
 
 def infection_free(solution: Solution, write: Write) -> None:
@@ -67,16 +74,25 @@ def infection_free(solution: Solution, write: Write) -> None:
     )
 
 
-def transmission_and_transition(solution: Solution, write: Write) -> None:
-    """Show F and V, and the flows behind each entry."""
-    st.subheader("3. Transmission F and transition V", help=help_text("F"))
-    st.markdown(
-        f"Rates per {plain(solution.time_unit)} at the infection-free state. Row: the type that is gained or lost; "
-        "column: the type that causes it. F counts new infections; V counts everything else, with its sign turned."
-    )
+def transmission_and_transition(solution: Solution, write: Write, number: int = 3) -> None:
+    """Show F and V, and the flows behind each entry; of a projected population its births F and V = I - T."""
+    if solution.form == "projection":
+        st.subheader(f"{number}. Births F and transitions T")
+        st.markdown(
+            f"Per step of one {plain(solution.time_unit)}. F, row by row: new members of a stage by one member of the column's "
+            "stage. T: the share of the column's stage that is found in the row's stage a step later; V = I - T."
+        )
+    else:
+        st.subheader(f"{number}. Transmission F and transition V", help=help_text("F"))
+        st.markdown(
+            f"Rates per {plain(solution.time_unit)} at the infection-free state. Row: the type that is gained or lost; "
+            "column: the type that causes it. F counts new infections; V counts everything else, with its sign turned."
+        )
     _abbreviations(solution.symbolic, "rates")
     _matrix("F", solution.symbolic.F, solution.F, solution.types, write)
     _matrix("V", solution.symbolic.V, solution.V, solution.types, write)
+    if not solution.terms:
+        return
     with st.expander("Entry by entry: the flows behind F and V"):
         if len(solution.terms) > MOST_TERMS:
             rows = [
@@ -88,17 +104,17 @@ def transmission_and_transition(solution: Solution, write: Write) -> None:
             _terms(solution)
 
 
-def conditions(solution: Solution) -> None:
+def conditions(solution: Solution, number: int = 4) -> None:
     """Show how the conditions turned out."""
-    st.subheader("4. Conditions")
+    st.subheader(f"{number}. Conditions")
     st.markdown("R0 is a threshold where these hold (van den Driessche and Watmough 2002).")
     parts.conditions_table(solution)
 
 
-def residence(solution: Solution) -> None:
+def residence(solution: Solution, number: int = 5) -> None:
     """Show the elimination that leads to the inverse of V."""
     steps = [step for step in solution.symbolic.steps if step.kind == "residence"]
-    st.subheader("5. Mean stays: the inverse of V", help=help_text("stays"))
+    st.subheader(f"{number}. Mean stays: the inverse of V", help=help_text("stays"))
     if not steps:
         st.markdown("Nothing is written out here: the inverse of V is known in numbers only, or there is none.")
         return
@@ -120,15 +136,21 @@ def residence(solution: Solution) -> None:
             parts.table(["name", "formula", "about"], rows)
 
 
-def next_generation(solution: Solution, write: Write) -> None:
+def next_generation(solution: Solution, write: Write, number: int = 6) -> None:
     """Show K."""
-    st.subheader("6. Next-generation matrix K", help=help_text("K"))
+    st.subheader(f"{number}. Next-generation matrix K", help=help_text("K"))
     if solution.K is None and solution.no_R0:
         st.markdown("There is none at these values.")
         return
     st.markdown(
-        "K = F V⁻¹, kept to the types at infection. Entry (i, j): the infections of type i that one case of type j "
-        "causes over its whole course."
+        {
+            "flows": "K = F V⁻¹, kept to the types at infection. Entry (i, j): the infections of type i that one case of "
+            "type j causes over its whole course.",
+            "K as given": "As the scenario gives it. Entry (i, j): the infections of type i that one case of type j causes "
+            "over its whole course. There are no flows behind it to be checked.",
+            "projection": "K = F V⁻¹, kept to the stages that members are born into. Entry (i, j): the births into stage i in "
+            "the whole life of one member that begins in stage j.",
+        }[solution.form]
     )
     _abbreviations(solution.symbolic, "K")
     _matrix("K", solution.symbolic.K, solution.K, solution.types_at_infection, write)
@@ -155,9 +177,9 @@ def on_the_template(solution: Solution) -> None:
     st.code("\n".join(lines), language=None, wrap_lines=True)
 
 
-def root(solution: Solution) -> None:
+def root(solution: Solution, number: int = 7) -> None:
     """Show the characteristic polynomial, the classes and the closed form, or say that there is none."""
-    st.subheader("7. R0, the spectral radius of K", help=help_text("R0"))
+    st.subheader(f"{number}. R0, the spectral radius of K", help=help_text("R0"))
     if solution.R0 is None:
         st.markdown("There is none at these values.")
         return

@@ -9,7 +9,7 @@ from ngm.errors import ScenarioError
 from ngm.scenario.edit import set_value
 from ngm.scenario.file import loads
 from ngm.scenario.stated import compartments_of, flows_of, internal_names
-from tests.stated import HEAD, given, population
+from tests.stated import HEAD, change, given, population
 
 TWO = [[0, 1.5], [2, 0]]
 F, T = [[0, 2], [0, 0]], [[0, 0], [0.3, 0.8]]
@@ -45,10 +45,6 @@ def test_any_label_is_a_type(label):
     assert ngm.solve(scenario).symbolic.K == (("p", "1"), ("1", "0"))
     (row,) = ngm.compare(scenario).interventions
     assert row.R0 == 0  # nobody infects `label` any more: [[0, 0], [1, 0]]
-
-
-def change(text: str) -> str:
-    return f'[[intervention]]\nname = "x"\nchange = [{{ {text} }}]\n'
 
 
 def test_names_of_types_inside():

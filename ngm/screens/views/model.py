@@ -10,7 +10,7 @@ from streamlit.delta_generator import DeltaGenerator
 
 from ngm.charts.graphs import flow_diagram
 from ngm.errors import Problem
-from ngm.screens import cache, editors, finding, forms, parts, pasting, sketch, state, taking
+from ngm.screens import cache, editors, finding, forms, parts, pasting, sketch, state, stated_edits, taking
 from ngm.screens.forms import TABLES, Edit
 
 WORDS = {
@@ -82,16 +82,23 @@ def page() -> None:
         return
     top = st.container()
     boxes: dict[str, DeltaGenerator] = {}
-    pasting.panel(document)
-    edits = tables(PLAIN, document, boxes)
-    with st.expander("Groups, matrices and movements", expanded=any(document.get(name) for name in GROUPED)):
-        edits += tables(GROUPED, document, boxes)
+    stated = stated_edits.form(document)
+    if stated is not None:
+        edits = stated_edits.editor(stated, document)
+        boxes[stated] = st.container()
+        edits += tables(("parameters", "definitions"), document, boxes)
+    else:
+        pasting.panel(document)
+        edits = tables(PLAIN, document, boxes)
+        with st.expander("Groups, matrices and movements", expanded=any(document.get(name) for name in GROUPED)):
+            edits += tables(GROUPED, document, boxes)
     text = parts.applied(now.text, edits)
     state.edit(text)
     outcome = cache.solve(text, now.folder)
     rest = sort_out(outcome.problems, boxes)
     with top:
-        overview(forms.document(text) or document)
+        if stated is None:
+            overview(forms.document(text) or document)
         if outcome.solution is not None:
             parts.conversions(text, now.folder, outcome.solution.time_unit)
             parts.headline(outcome.solution)

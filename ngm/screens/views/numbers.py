@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import cache, panels, parts
+from ngm.screens import cache, panels, parts, stated_panels
 
 
 def page() -> None:
@@ -16,7 +16,8 @@ def page() -> None:
     write = parts.digits("numbers")
     solution = shown.solution
     panels.figures(solution, write)
-    parts.cautions()
+    stated_panels.population(solution, write)
+    parts.cautions(solution.form)
     parts.warnings_box(solution.warnings)
     if not shown.stale:
         panels.change_a_value(shown, write)
@@ -24,8 +25,9 @@ def page() -> None:
         return
     panels.who_infects_whom(solution, write)
     panels.spectrum(solution, write)
-    panels.vectors(solution, write)
-    panels.control(cache.control(shown.text, shown.folder), write)
+    if solution.form != "projection":
+        panels.vectors(solution, write)
+    panels.control(cache.control(shown.text, shown.folder), write, solution.form)
 
 
 page()

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import cache, finding, forms, parts, shelf, start, state
+from ngm.screens import cache, finding, forms, parts, shelf, start, state, stated_edits
 from ngm.screens.forms import Edit
 
 
@@ -35,6 +35,9 @@ def choose() -> None:
             state.open_text(shelf.THREE_COMPARTMENTS, "untitled.toml")
         if st.button("Quite empty", key="scenario.empty"):
             state.open_text(shelf.EMPTY, "untitled.toml")
+    begun = stated_edits.begin()
+    if begun is not None:
+        state.open_text(begun, "untitled.toml")
 
 
 def heading(now: state.Version) -> None:
