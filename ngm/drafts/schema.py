@@ -8,7 +8,7 @@ from pathlib import Path
 
 from ngm.errors import NgmError, Problem
 
-__all__ = ["PLACE", "DraftError", "connect", "migrate", "place"]
+__all__ = ["PLACE", "DraftError", "connect", "migrate", "most_megabytes", "place"]
 
 #: Environment variable that names the file.
 PLACE = "NGM_DRAFTS"
@@ -28,9 +28,20 @@ MIGRATIONS: tuple[tuple[str, ...], ...] = (
             PRIMARY KEY (draft, number)) WITHOUT ROWID""",
         "CREATE INDEX drafts_by_owner ON drafts (owner, changed)",
     ),
+    (
+        # Bytes of all versions as stored, kept up with each of them; when it was thrown away, if it was.
+        "ALTER TABLE drafts ADD COLUMN size INTEGER NOT NULL DEFAULT 0",
+        "ALTER TABLE drafts ADD COLUMN discarded REAL",
+        "UPDATE drafts SET size = (SELECT coalesce(sum(length(text)), 0) FROM versions WHERE draft = drafts.id)",
+        "CREATE INDEX drafts_discarded ON drafts (discarded) WHERE discarded IS NOT NULL",
+    ),
 )
 #: The schema that this program reads and writes.
 SCHEMA = len(MIGRATIONS)
+
+#: Environment variable that names the most that the file may grow to, megabytes; and what holds without it.
+MOST_STORE = "NGM_DRAFTS_MOST_MB"
+MOST_STORE_MB = 10_000
 
 #: Seconds to wait for another process that is writing.
 PATIENCE = 15.0
@@ -58,7 +69,15 @@ def connect(path: Path) -> sqlite3.Connection:
     db.row_factory = sqlite3.Row
     db.execute("PRAGMA synchronous = FULL")  # an acknowledged edit outlives a power cut too
     db.execute("PRAGMA foreign_keys = ON")
+    page = int(db.execute("PRAGMA page_size").fetchone()[0])
+    db.execute(f"PRAGMA max_page_count = {max(16, most_megabytes() * 1_000_000 // page)}")
     return db
+
+
+def most_megabytes() -> int:
+    """Return what the file may grow to: what ``NGM_DRAFTS_MOST_MB`` says, or 10,000."""
+    said = os.environ.get(MOST_STORE, "").strip()
+    return int(said) if said.isascii() and said.isdigit() and 0 < int(said) < 10**9 else MOST_STORE_MB
 
 
 def migrate(db: sqlite3.Connection, path: Path) -> None:

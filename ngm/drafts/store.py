@@ -16,12 +16,17 @@ from pathlib import Path
 
 from ngm.drafts import schema
 from ngm.drafts.history import FORMAT, history
-from ngm.drafts.schema import PLACE, DraftError, connect, migrate, place
+from ngm.drafts.schema import MOST_STORE, PLACE, DraftError, connect, migrate, most_megabytes, place
 
 __all__ = ["Conflict", "Draft", "Listed", "Saved", "Store"]
 
 #: Characters of a note.
 MOST_NOTE = 500
+#: Bytes of one text, and of all versions of a draft as they are stored.
+MOST_TEXT = 16 * 2**20
+MOST_DRAFT = 256 * 2**20
+#: Seconds that a draft which was thrown away can be brought back.
+GRACE = 30 * 86400.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,8 +37,8 @@ class Draft:
     ----------
     id : str
         Unguessable; whoever has it may read and write.
-    name, origin : str
-        Name of the scenario's file; where it came from (free for the caller).
+    name, origin, owner : str
+        Name of the scenario's file; where it came from (free for the caller); who made it, "" for nobody.
     rev : int
         Goes up whenever the head moves.
     head : int
@@ -55,6 +60,7 @@ class Draft:
     valid: str | None
     earlier: bool
     later: bool
+    owner: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -111,7 +117,8 @@ class Store:
         key = secrets.token_urlsafe(18)
         now = time.time()
         with self._writing() as db:
-            db.execute("INSERT INTO drafts VALUES (?, ?, ?, ?, ?, ?, 1, 1)", (key, name, origin, owner, now, now))
+            _purge(db, now)
+            db.execute(f"{_INSERT} VALUES (?, ?, ?, ?, ?, ?, 1, 1)", (key, name, origin, owner, now, now))
             _add(db, key, 1, None, now, note, good, False, text)
             return _draft(db, key)
 
@@ -209,9 +216,28 @@ class Store:
             return []
         with self._reading() as db:
             rows = db.execute(
-                "SELECT id, name, changed FROM drafts WHERE owner = ? ORDER BY changed DESC LIMIT ?", (owner, most)
+                "SELECT id, name, changed FROM drafts WHERE owner = ? AND discarded IS NULL ORDER BY changed DESC LIMIT ?",
+                (owner, most),
             ).fetchall()
         return [(row["id"], row["name"], row["changed"]) for row in rows]
+
+    def discard(self, key: str) -> None:
+        """Throw a draft away: from now on it is not there, and for 30 days `recover` brings it back."""
+        with self._writing() as db:
+            _need(db, key)
+            db.execute("UPDATE drafts SET discarded = ?, rev = rev + 1 WHERE id = ?", (time.time(), key))
+
+    def recover(self, key: str) -> Draft | None:
+        """Bring back a draft that was thrown away, with all its versions; None where there is none any more."""
+        with self._writing() as db:
+            db.execute("UPDATE drafts SET discarded = NULL WHERE id = ? AND discarded IS NOT NULL", (key,))
+            return _draft(db, key) if _row(db, key) is not None else None
+
+    def discarded(self, key: str) -> float | None:
+        """Return when a draft was thrown away (s since 1970); None where it was not, or is gone."""
+        with self._reading() as db:
+            row = db.execute("SELECT discarded FROM drafts WHERE id = ?", (key,)).fetchone()
+            return None if row is None or row["discarded"] is None else float(row["discarded"])
 
     def export(self, key: str) -> str:
         """Return a draft with its whole history as JSON; its id is not part of it."""
@@ -245,7 +271,7 @@ class Store:
         key = secrets.token_urlsafe(18)
         with self._writing() as db:
             now = time.time()
-            db.execute("INSERT INTO drafts VALUES (?, ?, ?, ?, ?, ?, 1, ?)", (key, name, origin, owner, now, now, head))
+            db.execute(f"{_INSERT} VALUES (?, ?, ?, ?, ?, ?, 1, ?)", (key, name, origin, owner, now, now, head))
             for v in versions:
                 _add(db, key, v.number, v.base, v.time, v.note, v.good, v.aside, v.text)
             return _draft(db, key)
@@ -277,6 +303,11 @@ class Store:
         try:
             yield db
         except sqlite3.Error as error:
+            if error.sqlite_errorcode == sqlite3.SQLITE_FULL:
+                raise DraftError(
+                    f"{self.path} is full, or the disk is: it may grow to {most_megabytes():,} MB, which the variable "
+                    f"{MOST_STORE} can raise. Nothing that is in it is lost."
+                ) from None
             raise DraftError(f"{self.path} cannot be used ({error}).") from None
         finally:
             db.close()  # rolls back what was not committed
@@ -295,8 +326,20 @@ class Store:
             self._ready = True
 
 
+_INSERT = "INSERT INTO drafts (id, name, origin, owner, created, changed, rev, head)"
+
+
+def _purge(db: sqlite3.Connection, now: float) -> None:
+    """Take out for good what was thrown away long ago."""
+    gone = [row["id"] for row in db.execute("SELECT id FROM drafts WHERE discarded < ?", (now - GRACE,))]
+    for key in gone:
+        db.execute("DELETE FROM versions WHERE draft = ?", (key,))
+        db.execute("DELETE FROM drafts WHERE id = ?", (key,))
+
+
 def _row(db: sqlite3.Connection, key: str) -> sqlite3.Row | None:
-    row: sqlite3.Row | None = db.execute("SELECT * FROM drafts WHERE id = ?", (key,)).fetchone()
+    found = db.execute("SELECT * FROM drafts WHERE id = ? AND discarded IS NULL", (key,)).fetchone()
+    row: sqlite3.Row | None = found
     return row
 
 
@@ -328,6 +371,7 @@ def _draft(db: sqlite3.Connection, key: str) -> Draft:
         valid=None if good is None else _text(db, key, int(good["number"])),
         earlier=_base(db, key, head) is not None,
         later=_later(db, key, head) is not None,
+        owner=row["owner"],
     )
 
 
@@ -369,7 +413,16 @@ def _add(
     aside: bool,
     text: str,
 ) -> None:
-    blob = zlib.compress(text.encode("utf-8", "surrogatepass"), 6)
+    raw = text.encode("utf-8", "surrogatepass")
+    if len(raw) > MOST_TEXT:
+        raise DraftError(f"a text of {len(raw):,} bytes is not stored: at most {MOST_TEXT // 2**20} MB are.")
+    blob = zlib.compress(raw, 6)
+    size = int(_need(db, key)["size"]) + len(blob)
+    if size > MOST_DRAFT:
+        raise DraftError(
+            f"this draft has reached {MOST_DRAFT // 2**20} MB with its history. Download the scenario and open it as a new one."
+        )
+    db.execute("UPDATE drafts SET size = ? WHERE id = ?", (size, key))
     db.execute(
         "INSERT INTO versions VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
         (key, number, base, when, note[:MOST_NOTE], int(good), int(aside), blob),

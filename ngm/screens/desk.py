@@ -24,6 +24,10 @@ def notices(told: str | None) -> None:
     if told:
         st.error(f"**Nothing was opened.** {plain(told)}")
     held = state.current()
+    if held.gone and held.now is None:
+        with st.container(border=True, key="gone"):
+            st.warning("**This draft was thrown away.** For 30 days it can be brought back, with all its versions.")
+            st.button("Bring it back", on_click=state.bring_back, key="gone.back")
     if held.trouble:
         st.error(
             f"**Your changes are not being stored:** {plain(held.trouble)} They are lost when this page is closed. "

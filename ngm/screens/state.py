@@ -22,8 +22,10 @@ __all__ = [
     "Version",
     "adopt",
     "arrive",
+    "bring_back",
     "bring_in",
     "current",
+    "discard",
     "edit",
     "open_text",
     "opened",
@@ -89,6 +91,8 @@ class AppState:
         Somebody else changed the draft first: theirs, and where ours is kept.
     trouble : str or None
         Why nothing can be stored at the moment.
+    gone : str or None
+        The draft that was thrown away last in this session, or that the address named: it can be brought back.
     forms, source : int
         Counters in the keys of widgets: they go up when the text was changed by something other than the tables and
         fields, or other than the text view, so that these start afresh from the text and not from what they held.
@@ -106,6 +110,7 @@ class AppState:
     before: tuple[str, ...] = ()
     conflict: Conflict | None = None
     trouble: str | None = None
+    gone: str | None = None
     forms: int = 0
     source: int = 0
     entries: tuple[tuple[str, str], ...] = ()
@@ -157,7 +162,10 @@ def arrive() -> str | None:
             state = _at(replace(state, forms=fresh, source=fresh), found)
             _put(state)
         elif told is None:
-            told = "There is no draft at this address here: it may be on another computer, or mistyped."
+            if state.gone == asked or _thrown_away(asked):
+                _put(state := replace(state, gone=asked))
+            else:
+                told = "There is no draft at this address here: it may be on another computer, or mistyped."
     elif state.now is not None and state.draft is None:
         _put(state := _kept(state, state.now))
     if state.draft is not None and asked != state.draft:
@@ -250,6 +258,42 @@ def bring_in(content: bytes) -> str | None:
     _put(_at(replace(_anew(state), before=before), found))
     _address()
     return None
+
+
+def discard() -> None:
+    """Throw the draft that is open away; nothing is open then, and `bring_back` undoes it."""
+    state = current()
+    if state.draft is None:
+        return
+    try:
+        store().discard(state.draft)
+    except DraftError as error:
+        _put(replace(state, trouble=error.problems[0].message))
+        return
+    _put(AppState(gone=state.draft, forms=state.forms + 1, source=state.source + 1))
+    st.query_params.clear()
+
+
+def bring_back() -> None:
+    """Open the draft again that was thrown away."""
+    state = current()
+    if state.gone is None:
+        return
+    try:
+        found = store().recover(state.gone)
+    except DraftError as error:
+        _put(replace(state, trouble=error.problems[0].message))
+        return
+    state = replace(_anew(state), gone=None)
+    _put(state if found is None else _at(state, found))
+    _address()
+
+
+def _thrown_away(key: str) -> bool:
+    try:
+        return store().discarded(key) is not None
+    except DraftError:
+        return False
 
 
 def remember(field: str, value: str) -> None:

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import json
+import random
 import sqlite3
 import stat
 import threading
+import zlib
 
 import pytest
 
@@ -21,6 +23,20 @@ def save(store, draft, text, **options):
     answer = store.save(draft.id, draft.rev, text, **options)
     assert isinstance(answer, Saved)
     return answer.draft
+
+
+def filled(store, draft, contents, said):
+    """Store texts until that is refused in these words; return the draft as it was before."""
+    for content in contents:
+        try:
+            draft = save(store, draft, content)
+        except DraftError as error:
+            refusal = str(error)
+            break
+    else:
+        refusal = ""
+    assert said in refusal
+    return draft
 
 
 def texts(store, key):
@@ -252,3 +268,58 @@ def test_the_place_follows_the_environment(monkeypatch, tmp_path):
     monkeypatch.delenv("NGM_DRAFTS")
     monkeypatch.setenv("XDG_DATA_HOME", str(tmp_path))
     assert place() == tmp_path / "ngm" / "drafts.sqlite"
+
+
+def test_what_was_thrown_away_can_be_brought_back_for_a_month(store, monkeypatch):
+    draft = save(store, store.create("one", "a.toml", owner="ada"), "two")
+    store.discard(draft.id)
+    assert store.get(draft.id) is None
+    assert store.of_owner("ada") == []
+    assert store.discarded(draft.id) is not None
+    with pytest.raises(DraftError, match="no draft"):
+        store.save(draft.id, draft.rev, "three")
+    store.create("other", "b.toml")  # what is thrown away is not taken out at once
+    back = store.recover(draft.id)
+    assert (back.text, back.head) == ("two", 2)
+    assert store.discarded(draft.id) is None
+    assert texts(store, draft.id) == ["two", "one"]
+    store.discard(draft.id)
+    monkeypatch.setattr("ngm.drafts.store.GRACE", -1.0)
+    store.create("other", "c.toml")
+    assert store.recover(draft.id) is None
+    assert store.recover("nowhere") is None
+
+
+def test_a_text_and_a_draft_have_their_limits(store, monkeypatch):
+    monkeypatch.setattr("ngm.drafts.store.MOST_TEXT", 1000)
+    monkeypatch.setattr("ngm.drafts.store.MOST_DRAFT", 60)
+    draft = store.create("one", "a.toml")
+    with pytest.raises(DraftError, match="1,001 bytes"):
+        store.save(draft.id, draft.rev, "x" * 1001)
+    draft = filled(store, draft, [f"text {k}" for k in range(30)], "has reached")
+    assert store.get(draft.id) == draft  # and what is there stays
+
+
+def test_a_full_store_says_so_and_keeps_what_it_has(store, monkeypatch):
+    draft = store.create("one", "a.toml")
+    monkeypatch.setenv("NGM_DRAFTS_MOST_MB", "1")
+    noise = random.Random(1).randbytes(400_000).hex()  # compresses to half at best
+    draft = filled(store, draft, [noise[k:] for k in range(20)], "NGM_DRAFTS_MOST_MB")
+    assert store.get(draft.id) == draft
+
+
+def test_a_store_of_the_first_schema_is_brought_up_to_date(store, tmp_path, monkeypatch):
+    with monkeypatch.context() as patch:
+        patch.setattr(schema, "MIGRATIONS", schema.MIGRATIONS[:1])
+        patch.setattr(schema, "SCHEMA", 1)
+        store.path.parent.mkdir(parents=True)
+        with sqlite3.connect(store.path) as db:
+            schema.migrate(db, store.path)
+            db.execute("INSERT INTO drafts VALUES ('k', 'a.toml', '', 'ada', 1.0, 2.0, 1, 1)")
+            blob = zlib.compress(b"old")
+            db.execute("INSERT INTO versions VALUES ('k', 1, NULL, 1.0, '', 1, 0, ?)", (blob,))
+            db.commit()
+    assert store.get("k").text == "old"
+    assert store.of_owner("ada") == [("k", "a.toml", 2.0)]
+    with sqlite3.connect(store.path) as db:
+        assert db.execute("SELECT size FROM drafts").fetchone() == (len(blob),)

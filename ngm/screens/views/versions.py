@@ -7,16 +7,14 @@ from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
 import streamlit as st
 
-from ngm.charts.style import short
 from ngm.drafts import DraftError, Listed
-from ngm.results import Matrix, Solution
-from ngm.screens import cache, desk, lines, parts, state
+from ngm.screens import comparing, parts, state
 from ngm.screens.parts import plain
 
-#: Versions listed; changed entries and changed places told.
+#: Versions listed.
 MOST_LISTED = 200
-MOST_ENTRIES = 40
-MOST_PLACES = 8
+
+WITH = ("an earlier version of this draft", "another draft or scenario")
 
 
 def told_time(seconds: float) -> str:
@@ -60,56 +58,6 @@ def choose(held: state.AppState, draft: str) -> int | None:
     )
 
 
-def results(then: Solution, now: Solution) -> None:
-    """Show two solutions side by side, and the entries of F, V and K that moved."""
-    write = parts.digits("versions")
-    quantities = (
-        ("R0", then.R0, now.R0),
-        ("R0 per cycle", then.per_cycle, now.per_cycle),
-        (f"growth rate, per {now.time_unit}", then.growth_rate, now.growth_rate),
-        (f"doubling time, {now.time_unit}s", then.doubling_time, now.doubling_time),
-    )
-    rows = [(name, write(a), write(b), _change(a, b)) for name, a, b in quantities]
-    if then.time_unit != now.time_unit:
-        st.caption(f"That version counts time in units of one {plain(then.time_unit)}.")
-    parts.table(["quantity", "that version", "now", "change"], rows)
-    moved: list[tuple[str, str, str, str]] = []
-    for name, a, b, first, second in (
-        ("F", then.F, now.F, then.types, now.types),
-        ("V", then.V, now.V, then.types, now.types),
-        ("K", then.K, now.K, then.types_at_infection, now.types_at_infection),
-    ):
-        old, new = _entries(a, first), _entries(b, second)
-        for row, column in dict.fromkeys([*old, *new]):
-            was, is_now = old.get((row, column)), new.get((row, column))
-            if was != is_now:
-                moved.append((f"{name}[{row}, {column}]", write(was), write(is_now), _change(was, is_now)))
-    if not moved:
-        st.caption("No entry of F, V or K moved.")
-        return
-    st.markdown("**Entries of F, V and K that moved**")
-    parts.table(["entry", "that version", "now", "change"], moved[:MOST_ENTRIES])
-    if len(moved) > MOST_ENTRIES:
-        st.caption(f"… and {len(moved) - MOST_ENTRIES} more.")
-
-
-def by_change(then: str, now: str, folder: str | None) -> None:
-    """Show what each changed place does to R0 alone, beginning from that version."""
-    places = lines.alone(then, now)
-    if len(places) < 2:
-        return
-    if len(places) > MOST_PLACES:
-        st.caption(f"{len(places)} places changed: too many to take one at a time.")
-        return
-    rows = []
-    for was, is_now, text in places:
-        outcome = cache.numbers(text, folder)
-        number = "no model with this change alone" if outcome.solution is None else short(outcome.solution.R0)
-        rows.append((was.strip() or "(nothing)", is_now.strip() or "(nothing)", number))
-    st.markdown("**R0 of that version with one change at a time**")
-    parts.table(["lines then", "lines now", "R0"], rows)
-
-
 def history(draft: str, name: str) -> None:
     """Place export and import of a draft with its versions."""
     st.subheader("Take a draft along")
@@ -150,6 +98,19 @@ def mine() -> None:
 
 def look(held: state.AppState, now: state.Version, draft: str) -> None:
     """Show one version beside the present one."""
+    chosen = st.radio(
+        "Compare with",
+        WITH,
+        index=WITH.index(state.recall("versions.with", WITH[0])),
+        key="versions.with",
+        horizontal=True,
+    )
+    state.remember("versions.with", chosen)
+    if chosen != WITH[0]:
+        other = comparing.another(held)
+        if other is not None:
+            comparing.show(other, now)
+        return
     number = choose(held, draft)
     if number is None:
         return
@@ -163,16 +124,20 @@ def look(held: state.AppState, now: state.Version, draft: str) -> None:
     if note and second.button("Keep this note", key="versions.annotate"):
         state.store().annotate(draft, number, note)
         st.rerun()
-    st.subheader("What changed since")
-    desk.show_difference(then, now.text, f"of version {number}", "of the present one")
-    st.subheader("What it did to the results")
-    old, new = cache.numbers(then, now.folder), cache.numbers(now.text, now.folder)
-    if old.solution is None or new.solution is None:
-        which = "Version " + str(number) if old.solution is None else "The present version"
-        st.info(f"{which} has problems, so there is nothing to compare.")
+    comparing.show(comparing.Other(then, now.folder, f"version {number}"), now)
+
+
+def throw_away(held: state.AppState, draft: str) -> None:
+    """Place the way to throw the draft away: its owner's, or anybody's where it has none."""
+    found = state.store().get(draft)
+    if found is None or found.owner not in ("", state.owner()):
         return
-    results(old.solution, new.solution)
-    by_change(then, now.text, now.folder)
+    st.subheader("Throw this draft away")
+    sure = st.checkbox("Yes, throw it away with all its versions", key=f"versions.sure.{draft}")
+    st.button("Throw away", key="versions.discard", disabled=not sure, on_click=state.discard)
+    st.caption(
+        "It can be brought back for 30 days, at its address or right after. Whoever has the address loses it too."
+    )
 
 
 def page() -> None:
@@ -195,24 +160,9 @@ def page() -> None:
         look(held, held.now, held.draft)
         history(held.draft, held.now.name)
         mine()
+        throw_away(held, held.draft)
     except DraftError as error:
         parts.problem_box(error.problems, "with the store of drafts")
-
-
-def _entries(matrix: Matrix | None, types: tuple[str, ...]) -> dict[tuple[str, str], float]:
-    if matrix is None:
-        return {}
-    return {
-        (row, column): value
-        for row, values in zip(types, matrix, strict=True)
-        for column, value in zip(types, values, strict=True)
-    }
-
-
-def _change(was: float | None, now: float | None) -> str:
-    if was is None or now is None or was == 0:
-        return "–"
-    return "none" if was == now else f"{100 * (now - was) / abs(was):+.3g} %"
 
 
 page()
