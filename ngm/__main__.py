@@ -13,7 +13,9 @@ import sys
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from ngm.errors import NgmError, Problem, ScenarioError
+from ngm.console_draws import add_assurance_options, add_sensitivity_options, assured, assured_text
+from ngm.console_draws import sensitivity as run_sensitivity
+from ngm.errors import NgmError, Problem, ScenarioError, printable
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
@@ -78,15 +80,7 @@ def _parser() -> argparse.ArgumentParser:
                 help="an entry of K; given more than once: the number of acting on all of them together",
             )
         if verb == "sensitivity":
-            sub.add_argument(
-                "--draws", metavar="N", type=int, help="also draw the parameters N times from their distributions"
-            )
-            sub.add_argument(
-                "--seed", metavar="K", type=int, default=0, help="of the draws; the same seed, the same numbers"
-            )
-            sub.add_argument(
-                "--from", dest="draw_file", metavar="TABLE", help="take joint draws from a CSV or Parquet file"
-            )
+            add_sensitivity_options(sub)
         if verb == "report":
             from ngm.console_report import add_options
 
@@ -132,6 +126,8 @@ def _needs_options(sub: argparse.ArgumentParser, verb: str) -> None:
     several("--groups", "G", "groups of hosts, or types at infection; all where left out")
     each = "one number for all groups or G=NUMBER for each"
     several("--efficacy", "E", f"efficacy against infection, 0 to 1: {each}; 1 where left out", default=["1"])
+    if verb in ("strength", "coverage"):
+        add_assurance_options(sub)
     several("--against-spread", "S", f"efficacy against onward spread, 0 to 1: {each}; 0 where left out", default=["0"])
     if verb == "coverage":
         sub.add_argument("--kind", choices=["leaky", "all-or-nothing"], default="leaky", help="of vaccine")
@@ -233,10 +229,7 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
         case "control":
             result = ngm.control(scenario, by=options.by, entries=_entries(options.entries))
         case "sensitivity":
-            draws = options.draws
-            if options.draw_file is not None:
-                draws = ngm.read_draws(scenario, options.draw_file)
-            result = ngm.sensitivity(scenario, draws=draws, seed=options.seed)
+            result = run_sensitivity(options, scenario)
         case "calibrate":
             result = ngm.calibrate(scenario, options.parameter, options.R0, growth_rate=options.growth_rate)
         case _:
@@ -304,9 +297,11 @@ def _needs(options: argparse.Namespace, scenario: Scenario) -> str:
                 intervention=besides,
             )
     if options.json:
-        return json.dumps({**result.to_json(), "in_force": list(options.besides)}, ensure_ascii=False)
-    return needs_text(result, options.besides)
+        told = {**result.to_json(), "in_force": list(options.besides)}
+        return json.dumps(told if over is None else {**told, "assured": over.to_json()}, ensure_ascii=False)
+    return needs_text(result, options.besides, () if over is None else assured_text(over))
 
 
 if __name__ == "__main__":
     sys.exit(main())
+    over = None if options.verb == "allocate" else assured(options, scenario, target)

@@ -6,7 +6,8 @@ from collections.abc import Sequence
 
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Compared, Comparison
-from ngm.results_sensitivity import Calibration, Sensitivity, Uncertainty
+from ngm.results_season import Seasonal
+from ngm.results_sensitivity import Calibration, Sensitivity
 
 __all__ = ["CAUTION", "closing", "compare_text", "control_text", "figure", "solve_text", "squeezed", "table"]
 
@@ -295,66 +296,6 @@ def _mixes(result: Comparison) -> list[str]:
     return ["", "Share of new infections", *table(rows, ["", *result.types])]
 
 
-def sensitivity_text(result: Sensitivity) -> str:
-    """Return the local indices of `ngm.sensitivity` as text, largest first."""
-    unit = result.time_unit
-    lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
-    lines.append("No R0" if result.R0 is None else f"R0 = {figure(result.R0)}")
-    lines.append(f"growth rate r = {figure(result.growth_rate)} per {unit}")
-    lines.append("An elasticity e: 1 % more of the parameter moves the number by e %, all others held.")
-    order = sorted(result.local, key=lambda index: -abs(index.elasticity or 0.0))
-    rows = [
-        [
-            index.parameter,
-            figure(index.value),
-            figure(index.elasticity),
-            figure(index.derivative),
-            figure(index.growth_elasticity),
-        ]
-        for index in order[:80]
-    ]
-    lines += ["", *table(rows, ["parameter", "value", "elasticity of R0", "dR0/dp", "elasticity of r"])]
-    if len(order) > 80:
-        lines.append(f"  … and {len(order) - 80} more; use --json.")
-    names = result.types_at_infection
-    if result.entry_elasticity is not None and len(names) <= MOST_PRINTED:
-        lines += ["", "Elasticity of R0 by entry of K (they add up to 1)"]
-        rows = [[name, *(figure(v) for v in row)] for name, row in zip(names, result.entry_elasticity, strict=True)]
-        lines += table(rows, ["", *names])
-    if result.uncertainty is not None:
-        lines += _uncertainty(result.uncertainty)
-    lines += closing(result.warnings)
-    return squeezed(lines)
-
-
-def _uncertainty(result: Uncertainty) -> list[str]:
-    """Return what the draws say."""
-    told = result.R0
-    seed = "" if result.seed is None else f", seed {result.seed}"
-    lines = ["", f"Draws: {result.how}{seed}; {told.rejected:,} of {told.draws:,} without an R0"]
-    if told.quantiles is not None:
-        quantiles = ", ".join(f"{100 * float(level):g} %: {figure(value)}" for level, value in told.quantiles.items())
-        lines += [f"  R0: mean {figure(told.mean)}, sd {figure(told.sd)}; quantiles {quantiles}"]
-        lines += [f"  share of draws with R0 > 1: {figure(told.above_one)}"]
-    rows = []
-    for driver in sorted(result.drivers, key=lambda d: -abs(d.total if d.total is not None else d.prcc or 0.0)):
-        monotone = "-" if driver.monotone is None else "yes" if driver.monotone else "NO"
-        rows.append([driver.parameter, figure(driver.prcc), monotone, figure(driver.first), figure(driver.total)])
-    lines += ["", *table(rows, ["parameter", "PRCC", "one direction", "Sobol first", "Sobol total"])]
-    if result.interventions:
-        shares = [[a.intervention, figure(a.figures.mean), figure(a.below_one)] for a in result.interventions]
-        lines += ["", *table(shares, ["intervention", "mean control number", "share of draws below 1"])]
-    return lines
-
-
-def calibrate_text(result: Calibration) -> str:
-    """Return the value found by `ngm.calibrate` as text."""
-    R0 = "no R0" if result.R0 is None else f"R0 = {result.R0:g}"
-    rate = "" if result.growth_rate is None else f"a growth rate of {result.growth_rate:g}, and "
-    lines = [f"{result.parameter} = {result.value!r} gives {rate}{R0}."]
-    return squeezed([*lines, *closing(result.warnings)])
-
-
 def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Calibration) -> str:
     """Return any result as text."""
     match result:
@@ -377,8 +318,12 @@ def closing(warnings: Sequence[str], caution: str = CAUTION) -> list[str]:
         lines += ["", "Warnings", *(f"  ! {warning}" for warning in warnings)]
     return [*lines, "", caution]
 
+            from ngm.console_sensitivity import sensitivity_text
+
 
 def _is_number(text: str) -> bool:
+            from ngm.console_sensitivity import calibrate_text
+
     try:
         float(text)
     except ValueError:

@@ -14,28 +14,28 @@ __all__ = ["allocation_text", "coverage_text", "needs_text", "strength_text"]
 MOST_GROUPS = 40
 
 
-def needs_text(result: Strength | Coverage | Allocation, besides: Sequence[str] = ()) -> str:
-    """Return one of the three as text. `besides`: the interventions in force with it."""
+def needs_text(result: Strength | Coverage | Allocation, besides: Sequence[str] = (), more: Sequence[str] = ()) -> str:
+    """Return one of the three as text. `besides`: the interventions in force with it; `more`: lines that follow it."""
     match result:
         case Strength():
-            return strength_text(result, besides)
+            return strength_text(result, besides, more)
         case Coverage():
-            return coverage_text(result, besides)
+            return coverage_text(result, besides, more)
         case Allocation():
             return allocation_text(result, besides)
 
 
-def strength_text(result: Strength, besides: Sequence[str] = ()) -> str:
+def strength_text(result: Strength, besides: Sequence[str] = (), more: Sequence[str] = ()) -> str:
     """Return the result of `ngm.strength_needed` as text."""
     lines = [*_heading(result.title, result.R0, besides), strength_words(result), ""]
     lines += [f"Strength of {result.name}, from 0 (not there) to 1 (as the file has it)"]
     step = max(1, (len(result.curve) - 1) // 10)
     rows = [[figure(x), "none" if value is None else figure(value)] for x, value in result.curve[::step]]
     lines += table(rows, ["strength", result.label])
-    return squeezed([*lines, *closing(result.warnings)])
+    return squeezed([*lines, *more, *closing(result.warnings)])
 
 
-def coverage_text(result: Coverage, besides: Sequence[str] = ()) -> str:
+def coverage_text(result: Coverage, besides: Sequence[str] = (), more: Sequence[str] = ()) -> str:
     """Return the result of `ngm.coverage_needed` as text."""
     lines = [*_heading(result.title, result.R0, besides), coverage_words(result), ""]
     effects = dict.fromkeys(result.efficacies)
@@ -56,7 +56,7 @@ def coverage_text(result: Coverage, besides: Sequence[str] = ()) -> str:
     if result.required is not None and result.coverage is None:
         lines.append(f"coverage that would be needed = {figure(result.required)}")
     lines.append(f"{result.label}, all of them vaccinated = {figure(result.at_full)}")
-    return squeezed([*lines, *closing(result.warnings)])
+    return squeezed([*lines, *more, *closing(result.warnings)])
 
 
 def allocation_text(result: Allocation, besides: Sequence[str] = ()) -> str:

@@ -47,6 +47,10 @@ class LocalIndex:
         dR0/dp, by the parameter's own unit, and (p/R0) dR0/dp.
     growth_derivative, growth_elasticity : float or None
         The same of the growth rate r; the elasticity is (p/r) dr/dp, None where r is 0.
+    formula, elasticity_formula : str or None
+        dR0/dp and (p/R0) dR0/dp in the expression syntax, every name as converted to the scenario's units; None where R0 has
+        no closed form. `derivative` is the first times `factor`, the parameter's own unit in these.
+    factor : float
     """
 
     parameter: str
@@ -55,6 +59,9 @@ class LocalIndex:
     elasticity: float | None
     growth_derivative: float | None
     growth_elasticity: float | None
+    formula: str | None = None
+    elasticity_formula: str | None = None
+    factor: float = 1.0
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -75,6 +82,11 @@ class Sensitivity:
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `sensitivity --json` prints."""
+        formulas = [
+            {"parameter": i.parameter, "derivative": i.formula, "elasticity": i.elasticity_formula, "factor": i.factor}
+            for i in self.local
+            if i.formula is not None
+        ]
         return {
             "local": [
                 {"parameter": i.parameter, "derivative": i.derivative, "elasticity": i.elasticity} for i in self.local
@@ -85,6 +97,7 @@ class Sensitivity:
             },
             "global": None if self.uncertainty is None else self.uncertainty.to_json(),
             **({} if self.uncertainty is None else self.uncertainty.more_json()),
+            **({"formulas": formulas} if formulas else {}),
             "warnings": list(self.warnings),
         }
 

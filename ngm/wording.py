@@ -6,8 +6,9 @@ import math
 from collections.abc import Callable, Sequence
 
 from ngm.results_control import Allocation, Coverage, Strength
+from ngm.results_draws import Assured
 
-__all__ = ["allocation_words", "coverage_words", "figure", "share", "strength_words", "whole"]
+__all__ = ["allocation_words", "assured_words", "coverage_words", "figure", "share", "strength_words", "whole"]
 
 
 def figure(value: float | None) -> str:
@@ -95,6 +96,20 @@ def allocation_words(result: Allocation) -> list[str]:
             f"{_rounded(smallest.supply, math.ceil)}.{bound}"
         )
     return out
+
+
+def assured_words(result: Assured) -> str:
+    """Return what is enough in the wanted share of the draws, beside what would do at the scenario's own values."""
+    wanted = f"in {share(result.assurance)} of the draws"
+    if result.needed is None:
+        out = result.why or f"No {result.what} brings the number below {result.target:g} {wanted}."
+        return f"{out} Wanted: {share(result.assurance)}."
+    if result.needed == 0:
+        return f"The number is below {result.target:g} {wanted} or more without any of it."
+    out = f"A {result.what} of {share(result.needed)} brings the number below {result.target:g} {wanted}."
+    if result.at_values is None:
+        return f"{out} At the scenario's own values not even all of it does."
+    return f"{out} At the scenario's own values {share(result.at_values)} would do."
 
 
 def _rounded(value: float, to: Callable[[float], int]) -> str:

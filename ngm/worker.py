@@ -25,7 +25,7 @@ from ngm.expression.tree import Node
 from ngm.results import Symbolic
 from ngm.scenario.model import Scenario
 
-__all__ = ["LIMIT", "Stop", "WorkerFailed", "identical", "stoppable", "symbols", "warm"]
+__all__ = ["LIMIT", "Stop", "WorkerFailed", "identical", "slope_forms", "stoppable", "symbols", "warm"]
 
 #: Seconds for the symbols of one scenario.
 LIMIT = 10.0
@@ -186,6 +186,28 @@ def identical(
     return answer is True
 
 
+def slope_forms(
+    formula: Node,
+    meanings: Mapping[str, Node],
+    wanted: Sequence[str],
+    values: Mapping[str, float],
+    any_sign: Sequence[str] = (),
+    limit: float = LIMIT,
+) -> dict[str, tuple[str, str]]:
+    """Return `ngm.derivation.slope_forms.slope_forms` of the same arguments, computed in a child within `limit` seconds.
+
+    Raises
+    ------
+    WorkerFailed
+        As for `symbols`.
+    """
+    asked = (formula, dict(meanings), tuple(wanted), dict(values), tuple(any_sign))
+    answer = _asked("slope_forms", asked, {}, limit)
+    if isinstance(answer, dict):
+        return answer
+    raise WorkerFailed(str(answer))
+
+
 def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], limit: float) -> Any:
     """Return what a child answers; text where the job failed."""
     with _lock:
@@ -239,10 +261,11 @@ def serve() -> None:
     with contextlib.suppress(OSError, AttributeError):
         os.nice(5)
     from ngm.derivation.identity import identical as proven
+    from ngm.derivation.slope_forms import slope_forms as slopes
     from ngm.derivation.symbols import derive_symbols
     from ngm.errors import NgmError
 
-    jobs: dict[str, Callable[..., object]] = {"symbols": derive_symbols, "identical": proven}
+    jobs: dict[str, Callable[..., object]] = {"symbols": derive_symbols, "identical": proven, "slope_forms": slopes}
     while True:
         try:
             job, arguments, options = _receive(sys.stdin.buffer)

@@ -93,13 +93,24 @@ MAY_IMPORT: dict[str, set[str]] = {
         "spreadsheet",
         "results_draws",
     },
-    "console": {"errors", "results", "results_control", "results_season", "results_sensitivity", "results_draws"},
+    "console": {
+        "errors",
+        "results",
+        "results_control",
+        "results_season",
+        "results_sensitivity",
+        "results_draws",
+        "console_sensitivity",
+    },
     "console_course": {"console", "results_course", "results_season"},
     "console_opinion": {"console", "results_opinion"},
     "console_report": {"ngm", "errors", "typed", "reporting"},
     "console_control": {"console", "results_control", "wording", "results_draws"},
+    "console_outbreak": {"console", "errors", "results_outbreak", "typed"},
     "__main__": {
         "ngm",
+    "console_draws": {"ngm", "errors", "results_draws", "results_sensitivity", "typed", "wording"},
+    "console_sensitivity": {"console", "results_draws", "results_sensitivity"},
         "errors",
         "results",
         "results_control",
@@ -118,6 +129,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     "__init__": {"errors", "results", "scenario", "analysis", "reporting"},
 }
 
+        "console_draws",
 #: modules of a layer that the layer's own rule leaves out
 NOT_FOR: dict[str, set[str]] = {"scenario": {"expression.symbolic"}}
 

@@ -17,6 +17,7 @@ import numpy as np
 
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_EXACT
+from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import nearest, precision, to_floats
 from ngm.errors import DerivationError, NgmError, Problem
 from ngm.expression.tree import Add, Number
@@ -30,14 +31,26 @@ BITS = 400
 STEP = Fraction(1, 2**120)
 #: Rows (parameters times groups) up to which local indices are worked out for models past `MOST_EXACT` types.
 MOST_LARGE_ROWS = 60
+#: Types up to which a closed form is looked for, to be differentiated.
+MOST_FOR_FORMULAS = 12
+#: Seconds for the closed form that formulas are made from.
+FORMULA_LIMIT = 4.0
 LARGE_STEP = Fraction(1, 10**5)
 
 
-def sensitivity(scenario: Scenario, *, draws: int | Mapping[str, Any] | None = None, seed: int = 0) -> Sensitivity:
+def sensitivity(
+    scenario: Scenario,
+    *,
+    draws: int | Mapping[str, Any] | None = None,
+    seed: int = 0,
+    formulas: bool | str = False,
+    **more: Any,
+) -> Sensitivity:
     """Return local indices of every parameter given as a number, and those of the entries of K.
 
     With `draws`, a number of draws or the draws themselves, also what the spread of the parameters does to R0
-    (`ngm.uncertainty`).
+    (`ngm.uncertainty`, which gets `seed` and the other keywords). With `formulas`, derivative and elasticity as formulas too
+    where R0 has a closed form: True derives it, a text is it.
 
     dR0/dp and (p/R0) dR0/dp, of the growth rate too; of an entry K[i, j]: v_i w_j / (v.w), v and w the left and right
     Perron vectors, and that times K[i, j]/R0.
@@ -52,6 +65,7 @@ def sensitivity(scenario: Scenario, *, draws: int | Mapping[str, Any] | None = N
     Caswell (2001) Matrix Population Models, chapter 9; Chitnis, Hyman & Cushing (2008) Bull. Math. Biol. 70:1272-1296
     (both from memory)
     """
+    refuse_season(scenario, "sensitivity")
     found = decided_numbers(scenario)
     warnings = [*scenario.warnings, *found.point.infection_free.warnings]
     with precision(found.bits):
@@ -61,11 +75,16 @@ def sensitivity(scenario: Scenario, *, draws: int | Mapping[str, Any] | None = N
     if why is not None:
         warnings.append(why)
     local = local_indices(scenario, found, warnings) if why is None else _empty(scenario)
+    if formulas and R0 is not None and why is None and len(found.template.types) <= MOST_FOR_FORMULAS:
+        from ngm.analysis.slopes import with_formulas
+
+        closed = _closed_form(scenario) if formulas is True else formulas
+        local = local if closed is None else with_formulas(scenario, local, closed, R0)
     spread = None
     if draws is not None:
         from ngm.analysis.uncertainty import uncertainty
 
-        spread = uncertainty(scenario, draws, seed=seed)
+        spread = uncertainty(scenario, draws, seed=seed, **more)
         warnings += spread.warnings
     return Sensitivity(
         title=scenario.title,
@@ -80,6 +99,12 @@ def sensitivity(scenario: Scenario, *, draws: int | Mapping[str, Any] | None = N
         warnings=tuple(dict.fromkeys(warnings)),
         uncertainty=spread,
     )
+
+
+def _closed_form(scenario: Scenario) -> str | None:
+    from ngm.analysis.solve import solve
+
+    return solve(scenario, limit=FORMULA_LIMIT).closed_form
 
 
 def _root_with_slope(found: Numbers) -> tuple[float | None, str | None]:
