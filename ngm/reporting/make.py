@@ -184,8 +184,10 @@ def compose(
     if shared is None and "allocation" in wanted:
         if supply is not None:
             shared = ngm.allocate(scenario, supply, **(sharing or {}))
+        elif sharing:
+            shared = _least_supply(scenario, solution, sharing, said)
         else:
-            shared = said.tried("allocation", lambda: _least_supply(scenario, solution, sharing or {}, said))
+            shared = said.tried("allocation", lambda: _least_supply(scenario, solution, {}, said))
     material = Material(
         scenario=scenario,
         solution=solution,

@@ -12,7 +12,7 @@ from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 from ngm.screens import parts, shelf, state
 from ngm.screens.parts import Shown, plain
 
-__all__ = ["formula_panel", "splits_panel", "units_panel", "versions_panel"]
+__all__ = ["formula_panel", "other_version", "splits_panel", "units_panel", "versions_panel"]
 
 Problems = tuple[Problem, ...]
 Write = Callable[[float | None], str]
@@ -177,24 +177,29 @@ def formula_panel(shown: Shown, write: Write) -> None:
         )
 
 
-def versions_panel(shown: Shown, write: Write) -> None:
-    """Compare the scenario with what it was, or with one that comes with the app."""
-    st.header("Two models")
+def other_version(field: str, label: str) -> tuple[str, str | None] | None:
+    """Ask for what the scenario was some edits ago, or one that comes with the app; return its text and folder, or None."""
     past = state.current().past
     before = {
         f"this scenario, {k} edits ago" if k > 1 else "this scenario before the last edit": past[-k]
         for k in range(1, len(past) + 1)
     }
     options = ["none", *before, *shelf.names()]
-    held = state.recall("second_opinion.other", "none")
-    name = st.selectbox(
-        "Compare with", options, index=options.index(held) if held in options else 0, key="second_opinion.other"
-    )
-    state.remember("second_opinion.other", name)
+    held = state.recall(field, "none")
+    name = st.selectbox(label, options, index=options.index(held) if held in options else 0, key=field)
+    state.remember(field, name)
     if name == "none":
+        return None
+    return (before[name].text, before[name].folder) if name in before else shelf.read(name)
+
+
+def versions_panel(shown: Shown, write: Write) -> None:
+    """Compare the scenario with what it was, or with one that comes with the app."""
+    st.header("Two models")
+    other = other_version("second_opinion.other", "Compare with")
+    if other is None:
         return
-    text, folder = (before[name].text, before[name].folder) if name in before else shelf.read(name)
-    found = difference(shown.text, shown.folder, text, folder)
+    found = difference(shown.text, shown.folder, *other)
     if not isinstance(found, Difference):
         parts.problem_box(found, "with the comparison")
         return

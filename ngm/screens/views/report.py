@@ -10,48 +10,8 @@ import streamlit as st
 
 from ngm.reporting.forms import FORMS
 from ngm.reporting.make import Report
-from ngm.reporting.narrative import SECTIONS
-from ngm.screens import forms, parts, report_cache, state
-from ngm.screens.forms import Edit
+from ngm.screens import parts, report_cache, report_choices, state
 from ngm.screens.parts import Shown
-
-#: Field of `[report]` -> what it is called on the page.
-WORDS = {
-    "question": "Question",
-    "place": "Place",
-    "date": "Date",
-    "author": "Author",
-    "reviewer": "Reviewer",
-    "reviewed_on": "Reviewed on",
-}
-
-
-def words() -> None:
-    """Place the fields that the report begins with, and put what is typed there into the scenario."""
-    now = state.current().now
-    document = forms.document(now.text) if now is not None else None
-    if now is None or document is None:
-        return
-    section = document.get("report")
-    held = section if isinstance(section, dict) else {}
-    edits: list[Edit] = []
-    with st.expander("Question, place, date and people", expanded=not held):
-        for field, label in WORDS.items():
-            before = forms.shown(held.get(field), "text")
-            after = st.text_input(label, value=before, key=f"report.{field}.{state.current().forms}")
-            edits += forms.field_edit("report", field, before, after)
-    state.edit(parts.applied(now.text, edits))
-
-
-def choice() -> tuple[str, ...]:
-    """Place the choice of parts; return those left out."""
-    known = [key for key in SECTIONS if key != "checklist"]
-    held = [key for key in state.recall("report.without").split() if key in known]
-    chosen = st.multiselect(
-        "Parts to leave out", known, default=held, format_func=lambda key: SECTIONS[key], key="report.without"
-    )
-    state.remember("report.without", " ".join(chosen))
-    return tuple(chosen)
 
 
 def downloads(made: Report, name: str) -> None:
@@ -96,8 +56,11 @@ def content(made: Report, ending: str, name: str) -> Callable[[], bytes]:
 
 def show(shown: Shown) -> None:
     """Place the choice, the downloads and the preview."""
-    without = choice()
-    made = report_cache.compose(shown.text, shown.folder, without)
+    without = report_choices.left_out()
+    asked = report_choices.asked()
+    if asked is None:
+        return
+    made = report_cache.compose(shown.text, shown.folder, without, asked)
     if not isinstance(made, Report):
         parts.problem_box(made, "that keep the report from being written")
         return
@@ -109,14 +72,14 @@ def show(shown: Shown) -> None:
     downloads(made, name or "report")
     st.subheader("Preview")
     if parts.switch("Show the preview", "report.preview"):
-        st.iframe(report_cache.page(shown.text, shown.folder, without), height=900, alt="The report")
+        st.iframe(report_cache.page(shown.text, shown.folder, without, asked), height=900, alt="The report")
 
 
 def page() -> None:
     """Show the page."""
     st.title("Report")
     st.markdown("The derivation, ready to hand in: every number in it is one of those on the other pages.")
-    words()
+    report_choices.words()
     shown = parts.results()
     if shown is not None:
         parts.headline(shown.solution)
