@@ -87,6 +87,7 @@ MAY_IMPORT: dict[str, set[str]] = {
         "scenario.edit",
         "scenario.examine",
         "scenario.file",
+        "scenario.renaming",
         "expression.typeset",
         "worker",
         "progress",

@@ -11,7 +11,9 @@ from dataclasses import dataclass
 from difflib import SequenceMatcher
 from typing import Any, Literal
 
+from ngm.errors import ScenarioError
 from ngm.scenario import edit
+from ngm.scenario.renaming import NAMED, rename_everywhere
 from ngm.screens.cells import CellKind, Typed, document, shown, typed
 
 __all__ = [
@@ -187,9 +189,12 @@ TABLES: Mapping[str, Table] = {
 
 @dataclass(frozen=True, slots=True)
 class Edit:
-    """One edit of the document: set, delete or rename what is at `path`, append to the list there, or insert before it."""
+    """One edit of the document: set, delete or rename what is at `path`, append to the list there, or insert before it.
 
-    action: Literal["set", "delete", "rename", "append", "insert"]
+    `follow`: rename, and every use of the name with it; where that cannot be (the new name is taken), the key alone.
+    """
+
+    action: Literal["set", "delete", "rename", "follow", "append", "insert"]
     path: Path
     value: Any = None
 
@@ -268,6 +273,11 @@ def apply(text: str, changes: Sequence[Edit]) -> str:
             text = edit.delete(text, change.path)
         elif change.action == "rename":
             text = edit.rename(text, change.path, change.value)
+        elif change.action == "follow":
+            try:
+                text = rename_everywhere(text, str(change.path[-1]), change.value)
+            except ScenarioError:
+                text = edit.rename(text, change.path, change.value)
         elif change.action == "insert":
             text = edit.insert(text, change.path, change.value)
         else:
@@ -380,7 +390,9 @@ def _new_row(table: Table, row: Row) -> list[Edit]:
 def _changed_row(table: Table, place: str | int, before: Row, after: Row) -> list[Edit]:
     out: list[Edit] = []
     if table.shape != "list" and before[0] != after[0]:
-        out.append(Edit("rename", (table.section, place), after[0]))
+        # With other cells changed too it is another thing that came in its place.
+        follow = table.section in NAMED and before[1:] == after[1:] and NAMELESS not in (before[0], after[0])
+        out.append(Edit("follow" if follow else "rename", (table.section, place), after[0]))
         place = after[0]
     first = 0 if table.shape == "list" else 1
     for column, old, new in list(zip(table.columns, before, after, strict=True))[first:]:

@@ -40,6 +40,23 @@ label = "Recovery"
 """
 
 
+def test_a_new_name_goes_wherever_the_old_one_stood():
+    changed = forms.apply(TEXT, [Edit("follow", ("compartments", "I"), "J")])
+    assert 'N = "S + J"' in changed
+    assert 'rate = "beta*S*J/N"' in changed
+    assert 'from = "J"' in changed
+    # the name is taken: the key alone is renamed, and the reader says what is wrong
+    assert forms.apply(TEXT, [Edit("follow", ("parameters", "beta"), "N")]) == TEXT.replace("beta = {", "N = {")
+    assert forms.apply(TEXT, [Edit("follow", ("parameters", "beta"), "gamma")]) == TEXT.replace("beta = {", "gamma = {")
+
+
+def test_a_row_in_place_of_another_is_no_new_name(document):
+    table = TABLES["parameters"]
+    before = forms.rows(table, document)
+    other = [("rho", "1", *before[0][2:]), *before[1:]]
+    assert [change.action for change in forms.edits(table, before, other, document)] == ["rename", "set"]
+
+
 @pytest.fixture
 def document():
     return forms.document(TEXT)
@@ -109,7 +126,7 @@ def test_a_new_name_renames_and_a_row_deleted_above_keeps_the_places(document):
     table = TABLES["compartments"]
     before = forms.rows(table, document)
     renamed = [before[0], ("J", *before[1][1:])]
-    assert forms.edits(table, before, renamed, document) == [Edit("rename", ("compartments", "I"), "J")]
+    assert forms.edits(table, before, renamed, document) == [Edit("follow", ("compartments", "I"), "J")]
     assert forms.edits(table, before, before[1:], document) == [Edit("delete", ("compartments", "S"))]
 
 

@@ -14,8 +14,14 @@ from ngm.screens import cache, editors, finding, forms, parts, pasting, sketch, 
 from ngm.screens.forms import TABLES, Edit
 
 WORDS = {
-    "compartments": "The stages of the course of infection, in matrix order. The last, empty row adds one.",
-    "parameters": "Values are typed as text: 0.4, 1e-3, 1/7, or an expression in other parameters.",
+    "compartments": (
+        "The stages of the course of infection, in matrix order. The last, empty row adds one. "
+        "A new name goes wherever the old one stood."
+    ),
+    "parameters": (
+        "Values are typed as text: 0.4, 1e-3, 1/7, or an expression in other parameters. "
+        "A new name goes wherever the old one stood."
+    ),
     "definitions": "Abbreviations, usable in every expression: N for S + I + R.",
     "flow": "One row an arrow. The rate is the whole rate, not the rate per head: gamma * I.",
     "infection_free": "Optional: what is left out is solved for. A population without births needs it.",
@@ -93,6 +99,9 @@ def page() -> None:
         with st.expander("Groups, matrices and movements", expanded=any(document.get(name) for name in GROUPED)):
             edits += tables(GROUPED, document, boxes)
     text = parts.applied(now.text, edits)
+    if any(edit.action == "follow" for edit in edits):
+        state.edit(text, by_source=True)  # other tables show the new name too
+        st.rerun()
     state.edit(text)
     outcome = cache.solve(text, now.folder)
     rest = sort_out(outcome.problems, boxes)
