@@ -179,7 +179,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except NgmError as error:
         print(error, file=sys.stderr)
         return 2
-    if options.json and "utf" not in (sys.stdout.encoding or "utf").lower():
+    if not options.json:
+        text = printable(text)
+    elif "utf" not in (sys.stdout.encoding or "utf").lower() or printable(text) != text:
         text = json.dumps(json.loads(text))  # letters beyond ASCII escaped
     try:
         print(text)

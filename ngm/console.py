@@ -29,10 +29,11 @@ def figure(value: float | None) -> str:
 
 
 def table(rows: Sequence[Sequence[str]], head: Sequence[str]) -> list[str]:
-    """Return lines of right-aligned columns, the first one left-aligned."""
-    widths = [max(len(row[k]) for row in [head, *rows]) for k in range(len(head))]
+    """Return lines of right-aligned columns, the first one left-aligned; a name of several lines goes on one."""
+    rows = [[cell.replace("\n", " ") for cell in row] for row in [head, *rows]]
+    widths = [max(len(row[k]) for row in rows) for k in range(len(head))]
     lines = []
-    for row in [head, *rows]:
+    for row in rows:
         cells = [row[0].ljust(widths[0]), *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True))]
         lines.append("  " + "  ".join(cells).rstrip())
     return lines

@@ -12,10 +12,11 @@ Every one of them means that the input is wrong: a mistake of the program itself
 
 from __future__ import annotations
 
+import unicodedata
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-__all__ = ["DerivationError", "ExpressionError", "NgmError", "Problem", "ScenarioError"]
+__all__ = ["DerivationError", "ExpressionError", "NgmError", "Problem", "ScenarioError", "printable"]
 
 #: How many problems one message lists, and how long it may be: the command line's contract.
 MOST_LISTED = 10
@@ -63,13 +64,30 @@ def excerpt(text: str, position: int, width: int = 72) -> tuple[str, str]:
     line = text[start : stop if stop >= 0 else len(text)]
     column = position - start
     left = max(0, column - width // 2) if len(line) > width else 0
-    # Only what can be printed goes to a terminal: each other character is shown as one box, so the caret stays in place.
-    shown = "".join(
-        c if c.isprintable() else " " if c == "\t" else "\N{REPLACEMENT CHARACTER}" for c in line[left : left + width]
-    )
+    shown = printable(line[left : left + width].replace("\t", " "))
     lead = "…" if left else ""
     tail = "…" if left + width < len(line) else ""
     return lead + shown + tail, " " * (len(lead) + column - left) + "^"
+
+
+def printable(text: str) -> str:
+    r"""Return text as it may go to a terminal or a page: each sign that steers one (control, direction) as one box.
+
+    Lines stay lines. A title could else clear the screen, or turn round the numbers that stand beside it.
+
+    Examples
+    --------
+    >>> printable("a\x1b[31m β")
+    'a�[31m β'
+    """
+    if text.replace("\n", "").isprintable():
+        return text
+    return "".join("\N{REPLACEMENT CHARACTER}" if _steers(c) else c for c in text)
+
+
+def _steers(sign: str) -> bool:
+    # joiners are letters' own: words of some scripts and some pictures need them
+    return sign not in "\n\u200c\u200d" and (unicodedata.category(sign)[0] == "C" or sign in "\u2028\u2029")
 
 
 class NgmError(Exception):
@@ -97,7 +115,7 @@ def listing(problems: Sequence[Problem]) -> str:
     shown: list[str] = []
     room = MOST_CHARACTERS
     for problem in problems[:MOST_LISTED]:
-        line = str(problem)
+        line = printable(str(problem))
         if len(line) > room:
             line = line[: max(0, room - 1)] + "…"
         if room <= 1:
