@@ -11,6 +11,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
+from ngm.results_season import Seasonal
+
 if TYPE_CHECKING:
     import pandas
 
@@ -227,6 +229,8 @@ class Solution:
     sizes: Vector | None = None
     #: the number at the state now, where the file gives one
     effective: Effective | None = None
+    #: where a parameter has a season: R0 and growth are those over a period, all else is that of the averaged season
+    season: Seasonal | None = None
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `solve --json` prints."""
@@ -278,6 +282,7 @@ class Solution:
             "warnings": list(self.warnings),
             **({} if self.projected is None else _projected(self.projected)),
             **({} if now is None else {"effective": {"R": now.R, "state": dict(now.state)}}),
+            **({} if self.season is None else {"season": self.season.to_json()}),
         }
 
     def to_frame(self) -> pandas.DataFrame:
@@ -299,7 +304,8 @@ class Solution:
             head = f"no R<sub>0</sub>: {escape(self.no_R0 or '')}"
         else:
             low, high = self.R0_bounds
-            head = f"R<sub>0</sub> = {self.R0:.6g} (proven: {low!r} to {high!r})"
+            how = "proven" if self.season is None else "over the season, estimated"
+            head = f"R<sub>0</sub> = {self.R0:.6g} ({how}: {low!r} to {high!r})"
         table = self.to_frame().to_html(escape=True) if self.K is not None else ""
         return f"<p><b>{escape(self.title)}</b>: {head}</p>{table}"
 

@@ -24,6 +24,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     "results_draws": {"spreadsheet"},
     "results_sensitivity": {"results", "results_mixing", "results_draws"},
     "results_opinion": {"results"},
+    "results_outbreak": {"results"},
     "engine": set(),
     "expression": {"errors"},
     "scenario": {"errors", "expression"},
@@ -31,6 +32,9 @@ MAY_IMPORT: dict[str, set[str]] = {
     "derivation": {"errors", "expression", "scenario", "results", "engine.structure"},
     "worker": {"errors", "expression.tree", "results", "scenario", "derivation"},
     "analysis": {
+        "results_outbreak",
+        "results_season",
+        "results_course",
         "errors",
         "expression",
         "scenario",
@@ -45,14 +49,18 @@ MAY_IMPORT: dict[str, set[str]] = {
         "progress",
         "results_draws",
     },
+    "wording_course": {"results_course"},
     "wording": {"results", "results_control", "results_draws"},
     "typed": {"errors"},
     "meanings": set(),
     "progress": set(),
     "spreadsheet": set(),
-    "charts": {"results", "results_control", "results_mixing", "results_sensitivity", "results_draws"},
+    "charts": {"results", "results_course", "results_season", "results_control", "results_mixing", "results_sensitivity", "results_draws"},
     "drafts": {"errors"},
     "reporting": {
+        "results_course",
+        "results_season",
+        "wording_course",
         "ngm",
         "errors",
         "results",
@@ -70,6 +78,9 @@ MAY_IMPORT: dict[str, set[str]] = {
         "scenario.model",
     },
     "screens": {
+        "results_course",
+        "results_season",
+        "wording_course",
         "ngm",
         "meanings",
         "reporting",
@@ -103,15 +114,17 @@ MAY_IMPORT: dict[str, set[str]] = {
         "results_draws",
         "console_sensitivity",
     },
-    "console_course": {"console", "results_course", "results_season"},
+    "console_course": {"console", "errors", "results_course", "typed", "wording_course"},
+    "console_outbreak": {"console", "errors", "results_outbreak", "typed"},
     "console_opinion": {"console", "results_opinion"},
     "console_report": {"ngm", "errors", "typed", "reporting"},
-    "console_control": {"console", "results_control", "wording", "results_draws"},
-    "console_outbreak": {"console", "errors", "results_outbreak", "typed"},
-    "__main__": {
-        "ngm",
     "console_draws": {"ngm", "errors", "results_draws", "results_sensitivity", "typed", "wording"},
     "console_sensitivity": {"console", "results_draws", "results_sensitivity"},
+    "console_control": {"console", "results_control", "wording", "results_draws"},
+    "__main__": {
+        "console_course",
+        "console_outbreak",
+        "ngm",
         "errors",
         "results",
         "results_control",
@@ -126,11 +139,11 @@ MAY_IMPORT: dict[str, set[str]] = {
         "worker",
         "spreadsheet",
         "results_draws",
+        "console_draws",
     },
     "__init__": {"errors", "results", "scenario", "analysis", "reporting"},
 }
 
-        "console_draws",
 #: modules of a layer that the layer's own rule leaves out
 NOT_FOR: dict[str, set[str]] = {"scenario": {"expression.symbolic"}}
 

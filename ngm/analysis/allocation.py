@@ -10,6 +10,7 @@ import numpy.typing as npt
 from ngm.analysis.groups import HostGroup
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
+from ngm.analysis.steady import refuse_season
 from ngm.analysis.strength import check_target, chosen_groups, number_of, shares_of, values_of
 from ngm.engine.allocation import Problem, best_share, first_then_even, greedy, least_supply, same_multiple
 from ngm.engine.allocation_bounds import Bound, least_price_bound, lower_bound
@@ -81,6 +82,7 @@ def allocate(
     ngm.ScenarioError
         An unknown group, one of unknown size, a value out of range; or there is no R0.
     """
+    refuse_season(scenario, "the best share of a supply")
     check_target(target)
     if not (np.isfinite(supply) and supply >= 0):
         raise ScenarioError(Wrong("supply", f"{supply:g} is no supply. Give a number, 0 or more."))

@@ -10,6 +10,7 @@ from ngm.analysis.groups import host_groups
 from ngm.analysis.matrices import RECIPROCAL, as_floats, reciprocity_gap
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.season_results import row_over_the_year
 from ngm.engine.balls import nearest, outward, precision
 from ngm.engine.growth import doubling_time
 from ngm.errors import NgmError, Problem, ScenarioError
@@ -87,7 +88,7 @@ def _under(base: Numbers, baseline: Compared, intervention: Intervention, parts:
         row = _row(found, intervention, intervention.name, parts, CONTROL_LABEL, baseline.R0)
         already = base.point.infection_free.warnings
         said = [warning for warning in found.point.infection_free.warnings if warning not in already]
-        return replace(row, warnings=(*said, *_emptied(base, found), *_unbalanced(base, found)))
+        return replace(row, warnings=(*row.warnings, *said, *_emptied(base, found), *_unbalanced(base, found)))
 
 
 def _row(
@@ -111,7 +112,7 @@ def _row(
     now = effective(found)
     r = found.growth
     doubling, halving = (None, None) if r is None else (doubling_time(r), doubling_time(-r))
-    return Compared(
+    row = Compared(
         name=name,
         label=label,
         parts=parts,
@@ -128,6 +129,7 @@ def _row(
         note=None if intervention is None else intervention.note,
         effective=None if now is None else now.R,
     )
+    return row_over_the_year(found, row, without)
 
 
 def _without_number(intervention: Intervention, parts: tuple[str, ...], why: str) -> Compared:
@@ -189,6 +191,7 @@ def _unbalanced(base: Numbers, found: Numbers) -> list[str]:
 def _warnings(base: Numbers, baseline: Compared, rows: Sequence[Compared]) -> tuple[str, ...]:
     scenario = base.scenario
     out = [*scenario.warnings, *base.point.infection_free.warnings, *base.point.reciprocity_warnings()]
+    out += baseline.warnings
     if not rows:
         out.append("The scenario has no intervention: there is nothing to compare.")
     if baseline.no_R0 is not None:

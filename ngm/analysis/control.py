@@ -11,6 +11,8 @@ import numpy.typing as npt
 
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.season_results import control_over_the_year
+from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import (
     ReproductionNumber,
@@ -24,6 +26,7 @@ from ngm.errors import Problem, ScenarioError
 from ngm.expression.names import suggest
 from ngm.results import ControlResult, EntrySetNumber, StateNumber, TargetNumber, TypeNumber
 from ngm.scenario.model import Scenario
+from ngm.scenario.season import seasonal_parameters
 
 __all__ = ["control", "group_numbers"]
 
@@ -55,7 +58,9 @@ def control(
     """
     found = decided_numbers(scenario)
     with precision(found.bits):
-        result = _control(found)
+        result = control_over_the_year(found, _control(found))
+        if result.R0 is not None and seasonal_parameters(scenario) and (entries or by):
+            refuse_season(scenario, "a number of groups or of entries of K")
         if entries:
             result = replace(result, entry_set=_entry_set(found, entries))
     return result if by is None else replace(result, groups=group_numbers(scenario, by))

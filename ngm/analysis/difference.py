@@ -2,55 +2,52 @@
 
 from __future__ import annotations
 
-import math
-from collections.abc import Callable
-from dataclasses import dataclass, replace
-from itertools import combinations
+from dataclasses import replace
 from typing import Any
 
 from ngm.analysis.alignment import paired_flows, renamed, renames
+from ngm.analysis.between import MOST_IN_ORDER, Between, Step, contributions, root_of
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
+from ngm.analysis.steady import refuse_season
 from ngm.derivation.terms import entry_terms
-from ngm.engine.balls import nearest
-from ngm.errors import NgmError
+from ngm.errors import Problem, ScenarioError
 from ngm.expression.write import write
-from ngm.results_opinion import Contribution, Difference, EntryChange, ModelChange
+from ngm.results_opinion import Difference, EntryChange, ModelChange
 from ngm.scenario.exact import NoValueError, evaluate
 from ngm.scenario.model import Flow, Parameter, Scenario
 from ngm.scenario.slips import mixed_up
 
 __all__ = ["difference"]
 
-#: Changes up to which every order is averaged over: 2^6 models.
-MOST_AVERAGED = 6
-MOST_IN_ORDER = 40
 MOST_TYPES = 60
 #: Entries that differ by less than this share did not move.
 SAME = 1e-9
-
-
-@dataclass(frozen=True)
-class _Step:
-    """One change that can be made by itself: what to call it, and the first model with it made."""
-
-    name: str
-    make: Callable[[Scenario], Scenario] = lambda scenario: scenario
-    #: the place of the flow that changes, where it is one
-    slot: int | None = None
 
 
 def difference(first: Scenario, second: Scenario) -> Difference:
     """Return what differs between two scenarios, and what each change does to F, V, K and R0.
 
     The contribution of a change to R0 is what R0 moves when it is made: once in the order listed (they add up to the
-    whole), and, for up to 6 changes, as the mean over all orders (Shapley 1953, from memory). Renaming contributes nothing.
+    whole), and as the mean over all orders (Shapley 1953, from memory), or over random ones where there are too many; see
+    `ngm.analysis.between`. Renaming contributes nothing.
 
     Raises
     ------
     ngm.DerivationError
         As `ngm.solve`, for either scenario.
     """
+    for version in (first, second):
+        refuse_season(version, "what each difference does to R0")
+    forms = [(s.given is not None, s.projection is not None) for s in (first, second)]
+    if forms[0] != forms[1]:
+        raise ScenarioError(
+            Problem(
+                "difference",
+                "the two files are of different forms (flows, a K as given, a projected population). Compare two of one form; "
+                "of the others, compare the numbers that solve prints.",
+            )
+        )
     mapping = renames(first, second)
     before = renamed(first, mapping)
     one, two = decided_numbers(before), decided_numbers(second)
@@ -59,37 +56,30 @@ def difference(first: Scenario, second: Scenario) -> Difference:
         ModelChange("compartment" if old in first.compartments else "name", "renamed", old, old, new)
         for old, new in mapping.items()
     ]
-    steps: list[_Step] = []
+    steps: list[Step] = []
     _parameters(before, second, changes, steps)
     _structure(before, second, changes, steps)
     if before.dimensions != second.dimensions:
         # Nothing stands between two models that group their hosts differently.
-        steps = [_Step("groups, compartments, flows and values", lambda _: second)]
-    between = _Between(before, second, steps, one, two)
+        steps = [Step("groups, compartments, flows and values", lambda _: second)]
+    between = Between(before, second, steps, one, two)
     moved = _entries(between, one, two, warnings)
-    contributions = _contributions(between, warnings)
     return Difference(
         first.title,
         second.title,
-        (_root(one), _root(two)),
+        (root_of(one), root_of(two)),
         (one.growth, two.growth),
         tuple(changes),
         moved,
-        contributions,
+        contributions(between, warnings),
         tuple(warnings),
     )
-
-
-def _root(found: Numbers) -> float | None:
-    if found.no_R0 is not None:
-        return None
-    return 0.0 if found.spectrum is None else nearest(found.spectrum.root)
 
 
 # --- what differs -----------------------------------------------------------------------------------------------------
 
 
-def _parameters(first: Scenario, second: Scenario, changes: list[ModelChange], steps: list[_Step]) -> None:
+def _parameters(first: Scenario, second: Scenario, changes: list[ModelChange], steps: list[Step]) -> None:
     for name in dict.fromkeys([*first.parameters, *second.parameters]):
         old, new = first.parameters.get(name), second.parameters.get(name)
         if old is None or new is None:
@@ -106,7 +96,7 @@ def _parameters(first: Scenario, second: Scenario, changes: list[ModelChange], s
         def make(scenario: Scenario, new: Parameter = new) -> Scenario:
             return replace(scenario, parameters={**scenario.parameters, new.name: new})
 
-        steps.append(_Step(f"value of {name}", make))
+        steps.append(Step(f"value of {name}", make, parameter=new))
 
 
 def _shown(parameter: Parameter | None) -> str | None:
@@ -131,9 +121,9 @@ def _slip(old: Parameter, new: Parameter) -> str | None:
     return None if found is None else f"changed by the factor {found[0]:g}: were {found[1]} mixed up?"
 
 
-def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], steps: list[_Step]) -> None:
+def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], steps: list[Step]) -> None:
     """Note what differs besides values; a step for each, or one for all where the compartments differ."""
-    own: list[_Step] = []
+    own: list[Step] = []
     apart = False
     for name in dict.fromkeys([*first.compartments, *second.compartments]):
         old, new = first.compartments.get(name), second.compartments.get(name)
@@ -160,7 +150,7 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
         how = "added" if before is None else "removed" if after is None else "changed"
         label = _flow_name(k, after) if after is not None else _flow_name(j, before)
         changes.append(ModelChange("flow", how, label, _flow_text(before), _flow_text(after)))
-        own.append(_Step(f"{label} {how}", slot=place))
+        own.append(Step(f"{label} {how}", slot=place))
     for name in dict.fromkeys([*first.definitions, *second.definitions]):
         old_text, new_text = (
             write(s.definitions[name].expression.tree) if name in s.definitions else None for s in (first, second)
@@ -171,7 +161,7 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
         changes.append(ModelChange("definition", how, name, old_text, new_text))
         if how == "changed":
             own.append(
-                _Step(
+                Step(
                     f"definition of {name}",
                     lambda s, name=name: replace(s, definitions={**s.definitions, name: second.definitions[name]}),  # type: ignore[misc]
                 )
@@ -189,7 +179,7 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
             value = _field(second, section)
             rest[section] = value
             apart = apart or section == "dimensions"
-            own.append(_Step(what, lambda s, section=section, value=value: replace(s, **{section: value})))  # type: ignore[misc]
+            own.append(Step(what, lambda s, section=section, value=value: replace(s, **{section: value})))  # type: ignore[misc]
     if apart:
 
         def make(scenario: Scenario) -> Scenario:
@@ -201,7 +191,7 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
                 **{"infection_free": second.infection_free, **rest},
             )
 
-        steps.append(_Step("compartments and flows", make))
+        steps.append(Step("compartments and flows", make))
     else:
         steps.extend(own)
 
@@ -237,95 +227,6 @@ def _flow_text(flow: Flow | None) -> str | None:
     return f"{flow.source or 'outside'} -> {flow.target or 'out'}: {write(flow.rate.tree)} ({flow.kind})"
 
 
-# --- models between the two -------------------------------------------------------------------------------------------
-
-
-class _Between:
-    """The first model with some of the changes made; numbers are kept."""
-
-    def __init__(self, first: Scenario, second: Scenario, steps: list[_Step], one: Numbers, two: Numbers) -> None:
-        alike = first.dimensions == second.dimensions
-        self.first = replace(
-            first,
-            parameters={**second.parameters, **first.parameters} if alike else first.parameters,
-            matrices={**second.matrices, **first.matrices} if alike else first.matrices,
-            # with other compartments a definition of the second may name what the first has not
-            definitions=(
-                {**second.definitions, **first.definitions}
-                if set(first.compartments) == set(second.compartments)
-                else first.definitions
-            ),
-        )
-        self.second, self.steps = second, steps
-        self.pairs = paired_flows(first, second)
-        self.known: dict[frozenset[int], Numbers | None] = {frozenset(): one, frozenset(range(len(steps))): two}
-
-    def at(self, made: frozenset[int]) -> Numbers | None:
-        """Return the numbers with these changes made; None where such a model has none."""
-        if made not in self.known:
-            try:
-                self.known[made] = decided_numbers(self.scenario(made))
-            except NgmError:
-                self.known[made] = None
-        return self.known[made]
-
-    def scenario(self, made: frozenset[int]) -> Scenario:
-        """Return the first model with these changes made."""
-        slots = {self.steps[k].slot for k in made}
-        flows = []
-        for place, (j, k) in enumerate(self.pairs):
-            if place in slots:
-                if k is not None:
-                    flows.append(self.second.flows[k])
-            elif j is not None:
-                flows.append(self.first.flows[j])
-        scenario = replace(self.first, flows=tuple(flows))
-        for k in sorted(made):
-            scenario = self.steps[k].make(scenario)
-        return scenario
-
-    def root(self, made: frozenset[int]) -> float | None:
-        """Return R0 with these changes made."""
-        found = self.at(made)
-        return None if found is None else _root(found)
-
-
-def _contributions(between: _Between, warnings: list[str]) -> tuple[Contribution, ...]:
-    steps = between.steps
-    n = len(steps)
-    if not n:
-        return ()
-    if n > MOST_IN_ORDER:
-        warnings.append(f"{n} changes: their contributions to R0 are listed for up to {MOST_IN_ORDER}.")
-        return ()
-    in_order: list[float | None] = []
-    for k in range(n):
-        before, after = between.root(frozenset(range(k))), between.root(frozenset(range(k + 1)))
-        in_order.append(None if before is None or after is None else after - before)
-    averaged: list[float | None] = [None] * n
-    if n <= MOST_AVERAGED:
-        averaged = [_average(between, k, n) for k in range(n)]
-    else:
-        warnings.append(f"{n} changes: averages over all orders are taken for up to {MOST_AVERAGED}.")
-    if None in in_order:
-        warnings.append("Some models between the two have no R0: their changes have no contribution of their own.")
-    return tuple(Contribution(s.name, a, b) for s, a, b in zip(steps, in_order, averaged, strict=True))
-
-
-def _average(between: _Between, k: int, n: int) -> float | None:
-    """Return the mean, over all orders of the changes, of what change k does to R0."""
-    others = [j for j in range(n) if j != k]
-    total = 0.0
-    for size in range(n):
-        weight = math.factorial(size) * math.factorial(n - size - 1) / math.factorial(n)
-        for made in combinations(others, size):
-            before, after = between.root(frozenset(made)), between.root(frozenset(made) | {k})
-            if before is None or after is None:
-                return None
-            total += weight * (after - before)
-    return total
-
-
 # --- entries ----------------------------------------------------------------------------------------------------------
 
 _Table = dict[tuple[str, str], float]
@@ -338,6 +239,8 @@ def _tables(found: Numbers | None) -> dict[str, _Table]:
     at = [types[int(k)] for k in found.at]
     out: dict[str, _Table] = {}
     for name, matrix, labels in (("F", found.F, types), ("V", found.V, types), ("K", found.K, at)):
+        if name != "K" and found.scenario.given is not None:
+            continue
         if matrix is not None:
             values = as_floats(matrix)
             out[name] = {(a, b): float(values[i, j]) for i, a in enumerate(labels) for j, b in enumerate(labels)}
@@ -349,7 +252,7 @@ def _moved(before: float | None, after: float | None) -> bool:
     return abs(a - b) > SAME * max(abs(a), abs(b))
 
 
-def _entries(between: _Between, one: Numbers, two: Numbers, warnings: list[str]) -> tuple[EntryChange, ...]:
+def _entries(between: Between, one: Numbers, two: Numbers, warnings: list[str]) -> tuple[EntryChange, ...]:
     """Return the entries that moved, each with the changes that move it by themselves, made first or made last."""
     if max(len(one.template.types), len(two.template.types)) > MOST_TYPES:
         warnings.append(f"More than {MOST_TYPES} types: the entries that moved are not listed.")

@@ -13,6 +13,7 @@ import numpy as np
 from ngm.analysis.points import CONTEXT, Place, Places, decimal_value, exact_value
 from ngm.analysis.solve import solve
 from ngm.analysis.splits import splits, with_kinds
+from ngm.analysis.steady import refuse_season
 from ngm.errors import ExpressionError, Problem, ScenarioError
 from ngm.expression.from_latex import from_latex, is_latex, right_side
 from ngm.expression.names import suggest
@@ -60,6 +61,7 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
     ngm.DerivationError
         As `ngm.solve`.
     """
+    refuse_season(scenario, "the comparison with a formula")
     solution = solve(scenario)
     if solution.R0 is None:
         raise ScenarioError(Problem("formula", f"the model has no R0 to compare with: {solution.no_R0}"))

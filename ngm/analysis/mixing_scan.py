@@ -9,6 +9,7 @@ from fractions import Fraction
 import numpy as np
 
 from ngm.analysis.mixing import Chosen, Shares, choose, rows_of, shares
+from ngm.analysis.steady import refuse_season
 from ngm.analysis.variation import MOST_VARIED, Outcome, Variation, contact_matrices
 from ngm.engine.contacts import ContactError, FloatArray
 from ngm.engine.level import level_line
@@ -53,6 +54,7 @@ def mixing_responses(
     ngm.ScenarioError
         As `ngm.mixing`; more than 300 types.
     """
+    refuse_season(scenario, "what R0 answers to mixing")
     chosen = choose(scenario, matrix, within)
     varied = _varied(scenario)
     by = shares(varied, chosen.matrix.by)
@@ -212,6 +214,7 @@ def mixing_map(
     ngm.ScenarioError
         A quantity that is none, twice the same, or a range that is none or out of reach.
     """
+    refuse_season(scenario, "a map of R0")
     if x == y:
         raise ScenarioError(Problem("", "both axes are the same quantity. Choose two."))
     base = _varied(scenario)

@@ -11,6 +11,7 @@ import numpy as np
 
 from ngm.analysis.batch import draw_numbers
 from ngm.analysis.sensitivity import number_rows, own_values
+from ngm.analysis.steady import refuse_season
 from ngm.analysis.uncertainty import inputs_of
 from ngm.engine.level import level_line
 from ngm.errors import Problem, ScenarioError
@@ -102,6 +103,7 @@ def swings(scenario: Scenario) -> Swings:
     ngm.DerivationError
         As `ngm.solve`.
     """
+    refuse_season(scenario, "R0 over ranges")
     known = _movable(scenario)
     values = own_values(scenario)
     wanted: list[tuple[str, _Moved, float, float, str, dict[str, float], dict[str, float]]] = []
@@ -169,6 +171,7 @@ def plane(
     ngm.ScenarioError
         A quantity that is none or follows others, twice the same, a level or range that is none.
     """
+    refuse_season(scenario, "R0 over a plane")
     wanted = [("parameter", axis) if isinstance(axis, str) else axis for axis in (x, y)]
     _check_levels(levels)
     if side is not None and not 2 <= side <= MOST_SIDE:

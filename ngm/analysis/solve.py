@@ -9,6 +9,7 @@ import numpy as np
 from ngm.analysis.effective import effective
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.season_results import solution_over_the_year, without_season
 from ngm.analysis.stated import as_stated, conditions_of, symbols_as_stated
 from ngm.derivation.conditions import fifth_condition, first_conditions
 from ngm.derivation.outline import outline
@@ -50,15 +51,17 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
         warm()  # the child gets ready while the numbers are computed
     found = decided_numbers(scenario)
     with precision(found.bits):
-        out = as_stated(found, _numbers(found))
+        out = solution_over_the_year(found, as_stated(found, _numbers(found)))
         out["effective"] = effective(found)
+        if out.get("season") is not None:
+            out["effective"] = without_season(out["effective"])
         if out["effective"] is not None and out["effective"].no_R is not None:
             out["warnings"].append(f"No effective number: {out['effective'].no_R}")
     symbolic, more = _symbols(found, limit)
     symbolic = symbols_as_stated(found, symbolic)
     out["warnings"] += more
     out["warnings"] = tuple(dict.fromkeys(out["warnings"]))
-    closed = symbolic.closed_form if out["R0"] is not None else None
+    closed = symbolic.closed_form if out["R0"] is not None and out.get("season") is None else None
     if closed is not None and found.point.infection_free.among > 1:
         out["warnings"] = (
             *out["warnings"],

@@ -12,6 +12,7 @@ from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.analysis.stated_entries import is_stated
+from ngm.analysis.steady import refuse_season
 from ngm.derivation.template import flow_name
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import type_reproduction_number
@@ -125,6 +126,7 @@ def splits(scenario: Scenario) -> Splits:
     ----------
     Cushing & Diekmann (2016) J. Theor. Biol. 404:295-302
     """
+    refuse_season(scenario, "R0 under other divisions")
     typed = decided_numbers(scenario)
     found = choices(scenario)
     warnings = list(dict.fromkeys([*scenario.warnings, *typed.point.infection_free.warnings]))

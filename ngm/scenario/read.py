@@ -16,6 +16,7 @@ from ngm.scenario.model import Compartment, Definition, Dimension, Flow, Kind, M
 from ngm.scenario.read_interventions import read_interventions
 from ngm.scenario.read_matrices import read_matrices
 from ngm.scenario.read_parameters import read_parameters
+from ngm.scenario.read_season import check_seasons
 from ngm.scenario.read_stated import FORMS, read_labels, read_stated
 
 __all__ = ["read"]
@@ -68,6 +69,7 @@ def read(draft: Draft, data: Mapping[str, Any], folder: str | None) -> None:
     _dimensions(draft, members["dimensions"])
     _compartments(draft, members["compartments"], required=not stated)
     read_parameters(draft, members["parameters"])
+    check_seasons(draft, data)
     read_matrices(draft, members["matrices"], folder)
     _definitions(draft, members["definitions"])
     if stated:

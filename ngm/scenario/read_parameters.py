@@ -11,10 +11,11 @@ from ngm.scenario import exact, units
 from ngm.scenario.draft import MOST_TYPES, Draft
 from ngm.scenario.fields import Key, Table, closest, describe, listed, short
 from ngm.scenario.model import Distribution, DistributionName, Expression, Parameter, Unit
+from ngm.scenario.read_season import read_season
 
 __all__ = ["read_parameters"]
 
-_KEYS = ("value", "unit", "label", "source", "range", "distribution", "by", "sign")
+_KEYS = ("value", "unit", "label", "source", "range", "distribution", "by", "sign", "season")
 _MOMENTS = ("mean", "sd")
 _ARGUMENTS: dict[str, tuple[str, ...]] = {
     "uniform": ("low", "high"),
@@ -34,7 +35,7 @@ def read_parameters(draft: Draft, members: Mapping[str, Any]) -> None:
         typed = draft.typed[name]
         where, key = f"parameters.{name}", ("parameters", typed)
         example = f"{typed} = {{ value = {_plain(raw)} }}"
-        table = Table(draft.found, raw, where, key, _KEYS, later=("season",), example=example)
+        table = Table(draft.found, raw, where, key, _KEYS, example=example)
         if table.is_table:
             parameter = _parameter(draft, name, table)
             if parameter is not None:
@@ -51,6 +52,7 @@ def _parameter(draft: Draft, name: str, table: Table) -> Parameter | None:
     found = draft.found
     label, source = table.text("label"), table.text("source")
     any_sign = _sign(table)
+    season = read_season(table, any_sign)
     unit_text = table.text("unit")
     by = draft.by(table.raw["by"], table.at("by"), (*table.key, "by")) if table.has("by") else ()
     if not table.has("value"):
@@ -74,7 +76,7 @@ def _parameter(draft: Draft, name: str, table: Table) -> Parameter | None:
         return None
     if bounds is not None:
         _warn_outside(table, values, bounds)
-    return Parameter(name, values, by, unit, label, source, bounds, distributions, any_sign)
+    return Parameter(name, values, by, unit, label, source, bounds, distributions, any_sign, season)
 
 
 def _sign(table: Table) -> bool:

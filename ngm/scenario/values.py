@@ -17,6 +17,7 @@ from ngm.scenario import exact
 from ngm.scenario.fields import closest, describe, listed, short, to_expression
 from ngm.scenario.following import values_in_force
 from ngm.scenario.model import Change, Expression, Intervention, Parameter, Scenario, number
+from ngm.scenario.season import mean_factor
 
 __all__ = ["converted", "intervened", "with_values"]
 
@@ -26,7 +27,7 @@ def converted(parameter: Parameter) -> tuple[Node, ...]:
 
     A number (also one written as an expression) is multiplied by the factor of its unit, exactly; a rational one comes
     as one `Number`, another one (a root, an exponential) as a product. A parameter that follows others comes as its
-    expressions, unconverted.
+    expressions, unconverted. One with a season comes at its mean over the period.
 
     Examples
     --------
@@ -36,9 +37,11 @@ def converted(parameter: Parameter) -> tuple[Node, ...]:
     >>> converted(weekly)[0].value
     Fraction(1, 20)
     """
+    mean = Fraction(1) if parameter.season is None else mean_factor(parameter.season)
     if parameter.follows:
-        return tuple(value.tree for value in parameter.values)
-    factor = parameter.factor
+        trees = tuple(value.tree for value in parameter.values)
+        return trees if mean == 1 else tuple(Multiply(((1, tree), (1, Number(mean)))) for tree in trees)
+    factor = parameter.factor * mean
     known: dict[int, Node] = {}
     for value in parameter.values:
         if id(value) not in known:

@@ -110,7 +110,7 @@ ON_PLAIN: list[tuple[str, str, tuple[str, ...]]] = [
     (BETA, 'beta = { value = 0.4, range = ["a", 1] }', ("parameters.beta, range: expected a number",)),
     (BETA, 'beta = { value = 0.4, sign = "plus" }', ("parameters.beta, sign: 'plus' is not known",)),
     (BETA, "beta = { value = 0.4, sign = true }", ("parameters.beta, sign: expected a text",)),
-    (BETA, "beta = { value = 0.4, season = { amplitude = 0.3 } }", ("parameters.beta, season: is not supported yet",)),
+    (BETA, "beta = { value = 0.4, season = { amplitude = 0.3 } }", ("parameters.beta, season, period: is missing",)),
     (BETA, "beta = { value = 0.4, vlaue = 1 }", ("parameters.beta: 'vlaue' is not a key", "Did you mean 'value'?")),
     (BETA, "beta = { value = 0.4, label = 1 }", ("parameters.beta, label: expected a text",)),
     # distributions
