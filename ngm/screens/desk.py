@@ -7,7 +7,7 @@ import streamlit as st
 from ngm.charts.style import short
 from ngm.drafts import DraftError
 from ngm.results import Solution
-from ngm.screens import cache, finding, jobs, lines, state
+from ngm.screens import cache, finding, jobs, lines, signing, state
 from ngm.screens.parts import Shown, plain
 
 __all__ = ["formulas", "notices", "show_difference", "status"]
@@ -121,6 +121,11 @@ def status() -> None:
     st.button("Undo last change", on_click=state.undo, disabled=undo, key="status.undo", width="stretch")
     st.button("Redo", on_click=state.redo, disabled=not held.later, key="status.redo", width="stretch")
     heartbeat()
+    visitor = signing.who()
+    if signing.account(visitor):
+        st.caption(f"Signed in as {plain(signing.name(visitor))}.")
+        if visitor.get("is_logged_in"):
+            st.button("Sign out", on_click=st.logout, key="status.out", width="stretch")
 
 
 @st.fragment(run_every=HEARTBEAT)

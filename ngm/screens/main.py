@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import desk, finding, parts, state
+from ngm.screens import desk, finding, parts, signing, state
 from ngm.screens.registry import PAGES
 
 
@@ -13,7 +13,11 @@ def main() -> None:
     # The icon is an emoji: a named one would be fetched from another server.
     st.set_page_config(page_title="Next-generation matrices", page_icon="🧮", layout="wide")
     offered = [st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES]
-    page = st.navigation(offered)
+    allowed = signing.is_open(signing.who())
+    page = st.navigation(offered, position="sidebar" if allowed else "hidden")
+    if not allowed:
+        signing.show()
+        return
     told = state.arrive()
     status = st.sidebar.container()
     notices = st.container()

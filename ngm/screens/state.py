@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 import streamlit as st
 
 from ngm.drafts import Conflict, Draft, DraftError, Saved, Store
-from ngm.screens import cache, shelf
+from ngm.screens import cache, shelf, signing
 
 __all__ = [
     "PARAMETER",
@@ -134,9 +134,7 @@ def _store() -> Store:
 
 def owner() -> str:
     """Return who is signed in, or nothing: drafts are listed to their owner and to nobody else."""
-    # `st.user` has these fields only where a sign-in is set up.
-    who = st.user.to_dict() if hasattr(st.user, "to_dict") else {}
-    return str(who.get("email") or who.get("sub") or "") if who.get("is_logged_in") else ""
+    return signing.account(signing.who())
 
 
 def arrive() -> str | None:

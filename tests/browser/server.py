@@ -25,11 +25,12 @@ class Server:
         self.drafts = folder / "drafts.sqlite"
         self.log = folder / "log"
         self.process: subprocess.Popen[bytes] | None = None
+        self.options: list[str] = []
 
     def start(self) -> None:
         with self.log.open("ab") as out:
             self.process = subprocess.Popen(
-                [sys.executable, "-m", "streamlit", "run", "app.py", "--server.port", str(self.port)],
+                [sys.executable, "-m", "streamlit", "run", "app.py", "--server.port", str(self.port), *self.options],
                 cwd=ROOT,
                 env={**os.environ, "NGM_DRAFTS": str(self.drafts)},
                 stdout=out,
