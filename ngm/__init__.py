@@ -23,11 +23,13 @@ if TYPE_CHECKING:
     from ngm.analysis.formula import formula
     from ngm.analysis.mixing import contact_readings, mixing
     from ngm.analysis.mixing_scan import mixing_map, mixing_responses
+    from ngm.analysis.outbreak import outbreak
     from ngm.analysis.plane import plane, swings
     from ngm.analysis.sensitivity import sensitivity
     from ngm.analysis.solve import solve
     from ngm.analysis.splits import splits
     from ngm.analysis.strength import coverage_needed, strength_needed
+    from ngm.analysis.twin import twin
     from ngm.analysis.uncertainty import draw_table, uncertainty
     from ngm.analysis.units import units
     from ngm.reporting.make import report
@@ -60,6 +62,7 @@ __all__ = [
     "mixing",
     "mixing_map",
     "mixing_responses",
+    "outbreak",
     "plane",
     "read_draws",
     "report",
@@ -69,6 +72,7 @@ __all__ = [
     "splits",
     "strength_needed",
     "swings",
+    "twin",
     "uncertainty",
     "units",
 ]
@@ -91,6 +95,7 @@ _HOMES = {
     "mixing_map": "ngm.analysis.mixing_scan",
     "mixing_responses": "ngm.analysis.mixing_scan",
     "calibrate": "ngm.analysis.calibrate",
+    "outbreak": "ngm.analysis.outbreak",
     "plane": "ngm.analysis.plane",
     "reproduction_numbers": "ngm.analysis.batch",
     "report": "ngm.reporting.make",
@@ -98,6 +103,7 @@ _HOMES = {
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
     "swings": "ngm.analysis.plane",
+    "twin": "ngm.analysis.twin",
     "uncertainty": "ngm.analysis.uncertainty",
     "draw_table": "ngm.analysis.uncertainty",
     "read_draws": "ngm.analysis.drawfile",

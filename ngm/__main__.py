@@ -36,6 +36,8 @@ VERBS = {
     "allocate": "the best way to share a supply of vaccine among groups, beside simple rules",
     "sensitivity": "how R0 and the growth rate answer to each parameter, and to each entry of K",
     "calibrate": "the value of a parameter at which R0 is the one that is wanted",
+    "outbreak": "how many are infected in the end, the chance that cases start a large outbreak, generation intervals",
+    "twin": "the model beside the same flows in the other time, discrete or continuous, and which number to report",
     "report": "the derivation ready to hand in: HTML, Markdown, LaTeX, Word or PDF by the ending of the file",
     "units": "whether the units fit, what is converted, and the mean stay in every stage",
     "splits": "R0 under every defensible division of the flows into new infections and the rest",
@@ -90,6 +92,10 @@ def _parser() -> argparse.ArgumentParser:
             wanted = sub.add_mutually_exclusive_group(required=True)
             wanted.add_argument("--R0", metavar="X", type=float, help="the wanted R0")
             wanted.add_argument("--growth-rate", metavar="X", type=float, help="the wanted growth rate, per time unit")
+        if verb == "outbreak":
+            from ngm.console_outbreak import add_options as outbreak_options
+
+            outbreak_options(sub)
         if verb in ("strength", "coverage", "allocate"):
             _needs_options(sub, verb)
         if verb == "formula":
@@ -120,14 +126,14 @@ def _needs_options(sub: argparse.ArgumentParser, verb: str) -> None:
 
     sub.add_argument("--target", metavar="X", default="1", help="the number to be reached, 1 where left out")
     several("--with", "NAME", "interventions in force besides, in order", dest="besides", default=[])
+    if verb in ("strength", "coverage"):
+        add_assurance_options(sub)
     if verb == "strength":
         sub.add_argument("--intervention", metavar="NAME", required=True, help="one of the file's interventions")
         return
     several("--groups", "G", "groups of hosts, or types at infection; all where left out")
     each = "one number for all groups or G=NUMBER for each"
     several("--efficacy", "E", f"efficacy against infection, 0 to 1: {each}; 1 where left out", default=["1"])
-    if verb in ("strength", "coverage"):
-        add_assurance_options(sub)
     several("--against-spread", "S", f"efficacy against onward spread, 0 to 1: {each}; 0 where left out", default=["0"])
     if verb == "coverage":
         sub.add_argument("--kind", choices=["leaky", "all-or-nothing"], default="leaky", help="of vaccine")
@@ -222,6 +228,8 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
         return write_report(options, scenario)
     if options.verb in OPINIONS:
         return _opinion(options, scenario)
+    if options.verb in ("outbreak", "twin"):
+        return _course(options, scenario)
     from ngm.console import result_text
 
     result: Solution | Comparison | ControlResult | Sensitivity | Calibration
@@ -237,6 +245,18 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
         case _:
             result = ngm.solve(scenario)
     return json.dumps(result.to_json(), ensure_ascii=False) if options.json else result_text(result)
+
+
+def _course(options: argparse.Namespace, scenario: Scenario) -> str:
+    """Run one of the verbs on the course of an outbreak."""
+    import ngm
+    from ngm.console_outbreak import options_of, outbreak_text, twin_text
+
+    if options.verb == "twin":
+        beside = ngm.twin(scenario)
+        return json.dumps(beside.to_json(), ensure_ascii=False) if options.json else twin_text(beside)
+    found = ngm.outbreak(scenario, **options_of(options))  # type: ignore[arg-type]
+    return json.dumps(found.to_json(), ensure_ascii=False) if options.json else outbreak_text(found)
 
 
 def _opinion(options: argparse.Namespace, scenario: Scenario) -> str:
@@ -298,6 +318,7 @@ def _needs(options: argparse.Namespace, scenario: Scenario) -> str:
                 target=target,
                 intervention=besides,
             )
+    over = None if options.verb == "allocate" else assured(options, scenario, target)
     if options.json:
         told = {**result.to_json(), "in_force": list(options.besides)}
         return json.dumps(told if over is None else {**told, "assured": over.to_json()}, ensure_ascii=False)
@@ -306,4 +327,3 @@ def _needs(options: argparse.Namespace, scenario: Scenario) -> str:
 
 if __name__ == "__main__":
     sys.exit(main())
-    over = None if options.verb == "allocate" else assured(options, scenario, target)

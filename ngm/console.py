@@ -307,8 +307,12 @@ def result_text(result: Solution | Comparison | ControlResult | Sensitivity | Ca
         case ControlResult():
             return control_text(result)
         case Sensitivity():
+            from ngm.console_sensitivity import sensitivity_text
+
             return sensitivity_text(result)
         case Calibration():
+            from ngm.console_sensitivity import calibrate_text
+
             return calibrate_text(result)
 
 
@@ -319,12 +323,8 @@ def closing(warnings: Sequence[str], caution: str = CAUTION) -> list[str]:
         lines += ["", "Warnings", *(f"  ! {warning}" for warning in warnings)]
     return [*lines, "", caution]
 
-            from ngm.console_sensitivity import sensitivity_text
-
 
 def _is_number(text: str) -> bool:
-            from ngm.console_sensitivity import calibrate_text
-
     try:
         float(text)
     except ValueError:
