@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from ngm.reporting.document import Block, Line, Note, Number, Paragraph, Section, Strong, Table
+from ngm.reporting.by_hand import target_formulas
+from ngm.reporting.document import Block, Line, Maths, Note, Number, Paragraph, Section, Strong, Table
 from ngm.reporting.material import Material, listed, name_of, term
 from ngm.reporting.numbers import number, share
 from ngm.results import StateNumber, TargetNumber, TypeNumber
@@ -37,6 +38,7 @@ def control(m: Material) -> Section:
             )
         )
     ]
+    blocks += target_formulas(m)
     types: list[tuple[Line, _Target]] = [(term(t.types), t) for t in c.type_reproduction]
     entries: list[tuple[Line, _Target]] = [
         ((name_of(t.entry[0]), " ← ", name_of(t.entry[1])), t) for t in c.target_reproduction
@@ -231,11 +233,10 @@ def sensitivity(m: Material) -> Section:
     blocks: list[Block] = [
         Paragraph(
             (
-                "How R0 answers to a small change of one parameter, the infection-free state following. "
-                "Elasticity: the change of R0 "
-                "in per cent when the parameter rises by one per cent. It says how R0 depends on a value, not "
-                "how uncertain "
-                "that value is.",
+                "How R0 answers to a small change of one parameter p, the infection-free state following. Elasticity, ",
+                Maths(r"(p / \mathcal{R}_0) \, \partial \mathcal{R}_0 / \partial p"),
+                ": the change of R0 in per cent when the parameter rises by one per cent. It says how R0 depends on a "
+                "value, not how uncertain that value is.",
             )
         ),
         Table(("Local sensitivity, largest elasticity first.",), heads, rows, frozenset({1, 2, 3})),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from ngm.expression.typeset import latex_of
+from ngm.reporting import by_hand
 from ngm.reporting.document import Block, Bullets, Code, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import (
     MOST_ENTRIES,
@@ -22,6 +23,25 @@ from ngm.reporting.width import spaced
 from ngm.results import EntryTerm, Solution
 
 __all__ = ["closed_form", "conditions", "infection_free", "next_generation", "transmission"]
+
+
+#: What K is, before and after the types that it is about.
+_K_WORDS = {
+    "flows": (
+        "K is F times the inverse of V, kept to the types at infection, those that new infections enter: ",
+        ". Entry (i, j) is the number of infections of type i that one case of type j causes over its whole course, where "
+        "nobody is infected yet. It has no unit.",
+    ),
+    "K as given": (
+        "K is taken as the scenario gives it, for the types ",
+        ". Entry (i, j) is the number of infections of type i that one case of type j causes over its whole course. It has no "
+        "unit.",
+    ),
+    "projection": (
+        "K is F times the inverse of V, kept to the stages that members are born into: ",
+        ". Entry (i, j) is the number of births into stage i in the whole life of one member that begins in stage j.",
+    ),
+}
 
 
 def infection_free(m: Material, told: set[str]) -> Section:
@@ -79,6 +99,7 @@ def transmission(m: Material, told: set[str]) -> Section:
             )
         )
     ]
+    blocks += by_hand.slopes(s)
     blocks += abbreviations(s, written, told)
     if s.symbolic.F is not None and s.symbolic.V is not None:
         blocks += matrix("F", s.symbolic.F, s.types)
@@ -127,14 +148,17 @@ def _terms(s: Solution) -> list[Block]:
     shown = s.terms[: 2 * MOST_ROWS]
     rows = tuple(
         (
-            (f"{t.matrix}[{t.row}, {t.column}]",),
+            by_hand.place(t.matrix, t.row, t.column),
             ("− " if t.sign < 0 else "+ ", inline(t.share)),
             (_flow(t),),
         )
         for t in shown
     )
     heads = ("entry", "share in it", "because of")
-    caption = ("The flows behind each entry of F and V; [row, column]. Entries with several lines are their sum.",)
+    caption = (
+        "The flows behind each entry of F and V; [row, column]. Entries with several lines are their sum. Here the "
+        "infection-free state is not put in yet.",
+    )
     return [Table(caption, heads, rows), *listed(len(s.terms), len(shown), "terms")]
 
 
@@ -168,9 +192,9 @@ def next_generation(m: Material, told: set[str]) -> Section:
         blocks.append(
             Paragraph(
                 (
-                    "Entry (i, j) of the inverse of V is the mean time spent in state i by one who enters at j. "
-                    "States are taken "
-                    "out of V one after the other; what would be too long to repeat gets a name.",
+                    "Entry (i, j) of the inverse of V is the mean time spent in state i by one who enters at j: V times "
+                    "these entries is the identity. States are taken out of V one after the other; what would be too long "
+                    "to repeat gets a name.",
                 )
             )
         )
@@ -185,17 +209,9 @@ def next_generation(m: Material, told: set[str]) -> Section:
             )
         )
         blocks += listed(len(stays), len(shown), "mean stays")
-    blocks.append(
-        Paragraph(
-            (
-                "K is F times the inverse of V, kept to the types at infection, those that new infections enter: ",
-                *term(s.types_at_infection),
-                ". Entry (i, j) is the number of infections of type i that one case of type j causes over its "
-                "whole course, "
-                "where nobody is infected yet. It has no unit.",
-            )
-        )
-    )
+    first, last = _K_WORDS[s.form]
+    blocks.append(Paragraph((first, *term(s.types_at_infection), last)))
+    blocks += by_hand.entries_of_K(s)
     if s.symbolic.K is not None:
         blocks += abbreviations(s, [entry for row in s.symbolic.K for entry in row], told)
         blocks += matrix("K", s.symbolic.K, s.types_at_infection)

@@ -183,7 +183,7 @@ def parameters(m: Material) -> Section:
         )
         blocks.append(Table(caption, ("group", "value, as given", "in force"), rows, frozenset({2})))
         blocks += listed(len(p.values), len(rows), f"values of {p.name}")
-    missing = [p.name for p in scenario.parameters.values() if not p.source]
+    missing = [p.name for p in scenario.parameters.values() if not (p.source or p.follows)]
     title = "Parameters"
     if missing:
         told = ", ".join(missing[:20]) + (" and more" if len(missing) > 20 else "")
@@ -203,7 +203,9 @@ def _in_force(m: Material, parameter: Parameter, index: int) -> Line:
 
 
 def _source(p: Parameter) -> Line:
-    return (p.source,) if p.source else (Strong("missing"),)
+    if p.source:
+        return (p.source,)
+    return ("those of what it follows",) if p.follows else (Strong("missing"),)
 
 
 def _range(p: Parameter) -> Line:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from ngm.charts import bars
-from ngm.reporting import figures
+from ngm.reporting import by_hand, figures
 from ngm.reporting.document import Block, Bullets, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import Material, listed, name_of, term
 from ngm.reporting.numbers import exact, number
@@ -172,3 +172,4 @@ def who_infects_whom(m: Material) -> Section:
             )
         )
     return Section("who_infects_whom", title, tuple(blocks))
+    blocks += by_hand.vector_formulas()

@@ -109,7 +109,7 @@ class Table:
     """
 
     caption: Line
-    heads: tuple[str, ...]
+    heads: tuple[Inline, ...]
     rows: tuple[tuple[Line, ...], ...]
     numeric: frozenset[int] = frozenset()
     wide: bool = False

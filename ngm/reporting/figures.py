@@ -127,7 +127,8 @@ def who_infects_whom(solution: Solution) -> Figure | None:
     told = "; ".join(f"one case of {types[j]} infects {short(value, 3)} of {types[i]}" for j, i, value in edges)
     alt = f"Who infects whom: {told or 'no type infects anyone'}."
     caption = "Who infects whom: an arrow leads from the type that infects to the type infected, with the entry of K."
-    return Figure("who-infects-whom", _svg(places, marks, margin=90), alt, caption)
+    margin = 90.0 if any(i == j for j, i, _ in edges) else 40.0
+    return Figure("who-infects-whom", _svg(places, marks, margin), alt, caption)
 
 
 def chart(name: str, spec: Mapping[str, object], alt: str, caption: str) -> Figure:

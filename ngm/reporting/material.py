@@ -169,7 +169,7 @@ def numbers_table(name: str, values: Matrix, labels: Sequence[str], key: str, wh
         left_out = "" if len(kept) == len(labels) else "; rows that are left out are 0"
         caption = (f"{name} in numbers{what}; JSON name ", Code(f"{key}[row][column]"), f", counted from 0{left_out}")
         body = [[number(value, f"{key}[{i}][{j}]") for j, value in enumerate(values[i])] for i in kept]
-        return square(caption, "type", labels, [(name_of(labels[i]),) for i in kept], body)
+        return square(caption, "type", [name_of(x) for x in labels], [(name_of(labels[i]),) for i in kept], body)
     shown = cells[:MOST_ENTRIES]
     rows = tuple(((name_of(labels[i]),), (name_of(labels[j]),), (number(v, f"{key}[{i}][{j}]"),)) for i, j, v in shown)
     caption = (f"Entries of {name} that are not zero{what}; JSON name ", Code(f"{key}[row][column]"), ".")
@@ -180,15 +180,23 @@ def numbers_table(name: str, values: Matrix, labels: Sequence[str], key: str, wh
 
 
 def square(
-    caption: Line, corner: str, heads: Sequence[str], rows: Sequence[Line], body: Sequence[Sequence[Inline]]
+    caption: Line, corner: str, heads: Sequence[Inline], rows: Sequence[Line], body: Sequence[Sequence[Inline]]
 ) -> list[Block]:
     """Return a table of numbers in as many parts as it takes to keep each on the page; `caption` ends without a stop."""
 
     def letters(piece: Inline) -> int:
-        return len(piece.shown) if isinstance(piece, Number) else len(piece) if isinstance(piece, str) else 8
+        match piece:
+            case Number(shown=shown):
+                return len(shown)
+            case Maths(latex=latex):
+                return len(re.sub(r"\\[a-z]+|[{}^_\\,\s]", "", latex))
+            case str():
+                return len(piece)
+            case _:
+                return len(piece.text)
 
-    sizes = [max(len(head), *(letters(row[k]) for row in body)) for k, head in enumerate(heads)]
-    layout = columns(max(len(corner), *map(len, heads)), sizes)
+    sizes = [max(letters(head), *(letters(row[k]) for row in body)) for k, head in enumerate(heads)]
+    layout = columns(max(len(corner), *map(letters, heads)), sizes)
     out: list[Block] = []
     for first, last in layout.parts:
         part = f", columns {first + 1} to {last} of {len(heads)}" if len(layout.parts) > 1 else ""

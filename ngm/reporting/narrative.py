@@ -190,7 +190,7 @@ def _control(m: Material) -> list[Block]:
 
 
 def _sure(m: Material) -> Line:
-    missing = sum(1 for p in m.scenario.parameters.values() if not p.source)
+    missing = sum(1 for p in m.scenario.parameters.values() if not (p.source or p.follows))
     drawn = m.spread is not None
     words = ""
     if m.solution.R0 is not None:

@@ -217,7 +217,7 @@ def _shares(table: Table) -> list[float] | None:
     longest = []
     words = []
     for k in range(len(table.heads)):
-        texts = [table.heads[k], *(_text(row[k]) for row in table.rows)]
+        texts = [_text((table.heads[k],)), *(_text(row[k]) for row in table.rows)]
         longest.append(max(len(text) for text in texts))
         words.append(max((len(word) for text in texts for word in text.split()), default=1))
     if sum(longest) + 3 * len(longest) <= NARROW:
