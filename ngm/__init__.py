@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from ngm.analysis.calibrate import calibrate
     from ngm.analysis.compare import compare
     from ngm.analysis.control import control
+    from ngm.analysis.course import course
     from ngm.analysis.difference import difference
     from ngm.analysis.drawfile import read_draws
     from ngm.analysis.formula import formula
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
     from ngm.analysis.solve import solve
     from ngm.analysis.splits import splits
     from ngm.analysis.strength import coverage_needed, strength_needed
+    from ngm.analysis.threshold import threshold
     from ngm.analysis.twin import twin
     from ngm.analysis.uncertainty import draw_table, uncertainty
     from ngm.analysis.units import units
@@ -53,6 +55,7 @@ __all__ = [
     "contact_readings",
     "control",
     "conversions",
+    "course",
     "coverage_needed",
     "difference",
     "draw_table",
@@ -72,6 +75,7 @@ __all__ = [
     "splits",
     "strength_needed",
     "swings",
+    "threshold",
     "twin",
     "uncertainty",
     "units",
@@ -88,6 +92,7 @@ _HOMES = {
     "contact_readings": "ngm.analysis.mixing",
     "control": "ngm.analysis.control",
     "conversions": "ngm.scenario.slips",
+    "course": "ngm.analysis.course",
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",
     "loads": "ngm.scenario.file",
@@ -103,6 +108,7 @@ _HOMES = {
     "solve": "ngm.analysis.solve",
     "strength_needed": "ngm.analysis.strength",
     "swings": "ngm.analysis.plane",
+    "threshold": "ngm.analysis.threshold",
     "twin": "ngm.analysis.twin",
     "uncertainty": "ngm.analysis.uncertainty",
     "draw_table": "ngm.analysis.uncertainty",

@@ -38,6 +38,8 @@ VERBS = {
     "calibrate": "the value of a parameter at which R0 is the one that is wanted",
     "outbreak": "how many are infected in the end, the chance that cases start a large outbreak, generation intervals",
     "twin": "the model beside the same flows in the other time, discrete or continuous, and which number to report",
+    "course": "the first weeks: the flows followed from a few cases, beside growth rate, stable mix and generations",
+    "threshold": "whether infection can persist where the number is below 1, and from where on it cannot",
     "report": "the derivation ready to hand in: HTML, Markdown, LaTeX, Word or PDF by the ending of the file",
     "units": "whether the units fit, what is converted, and the mean stay in every stage",
     "splits": "R0 under every defensible division of the flows into new infections and the rest",
@@ -96,6 +98,10 @@ def _parser() -> argparse.ArgumentParser:
             from ngm.console_outbreak import add_options as outbreak_options
 
             outbreak_options(sub)
+        if verb in ("course", "threshold"):
+            from ngm.console_course import add_options as course_options
+
+            course_options(sub, verb)
         if verb in ("strength", "coverage", "allocate"):
             _needs_options(sub, verb)
         if verb == "formula":
@@ -201,7 +207,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def _run(options: argparse.Namespace) -> str:
     import ngm
 
-    if options.verb == "solve":
+    if options.verb in ("solve", "formula"):
         from ngm import worker
 
         worker.warm()  # the child loads what formulas need while this process reads the file
@@ -228,6 +234,10 @@ def _answer(options: argparse.Namespace, scenario: Scenario) -> str:
         return write_report(options, scenario)
     if options.verb in OPINIONS:
         return _opinion(options, scenario)
+    if options.verb in ("course", "threshold"):
+        from ngm.console_course import run as run_course
+
+        return run_course(options, scenario)
     if options.verb in ("outbreak", "twin"):
         return _course(options, scenario)
     from ngm.console import result_text

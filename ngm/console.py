@@ -68,12 +68,13 @@ def solve_text(result: Solution) -> str:
     else:
         assert result.R0_bounds is not None
         low, high = result.R0_bounds
-        lines.append(f"R0 = {figure(result.R0)}   proven: {low!r} <= R0 <= {high!r}")
+        proven = [f"R0 = {figure(result.R0)}   proven: {low!r} <= R0 <= {high!r}"]
+        lines += proven if result.season is None else _season(result.season, unit)
         if result.form == "projection":
             lines.append("   the net reproduction number: new members by one new member in its life")
         if result.closed_form is not None:
             lines.append(f"   = {result.closed_form}")
-        else:
+        elif result.season is None:
             lines.append("   no closed form worth printing; the number is certified by its bounds")
         period = result.structure.period if result.structure is not None else None
         if result.per_cycle is not None and result.per_cycle != result.R0 and result.R0 > 0:
@@ -159,6 +160,16 @@ def _population(result: Solution) -> list[str]:
             ]
             lines += ["", f"Elasticity of the growth factor by entry of {name}", *table(rows, ["", *about.stages])]
     return lines
+
+
+def _season(year: Seasonal, unit: str) -> list[str]:
+    """Return R0 over a season with the numbers that mislead."""
+    moments = [("mildest", year.mildest, year.mildest_at), ("worst", year.worst, year.worst_at)]
+    return [
+        f"R0 over the season of {year.period:g} {unit} = {figure(year.R0)}   (error about {year.error:.1g})",
+        f"   averaged season: {figure(year.averaged)} (not R0)",
+        *(f"   {name} moment, time {figure(at)}: {figure(value)} (not R0)" for name, value, at in moments),
+    ]
 
 
 def _blocks(result: Solution) -> list[str]:

@@ -2,14 +2,61 @@
 
 from __future__ import annotations
 
+import argparse
+import json
+from typing import TYPE_CHECKING
+
 from ngm.console import WIDTH, closing, figure, squeezed, table
 from ngm.results_course import Course, Threshold
+from ngm.typed import number
 from ngm.wording_course import course_words, endemic_words, quantity, threshold_words
 
-__all__ = ["course_text", "threshold_text"]
+if TYPE_CHECKING:
+    from ngm import Scenario
+
+__all__ = ["add_options", "course_text", "run", "threshold_text"]
 
 #: Lines of a table of times, types in it, and generations.
 MOST_LINES, MOST_TYPES, MOST_GENERATIONS = 12, 8, 8
+
+
+def add_options(sub: argparse.ArgumentParser, verb: str) -> None:
+    """Add the options of `course` or `threshold`."""
+    sub.add_argument(
+        "--with",
+        metavar="NAME",
+        nargs="+",
+        dest="besides",
+        default=[],
+        help="interventions in force, in order; after FILE",
+    )
+    if verb == "threshold":
+        sub.add_argument("--along", metavar="NAME", help="the parameter that is moved, or all-transmission")
+        return
+    sub.add_argument("--horizon", metavar="T", help="how long, in time units; until growth has settled where left out")
+    sub.add_argument("--cases", metavar="N", help="how many cases of each type are seeded; very few where left out")
+    sub.add_argument("--from", metavar="TYPE", nargs="+", dest="seeds", help="types that are seeded, one course each")
+
+
+def run(options: argparse.Namespace, scenario: Scenario) -> str:
+    """Run `course` or `threshold` and return what is to be printed."""
+    import ngm
+
+    acting = ngm.combined(scenario, options.besides).intervention if options.besides else None
+    result: Course | Threshold
+    if options.verb == "threshold":
+        result = ngm.threshold(scenario, along=options.along, intervention=acting)
+        text = "" if options.json else threshold_text(result)
+    else:
+        result = ngm.course(
+            scenario,
+            horizon=None if options.horizon is None else number(options.horizon, "--horizon"),
+            cases=None if options.cases is None else number(options.cases, "--cases"),
+            seeds=options.seeds,
+            intervention=acting,
+        )
+        text = "" if options.json else course_text(result)
+    return json.dumps(result.to_json(), ensure_ascii=False) if options.json else text
 
 
 def threshold_text(result: Threshold) -> str:

@@ -37,8 +37,8 @@ def threshold_words(result: Threshold) -> list[str]:
         other = "above" if result.rising else "below"
         out.append(
             f"It cannot persist {side} {quantity(result, result.turning)}, where {number} is {_figure(result.R_turning)}. From "
-            f"there to {quantity(result, result.at_one)}, where {number} is 1, two outcomes are possible: none, and many "
-            f"infected; {other} that it spreads from a single case."
+            f"there to {quantity(result, result.at_one)}, where {number} is 1, two outcomes are possible: a few cases die out, "
+            f"many stay; {other} that it spreads from a single case."
         )
     if result.R_now is not None and result.R_now < 1:
         persists = any(e.stable for e in result.endemic)

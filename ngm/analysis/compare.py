@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
+from ngm.analysis.caution import below_one_caution
 from ngm.analysis.effective import effective
 from ngm.analysis.groups import host_groups
 from ngm.analysis.matrices import RECIPROCAL, as_floats, reciprocity_gap
@@ -129,6 +130,8 @@ def _row(
         note=None if intervention is None else intervention.note,
         effective=None if now is None else now.R,
     )
+    if row.below_one and row.R0:
+        row = replace(row, warnings=(*row.warnings, *below_one_caution(found, label)))
     return row_over_the_year(found, row, without)
 
 

@@ -9,6 +9,7 @@ from itertools import combinations
 import numpy as np
 import numpy.typing as npt
 
+from ngm.analysis.caution import below_one_caution
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.analysis.season_results import control_over_the_year
@@ -59,6 +60,7 @@ def control(
     found = decided_numbers(scenario)
     with precision(found.bits):
         result = control_over_the_year(found, _control(found))
+        result = replace(result, warnings=(*result.warnings, *below_one_caution(found)))
         if result.R0 is not None and seasonal_parameters(scenario) and (entries or by):
             refuse_season(scenario, "a number of groups or of entries of K")
         if entries:

@@ -20,8 +20,7 @@ from ngm.expression.names import suggest
 from ngm.progress import advance, expect
 from ngm.results_course import Course, SeedCourse
 from ngm.results_season import Seasonal
-from ngm.scenario.model import Scenario
-from ngm.scenario.packages import combined
+from ngm.scenario.model import Intervention, Scenario
 from ngm.scenario.season import seasonal_parameters
 
 __all__ = ["course"]
@@ -49,7 +48,7 @@ def course(
     horizon: float | None = None,
     cases: float | None = None,
     seeds: Sequence[str] | None = None,
-    intervention: str | None = None,
+    intervention: Intervention | None = None,
 ) -> Course:
     """Return the flows followed from a few cases of each type, and what growth rate, mix and generations are expected.
 
@@ -61,13 +60,13 @@ def course(
         How many are seeded; None: so few that hardly anybody susceptible is used up.
     seeds : sequence of str or None
         Types to be seeded, one course each; None: every type, the first twelve where there are more.
-    intervention : str or None
-        One of the file's interventions, in force all the while.
+    intervention : Intervention or None
+        In force all the while; several together by `ngm.combined`.
 
     Raises
     ------
     ngm.ScenarioError
-        A seed or the intervention is unknown, horizon or cases are not above 0.
+        A seed is unknown, horizon or cases are not above 0, the intervention cannot be evaluated.
     ngm.DerivationError
         As `ngm.solve`; there are no flows, the model is too large, or the solver gave up.
     """
@@ -79,10 +78,10 @@ def course(
     ]
     if problems:
         raise ScenarioError(problems)
-    acting = None if intervention is None else combined(scenario, [intervention]).intervention
-    found = decided_numbers(scenario, acting)
+    found = decided_numbers(scenario, intervention)
+    name = None if intervention is None else intervention.name
     with precision(found.bits):
-        return _Follower(found, intervention, horizon, cases, seeds).run()
+        return _Follower(found, name, horizon, cases, seeds).run()
 
 
 class _Follower:

@@ -6,6 +6,7 @@ from typing import Any
 
 import numpy as np
 
+from ngm.analysis.caution import below_one_caution
 from ngm.analysis.effective import effective
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
@@ -52,6 +53,8 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     found = decided_numbers(scenario)
     with precision(found.bits):
         out = solution_over_the_year(found, as_stated(found, _numbers(found)))
+        if out["R0"] is not None and 0 < out["R0"] < 1:
+            out["warnings"] += below_one_caution(found)
         out["effective"] = effective(found)
         if out.get("season") is not None:
             out["effective"] = without_season(out["effective"])

@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from ngm.analysis.along import Along, chosen
+from ngm.analysis.along import ALL_TRANSMISSION, Along, chosen
 from ngm.analysis.bifurcation import Coefficients, NotComputedError, coefficients, sums_kept
 from ngm.analysis.motion import dynamics_of, no_flows, start_of
 from ngm.analysis.numbers import Numbers, decided_numbers
@@ -20,10 +20,9 @@ from ngm.errors import DerivationError, NgmError
 from ngm.errors import Problem as Wrong
 from ngm.expression.tree import names
 from ngm.results_course import BranchPoint, Endemic, Threshold
-from ngm.scenario.model import Scenario
-from ngm.scenario.packages import combined
+from ngm.scenario.model import Intervention, Scenario
 
-__all__ = ["MOST_FOLLOWED", "is_backward", "threshold"]
+__all__ = ["MOST_FOLLOWED", "is_backward", "lowest_number", "threshold"]
 
 #: Components of the state up to which endemic states are followed.
 MOST_FOLLOWED = 60
@@ -34,7 +33,7 @@ WHAT = "what lies below a number of 1"
 FloatArray = Any
 
 
-def threshold(scenario: Scenario, *, along: str | None = None, intervention: str | None = None) -> Threshold:
+def threshold(scenario: Scenario, *, along: str | None = None, intervention: Intervention | None = None) -> Threshold:
     """Return whether infection can persist where the number is below 1, and from where on it cannot.
 
     Parameters
@@ -42,13 +41,13 @@ def threshold(scenario: Scenario, *, along: str | None = None, intervention: str
     along : str or None
         The parameter that is moved, or "all-transmission"; None: a parameter to which all transmission is proportional,
         else all transmission.
-    intervention : str or None
-        One of the file's interventions, in force all the while.
+    intervention : Intervention or None
+        In force all the while; several together by `ngm.combined`.
 
     Raises
     ------
     ngm.ScenarioError
-        `along` or `intervention` is unknown.
+        `along` is unknown, or the intervention cannot be evaluated.
     ngm.DerivationError
         As `ngm.solve`; the scenario has no flows, a season, or steps of time.
 
@@ -63,10 +62,10 @@ def threshold(scenario: Scenario, *, along: str | None = None, intervention: str
         raise DerivationError(
             Wrong("scenario, time", f'{WHAT} is computed in continuous time only. Leave out time = "discrete".')
         )
-    acting = None if intervention is None else combined(scenario, [intervention]).intervention
-    found = decided_numbers(scenario, acting)
+    found = decided_numbers(scenario, intervention)
+    name = None if intervention is None else intervention.name
     with precision(found.bits):
-        return _Search(found, intervention, along).run()
+        return _Search(found, name, along).run()
 
 
 class _Search:
@@ -337,3 +336,9 @@ def is_backward(found: Numbers) -> bool | None:
         return coefficients(dynamics, np.append(start_of(found, dynamics), 1 / number), kept).a > 0
     except (NotComputedError, NotLooseError, NgmError):
         return None
+
+
+def lowest_number(found: Numbers) -> tuple[float | None, float | None]:
+    """Return the number at the turning point as all transmission moves, None where there is none, and the number now."""
+    result = _Search(found, None, ALL_TRANSMISSION).run()
+    return result.R_turning, result.R_now

@@ -203,7 +203,8 @@ def headline(
     st.metric(label, write(solution.R0), border=True, width=width, help=help_text("R0"))
     if solution.R0_bounds is not None:
         low, high = solution.R0_bounds
-        st.caption(f"proven: {low!r} ≤ R0 ≤ {high!r}")
+        how = "proven" if solution.season is None else "over the season; estimate of the error"
+        st.caption(f"{how}: {low!r} ≤ R0 ≤ {high!r}")
 
 
 def earlier_result() -> None:
