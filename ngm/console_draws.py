@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 import argparse
-from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from ngm.errors import Problem, ScenarioError
 from ngm.results_draws import Assured
-from ngm.typed import by_group, number
+from ngm.typed import by_group, number, pairs
 from ngm.wording import assured_words, figure
 
 if TYPE_CHECKING:
@@ -91,33 +90,8 @@ def _settings(options: argparse.Namespace) -> dict[str, Any]:
     return {
         "seed": options.seed,
         "kind": options.design.replace("-", "_"),
-        "correlation": _pairs(options.correlate) if options.correlate else None,
+        "correlation": pairs(options.correlate, "--correlate") if options.correlate else None,
     }
-
-
-def _pairs(given: Sequence[str]) -> dict[tuple[str, str], float]:
-    out: dict[tuple[str, str], float] = {}
-    for item in given:
-        names, sign, value = item.rpartition("=")
-        ends = [name.strip() for name in _split(names)]
-        if not sign or len(ends) != 2 or not all(ends):
-            raise ScenarioError(
-                Problem("--correlate", f"expected A,B=NUMBER, for example beta,gamma=-0.6, not {item[:60]!r}.")
-            )
-        out[ends[0], ends[1]] = number(value, "--correlate")
-    return out
-
-
-def _split(names: str) -> list[str]:
-    """Return what the commas outside of brackets separate."""
-    out, depth = [""], 0
-    for sign in names:
-        depth += (sign == "[") - (sign == "]")
-        if sign == "," and depth == 0:
-            out.append("")
-        else:
-            out[-1] += sign
-    return out
 
 
 def _save(text: str, path: str) -> None:

@@ -8,7 +8,7 @@ from decimal import Decimal
 
 from ngm.errors import Problem, ScenarioError
 
-__all__ = ["by_group", "number"]
+__all__ = ["by_group", "number", "pairs"]
 
 _NUMBER = re.compile(r"([+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d{1,3})?)\s*(%?)")
 
@@ -55,4 +55,38 @@ def by_group(given: Sequence[str], what: str) -> float | dict[str, float]:
             out[label.strip()] = number(value, what)
     if problems:
         raise ScenarioError(problems)
+    return out
+
+
+def pairs(given: Sequence[str], what: str) -> dict[tuple[str, str], float]:
+    """Return a number for each pair of names, typed as ``beta, gamma = -0.6``; commas within brackets belong to a name.
+
+    Raises
+    ------
+    ngm.ScenarioError
+        A text that says no pair, or as `number`.
+    """
+    out: dict[tuple[str, str], float] = {}
+    problems: list[Problem] = []
+    for item in given:
+        names, sign, value = item.rpartition("=")
+        ends = [name.strip() for name in _apart(names)]
+        if not sign or len(ends) != 2 or not all(ends):
+            problems.append(Problem(what, f"expected A,B=NUMBER, for example beta,gamma=-0.6, not {item[:60]!r}."))
+        else:
+            out[ends[0], ends[1]] = number(value, what)
+    if problems:
+        raise ScenarioError(problems)
+    return out
+
+
+def _apart(names: str) -> list[str]:
+    """Return what the commas outside of brackets separate."""
+    out, depth = [""], 0
+    for sign in names:
+        depth += (sign == "[") - (sign == "]")
+        if sign == "," and depth == 0:
+            out.append("")
+        else:
+            out[-1] += sign
     return out

@@ -7,6 +7,7 @@ from typing import Any, Literal
 
 import altair as alt
 
+from ngm.charts.draws import spread, upright
 from ngm.charts.style import ink, short
 from ngm.results_sensitivity import DrawFigures, Swing, Uncertainty
 
@@ -15,8 +16,6 @@ __all__ = ["convergence", "histogram", "indices", "ranking", "tornado"]
 #: Bars at the most: past them a table is easier to read.
 MOST_BARS = 20
 BAR = 30
-#: Where a step of the histogram lies.
-SIDES = ("up to 1", "across 1", "above 1")
 #: Height of axis, title and legend together.
 AROUND = 100
 
@@ -83,7 +82,7 @@ def tornado(swings: Sequence[Swing], R0: float, *, over: str = "range", dark: bo
         .encode(x=x, text="shown:N")
         for left in (True, False)
     ]
-    layers = [bars, *_rules([(R0, f"now {short(R0)}", False), (1.0, "1", True)], "R0", x, dark), *words]
+    layers = [bars, *upright([(R0, f"now {short(R0)}", False), (1.0, "1", True)], "R0", x, dark), *words]
     spoken = "; ".join(
         f"{swing.parameter} from {short(swing.low)} to {short(swing.high)} {swing.unit}".strip()
         + f": R0 from {short(swing.R0_low)} to {short(swing.R0_high)}"
@@ -95,88 +94,9 @@ def tornado(swings: Sequence[Swing], R0: float, *, over: str = "range", dark: bo
     )
 
 
-def _rules(marks: Sequence[tuple[float, str, bool]], field: str, x: alt.X, dark: bool) -> list[Any]:
-    """Return upright lines with words at their tops: dashed ones are thresholds."""
-    colours = ink(dark)
-    layers: list[Any] = []
-    for at, word, dashed in marks:
-        one = alt.Chart(alt.InlineData(values=[{field: at, "shown": word}])).encode(x=x)
-        layers.append(one.mark_rule(color=colours.text, strokeWidth=1.8, strokeDash=[5, 4] if dashed else [1, 0]))
-        layers.append(
-            one.mark_text(color=colours.text, baseline="bottom", dy=-5, fontWeight="bold").encode(
-                y=alt.value(0), text="shown:N"
-            )
-        )
-    return layers
-
-
 def histogram(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | None:
-    """Draw how many draws have R0 in each of the steps, with the median, the middle 95 % and the line at 1.
-
-    Steps up to 1, across it and above it have shades of their own and lie on either side of the line. None without a draw
-    that has an R0.
-    """
-    figures = found.R0
-    if not found.histogram or figures.quantiles is None:
-        return None
-    colours = ink(dark)
-    rows: list[dict[str, Any]] = [
-        {"low": low, "high": high, "count": count, "zero": 0, "side": _side(low, high)}
-        for low, high, count in found.histogram
-    ]
-    low, middle, high = (figures.quantiles[name] for name in ("0.025", "0.5", "0.975"))
-    left, right = min(rows[0]["low"], 1.0), max(rows[-1]["high"], 1.0)
-    room = 0.03 * (right - left) or 0.1
-    # Above the bars there is room for the spread.
-    most = 1.15 * max(row["count"] for row in rows)
-    x = alt.X(
-        "low:Q",
-        title="R0 (no unit)",
-        scale=alt.Scale(domain=[max(0.0, left - room), right + room], nice=False, zero=False),
-        axis=alt.Axis(tickCount=8),
-    )
-    bars = (
-        alt.Chart(alt.InlineData(values=rows))
-        .mark_rect(stroke=colours.fill, strokeWidth=0.4)
-        .encode(
-            x=x,
-            x2="high:Q",
-            y=alt.Y(
-                "count:Q", title="draws", axis=alt.Axis(tickCount=4), scale=alt.Scale(domain=[0, most], nice=False)
-            ),
-            y2="zero:Q",
-            color=alt.Color(
-                "side:N",
-                scale=alt.Scale(domain=list(SIDES), range=[colours.first, colours.faint, colours.strong]),
-                legend=alt.Legend(title="R0", orient="bottom"),
-            ),
-            tooltip=[
-                alt.Tooltip("low:Q", format=".4g", title="from"),
-                alt.Tooltip("high:Q", format=".4g", title="to"),
-                alt.Tooltip("count:Q", title="draws"),
-            ],
-        )
-    )
-    spread = alt.Chart(alt.InlineData(values=[{"low": low, "high": high, "middle": middle}]))
-    top = alt.value(10)
-    layers = [
-        bars,
-        spread.mark_rule(color=colours.text, strokeWidth=3).encode(x=x, x2="high:Q", y=top),
-        spread.mark_point(color=colours.text, fill=colours.fill, shape="diamond", size=110, opacity=1).encode(
-            x=alt.X("middle:Q"), y=top
-        ),
-        *_rules([(1.0, "1", True)], "low", x, dark),
-    ]
-    chance = "" if figures.above_one is None else f" Share above 1: {short(figures.above_one)}."
-    return alt.LayerChart(layer=layers).properties(
-        height=280,
-        description=f"Distribution of R0 over {figures.draws:,} draws: median {short(middle)}, middle 95 % from {short(low)} "
-        f"to {short(high)}.{chance} The bar at the top spans the middle 95 %, the diamond is the median.",
-    )
-
-
-def _side(low: float, high: float) -> str:
-    return SIDES[0] if high <= 1 else SIDES[2] if low >= 1 else SIDES[1]
+    """Draw how many draws have R0 in each of the steps: see `ngm.charts.draws.spread`."""
+    return spread(found.distributions[0], dark=dark)
 
 
 def ranking(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | None:

@@ -12,7 +12,7 @@ from ngm.charts.plane import plane as plane_chart
 from ngm.charts.style import short
 from ngm.results_mixing import Mixing
 from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swing, Swings
-from ngm.screens import asking, cache, forms, parts, state, taking
+from ngm.screens import asking, cache, forms, parts, slope_panel, state, taking
 from ngm.screens.parts import Shown, plain
 from ngm.spreadsheet import csv_text
 
@@ -73,6 +73,7 @@ def local(shown: Shown, write: Write) -> None:
         if found.entry_elasticity is not None:
             st.markdown("**Elasticity of R0 by each entry of K** (row infected, column infecting; they sum to 1)")
             parts.numbers_table(found.entry_elasticity, found.types_at_infection, write, "K")
+    slope_panel.formulas(shown)
     parts.warnings_box(found.warnings)
 
 
@@ -246,6 +247,13 @@ def calibration(shown: Shown, write: Write) -> None:
         + (f"R0 = {plain(short(wanted))}." if by_R0 else f"a growth rate of {plain(short(wanted))}")
         + ("" if by_R0 else f" and {'no R0' if found.R0 is None else f'R0 = {plain(short(found.R0))}'}.")
     )
+    if len(found.values) > 1:
+        every = ", ".join(f"{plain(write(value))} {plain(unit)}" for value in found.values)
+        st.caption(f"All values found: {every}.")
+    if found.attainable is not None:
+        low, high = found.attainable
+        what = "R0" if by_R0 else "the growth rate"
+        st.caption(f"Over the values searched, {what} goes from {plain(write(low))} to {plain(write(high))}.")
     parts.warnings_box(found.warnings)
     asking.command("calibrate", "--parameter", parameter, "--R0" if by_R0 else "--growth-rate", f"{wanted!r}")
     if shown.stale:

@@ -15,7 +15,7 @@ from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_mixing import Mixing, MixingMap, MixingResponses
-from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swings, Uncertainty
+from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swings
 from ngm.screens import jobs
 
 __all__ = [
@@ -27,8 +27,6 @@ __all__ = [
     "control",
     "conversions",
     "coverage",
-    "drawn",
-    "from_file",
     "latex",
     "mixing",
     "mixing_map",
@@ -37,6 +35,7 @@ __all__ = [
     "plane",
     "problems",
     "sensitivity",
+    "slopes",
     "solve",
     "strength",
     "swings",
@@ -219,31 +218,20 @@ def sensitivity(text: str, folder: str | None) -> Sensitivity | tuple[Problem, .
         return error.problems
 
 
+@st.cache_resource(max_entries=64, show_spinner="Differentiating the closed form …")
+def slopes(text: str, folder: str | None, closed_form: str) -> Sensitivity | tuple[Problem, ...]:
+    """Return the local indices with their formulas, made from the closed form of R0."""
+    try:
+        return ngm.sensitivity(ngm.loads(text, folder=folder), formulas=closed_form)
+    except NgmError as error:
+        return error.problems
+
+
 @st.cache_resource(max_entries=64, show_spinner=False)
 def swings(text: str, folder: str | None) -> Swings | tuple[Problem, ...]:
     """Return R0 at the ends of each parameter's range, or why there is none."""
     try:
         return ngm.swings(ngm.loads(text, folder=folder))
-    except NgmError as error:
-        return error.problems
-
-
-@st.cache_resource(max_entries=32, show_spinner="Drawing the parameters and computing R0 at each draw …")
-def drawn(text: str, folder: str | None, draws: int, seed: int, kind: str) -> Uncertainty | tuple[Problem, ...]:
-    """Return what draws from the parameters' distributions say, or what is wrong with the question."""
-    try:
-        scenario = ngm.loads(text, folder=folder)
-        return ngm.uncertainty(scenario, draws, seed=seed, kind="sobol" if kind == "sobol" else "latin_hypercube")
-    except NgmError as error:
-        return error.problems
-
-
-@st.cache_resource(max_entries=16, show_spinner="Reading the draws and computing R0 at each …")
-def from_file(text: str, folder: str | None, content: bytes, name: str) -> Uncertainty | tuple[Problem, ...]:
-    """Return what the joint draws of a file say, or what is wrong with the file. Only figures are kept, no draw."""
-    try:
-        scenario = ngm.loads(text, folder=folder)
-        return ngm.uncertainty(scenario, ngm.read_draws(scenario, content, name))
     except NgmError as error:
         return error.problems
 

@@ -2,27 +2,24 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Callable, Sequence
 
 import streamlit as st
 
+import ngm
+from ngm.charts import draws as draw_charts
 from ngm.charts import sensitivity as charts
 from ngm.charts.style import short
-from ngm.errors import Problem, ScenarioError
-from ngm.results_sensitivity import DrawFigures, Uncertainty
-from ngm.screens import asking, cache, parts, state, taking
+from ngm.results_draws import Spread, Uncertainty
+from ngm.screens import asking, assured_panel, parts, taking
 from ngm.screens.answers import save
+from ngm.screens.draw_questions import Question, asked_question, worked
 from ngm.screens.parts import Shown, plain
 
 __all__ = ["draws"]
 
 Write = Callable[[float | None], str]
 
-#: Draws at the most on the page; the command line and Python take more.
-MOST_DRAWS = 200_000
-OWN, BROUGHT = "from the ranges and distributions of the scenario", "from a file of joint draws"
-DESIGNS = {"Latin hypercube": "latin_hypercube", "Scrambled Sobol points": "sobol"}
 QUANTILES = ("0.025", "0.25", "0.5", "0.75", "0.975")
 
 
@@ -30,75 +27,28 @@ QUANTILES = ("0.025", "0.25", "0.5", "0.75", "0.975")
 def draws(shown: Shown, write: Write) -> None:
     """Show what the spread of the parameters does to R0."""
     st.subheader("How far R0 is known")
-    source = st.radio(
-        "Draws",
-        [OWN, BROUGHT],
-        index=int(state.recall("sensitivity.source") == BROUGHT),
-        horizontal=True,
-        key="sensitivity.source",
-    )
-    state.remember("sensitivity.source", source)
-    found = _own(shown) if source == OWN else _brought(shown)
-    if found is None:
+    question = asked_question(shown)
+    if question is None:
         return
+    found = worked(
+        "sensitivity.work", "Drawing and computing", ("uncertainty", *question.key), lambda: _figures_of(question)
+    )
     if not isinstance(found, Uncertainty):
-        parts.problem_box(found, "with these draws")
         return
     _distribution(found, write)
+    for spread in found.others:
+        _other(spread, write)
+    _every_draw(question)
     _drivers(found, write)
     _interventions(found, write)
+    assured_panel.panel(shown, question, write)
     parts.warnings_box(found.warnings)
+    asking.command("sensitivity", *question.options, *asking.several("--of", question.of))
 
 
-def _own(shown: Shown) -> Uncertainty | tuple[Problem, ...] | None:
-    entries = asking.Entries()
-    first, second, third = st.columns(3)
-    number = entries.number("Number of draws", "sensitivity.draws", "2000", first)
-    seed = entries.number("Seed", "sensitivity.seed", "1", second, "The same seed gives the same numbers.")
-    with third:
-        design = asking.choice("Design", list(DESIGNS), "sensitivity.design")
-    for value, label, low, high in (
-        (number, "Number of draws", 1, MOST_DRAWS),
-        (seed, "Seed", 0, 2**32 - 1),
-    ):
-        if value is not None and not (value == int(value) and low <= value <= high):
-            advice = f"expected a whole number from {low} to {high:,}, not {value:g}."
-            entries.problems += ScenarioError(Problem(label, advice)).problems
-    parts.problem_box(entries.problems)
-    if entries.problems or number is None or seed is None:
-        return None
-    question = (shown.text, shown.folder, int(number), int(seed), design)
-    if not asking.asked("sensitivity.own", "Draw", question):
-        return None
-    return cache.drawn(shown.text, shown.folder, int(number), int(seed), DESIGNS[design])
-
-
-def _brought(shown: Shown) -> Uncertainty | tuple[Problem, ...] | None:
-    file = st.file_uploader(
-        "A file of joint draws: CSV or Parquet", type=["csv", "txt", "tsv", "parquet", "pq"], key="sensitivity.file"
-    )
-    if file is not None:
-        # Kept for the way back from other pages: a field for files is empty then. Every byte is one sign of the text.
-        content = file.getvalue()
-        token = f"{file.name}\n{hashlib.sha256(content).hexdigest()}"
-        if state.recall("sensitivity.token") != token:
-            state.remember("sensitivity.token", token)
-            state.remember("sensitivity.content", content.decode("latin-1"))
-    held = state.recall("sensitivity.content")
-    if not held:
-        st.caption(
-            "A column a parameter, a row a draw, the numbers in each parameter's own unit. Columns are matched by name; "
-            "sigma[65+] is one group. Parameters without a column keep their value."
-        )
-        return None
-    name = state.recall("sensitivity.token").split("\n")[0]
-    first, second = st.columns([3, 1], vertical_alignment="center")
-    first.caption(f"Draws of the file {plain(name)}.")
-    if second.button("Leave this file", key="sensitivity.leave", disabled=file is not None):
-        state.remember("sensitivity.content", "")
-        state.remember("sensitivity.token", "")
-        st.rerun()
-    return cache.from_file(shown.text, shown.folder, held.encode("latin-1"), name)
+def _figures_of(question: Question) -> Uncertainty:
+    scenario = question.scenario
+    return ngm.uncertainty(scenario, question.source(scenario), of=question.of, **question.settings)
 
 
 def _distribution(found: Uncertainty, write: Write) -> None:
@@ -127,11 +77,7 @@ def _distribution(found: Uncertainty, write: Write) -> None:
     if chart is not None:
         taking.picture(chart, "R0-distribution", "the distribution")
         st.caption("The bar at the top spans the middle 95 % of the draws, its diamond is the median; dashed: R0 = 1.")
-    with st.expander("The distribution as a table"):
-        parts.table(["figure", "R0"], _figures(figures, write))
-        rows = [(write(low), write(high), f"{count:g}") for low, high, count in found.histogram]
-        parts.grid(["from", "to", "draws"], rows)
-        _save_histogram(found)
+    _table_of(found.distributions[0], write)
     with st.expander("Have the figures settled?"):
         settled = charts.convergence(found, dark=parts.dark())
         if settled is not None:
@@ -146,37 +92,84 @@ def _distribution(found: Uncertainty, write: Write) -> None:
         )
 
 
-def _figures(figures: DrawFigures, write: Write) -> list[tuple[str, str]]:
+def _other(spread: Spread, write: Write) -> None:
+    """Show the distribution of a number other than R0."""
+    name = spread.number.replace("_", " ")
+    st.markdown(f"**{plain(name)}**" + (f", per {plain(spread.unit.removeprefix('1/'))}" if spread.unit else ""))
+    figures = spread.figures
+    if figures.quantiles is None:
+        st.caption("No draw has this number.")
+        return
+    first, second, third = st.columns(3)
+    first.metric(f"P({name} > {spread.threshold:g})", write(figures.above_one), border=True)
+    second.metric("Median of the draws", write(figures.quantiles["0.5"]), border=True)
+    third.metric(
+        "Middle 95 % of the draws",
+        f"{write(figures.quantiles['0.025'])} to {write(figures.quantiles['0.975'])}",
+        border=True,
+    )
+    for why, count in spread.missing.items():
+        st.caption(f"{count:,} of {figures.draws:,} draws are left out: {plain(why)}.")
+    chart = draw_charts.spread(spread, dark=parts.dark())
+    if chart is not None:
+        taking.picture(chart, f"{name.replace(' ', '-')}-distribution", f"the distribution of {name}")
+    _table_of(spread, write)
+
+
+def _table_of(spread: Spread, write: Write) -> None:
+    """Show figures and steps of a distribution as tables, with a way to save them."""
+    name = spread.number
+    with st.expander(f"The distribution of {plain(name.replace('_', ' '))} as a table"):
+        rows = [(what, write(value)) for what, value in _rows(spread)]
+        parts.table(["figure", name], rows)
+        steps = [(write(low), write(high), f"{count:g}") for low, high, count in spread.histogram]
+        parts.grid(["from", "to", "draws"], steps)
+        _save_steps(spread)
+
+
+def _rows(spread: Spread) -> Sequence[tuple[str, float | None]]:
+    figures = spread.figures
     quantiles = figures.quantiles or {}
     return [
-        ("mean", write(figures.mean)),
-        ("standard deviation", write(figures.sd)),
-        *((f"quantile {name}", write(quantiles.get(name))) for name in QUANTILES),
-        ("P(R0 > 1)", write(figures.above_one)),
-    ]
-
-
-def _save_histogram(found: Uncertainty) -> None:
-    import pandas
-
-    rows: list[tuple[str, str, str, float | None]] = [
-        ("figure", name, "", value) for name, value in _plain_figures(found.R0)
-    ]
-    rows += [("draws from, to", repr(low), repr(high), count) for low, high, count in found.histogram]
-    frame = pandas.DataFrame(rows, columns=["what", "name or from", "to", "value"])
-    save("Save the distribution as CSV", frame, "R0-distribution.csv", "distribution")
-
-
-def _plain_figures(figures: DrawFigures) -> Sequence[tuple[str, float | None]]:
-    quantiles = figures.quantiles or {}
-    return [
-        ("draws", figures.draws),
-        ("without an R0", figures.rejected),
+        ("draws", float(figures.draws)),
+        ("without this number", float(figures.rejected)),
         ("mean", figures.mean),
         ("standard deviation", figures.sd),
         *((f"quantile {name}", quantiles.get(name)) for name in QUANTILES),
-        ("P(R0 > 1)", figures.above_one),
+        (f"P({spread.number} > {spread.threshold:g})", figures.above_one),
     ]
+
+
+def _save_steps(spread: Spread) -> None:
+    import pandas
+
+    rows: list[tuple[str, str, str, float | None]] = [("figure", name, "", value) for name, value in _rows(spread)]
+    rows += [("draws from, to", repr(low), repr(high), count) for low, high, count in spread.histogram]
+    frame = pandas.DataFrame(rows, columns=["what", "name or from", "to", "value"])
+    save(
+        "Save this distribution as CSV",
+        frame,
+        f"{spread.number.replace(' ', '')}-distribution.csv",
+        f"distribution.{spread.number}",
+    )
+
+
+def _every_draw(question: Question) -> None:
+    """Place the button that saves every draw with its numbers; it computes them when it is pressed."""
+
+    def content() -> bytes:
+        scenario = question.scenario
+        table = ngm.draw_table(scenario, question.source(scenario), of=question.of, **question.settings)
+        return table.to_csv().encode()
+
+    st.download_button(
+        "Save every draw with its numbers as CSV",
+        content,
+        "draws.csv",
+        "text/csv",
+        on_click="ignore",
+        key="sensitivity.every_draw",
+    )
 
 
 def _drivers(found: Uncertainty, write: Write) -> None:
