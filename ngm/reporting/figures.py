@@ -8,8 +8,10 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping, Sequence
 from html import escape
+from typing import Any
 
 from ngm.charts.style import LIGHT, short
+from ngm.errors import printable
 from ngm.reporting.document import Figure
 from ngm.results import Solution
 from ngm.scenario.model import Flow, Scenario
@@ -135,7 +137,16 @@ def chart(name: str, spec: Mapping[str, object], alt: str, caption: str) -> Figu
     """Return a chart, given as the plain data of its specification, as a figure."""
     import vl_convert
 
-    return Figure(name, str(vl_convert.vegalite_to_svg(dict(spec))), alt, caption)
+    return Figure(name, str(vl_convert.vegalite_to_svg(_drawable(dict(spec)))), alt, caption)
+
+
+def _drawable(part: Any) -> Any:
+    """Return a specification with each sign that no picture can hold as a box: one of them would end the process."""
+    if isinstance(part, str):
+        return printable(part)
+    if isinstance(part, Mapping):
+        return {_drawable(key): _drawable(value) for key, value in part.items()}
+    return [_drawable(value) for value in part] if isinstance(part, list | tuple) else part
 
 
 def _svg(points: Iterable[Point], marks: Sequence[str], margin: float = 62.0) -> str:
@@ -180,7 +191,7 @@ def _text(place: Point, text: str, size: int, bold: bool = False) -> str:
     weight = ' font-weight="bold"' if bold else ""
     return (
         f'<text x="{place[0]:.1f}" y="{place[1]:.1f}" font-size="{size}"{weight} text-anchor="middle" '
-        f'fill="{LIGHT.text}" {_FONT}>{escape(text)}</text>'
+        f'fill="{LIGHT.text}" {_FONT}>{escape(printable(text))}</text>'
     )
 
 
