@@ -19,6 +19,11 @@ __all__ = ["Arrow", "Graph", "Stage", "flow_diagram", "quoted", "who_infects_who
 MOST_NODES = 60
 MOST_EDGES = 250
 
+#: A diagram with more stages in a row than this is folded, like lines of text; with more arrows than this, arrows bear
+#: the numbers of their flows and not their words.
+MOST_IN_A_ROW = 6
+MOST_WORDED = 40
+
 #: A label is cut to this many letters.
 MOST_LETTERS = 66
 
@@ -79,8 +84,18 @@ def flow_diagram(
         border = "peripheries=2" if stage.infected else "peripheries=1"
         lines.append(f"{ids[stage.name]} [label={_caption(stage.name, stage.label)} {border}]")
     lines += [f'{ids[name]} [label={quoted(name + " ?")} style="dotted,rounded"]' for name in mentioned]
-    for k, arrow in enumerate(arrow for arrow in arrows if arrow.source or arrow.target):
-        lines += _arrow(k, arrow, ids, colours)
+    loose, firsts = _folded([*ids], arrows, {stage.name for stage in stages if stage.infected}, fold=not down)
+    crowded = len(arrows) > MOST_WORDED
+    if crowded:
+        # Arrows on the same way share it.
+        lines.append('graph [concentrate="true" nodesep="0.15"]')
+    for k, arrow in enumerate(arrows):
+        if arrow.source or arrow.target:
+            lines += _arrow(k, arrow, ids, colours, numbered=crowded, loose=k in loose)
+    if len(firsts) > 1:
+        # The first stages of all lines stand below each other.
+        order = " -> ".join(ids[name] for name in firsts)
+        lines.append(f'{{ rank=same; edge [style="invis"]; {order} }}')
     infected = [stage.name for stage in stages if stage.infected]
     told = "; ".join(
         f"{arrow.source or 'outside'} to {arrow.target or 'outside'}, {arrow.kind or 'kind not given'}"
@@ -152,18 +167,94 @@ def _head(colours: Ink, down: bool = False) -> list[str]:
     ]
 
 
-def _arrow(k: int, arrow: Arrow, ids: dict[str, str], colours: Ink) -> list[str]:
-    words = _wrapped(arrow.label or arrow.rate, 20)
+def _folded(
+    names: Sequence[str], arrows: Sequence[Arrow], infected: set[str], *, fold: bool
+) -> tuple[set[int], list[str]]:
+    """Return the arrows that place no compartment, and the first compartment of each line of the diagram.
+
+    Compartments stand in columns along the course of infection. What leads back, into an infection after the first, or
+    from one line into the next, is drawn but moves nothing.
+    """
+    moves: dict[str, list[tuple[int, str]]] = {name: [] for name in names}
+    for k, arrow in enumerate(arrows):
+        if arrow.source and arrow.target and arrow.source != arrow.target:
+            moves[arrow.source].append((k, arrow.target))
+    # Who was first reached by way of an infected compartment has been infected before.
+    after: set[str] = set()
+    seen: set[str] = set()
+    for start in sorted(names, key=lambda name: name in infected):
+        reached = [] if start in seen else [start]
+        seen.update(reached)
+        for here in reached:
+            for _, target in moves[here]:
+                if target not in seen:
+                    seen.add(target)
+                    reached.append(target)
+                    if here in infected or here in after:
+                        after.add(target)
+    loose = {k for name in after - infected for k, _ in moves[name] if arrows[k].kind == "transmission"}
+    column, back = _columns(names, moves, loose)
+    loose |= back
+    most = 1 + max(column.values(), default=0)
+    if not fold or most <= MOST_IN_A_ROW:
+        return loose, []
+    lines = -(-most // (MOST_IN_A_ROW - 1))
+    long = -(-most // lines)
+    for name in names:
+        loose |= {k for k, target in moves[name] if column[name] // long != column[target] // long}
+    firsts = [next((name for name in names if column[name] == line * long), "") for line in range(lines)]
+    return loose, [name for name in firsts if name]
+
+
+def _columns(
+    names: Sequence[str], moves: dict[str, list[tuple[int, str]]], loose: set[int]
+) -> tuple[dict[str, int], set[int]]:
+    """Return the longest way to each compartment in steps, and the arrows that lead back to where a way came from."""
+    back: set[int] = set()
+    done: list[str] = []
+    on_the_way: set[str] = set()
+    for start in names:
+        ways = [(start, iter(moves[start]))] if start not in done else []
+        on_the_way.update(name for name, _ in ways)
+        while ways:
+            here, rest = ways[-1]
+            for k, target in rest:
+                if k in loose:
+                    continue
+                if target in on_the_way:
+                    back.add(k)
+                elif target not in done:
+                    on_the_way.add(target)
+                    ways.append((target, iter(moves[target])))
+                    break
+            else:
+                ways.pop()
+                on_the_way.discard(here)
+                done.append(here)
+    column = dict.fromkeys(names, 0)
+    for name in reversed(done):
+        for k, target in moves[name]:
+            if k not in loose and k not in back:
+                column[target] = max(column[target], column[name] + 1)
+    return column, back
+
+
+def _arrow(
+    k: int, arrow: Arrow, ids: dict[str, str], colours: Ink, *, numbered: bool = False, loose: bool = False
+) -> list[str]:
+    words = [str(k + 1)] if numbered else _wrapped(arrow.label or arrow.rate, 20)
     if arrow.kind == "transmission":
         look = f'style="dashed" penwidth="2.4" color="{colours.strong}" arrowhead="normal"'
-        words = ["transmission:", *words]
+        words = [f"T {k + 1}"] if numbered else ["transmission:", *words]
     elif arrow.kind == "transition":
         look = 'style="solid" penwidth="1.1" arrowhead="vee"'
     else:
         look = f'style="dotted" penwidth="1.1" color="{colours.faint}" arrowhead="odot"'
         words = ["kind?", *words]
     if arrow.source and arrow.target:
-        return [f"{ids[arrow.source]} -> {ids[arrow.target]} [label={_lines(words)} {look}]"]
+        # Words of what moves nothing take no room either: they are put where there is some.
+        told = f'constraint="false" xlabel={_lines(words)}' if loose else f"label={_lines(words)}"
+        return [f"{ids[arrow.source]} -> {ids[arrow.target]} [{told} {look}]"]
     # Outside has no box: the words of the flow stand there, above or below the compartment.
     outside, inside = f"o{k}", ids[arrow.source or arrow.target]
     ends = f"{outside} -> {inside}" if arrow.target else f"{inside} -> {outside}"

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import replace
+from itertools import pairwise
 
 import pytest
 
@@ -104,3 +105,43 @@ def test_a_flow_from_outside_has_its_words_there():
     assert re.search(r'o0 \[.*label="Birth"', graph.dot)
     assert "o0 -> n0" in graph.dot
     assert graph.dot.count("->") == 1  # a flow from nowhere to nowhere is no arrow yet
+
+
+def chain(count):
+    """Return a course of infection of so many stages after S, and back to S."""
+    names = ["S", *(f"I{k}" for k in range(1, count - 1)), "R"]
+    stages = [Stage(name, infected=name.startswith("I")) for name in names]
+    arrows = [Arrow("S", "I1", "transmission", "b")]
+    arrows += [Arrow(a, b, "transition", "g") for a, b in pairwise(names[1:])]
+    return stages, [*arrows, Arrow("R", "S", "transition", "w")]
+
+
+@pytest.mark.parametrize(("count", "lines"), [(3, 1), (6, 1), (8, 2), (15, 3), (30, 6)])
+def test_a_long_course_is_folded_into_lines_of_at_most_five(count, lines):
+    stages, arrows = chain(count)
+    dot = flow_diagram(stages, arrows).dot
+    free = [line for line in dot.splitlines() if "constraint" in line]
+    # One arrow leads from each line into the next, and one from the end back to S, which bends by itself.
+    assert len(free) == lines
+    starts = re.findall(r'edge \[style="invis"\]; (.*?) }', dot)
+    assert [start.count("->") + 1 for start in starts] == ([lines] if lines > 1 else [])
+    assert "constraint" not in flow_diagram(stages, arrows[:-1], down=True).dot
+
+
+def test_infections_after_the_first_move_no_compartment():
+    stages, arrows = chain(4)
+    again = [*arrows, Arrow("R", "I1", "transmission", "b")]
+    lines = [line for line in flow_diagram(stages, again).dot.splitlines() if "->" in line]
+    free = [line for line in lines if "constraint" in line]
+    assert [line for line in free if "transmission" in line] == [lines[-1]]
+    assert "constraint" not in lines[0]
+
+
+def test_a_crowded_diagram_has_numbers_in_place_of_words():
+    stages = [Stage(f"A{k}", infected=k > 0) for k in range(12)]
+    arrows = [Arrow(f"A{j}", f"A{k}", "transition", "per head") for j in range(7) for k in range(7, 12)]
+    arrows += [Arrow("A0", f"A{k}", "transmission", "per head") for k in range(1, 8)]
+    graph = flow_diagram(stages, arrows)
+    assert "per head" not in graph.dot
+    assert '"T 36"' in graph.dot
+    assert "transmission" in graph.alt

@@ -8,7 +8,7 @@ from typing import Any
 import streamlit as st
 from streamlit.delta_generator import DeltaGenerator
 
-from ngm.charts.graphs import flow_diagram
+from ngm.charts.graphs import MOST_WORDED, flow_diagram
 from ngm.errors import Problem
 from ngm.screens import cache, editors, finding, forms, parts, pasting, sketch, state, stated_edits, taking
 from ngm.screens.forms import TABLES, Edit
@@ -60,6 +60,8 @@ def overview(document: Mapping[str, Any]) -> None:
         return
     arrows = [(a.source, a.target, a.rate, a.kind, a.label) for a in sketch.arrows(document)]
     taking.diagram(graph, "flow-diagram", [("from", "to", "rate", "kind", "label"), *arrows])
+    if len(arrows) > MOST_WORDED:
+        st.caption("Numbers are those of the flows in their table, from 1; T marks transmission.")
     st.caption(
         "Thick dashed arrows marked “transmission” are new infections (F); thin solid ones are transitions (V). "
         "Infected compartments have a double border; words without a box stand outside."
