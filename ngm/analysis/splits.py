@@ -10,7 +10,7 @@ import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
-from ngm.analysis.point import MOST_WRITTEN
+from ngm.analysis.point import MOST_WRITTEN, Point
 from ngm.analysis.stated_entries import is_stated
 from ngm.analysis.steady import refuse_season
 from ngm.derivation.template import flow_name
@@ -20,7 +20,7 @@ from ngm.errors import DerivationError
 from ngm.results_opinion import Split, Splits
 from ngm.scenario.model import Kind, Scenario
 
-__all__ = ["choices", "splits", "with_kinds"]
+__all__ = ["choices", "roots", "splits", "with_kinds"]
 
 #: Flows that may be a choice at once: 16 combinations.
 MOST_CHOICES = 4
@@ -212,6 +212,40 @@ def _split(
         growth,
         members,
     )
+
+
+def roots(scenario: Scenario) -> list[tuple[dict[int, Kind], float]]:
+    """Return R0 of every other division in plain doubles, as far as it has one: to be looked at before it is computed well.
+
+    What a flow moves when its kind is changed adds up: each is changed once, and the combinations are sums.
+    """
+    typed = decided_numbers(scenario)
+    found = list(choices(scenario))[:MOST_CHOICES]
+    if typed.F is None or len(typed.template.types) > MOST_WRITTEN:
+        return []
+    F, V = as_floats(typed.F), as_floats(typed.V)
+    kinds: dict[int, Kind] = {}
+    moves = []
+    for number in found:
+        kinds[number] = "transition" if scenario.flows[number - 1].kind == "transmission" else "transmission"
+        with precision(typed.bits):
+            point = Point(with_kinds(scenario, {number: kinds[number]}))
+            point.infection_free = typed.point.infection_free
+            one, two = point.F_and_V
+        moves.append((as_floats(one) - F, as_floats(two) - V))
+    out = []
+    for chosen in product((False, True), repeat=len(found)):
+        made = [k for k, yes in enumerate(chosen) if yes]
+        if not made:
+            continue
+        A, B = F + sum(moves[k][0] for k in made), V + sum(moves[k][1] for k in made)
+        try:
+            stays = np.linalg.inv(B)
+        except np.linalg.LinAlgError:
+            continue
+        if stays.min() >= -SAME * np.abs(stays).max():
+            out.append(({found[k]: kinds[found[k]] for k in made}, float(np.abs(np.linalg.eigvals(A @ stays)).max())))
+    return out
 
 
 def _numbers(changed: Scenario, as_typed: Numbers) -> Numbers:

@@ -2,9 +2,9 @@
 
 A unit is a vector of powers, and every flow, sum and value that follows others is one linear equation between such
 vectors. What carries no unit in the file (a parameter without one, a contact matrix) is an unknown of these equations: it
-is solved for, so that the finding says which unit the flows need. A library of physical units was looked at and left
-out: the words here are free ones (midge, germ, bite), the powers are already exact, and none of them solves for
-unknowns.
+is solved for, so that the finding says which unit the flows need. A general library (pint 0.25) was tried and
+left out: the words here are free ones (midge, germ, bite), of which it knows none and takes some for physics (S is siemens),
+it refuses person-day, solves for no unknown, and takes most of a second to start.
 
 Conventions. A compartment counts individuals unless its `unit` says otherwise, and a flow is in its compartment's unit
 per time. Units of time of known length are one unit here, since numbers in another one are converted. ``person``,
