@@ -12,7 +12,7 @@ import numpy as np
 
 from ngm.analysis.points import CONTEXT, Place, Places, decimal_value, exact_value
 from ngm.analysis.solve import solve
-from ngm.analysis.splits import splits, with_kinds
+from ngm.analysis.splits import roots, with_kinds
 from ngm.analysis.steady import refuse_season
 from ngm.errors import ExpressionError, Problem, ScenarioError
 from ngm.expression.from_latex import from_latex, is_latex, right_side
@@ -21,7 +21,7 @@ from ngm.expression.parse import parse
 from ngm.expression.tree import Apply, Name, Node, Number, Total, walk
 from ngm.results import Solution
 from ngm.results_opinion import FormulaMatch, FormulaOpinion
-from ngm.scenario.model import Kind, Scenario
+from ngm.scenario.model import Scenario
 from ngm.worker import identical
 
 __all__ = ["formula"]
@@ -32,6 +32,8 @@ LEAST = 8
 #: Two numbers are one where they differ by less than this share: with a closed form, by arrays, for a type number.
 SAME_DIGITS = Decimal("1e-40")
 SAME_NUMBER = Decimal("1e-10")
+#: Numbers this near are worth a better look.
+NEAR = Decimal("1e-7")
 MOST_FOR_SETS = 6
 MOST_FOR_TARGETS = 6
 #: Points at which other splits are computed anew.
@@ -111,8 +113,6 @@ class _Comparison:
         self.scenario, self.solution, self.text, self.tree = scenario, solution, text, tree
         self.places = places
         self.found = found
-        #: whether the first point holds the values of the file
-        self.at_the_file = found[0][0].typed == places.typed() if found else False
         self.same = SAME_DIGITS if places.closed is not None else SAME_NUMBER
         self.compared: list[FormulaMatch] = []
 
@@ -259,13 +259,9 @@ class _Comparison:
 
     def _other_split(self) -> tuple[str, str] | None:
         place, own = self.found[0]
-        for row in splits(self.scenario).splits:
-            if row.refused is not None or row.as_typed or not row.R0 or own is None:
-                continue
-            kinds: dict[int, Kind] = {
-                int(number): "transmission" if kind == "transmission" else "transition"
-                for number, kind in row.kinds.items()
-            }
+        if own is None:
+            return None
+        for kinds, root in roots(self.places.changed(self.scenario, place.typed)):
             changed = with_kinds(self.scenario, kinds)
 
             def value(place: Place, changed: Scenario = changed, power: int = 1) -> Decimal | None:
@@ -273,15 +269,10 @@ class _Comparison:
                 return None if numbers is None else _power(Decimal(numbers[0]), power)
 
             for power in (1, 2):
-                first = _power(Decimal(row.R0), power) if self.at_the_file else value(place, power=power)
-                if first is None or not _close(own, first, SAME_NUMBER):
+                if not _close(own, _power(Decimal(root), power), NEAR):
                     continue
                 if self._some_agree(lambda p, v=value, k=power: v(p, power=k), SAME_NUMBER, SPLIT_POINTS):  # type: ignore[misc]
-                    moved = ", ".join(
-                        f"flow {number} as {kind}"
-                        for number, kind in kinds.items()
-                        if self.scenario.flows[number - 1].kind != kind
-                    )
+                    moved = ", ".join(f"flow {number} as {kind}" for number, kind in kinds.items())
                     square = "" if power == 1 else " squared"
                     return "other split", (
                         f"The formula is R0{square} of another split of the same flows: {moved}. Both are 1 together; "
