@@ -188,6 +188,21 @@ def test_two_hosts():
     assert solution.structure.classes[1].R0 == 0
 
 
+def test_weekly_steps():
+    # By hand: mean stays in whole steps, 1/0.6 at home and 0.15/0.6 of them 1/0.5 in the sick bay.
+    solution = solve("weekly-steps-tarn-croup")
+    assert solution.R0 == pytest.approx(0.9 * 0.9 * (1 + 0.15 * 0.2 / 0.5) / 0.6, rel=1e-12)
+    F = np.array([[0, 0.81, 0.162], [0, 0, 0], [0, 0, 0]])
+    T = np.array([[0.25, 0, 0], [0.75, 0.4, 0], [0, 0.15, 0.5]])
+    assert solution.growth_factor == pytest.approx(max(abs(np.linalg.eigvals(F + T))), rel=1e-12)
+    assert solution.growth_rate == pytest.approx(math.log(solution.growth_factor), rel=1e-12)
+    # As its comments say: read as rates that leave the same shares, the twin lies below 1.
+    twin = ngm.twin(ngm.load(SCENARIOS / "weekly-steps-tarn-croup.toml"))
+    home, bay = -math.log(0.4), math.log(2)
+    assert twin.versions[1].R0 == pytest.approx(0.81 * (1 / home + 0.25 * 0.2 / bay), rel=1e-12)
+    assert twin.versions[1].R0 < 1 < twin.versions[0].R0
+
+
 def test_wards_and_burials():
     home = 0.15 + 0.07 + 0.08
     ward = 0.15 / home

@@ -57,6 +57,11 @@ def figures(solution: Solution, write: Write) -> None:
             if solution.doubling_time is not None
             else "It does not grow: there is no doubling time."
         )
+        if solution.discrete and solution.form == "flows":
+            st.caption(
+                f"In discrete time: a step of one {unit} multiplies the infection by {plain(write(solution.growth_factor))}, "
+                "and the growth rate is the logarithm of that."
+            )
     now = solution.effective
     if now is not None:
         st.metric("Effective number at the state now", write(now.R), border=True, width="content")

@@ -37,6 +37,7 @@ PAGES = (
             *("stable_distribution", "reproductive_value", "T", "critical_effort"),
         ),
     ),
+    Page("outbreak", "Outbreak", ("R0", "growth_rate", "doubling_time")),
     Page("mixing", "Mixing", ("R0", "reciprocity", "assortativity", "stable_distribution", "elasticity")),
     Page("control", "Control", ("R0", "control", "T", "critical_effort", "coverage")),
     Page("sensitivity", "Sensitivity", ("R0", "elasticity", "above_one", "rank_correlation", "sobol")),
