@@ -65,10 +65,15 @@ def test_python_examples():
 
 
 def test_the_scenario_shown_is_the_one_that_works():
-    (shown,) = blocks("toml")
+    shown, stated = blocks("toml")
     solution = ngm.solve(ngm.loads(shown))
     assert solution.R0 is not None
     assert f"{solution.R0:.4g}" in README
+    # The two matrices that stand in place of flows are of two files.
+    head = '[scenario]\ntitle = "T"\ntime_unit = "year"\n'
+    K, population = stated.split("[projection]")
+    assert ngm.solve(ngm.loads(head + K)).R0 == pytest.approx(3**0.5, rel=1e-14)  # a cycle of 3/2 and 2, by hand
+    assert ngm.solve(ngm.loads(f"{head}[projection]{population}")).R0 == pytest.approx(0.3 / 0.2 * 2, rel=1e-14)
 
 
 def test_two_commands_and_no_more():
@@ -121,7 +126,9 @@ class TestScenario:
         assert solution.R0 is not None
         low, high = solution.R0_bounds
         assert 0.5 < low <= solution.R0 <= high < 10
-        assert (solution.R0 > 1) == (solution.growth_rate > 0)
+        # A K as given has no time in it.
+        assert (solution.growth_rate is None) == (solution.form == "K as given")
+        assert solution.growth_rate is None or (solution.R0 > 1) == (solution.growth_rate > 0)
         # A closed population breaks A5 and says so; nothing else may be wrong with an example.
         assert {c.name for c in solution.conditions if not c.holds} <= {"A5"}
         assert len(solution.warnings) <= 1

@@ -214,6 +214,8 @@ class _Derivation:
         # Rates per head enter the elimination in their short form, as they stand in V.
         net = replace(net, moves=_each(net.moves, tidy), sources=_each(net.sources, tidy), exits=_each(net.exits, tidy))
         stays = residence_times(net, at, self.program, template.types, tidy)
+        if any(stay.has(sympy.zoo, sympy.nan) for column in stays.values() for stay in column.values()):
+            return  # nobody leaves some state, whatever the values: a mean stay there is no number
         for j in at:
             for row, stay in stays[j].items():
                 about = f"time spent in {template.types[row]} by one who enters at {template.types[j]}"

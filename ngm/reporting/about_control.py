@@ -79,6 +79,12 @@ def _targets(caption: str, key: str, head: str, rows: Sequence[tuple[Line, _Targ
     return [Table((caption,), heads, out, frozenset({1, 2})), *listed(len(rows), len(out), "targets")]
 
 
+def _below_one(m: Material) -> str:
+    if m.solution.form == "projection":
+        return "Below one the population dies out while births and survival stay as they are."
+    return "Below one the infection cannot take off where nobody is infected; it need not mean elimination."
+
+
 def interventions(m: Material) -> Section:
     """Show the interventions of the scenario beside the baseline."""
     title, c = "Interventions compared", m.comparison
@@ -105,10 +111,7 @@ def interventions(m: Material) -> Section:
         Paragraph(
             (
                 "The baseline's number is R0; with an intervention in force it is a control reproduction number. "
-                "Removed: the share "
-                "of R0 that is taken away. Below one the infection cannot take off where nobody is infected; it "
-                "need not mean "
-                "elimination.",
+                "Removed: the share of R0 that is taken away. " + _below_one(m),
             )
         ),
         Table(("Interventions beside the baseline.",), heads, tuple(rows[:MOST_ROWS]), frozenset({1, 2, 3, 5})),

@@ -251,5 +251,7 @@ def closed_form(m: Material, told: set[str]) -> Section:
         blocks.append(Paragraph(("As text: ", Code(spaced(s.closed_form)))))
         return Section("closed_form", title, tuple(blocks))
     why = "there is no closed form worth printing: R0 is the number, within its proven bounds"
+    if s.season is not None:
+        why = "R0 over a season has no closed form: the polynomial above is that of the averaged season"
     blocks.append(Note((why[0].upper() + why[1:] + ".",)))
     return Section("closed_form", title, tuple(blocks), "absent", "none exists that would help a reader")

@@ -88,7 +88,7 @@ def flows(m: Material) -> Section:
         (
             (str(k),),
             _ends(flow),
-            (inline(flow.rate.text),),
+            (inline(flow.rate.text, 26),),
             (Strong("transmission") if flow.kind == "transmission" else "transition",),
             (_reason(scenario, flow),),
         )
@@ -185,6 +185,8 @@ def parameters(m: Material) -> Section:
         blocks += listed(len(p.values), len(rows), f"values of {p.name}")
     missing = [p.name for p in scenario.parameters.values() if not (p.source or p.follows)]
     title = "Parameters"
+    if not scenario.parameters:
+        return Section("parameters", title, (), "absent", "the scenario has none")
     if missing:
         told = ", ".join(missing[:20]) + (" and more" if len(missing) > 20 else "")
         return Section("parameters", title, tuple(blocks), "missing", f"no source is given for {told}")

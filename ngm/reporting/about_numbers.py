@@ -7,6 +7,7 @@ from ngm.reporting import by_hand, figures
 from ngm.reporting.document import Block, Bullets, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import Material, listed, name_of, term
 from ngm.reporting.numbers import exact, number
+from ngm.results import Solution
 
 __all__ = ["classes", "reproduction_number", "who_infects_whom"]
 
@@ -19,10 +20,10 @@ def reproduction_number(m: Material) -> Section:
     growth: Line = (
         Strong("Growth rate: "),
         number(s.growth_rate, "solve.growth_rate"),
-        f" per {m.unit}: the largest real part of the eigenvalues of F − V. It has the sign of R0 − 1, and R0 "
-        "alone does not "
-        "give it.",
+        f" per {m.unit}: {_growth_words(s)}. It has the sign of R0 − 1, and R0 alone does not give it.",
     )
+    if s.form == "K as given":
+        growth = (Strong("Growth rate: "), "not known, since a K as given has no time in it.")
     if s.R0 is None or s.R0_bounds is None:
         blocks: list[Block] = [
             Note((Strong("There is no R0 at these values. "), s.no_R0 or "")),
@@ -34,13 +35,11 @@ def reproduction_number(m: Material) -> Section:
         (
             Strong("R0 per generation: "),
             exact(s.R0, "solve.R0"),
-            ", the spectral radius of K: new infections by one typical case in the next generation. It lies between ",
+            f", {_meaning(s)} in the next generation. It lies between ",
             exact(low, "solve.R0_bounds[0]"),
             " and ",
             exact(high, "solve.R0_bounds[1]"),
-            ". These bounds are proven for the decimals of the scenario (quotients of Collatz and Wielandt, "
-            "class by class, in "
-            "arithmetic that carries its own error)" + (", for the matrix as rounded." if len(s.types) > 500 else "."),
+            _bounds_words(s),
         )
     ]
     period = next((c.period for c in s.structure.classes if c.R0 == s.R0), None) if s.structure is not None else None
@@ -68,10 +67,10 @@ def reproduction_number(m: Material) -> Section:
             (
                 Strong("Doubling time: "),
                 number(s.doubling_time, "solve.doubling_time"),
-                f" {m.unit}s, while few are infected.",
+                f" {m.unit}s" + ("." if s.form == "projection" else ", while few are infected."),
             )
         )
-    else:
+    elif s.form != "K as given":
         items.append((Strong("Doubling time: "), "none, as it does not grow."))
     if s.effective is not None:
         now: Line = (
@@ -79,6 +78,32 @@ def reproduction_number(m: Material) -> Section:
         )
         items.append((Strong("Effective number at the state now (not R0): "), *now, "."))
     return Section("R0", title, (Bullets(tuple(items)),))
+
+
+def _growth_words(s: Solution) -> str:
+    if s.season is not None:
+        return f"the Floquet exponent of F − V over a period of {s.season.period:g} {s.time_unit}s"
+    if s.discrete:
+        return "the logarithm of the dominant root of F + T, T = I − V"
+    return "the largest real part of the eigenvalues of F − V"
+
+
+def _meaning(s: Solution) -> str:
+    if s.season is not None:
+        return "the spectral radius of the next-generation operator over the season: new infections by one typical case"
+    if s.form == "projection":
+        return "the net reproduction number, the spectral radius of K: new members by one new member in its life,"
+    return "the spectral radius of K: new infections by one typical case"
+
+
+def _bounds_words(s: Solution) -> str:
+    if s.season is not None:
+        return ". These bounds are an estimate of the error of the numerical method over the season, and no proof."
+    tail = ", for the matrix as rounded." if len(s.types) > 500 else "."
+    return (
+        ". These bounds are proven for the decimals of the scenario (quotients of Collatz and Wielandt, class by class, in "
+        "arithmetic that carries its own error)" + tail
+    )
 
 
 def classes(m: Material) -> Section:
@@ -91,7 +116,7 @@ def classes(m: Material) -> Section:
         return Section("classes", title, (), "absent", "no type is ever infected")
     if k.irreducible:
         first = (
-            "K is irreducible: an infection of any type leads to infections of every type, sooner or later. "
+            f"K is irreducible: {_each(s)}, sooner or later. "
             "Shares of the types "
             "settle on one pattern wherever it starts."
         )
@@ -116,9 +141,17 @@ def classes(m: Material) -> Section:
         )
         for n, c in enumerate(shown)
     )
-    heads = ("class", "types", "R0", "period", f"growth per {m.unit}")
+    heads: tuple[str, ...] = ("class", "types", "R0", "period", f"growth per {m.unit}")
+    if s.form == "K as given":
+        heads, rows = heads[:4], tuple(row[:4] for row in rows)
     table = Table(("Classes of K.",), heads, rows, frozenset({2, 3, 4}))
     return Section("classes", title, (Paragraph((first,)), table, *listed(len(k.classes), len(shown), "classes")))
+
+
+def _each(s: Solution) -> str:
+    if s.form == "projection":
+        return "a birth into any of these stages leads to births into every one"
+    return "an infection of any type leads to infections of every type"
 
 
 def who_infects_whom(m: Material) -> Section:
@@ -157,6 +190,7 @@ def who_infects_whom(m: Material) -> Section:
             )
         )
     )
+    blocks += by_hand.vector_formulas()
     heads = ("type", "share of new infections", "reproductive value")
     blocks.append(Table(("Stable distribution and reproductive values.",), heads, rows, frozenset({1, 2})))
     blocks += listed(len(names), len(rows), "types")
@@ -172,4 +206,3 @@ def who_infects_whom(m: Material) -> Section:
             )
         )
     return Section("who_infects_whom", title, tuple(blocks))
-    blocks += by_hand.vector_formulas()

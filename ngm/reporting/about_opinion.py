@@ -25,9 +25,7 @@ def units(m: Material) -> Section:
         blocks.append(Bullets(tuple((Strong(f"{note.where}: "), note.message) for note in shown)))
         blocks += listed(len(u.findings), len(shown), "findings")
     else:
-        blocks.append(
-            Paragraph(("The units fit: every flow is in its compartment's unit per time, and no sum mixes units.",))
-        )
+        blocks.append(Paragraph((u.fits,)))
     read = [p for p in u.parameters if p.converted or p.reading]
     if read:
         rows = tuple(

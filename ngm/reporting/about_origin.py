@@ -6,6 +6,7 @@ import platform
 from collections.abc import Sequence
 from importlib.metadata import PackageNotFoundError, version
 
+from ngm.reporting import about_stated
 from ngm.reporting.checks import check
 from ngm.reporting.document import (
     Block,
@@ -70,7 +71,8 @@ def limits(m: Material) -> Section:
     own = m.scenario.report.get("limits")
     if isinstance(own, tuple) and own:
         blocks += [Paragraph((Strong("As the author states them:"),)), Bullets(tuple((text,) for text in own))]
-    blocks.append(Bullets(tuple((text,) for text in CAUTIONS)))
+    cautions = about_stated.CAUTIONS if m.solution.form == "projection" else CAUTIONS
+    blocks.append(Bullets(tuple((text,) for text in cautions)))
     warnings = list(dict.fromkeys([*m.scenario.warnings, *m.solution.warnings]))
     if warnings:
         blocks.append(Paragraph((Strong("Warnings of this computation:"),)))
@@ -81,9 +83,10 @@ def limits(m: Material) -> Section:
 def checks(m: Material) -> Section:
     """Say how the results were checked."""
     s, found = m.solution, check(m)
-    items: list[Line] = [
-        ("The infection-free state was put back into the flows; residual ", number(s.residual, "report.residual"), "."),
-    ]
+    items: list[Line] = []
+    if s.infection_free is not None:
+        residual = number(s.residual, "report.residual")
+        items.append(("The infection-free state was put back into the flows; residual ", residual, "."))
     if found.product is not None:
         items.append(
             (
@@ -120,7 +123,11 @@ def checks(m: Material) -> Section:
     if s.R0_bounds is not None:
         low, high = s.R0_bounds
         items.append(
-            ("Width of the proven bounds on R0: ", number(high - low, "report.checks.width"), "."),
+            (
+                f"Width of the {'proven' if s.season is None else 'estimated'} bounds on R0: ",
+                number(high - low, "report.checks.width"),
+                ".",
+            ),
         )
     if s.R0 is None:
         items.append(("There is no R0 to check at these values.",))

@@ -50,6 +50,7 @@ def companion(m: Material, document: Document) -> dict[str, Any]:
             "parameters": {name: list(values[:1000]) for name, values in m.values.items()},
             "matrices": matrices,
             "sensitivity": [{"value": index.value} for index in own],
+            "sizes": None if m.solution.sizes is None else list(m.solution.sizes),
             "checks": {
                 "product": found.product,
                 "root": found.root,

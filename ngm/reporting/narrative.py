@@ -5,7 +5,15 @@ from __future__ import annotations
 from collections.abc import Callable, Collection
 from dataclasses import replace
 
-from ngm.reporting import about_control, about_derivation, about_model, about_numbers, about_opinion, about_origin
+from ngm.reporting import (
+    about_control,
+    about_derivation,
+    about_model,
+    about_numbers,
+    about_opinion,
+    about_origin,
+    about_stated,
+)
 from ngm.reporting.document import Block, Bullets, Document, Formula, Line, Note, Paragraph, Section, Strong, Table
 from ngm.reporting.material import Material, term
 from ngm.reporting.numbers import number
@@ -29,6 +37,7 @@ SECTIONS: dict[str, str] = {
     "closed_form": "Closed form",
     "formula": "A formula compared",
     "R0": "R0, growth and doubling time",
+    "population": "Growth of the population",
     "classes": "Classes and period",
     "who_infects_whom": "Who infects whom",
     "control": "What control must reach",
@@ -74,6 +83,7 @@ def narrate(m: Material, sections: Collection[str] | None = None) -> Document:
         "closed_form": lambda: about_derivation.closed_form(m, told),
         "formula": lambda: about_opinion.formula(m),
         "R0": lambda: about_numbers.reproduction_number(m),
+        "population": lambda: about_stated.population(m),
         "classes": lambda: about_numbers.classes(m),
         "who_infects_whom": lambda: about_numbers.who_infects_whom(m),
         "control": lambda: about_control.control(m),
@@ -88,6 +98,7 @@ def narrate(m: Material, sections: Collection[str] | None = None) -> Document:
         "provenance": lambda: about_origin.provenance(m),
         "references": lambda: about_origin.references(m),
     }
+    makers |= about_stated.instead(m)
     wanted = set(SECTIONS if sections is None else sections)
     made = [_wide_last(make()) for key, make in makers.items() if key in wanted]
     under: list[Line] = [(f"Written on {m.made_on} from scenario ", m.solution.digest, ".")]
@@ -138,6 +149,8 @@ def summary(m: Material) -> Section:
 def _found(m: Material) -> Line:
     s = m.solution
     assert s.R0 is not None
+    if s.form == "projection":
+        return about_stated.found(m)
     if s.R0 > 1:
         meaning = "above 1: where nobody is infected yet, the infection can spread"
     elif s.R0 < 1:
@@ -185,7 +198,8 @@ def _control(m: Material) -> list[Block]:
             )
     if not items:
         return []
-    words = "the share of all infections of a type to be prevented to bring the number to 1, if that type alone is acted on."
+    what = "births into a stage" if m.solution.form == "projection" else "infections of a type"
+    words = f"the share of all {what} to be prevented to bring the number to 1, if that one alone is acted on."
     return [Paragraph((Strong("Control must reach: "), words)), Bullets(tuple(items))]
 
 

@@ -90,6 +90,8 @@ def _places(text: str) -> tuple[list[tuple[Path, str]], list[tuple[Path, tuple[i
     """Return the keys that are names, and the texts that hold names with their places, both in the order of the file."""
     keys: dict[Path, str] = {}
     values: list[tuple[Path, tuple[int, int], str]] = []
+    # Types of a matrix that stands in the file are labels, and no names: one may be called as a parameter is.
+    labelled = any(statement.path[:1] in (("next_generation",), ("projection",)) for statement in statements(text))
     for path, span in _leaves(text):
         section = path[0]
         if section in (*NAMED, *_STATES) and len(path) > 1 and isinstance(path[1], str):
@@ -98,6 +100,8 @@ def _places(text: str) -> tuple[list[tuple[Path, str]], list[tuple[Path, tuple[i
             at = path.index("group") + 1
             keys.setdefault(path[: at + 1], canonical(str(path[at])) or "")
         raw = text[span[0] : span[1]]
+        if labelled and path[-1] in ("susceptibility", "infectivity"):
+            continue
         if raw[:1] in "\"'" and _holds_names(path):
             values.append((path, span, str(tomllib.loads(f"x = {raw}")["x"])))
     return list(keys.items()), values

@@ -10,6 +10,7 @@ import pytest
 import ngm
 from ngm.scenario.renaming import rename_everywhere
 from tests.scenario.models import GROUPED, PLAIN
+from tests.stated import change, given
 
 SCENARIOS = Path(__file__).parents[2] / "scenarios"
 
@@ -40,8 +41,9 @@ def test_the_model_stays_the_same_whatever_is_renamed(path):
     """Each name in turn gets another one; then all at once: the same number, under other names."""
     text = path.read_text(encoding="utf-8")
     scenario = ngm.loads(text, folder=str(SCENARIOS))
+    stated = scenario.given is not None or scenario.projection is not None
     named = [
-        *scenario.compartments,
+        *([] if stated else scenario.compartments),  # types of a matrix that stands in the file are labels
         *scenario.parameters,
         *scenario.definitions,
         *scenario.matrices,
@@ -99,3 +101,10 @@ def test_conflicts_are_refused(old, new, why):
 def test_a_name_that_an_expression_waits_for_is_a_conflict():
     with pytest.raises(ngm.ScenarioError, match="stands in the file already"):
         rename_everywhere(PLAIN.replace("foi * S", "foi * S * later"), "beta", "later")
+
+
+def test_types_of_a_matrix_are_labels():
+    # A type may be called as a parameter is: the parameter alone gets the new name, by hand.
+    text = given([["p", 1], [1, 0]], ["p", "q"], {"p": 0.5}, tail=change('susceptibility = "p", reduce = 0.5'))
+    changed = rename_everywhere(text, "p", "share")
+    assert changed == text.replace("p = { value", "share = { value").replace('[["p", 1]', '[["share", 1]')
