@@ -185,10 +185,12 @@ def _numbers(shown: Shown) -> tuple[str, ...]:
     )
 
 
-def worked(field: str, what: str, question: tuple[object, ...], function: Callable[[], Any]) -> Any:
+def worked(
+    field: str, what: str, question: tuple[object, ...], function: Callable[[], Any], title: str = "with these draws"
+) -> Any:
     """Return the answer to a question, worked out in the background; None, with how far it is and a stop, until then.
 
-    `field`: of the widgets; `what`: what is under way, in words.
+    `field`: of the widgets; `what`: what is under way, in words; `title`: above what is wrong with the question.
     """
     work = long_work.start(question, function)
     if work.stopped and not work.abandoned:
@@ -204,7 +206,7 @@ def worked(field: str, what: str, question: tuple[object, ...], function: Callab
         long_work.forget(question)
         raise work.failed
     if work.problems:
-        parts.problem_box(work.problems, "with these draws")
+        parts.problem_box(work.problems, title)
         return None
     return work.result
 

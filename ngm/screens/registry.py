@@ -38,6 +38,8 @@ PAGES = (
         ),
     ),
     Page("outbreak", "Outbreak", ("R0", "growth_rate", "doubling_time")),
+    Page("first_weeks", "First weeks", ("growth_rate", "doubling_time", "K")),
+    Page("below_one", "Below one", ("R0", "control")),
     Page("mixing", "Mixing", ("R0", "reciprocity", "assortativity", "stable_distribution", "elasticity")),
     Page("control", "Control", ("R0", "control", "T", "critical_effort", "coverage")),
     Page("sensitivity", "Sensitivity", ("R0", "elasticity", "above_one", "rank_correlation", "sobol")),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import cache, panels, parts, stated_panels
+from ngm.screens import cache, course_panels, panels, parts, stated_panels
 
 
 def page() -> None:
@@ -16,6 +16,8 @@ def page() -> None:
     write = parts.digits("numbers")
     solution = shown.solution
     panels.figures(solution, write)
+    if solution.season is not None:
+        course_panels.season(solution.season, solution.time_unit, write)
     stated_panels.population(solution, write)
     parts.cautions(solution.form)
     parts.warnings_box(solution.warnings)
