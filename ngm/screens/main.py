@@ -14,7 +14,7 @@ def main() -> None:
     st.set_page_config(page_title="Next-generation matrices", page_icon="🧮", layout="wide")
     offered = [st.Page(entry.path, title=entry.title, default=entry is PAGES[0]) for entry in PAGES]
     allowed = signing.is_open(signing.who())
-    page = st.navigation(offered, position="sidebar" if allowed else "hidden")
+    page = st.navigation(offered, position="sidebar" if allowed else "hidden", expanded=True)
     if not allowed:
         signing.show()
         return
