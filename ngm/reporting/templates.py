@@ -80,6 +80,8 @@ LATEX_HEAD = r"""\usepackage{iftex}
 \renewcommand{\arraystretch}{1.3}
 \setlength{\emergencystretch}{4em}
 \allowdisplaybreaks
+\AtBeginDocument{\ifdefined\LTcapwidth\setlength{\LTcapwidth}{\textwidth}\fi}
+\IfFileExists{float.sty}{\usepackage{float}\floatplacement{figure}{H}}{}
 \IfFileExists{pdflscape.sty}{\usepackage{pdflscape}}{\usepackage{lscape}}
 """
 

@@ -47,8 +47,12 @@ def _width(node: Node, parts: list[float]) -> float:
             return max(above, below) + 1
         case Power():
             return parts[0] + 0.7 * parts[1]
-        case Negate() | Call() | Total() | Apply():
-            return sum(parts) + 4
+        case Negate():
+            return parts[0] + 1.5
+        case Apply(matrix=name) | Call(function=name):
+            return sum(parts) + len(name) + 3
+        case Total():
+            return parts[0] + 5
     raise TypeError(type(node).__name__)
 
 

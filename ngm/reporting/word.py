@@ -30,6 +30,7 @@ SIDEWAYS = (
     _ends('<w:pgSz w:w="16838" w:h="11906" w:orient="landscape"/>'),
 )
 _TEXT_WIDTH = 11906 - 2 * 1100
+_SIDE_WIDTH = 16838 - 2 * 1100
 #: The width for which pandoc lays out the columns of tables.
 _PANDOC_WIDTH = 7920
 
@@ -67,15 +68,26 @@ def on_pages(content: bytes) -> bytes:
 def _document(text: str) -> str:
     # Only the layout of the page and the widths of columns: what is said is not looked at.
     head, mark, tail = text.rpartition("<w:sectPr>")
-    head = re.sub(
-        r'<w:gridCol w:w="(\d+)" />',
-        lambda found: f'<w:gridCol w:w="{round(int(found[1]) * _TEXT_WIDTH / _PANDOC_WIDTH)}" />',
-        head,
-    )
+    # What lies on its side stands between the two ends of `SIDEWAYS`.
+    upright, *sideways = head.split(SIDEWAYS[0])
+    parts = [_scaled(upright, _TEXT_WIDTH)]
+    for run in sideways:
+        wide, mark_after, rest = run.partition(SIDEWAYS[1])
+        parts.append(_scaled(wide, _SIDE_WIDTH) + mark_after + _scaled(rest, _TEXT_WIDTH))
+    head = SIDEWAYS[0].join(parts)
     place = tail.find("<w:footnotePr>")
     reference, size = _PAGE.split("<w:pgSz", 1)
     end = tail.find("</w:footnotePr>") + len("</w:footnotePr>") if place >= 0 else 0
     return f"{head}{mark}{reference}{tail[:end]}<w:pgSz{size}{tail[end:]}"
+
+
+def _scaled(text: str, width: int) -> str:
+    """Return text with the columns of its tables scaled to a width of the page."""
+    return re.sub(
+        r'<w:gridCol w:w="(\d+)" />',
+        lambda found: f'<w:gridCol w:w="{round(int(found[1]) * width / _PANDOC_WIDTH)}" />',
+        text,
+    )
 
 
 def _styles(text: str) -> str:
