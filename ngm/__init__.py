@@ -38,7 +38,7 @@ if TYPE_CHECKING:
     from ngm.scenario.file import load, loads
     from ngm.scenario.model import Scenario
     from ngm.scenario.packages import combined
-    from ngm.scenario.slips import conversions
+    from ngm.scenario.slips import conversions, slips
 
 __all__ = [
     "DerivationError",
@@ -71,6 +71,7 @@ __all__ = [
     "report",
     "reproduction_numbers",
     "sensitivity",
+    "slips",
     "solve",
     "splits",
     "strength_needed",
@@ -92,6 +93,7 @@ _HOMES = {
     "contact_readings": "ngm.analysis.mixing",
     "control": "ngm.analysis.control",
     "conversions": "ngm.scenario.slips",
+    "slips": "ngm.scenario.slips",
     "course": "ngm.analysis.course",
     "coverage_needed": "ngm.analysis.strength",
     "load": "ngm.scenario.file",

@@ -220,7 +220,8 @@ def _run(options: argparse.Namespace) -> str:
         return answer
     from ngm.console_opinion import conversions_text
 
-    return conversions_text(ngm.conversions(scenario), scenario.time_unit) + answer
+    doubts = [str(finding) for finding in ngm.slips(scenario)]
+    return conversions_text(ngm.conversions(scenario), scenario.time_unit, doubts) + answer
 
 
 def _answer(options: argparse.Namespace, scenario: Scenario) -> str:

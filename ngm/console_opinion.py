@@ -10,14 +10,15 @@ from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 __all__ = ["conversions_text", "difference_text", "formula_text", "opinion_text", "splits_text", "units_text"]
 
 
-def conversions_text(pairs: Sequence[tuple[str, str]], time_unit: str) -> str:
-    """Return what is converted as lines that stand above every result; empty where nothing is."""
-    if not pairs:
-        return ""
-    lines = [f"Converted (time in {time_unit})", *(f"  {name}: {text}" for name, text in pairs[:MOST_CONVERTED])]
+def conversions_text(pairs: Sequence[tuple[str, str]], time_unit: str, doubts: Sequence[str] = ()) -> str:
+    """Return what is converted, and likely slips, as lines that stand above every result; empty where there is nothing."""
+    lines = [f"  {name}: {text}" for name, text in pairs[:MOST_CONVERTED]]
+    if lines:
+        lines = [f"Converted (time in {time_unit})", *lines]
     if len(pairs) > MOST_CONVERTED:
         lines.append(f"  and {len(pairs) - MOST_CONVERTED} more: python -m ngm units FILE")
-    return "\n".join([*lines, "", ""])
+    lines += [f"  ! {doubt}" for doubt in doubts[:MOST_CONVERTED]]
+    return "\n".join([*lines, "", ""]) if lines else ""
 
 
 def opinion_text(result: Units | Splits | FormulaOpinion | Difference) -> str:

@@ -66,6 +66,20 @@ def test_text_and_json(arguments, words, keys, capsys):
     assert keys <= set(json.loads(capsys.readouterr().out))
 
 
+def test_a_rate_per_week_is_told_per_day_above_the_result(capsys, tmp_path):
+    assert main(["solve", SEIR, "--set", "gamma=0.35"]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    told = lines.index("  gamma: 0.35 1/week = 0.05 1/day, once in 20 day")
+    assert told < next(k for k, line in enumerate(lines) if line.startswith("R0 = "))
+    path = tmp_path / "slip.toml"
+    path.write_text(Path(SEIR).read_text(encoding="utf-8").replace('1.4, unit = "1/week"', '1.4, unit = "1/day"'))
+    assert main(["control", str(path)]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    assert lines[2].startswith("  ! parameters.gamma: its label says '5 days'")
+    assert main(["solve", str(path), "--json"]) == 0
+    assert json.loads(capsys.readouterr().out)["warnings"]
+
+
 def test_wrong_input_is_told_and_exits_with_2(capsys):
     assert main(["formula", SEIR, "--text", "bata"]) == 2
     assert main(["difference", SEIR, "--to", "nowhere.toml"]) == 2

@@ -259,12 +259,16 @@ def calibrate(
 
 
 @st.cache_resource(max_entries=128, show_spinner=False)
-def conversions(text: str, folder: str | None) -> tuple[tuple[str, str], ...]:
-    """Return each parameter that is converted for the computation, with its value in force; none where it is no model."""
+def conversions(text: str, folder: str | None) -> tuple[tuple[tuple[str, str], ...], tuple[tuple[str, str], ...]]:
+    """Return the parameters that are converted, with their values in force, and the slips of units of time with where they are.
+
+    Nothing of either where the text is no model.
+    """
     try:
-        return ngm.conversions(ngm.loads(text, folder=folder))
+        scenario = ngm.loads(text, folder=folder)
     except NgmError:
-        return ()
+        return (), ()
+    return ngm.conversions(scenario), tuple((found.where, found.message) for found in ngm.slips(scenario))
 
 
 @st.cache_resource(max_entries=4096, show_spinner=False)

@@ -66,7 +66,11 @@ def units_panel(shown: Shown) -> None:
         parts.problem_box(found, "with the units")
         return
     for note in found.findings:
-        st.warning(f"**{plain(note.where)}**: {plain(note.message)}")
+        if note.kind != "missing":
+            st.warning(f"**{plain(note.where)}**: {plain(note.message)}")
+    missing = [f"- **{plain(note.where)}**: {plain(note.message)}" for note in found.findings if note.kind == "missing"]
+    if missing:
+        st.warning("\n".join(missing))
     if not found.findings:
         st.markdown(f"✓ {found.fits}")
     rows = [
@@ -79,7 +83,7 @@ def units_panel(shown: Shown) -> None:
         ]
         for row in found.parameters
     ]
-    parts.table(["Parameter", "As typed", "Unit", f"In force (per {found.time_unit})", "Reads as"], rows)
+    parts.table(["Parameter", "As typed", "Unit", f"In force (time in {found.time_unit})", "Reads as"], rows)
     stays = [
         [
             stay.compartment,
@@ -137,7 +141,7 @@ def splits_panel(shown: Shown, write: Write) -> None:
                     parts.numbers_table(split.F, found.types, write, f"F, split {k}")
                     parts.numbers_table(split.V, found.types, write, f"V, split {k}")
                     parts.numbers_table(split.K, split.types_at_infection, write, f"K, split {k}")
-    parts.warnings_box(found.warnings)
+    parts.warnings_box(warning for warning in found.warnings if not warning.startswith("Units: "))  # told above
 
 
 def formula_panel(shown: Shown, write: Write) -> None:
@@ -163,6 +167,7 @@ def formula_panel(shown: Shown, write: Write) -> None:
         st.markdown(
             f"They differ, for example, here: the model's R0 is {write(found.R0_there)}, "
             f"the formula {write(found.formula_there)}."
+            + (f" They answer differently to **{plain(', '.join(found.responses))}**." if found.responses else "")
         )
         parts.table(
             ["Parameter (in force)", "Value", "Elasticity of the model's R0", "Elasticity of the formula"],

@@ -219,14 +219,17 @@ def earlier_result() -> None:
 
 
 def conversions(text: str, folder: str | None, time_unit: str) -> None:
-    """Say which values are converted, as typed and as used."""
-    told = [f"{plain(name)}: {plain(value)}" for name, value in cache.conversions(text, folder)]
+    """Say which values are converted, as typed and as used, and which are likely a slip between two units of time."""
+    found, doubts = cache.conversions(text, folder)
+    told = [f"{plain(name)}: {plain(value)}" for name, value in found]
     more = f"; {len(told) - MOST_CONVERTED} more on the page Second opinion" if len(told) > MOST_CONVERTED else ""
     if told:
         st.caption(
             f"Converted for the computation (time in units of one {plain(time_unit)}): "
             f"{'; '.join(told[:MOST_CONVERTED])}{more}."
         )
+    if doubts:
+        st.warning("\n".join(f"- **{plain(where)}**: {plain(message)}" for where, message in doubts[:MOST_CONVERTED]))
 
 
 def latex(text: str) -> str:

@@ -43,6 +43,24 @@ def test_stays_and_splits_of_a_shelf_scenario():
     assert "Not to be compared between models that split differently: **R0**" in words(at)
 
 
+@pytest.mark.parametrize("page", ["model", "scenario", "numbers", "second_opinion"])
+def test_what_is_converted_stands_above_the_number(page):
+    text = shelf.read("seir-velmar-fever.toml")[0].replace(
+        "gamma = { value = 1.4, unit", "gamma = { value = 0.35, unit"
+    )
+    at = start(state(text), page)
+    told = [element.value.replace("\\", "") for element in at.caption if "Converted" in element.value]
+    assert any("gamma: 0.35 1/week = 0.05 1/day, once in 20 day" in one for one in told)
+
+
+def test_a_slip_is_told_on_every_page_with_results():
+    text = shelf.read("seir-velmar-fever.toml")[0].replace(
+        'value = 1.4, unit = "1/week"', 'value = 1.4, unit = "1/day"'
+    )
+    for page in ("model", "scenario", "numbers", "control"):
+        assert "Were week and day mixed up?" in words(start(state(text), page)).replace("\\", "")
+
+
 def test_another_model_is_compared():
     at = start(state(shelf.read("seir-velmar-fever.toml")[0]), PAGE)
     at = at.selectbox(key="second_opinion.other").set_value("vaccination-copper-spots.toml").run()
