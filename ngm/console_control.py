@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from ngm.console import WIDTH, closing, figure, squeezed, table
 from ngm.results_control import Allocation, Coverage, Strength
-from ngm.wording import allocation_words, coverage_words, share, strength_words, whole
+from ngm.wording import allocation_words, coverage_words, share, strength_words, waning_words, whole
 
 __all__ = ["allocation_text", "coverage_text", "needs_text", "strength_text"]
 
@@ -53,6 +53,7 @@ def coverage_text(result: Coverage, besides: Sequence[str] = (), more: Sequence[
         f"share of their infections to prevent = {figure(result.critical_effort)}",
         f"coverage needed = {figure(result.coverage)}",
     ]
+    lines += [waning_words(one) for one in result.waning]
     if result.required is not None and result.coverage is None:
         lines.append(f"coverage that would be needed = {figure(result.required)}")
     lines.append(f"{result.label}, all of them vaccinated = {figure(result.at_full)}")

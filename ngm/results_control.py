@@ -24,6 +24,7 @@ __all__ = [
     "Share",
     "SmallestSupply",
     "Strength",
+    "Waning",
 ]
 
 BASELINE_LABEL = "R0"
@@ -209,6 +210,42 @@ class Strength:
         }
 
 
+@dataclass(frozen=True, slots=True)
+class Waning:
+    """A flow of the model by which protection is lost.
+
+    Attributes
+    ----------
+    flow : str
+        As messages name it: ``flow 3 "Protection lost"``.
+    compartment, label, back_to : str
+        Who is protected, and where they come back to.
+    kind : "vaccine" or "infection"
+        What protects them.
+    slowest, fastest : float
+        Rate per head, per time unit, over the groups.
+    """
+
+    flow: str
+    compartment: str
+    label: str
+    back_to: str
+    kind: str
+    slowest: float
+    fastest: float
+    time_unit: str
+
+    def to_json(self) -> dict[str, Any]:
+        """Return the flow as it stands in the object that `coverage --json` prints."""
+        return {
+            "flow": self.flow,
+            "compartment": self.compartment,
+            "back_to": self.back_to,
+            "kind": self.kind,
+            "rate": [self.slowest, self.fastest],
+        }
+
+
 @dataclass(frozen=True, eq=False, slots=True)
 class Coverage:
     """The coverage that a vaccine needs in chosen groups: the result of `ngm.coverage_needed`.
@@ -232,6 +269,8 @@ class Coverage:
         coverage is not enough.
     at_full : float or None
         The control reproduction number with everybody in the groups vaccinated.
+    waning : tuple of Waning
+        Where protection wanes in the model itself.
     """
 
     title: str
@@ -252,6 +291,7 @@ class Coverage:
     why: str | None
     warnings: tuple[str, ...] = ()
     label: str = CONTROL_LABEL
+    waning: tuple[Waning, ...] = ()
 
     def to_json(self) -> dict[str, Any]:
         """Return the object that `coverage --json` prints."""
@@ -270,6 +310,7 @@ class Coverage:
             "unattainable": self.unattainable,
             "at_full": self.at_full,
             "why": self.why,
+            "waning": [one.to_json() for one in self.waning],
             "warnings": list(self.warnings),
         }
 

@@ -5,10 +5,19 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 
-from ngm.results_control import Allocation, Coverage, Strength
+from ngm.results_control import Allocation, Coverage, Strength, Waning
 from ngm.results_draws import Assured
 
-__all__ = ["allocation_words", "assured_words", "coverage_words", "figure", "share", "strength_words", "whole"]
+__all__ = [
+    "allocation_words",
+    "assured_words",
+    "coverage_words",
+    "figure",
+    "share",
+    "strength_words",
+    "waning_words",
+    "whole",
+]
 
 
 def figure(value: float | None) -> str:
@@ -58,6 +67,21 @@ def coverage_words(result: Coverage) -> str:
         f"{share(result.coverage)} of {who}{each} must be vaccinated for the {result.label} to fall to {result.target:g}. "
         f"With all of them vaccinated it is {figure(result.at_full)}."
     )
+
+
+def waning_words(result: Waning) -> str:
+    """Return what the loss of protection means for a coverage."""
+    unit = result.time_unit
+    stay = f"1/{figure(result.fastest)} = {figure(1 / result.fastest)} {unit}s on average"
+    if result.fastest > result.slowest * (1 + 1e-9):
+        stay = f"{figure(1 / result.fastest)} to {figure(1 / result.slowest)} {unit}s on average, by group"
+    who = result.compartment if result.label == result.compartment else f"{result.compartment} ({result.label})"
+    told = f"Immunity of {who} wanes: {result.flow} leads back to {result.back_to}, after {stay}."
+    if result.kind == "vaccine":
+        return (
+            f"{told} The coverage holds only while it is kept up: those who lose protection must be vaccinated again."
+        )
+    return f"{told} Past infection does not last in place of vaccination: the coverage is of the whole group, immune or not."
 
 
 def allocation_words(result: Allocation) -> list[str]:

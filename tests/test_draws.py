@@ -20,7 +20,7 @@ def run(capsys, *arguments):
     return code, out, err
 
 
-def test_other_numbers_stand_beside_the_contract(capsys):
+def test_other_numbers_stand_beside_those_of_every_run(capsys):
     arguments = ["sensitivity", AGES, "--draws", "64", "--seed", "3", "--of", "growth_rate", "T(E[18-64])", "--json"]
     code, out, _ = run(capsys, *arguments)
     assert code == 0

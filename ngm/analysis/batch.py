@@ -167,17 +167,24 @@ def _all(
     made = plan(scenario, intervention, columns, len(arrays), growth=what == "growth")
     size = len(arrays[0])
     starts = range(0, size, TASK)
+    # All in one array from the start: a piece fills its part.
+    values = np.empty((made.size**2, size) if what == "K" else size)
     if executor is None:
-        done = [compute(made, start, [a[start : start + TASK] for a in arrays], what, passing) for start in starts]
+        done = [
+            compute(made, k, [a[k : k + TASK] for a in arrays], what, passing, values[..., k : k + TASK])
+            for k in starts
+        ]
     else:
         waiting = [
             executor.submit(compute, made, start, [a[start : start + TASK] for a in arrays], what, passing)
             for start in starts
         ]
         done = []
-        for future in waiting:
-            done.append(future.result())
-            advance(len(done[-1].values.T))
+        for start, future in zip(starts, waiting, strict=True):
+            piece = future.result()
+            values[..., start : start + TASK] = piece.values
+            done.append(piece)
+            advance(piece.values.shape[-1])
     refused = [piece.refused for piece in done if piece.refused is not None]
     if refused:
         # Pieces come in the order of the draws: the first refusal is the one of the first draw.
@@ -190,9 +197,4 @@ def _all(
         reasons += [why for why in piece.reasons if why not in reasons]
         table = np.array([0, *(reasons.index(why) + 1 for why in piece.reasons)], dtype=np.int32)
         codes[start : start + len(piece.codes)] = table[piece.codes]
-    rows = made.size**2 if what == "K" else None
-    empty = np.empty(0) if rows is None else np.empty((rows, 0))
-    if len(done) == 1:
-        return done[0].values, codes, reasons
-    values = np.concatenate([piece.values for piece in done], axis=-1) if done else empty
     return values, codes, reasons

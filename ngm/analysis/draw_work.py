@@ -49,17 +49,32 @@ class Piece:
     refused: NgmError | None = None
 
 
-def compute(plan: Plan, start: int, arrays: list[FloatArray], what: str = "R0", passing: bool = False) -> Piece:
-    """Return R0 (or K, row by row) at some draws; `start`: how many draws come before them."""
-    return _Work(plan, start, arrays, what, passing).run()
+def compute(
+    plan: Plan,
+    start: int,
+    arrays: list[FloatArray],
+    what: str = "R0",
+    passing: bool = False,
+    out: FloatArray | None = None,
+) -> Piece:
+    """Return R0 (or K, row by row) at some draws; `start`: how many draws come before them, `out`: where values go."""
+    return _Work(plan, start, arrays, what, passing, out).run()
 
 
 class _Work:
-    def __init__(self, plan: Plan, start: int, arrays: list[FloatArray], what: str, passing: bool) -> None:
+    def __init__(
+        self,
+        plan: Plan,
+        start: int,
+        arrays: list[FloatArray],
+        what: str,
+        passing: bool,
+        out: FloatArray | None,
+    ) -> None:
         self.plan, self.start, self.arrays, self.what, self.passing = plan, start, arrays, what, passing
         self.size = len(arrays[0])
         shape = (plan.size**2, self.size) if what == "K" else (self.size,)
-        self.values = np.empty(shape)
+        self.values = np.empty(shape) if out is None else out
         self.codes = np.zeros(self.size, dtype=np.int32)
         self.reasons: list[str] = []
         self.alone = 0

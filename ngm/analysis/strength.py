@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -10,6 +11,7 @@ from ngm.analysis.groups import HostGroup, host_groups
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.steady import refuse_season
+from ngm.analysis.waning import waning_of
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import critical_effort, type_reproduction_number
 from ngm.engine.roots import last_fall, respond, root_between
@@ -186,7 +188,8 @@ def coverage_needed(
     lasting = lasting_of(turnover, waning)
     found = decided_numbers(scenario, intervention)
     with precision(found.bits):
-        return _coverage(found, groups, efficacy, against_spread, kind, lasting, target)
+        result = _coverage(found, groups, efficacy, against_spread, kind, lasting, target)
+    return replace(result, waning=waning_of(found))
 
 
 def _coverage(

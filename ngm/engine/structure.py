@@ -26,6 +26,9 @@ __all__ = [
 BoolArray = npt.NDArray[np.bool_]
 IntArray = npt.NDArray[np.intp]
 
+#: Types up to which classes are found without a graph.
+_SMALL = 24
+
 
 def classes(pattern: BoolArray) -> list[IntArray]:
     """Return the strongly connected classes, a class before all those that it leads to.
@@ -51,6 +54,8 @@ def classes(pattern: BoolArray) -> list[IntArray]:
     size = len(pattern)
     if size == 0:
         return []
+    if size <= _SMALL:
+        return _few_classes(pattern)
     heads, tails = np.nonzero(pattern)
     graph = csr_array((np.ones(len(heads), dtype=np.int8), (tails, heads)), shape=(size, size))
     count, labels = connected_components(graph, directed=True, connection="strong")
@@ -72,6 +77,30 @@ def classes(pattern: BoolArray) -> list[IntArray]:
             waiting[follower] -= 1
             if waiting[follower] == 0:
                 heapq.heappush(ready, (int(members[follower][0]), follower))
+    return result
+
+
+def _few_classes(pattern: BoolArray) -> list[IntArray]:
+    """Return `classes` of a small pattern: who leads to whom as bits of whole numbers, which costs less than a graph."""
+    size = len(pattern)
+    leads = [sum(1 << i for i, there in enumerate(column) if there) for column in pattern.T.tolist()]
+    for k in range(size):
+        through = leads[k]
+        leads = [ends | through if ends >> k & 1 else ends for ends in leads]
+    left = (1 << size) - 1
+    members: list[list[int]] = []
+    for j in range(size):
+        if left >> j & 1:
+            own = [i for i in range(j, size) if i == j or (leads[j] >> i & 1 and leads[i] >> j & 1)]
+            members.append(own)
+            left &= ~sum(1 << i for i in own)
+    result: list[IntArray] = []
+    waiting = members
+    while waiting:
+        # The first class, by its first type, that no other one leads to.
+        first = next(one for one in waiting if not any(leads[o[0]] >> one[0] & 1 for o in waiting if o is not one))
+        waiting = [one for one in waiting if one is not first]
+        result.append(np.array(first, dtype=np.intp))
     return result
 
 

@@ -17,7 +17,7 @@ from ngm.screens.cache import ByGroup
 from ngm.screens.forms import Column
 from ngm.screens.parts import Shown, plain
 from ngm.spreadsheet import csv_text
-from ngm.wording import allocation_words, coverage_words, share, whole
+from ngm.wording import allocation_words, coverage_words, share, waning_words, whole
 
 __all__ = ["coverage", "sharing"]
 
@@ -119,6 +119,8 @@ def coverage(shown: Shown, write: Write) -> None:
         "Coverage is the share of the whole group, immune or not. Whether a vaccine protects everybody in part or some "
         "wholly does not move the threshold; it does move the size of an epidemic above it."
     )
+    for one in together.waning:
+        st.info(plain(waning_words(one)))
     if together.lasting != 1:
         st.caption(f"Protection wanes: {plain(share(together.lasting))} of coverage protects at any time.")
     parts.warnings_box(together.warnings)

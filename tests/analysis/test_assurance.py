@@ -101,7 +101,7 @@ def test_distributions_of_other_numbers():
     assert sum(count for _, _, count in growth.histogram) == 4096
     told = found.more_json()["distributions"]
     assert [one["number"] for one in told] == ["R0", "growth_rate", "T(I)"]
-    # the contract's object is as without them
+    # the object `global` is as without them
     assert found.to_json() == ngm.uncertainty(STRAIGHT, 4096, seed=1).to_json()
 
 

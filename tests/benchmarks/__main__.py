@@ -16,7 +16,7 @@ import scipy
 import sympy
 
 #: What runs where nothing is named.
-PARTS = ("derivation", "groups", "draws", "opinions")
+PARTS = ("derivation", "groups", "draws", "control", "opinions")
 
 
 def main(named: list[str]) -> None:

@@ -378,3 +378,32 @@ def test_per_cycle_is_said_where_there_is_a_period():
     text, folder = shelf.read("vector-borne-ostrel-fever.toml")
     at = ask(start(AppState(now=Version(text, "v.toml", folder, text)), "control"), "Whom to act on")
     assert "per cycle" in words(at)
+
+
+def test_several_routes_acted_on_together(page, capsys):
+    at = ask(page, "Whom to act on")
+    at.selectbox(key="control.kind").select("routes: infection of one type by another").run()
+    chosen = ["E[18-64] infecting E[18-64]", "E[5-17] infecting E[5-17]"]
+    at.multiselect(key="control.routes").set_value(chosen).run()
+    assert not at.exception
+    heads, row = next(t for t in tables(at) if t[0][0] == "targets")
+    assert heads[1:3] == ["T", "critical effort"]
+    # Second route: the same on the command line.
+    entries = ["--entry", "E[18-64]<-E[18-64]", "--entry", "E[5-17]<-E[5-17]"]
+    assert main(["control", f"scenarios/{NAME}", *entries]) == 0
+    told = next(line for line in capsys.readouterr().out.splitlines() if line.startswith("Together:"))
+    T = float(re.search(r"T = ([0-9.]+)", told)[1])
+    assert row[0] == " + ".join(chosen)
+    assert float(row[1]) == pytest.approx(T, rel=1e-3)
+    at.multiselect(key="control.routes").set_value(chosen[:1]).run()
+    assert not [t for t in tables(at) if t[0][0] == "targets"]
+
+
+def test_waning_that_the_model_has_is_named_beside_the_coverage():
+    name = "vaccination-copper-spots.toml"
+    text, folder = shelf.read(name)
+    at = ask(start(AppState(now=Version(text, name, folder, text)), "control"), "Coverage")
+    assert not at.exception
+    assert "Immunity of V (Vaccinated, still susceptible in part) wanes" in "\n".join(
+        one.value.replace("\\", "") for one in at.info
+    )
