@@ -225,15 +225,17 @@ def test_sixteen_ages():
 
 
 def test_ticks_and_mice():
-    # By hand: larva and vole make a class of two types, [[k, l], [m, 0]]; ticks infected as nymphs infect nobody.
-    k, l, m = 0.1 * 0.5 * 12 * 0.35, 20 * 2.8 * 0.5, 0.1 * 0.5 * 0.8
+    # By hand: larva and vole make a class of two types, [[k, up], [m, 0]]; ticks infected as nymphs infect nobody.
+    k, up, m = 0.1 * 0.5 * 12 * 0.35, 20 * 2.8 * 0.5, 0.1 * 0.5 * 0.8
     solution = solve("ticks-and-mice-quill-fever")
-    assert solution.R0 == pytest.approx((k + math.sqrt(k * k + 4 * l * m)) / 2, rel=1e-14)
+    assert solution.R0 == pytest.approx((k + math.sqrt(k * k + 4 * up * m)) / 2, rel=1e-14)
     assert solution.types_at_infection == ("tick infected as larva", "tick infected as nymph", "vole")
     assert solution.left[1] == 0
-    rows = {row.name: row.R0 for row in ngm.compare(ngm.load(SCENARIOS / "ticks-and-mice-quill-fever.toml")).interventions}
-    assert rows["Bait with vaccine"] == pytest.approx((k + math.sqrt(k * k + 4 * l * m * 0.5)) / 2, rel=1e-14)
-    assert rows["More deer"] == pytest.approx((0.8 * k + math.sqrt((0.8 * k) ** 2 + 4 * l * m * 0.8)) / 2, rel=1e-14)
+    rows = {
+        row.name: row.R0 for row in ngm.compare(ngm.load(SCENARIOS / "ticks-and-mice-quill-fever.toml")).interventions
+    }
+    assert rows["Bait with vaccine"] == pytest.approx((k + math.sqrt(k * k + 4 * up * m * 0.5)) / 2, rel=1e-14)
+    assert rows["More deer"] == pytest.approx((0.8 * k + math.sqrt((0.8 * k) ** 2 + 4 * up * m * 0.8)) / 2, rel=1e-14)
 
 
 def test_stages_of_mosquitoes():
@@ -246,7 +248,9 @@ def test_stages_of_mosquitoes():
     A = np.diag([0.3, 0.35, 0, 0.45]) + np.diag([0.4, 0.15, 0.6], -1)
     A[0, 3] = eggs
     assert solution.growth_factor == pytest.approx(max(np.linalg.eigvals(A).real), rel=1e-12)
-    rows = {row.name: row.R0 for row in ngm.compare(ngm.load(SCENARIOS / "mosquito-stages-saltings.toml")).interventions}
+    rows = {
+        row.name: row.R0 for row in ngm.compare(ngm.load(SCENARIOS / "mosquito-stages-saltings.toml")).interventions
+    }
     assert rows["Sterile males"] == pytest.approx(0.3 * R0, rel=1e-14)
     assert rows["Larvicide"] == pytest.approx(0.33 * R0, rel=1e-14)
     assert rows["Spraying of adults"] == pytest.approx(R0 * 0.55 / (1 - 0.135), rel=1e-14)

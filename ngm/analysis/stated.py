@@ -16,7 +16,7 @@ from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers
 from ngm.analysis.stated_entries import sizes_of
 from ngm.engine.balls import nearest
-from ngm.engine.linear import identity
+from ngm.engine.linear import below_zero, identity
 from ngm.engine.spectrum import Spectrum, spectrum
 from ngm.results import Condition, Projected, Symbolic, Vector
 
@@ -61,8 +61,10 @@ def projected(found: Numbers) -> Projected:
     Caswell (2001) Matrix Population Models, chapters 4 and 9 (from memory)
     """
     births, transitions = found.F, identity(len(found.V), found.V) - found.V
-    spec = spectrum(births + transitions)
     stages = found.template.types
+    if below_zero(births).any():
+        return Projected(stages, None, None, None, None, None)
+    spec = spectrum(births + transitions)
     notes: list[str] = []
     period = spec.cycle
     leading = [stages[int(k)] for c in spec.leading for k in spec.classes[c]]

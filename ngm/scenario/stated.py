@@ -1,10 +1,10 @@
 """A model whose matrices stand in the file, as the arrows that make the same matrices.
 
 A K as given: each type is left at rate 1 and new infections of type i arise at K[i][j] for each member of type j, so that
-F = K, V = I and F V^-1 = K. A projected population: of stage j a share 1 - T[j][j] goes on in each step, T[i][j] arrive in
-stage i, and births[i][j] new members of stage i arise: F = births, V = I - T. With these arrows a given matrix takes the
-same way through the program as every other model; what has no meaning for it (a growth rate of K) is left out by whoever
-shows it.
+F = K, V = I and F V^-1 = K. A projected population: of stage j a share T[i][j] moves to stage i in each step, T[j][j] stays,
+what the column lacks to 1 is lost, and births[i][j] new members of stage i arise: F = births, V = I - T. With these arrows a
+given matrix takes the same way through the program as every other model; what has no meaning for it (a growth rate of K)
+is left out by whoever shows it.
 """
 
 from __future__ import annotations
@@ -47,22 +47,24 @@ def flows_of(model: GivenMatrix | Projection, names: Sequence[str]) -> tuple[Flo
     """Return the flows that make the matrices of the model, without those that are 0 by structure."""
     if isinstance(model, GivenMatrix):
         arriving = _arrivals(model.K, names, "transmission", "New infections of {}")
-        leaving = [_flow(name, None, Name(name), "transition", f"End of {name}") for name in names]
+        leaving = [_flow(name, None, Name(name), "transition", _label("End of {}", name)) for name in names]
         return (*arriving, *leaving)
     births = _arrivals(model.births, names, "transmission", "Births of {}")
-    moved = tuple(
-        tuple(ZERO if i == j else entry for j, entry in enumerate(row)) for i, row in enumerate(model.transitions)
-    )
-    arriving = _arrivals(moved, names, "transition", "Arriving in {}")
-    leaving = []
+    moving, leaving = [], []
     for j, name in enumerate(names):
-        stays = model.transitions[j][j].tree
-        share = ONE if _is_zero(stays) else Add(((1, ONE), (-1, stays)))
-        leaving.append(_flow(name, None, _times(share, name), "transition", f"Leaving {name}"))
-    return (*births, *arriving, *leaving)
+        shares = [(i, row[j].tree) for i, row in enumerate(model.transitions) if not _is_zero(row[j].tree)]
+        for i, share in shares:
+            if i != j:
+                moving.append(
+                    _flow(name, names[i], _times(share, name), "transition", _label("{} to {}", name, names[i]))
+                )
+        lost = Add(((1, ONE), *((-1, share) for _, share in shares))) if shares else ONE
+        leaving.append(_flow(name, None, _times(lost, name), "transition", _label("Deaths of {}", name)))
+    return (*births, *moving, *leaving)
 
 
-ZERO = Expression("0", Number(Fraction(0), "0"))
+def _label(text: str, *names: str) -> str:
+    return text.format(*(name.removesuffix(TYPE_MARK) for name in names))
 
 
 def _arrivals(rows: Rows, names: Sequence[str], kind: Kind, label: str) -> list[Flow]:
@@ -74,7 +76,7 @@ def _arrivals(rows: Rows, names: Sequence[str], kind: Kind, label: str) -> list[
         ]
         if terms:
             tree = terms[0] if len(terms) == 1 else Add(tuple((1, term) for term in terms))
-            out.append(_flow(None, name, tree, kind, label.format(name.removesuffix(TYPE_MARK))))
+            out.append(_flow(None, name, tree, kind, _label(label, name)))
     return out
 
 
