@@ -124,3 +124,72 @@ def no_closed_form() -> ngm.Scenario:
         lines += ["[[flow]]", 'from = "S"', f'to = "{n}"', f'rate = "S/100 * ({force})"', 'kind = "transmission"']
         lines += ["[[flow]]", f'from = "{n}"', f'rate = "g * {n}"', 'kind = "transition"']
     return ngm.loads("\n".join(lines) + "\n")
+
+
+def halves(contacts: str = "[[5, 5], [5, 5]]", sizes: str = "[500, 500]") -> ngm.Scenario:
+    """Two groups that meet as `contacts` says; where all meet alike, R0 = 0.04 * 10 / 0.2 = 2 by hand."""
+    return ngm.loads(f"""\
+[scenario]
+title = "Two halves"
+time_unit = "day"
+
+[dimensions]
+half = ["left", "right"]
+
+[compartments]
+S = {{ infected = false, by = ["half"] }}
+I = {{ infected = true, by = ["half"] }}
+R = {{ infected = false, by = ["half"] }}
+
+[parameters]
+q = {{ value = 0.04, source = "invented" }}
+gamma = {{ value = 0.2, unit = "1/day", source = "invented" }}
+people = {{ value = {sizes}, by = ["half"], unit = "person", source = "invented" }}
+
+[matrices.C]
+by = "half"
+values = {contacts}
+population = "people"
+reciprocal = true
+source = "invented"
+
+[infection_free]
+S = "people"
+R = 0
+
+[[flow]]
+from = "S"
+to = "I"
+rate = "q * S * C(I / people)"
+kind = "transmission"
+
+[[flow]]
+from = "I"
+to = "R"
+rate = "gamma * I"
+kind = "transition"
+""")
+
+
+def islands(count: int = 5) -> ngm.Scenario:
+    """Islands with ferries between all of them, two infected states each: long formulas and wide matrices."""
+    numbers = range(1, count + 1)
+    lines = ["[scenario]", 'title = "Islands"', 'time_unit = "day"', "[compartments]"]
+    lines += [f"S_{k} = {{ infected = false }}" for k in numbers]
+    lines += [f"{state}_{k} = {{ infected = true }}" for k in numbers for state in "EI"]
+    lines += ["[parameters]", 'sigma = { value = 0.2, unit = "1/day" }', 'gamma = { value = 0.15, unit = "1/day" }']
+    lines += [f'beta_{k} = {{ value = {0.2 + 0.05 * k:.2f}, unit = "1/day" }}' for k in numbers]
+    lines += [
+        f"m_{i}{j} = {{ value = {0.01 + 0.003 * i + 0.001 * j:.3f} }}" for i in numbers for j in numbers if i != j
+    ]
+    lines += ["N = { value = 1000 }", "[infection_free]", *(f'S_{k} = "N"' for k in numbers)]
+    flows = []
+    for k in numbers:
+        flows += [(f"S_{k}", f"E_{k}", f"beta_{k} * S_{k} * I_{k} / N"), (f"E_{k}", f"I_{k}", f"sigma * E_{k}")]
+        flows += [(f"I_{k}", "", f"gamma * I_{k}")]
+        flows += [(f"{c}_{k}", f"{c}_{j}", f"m_{k}{j} * {c}_{k}") for j in numbers if j != k for c in "EI"]
+    for source, target, rate in flows:
+        kind = "transmission" if source[0] == "S" else "transition"
+        end = f'to = "{target}"' if target else ""
+        lines += ["[[flow]]", f'from = "{source}"', end, f'rate = "{rate}"', f'kind = "{kind}"']
+    return ngm.loads("\n".join(lines) + "\n")

@@ -37,7 +37,12 @@ def words(document, key):
     out = []
     for block in section.blocks:
         for line in lines(block):
-            out.append("".join(p if isinstance(p, str) else getattr(p, "text", getattr(p, "shown", "")) for p in line))
+            out.append(
+                "".join(
+                    p if isinstance(p, str) else getattr(p, "text", getattr(p, "shown", getattr(p, "latex", "")))
+                    for p in line
+                )
+            )
     return "\n".join(out)
 
 
