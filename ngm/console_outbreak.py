@@ -111,7 +111,7 @@ def _chance(chance: Chance) -> list[str]:
         named = ", ".join(f"{count:g} {name}" for name, count in chance.introduced.items())
         lines.append(f"  {named} start a large outbreak with probability {figure(chance.large_outbreak)}")
     rows = [[row.type, figure(row.large_outbreak), figure(row.dies_out)] for row in chance.rows]
-    return [*lines, *_cut(rows, ["one case of", "large outbreak", "dies out"]), f"  from {chance.how}"]
+    return [*lines, *_cut(rows, ["one case of", "large outbreak", "dies out"]), f"  How: {chance.how}"]
 
 
 def _pace(pace: PaceResult, unit: str, discrete: bool) -> list[str]:

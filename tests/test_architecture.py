@@ -67,6 +67,7 @@ MAY_IMPORT: dict[str, set[str]] = {
     },
     "drafts": {"errors"},
     "reporting": {
+        "results_outbreak",
         "results_course",
         "results_season",
         "wording_course",

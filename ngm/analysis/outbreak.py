@@ -14,7 +14,7 @@ from ngm.analysis.groups import host_groups
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.process import MOST_DENSE, Process, dense_F_and_V, dense_K, process
 from ngm.engine.balls import nearest, precision
-from ngm.engine.chance import Generations, Offspring, extinction
+from ngm.engine.chance import Generations, Offspring, Steps, extinction
 from ngm.engine.pace import pace as interval_of
 from ngm.engine.perron import reproduction_number, reproductive_value, stable_distribution
 from ngm.errors import Problem, ScenarioError
@@ -209,6 +209,19 @@ def _chance(found: Numbers, vaccine: Vaccine | None, introduced: Mapping[str, fl
         how = "each case infects a Poisson number with the means of K, all at once"
         K = dense_K(found)
         offspring = Generations(K if vaccine is None else _thinned(K, np.arange(len(K)), vaccine))
+    elif scenario.projection is not None:
+        F, V = dense_F_and_V(found)
+        T = np.eye(len(V)) - V
+        dies = 1 - T.sum(axis=0)
+        if np.any(dies < -1e-12) or np.any(T < -1e-12):
+            return Chance("shares of T add up to more than 1, so they are no chances of one member.")
+        offspring = Steps(
+            F if vaccine is None else _thinned(F, found.at, vaccine), np.maximum(T, 0.0), np.maximum(dies, 0.0)
+        )
+        how = (
+            f"in each {scenario.time_unit} a member stays, moves on or dies with the shares of T, and "
+            "has a Poisson number of young; what may last is its line of descendants"
+        )
     else:
         if amounts:
             return Chance(

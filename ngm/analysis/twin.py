@@ -231,7 +231,7 @@ def _report(scenario: Scenario, versions: list[TwinVersion], stays: tuple[TwinSt
         return (
             f"The number as typed, with the words 'in steps of one {unit}', where its shares were "
             f"counted or estimated per {unit} "
-            f"with this model; its growth factor per {unit} is then what is seen in the {unit}ly "
+            f"with this model; its growth factor per {unit} is then what is seen in the "
             "counts. Where durations or rates "
             "were measured and only turned into shares, report the continuous twin, or take a shorter step until both agree."
             + apart

@@ -59,6 +59,10 @@ REFERENCES = (
     "Shuai, Heesterbeek & van den Driessche (2013) J. Math. Biol. 67:1067, corrected 2015, 71:255. Target "
     "reproduction numbers.",
     "Lewis, Shuai & van den Driessche (2019) J. Math. Biol. 78:2317. Numbers of states.",
+    "Allen & van den Driessche (2008) J. Difference Equ. Appl. 14:1127. Discrete time.",
+    "Andreasen (2011) Bull. Math. Biol. 73:2305. Final size.",
+    "Allen & Lahodny (2012) J. Biol. Dyn. 6:590. Chance of a large outbreak.",
+    "Wallinga & Lipsitch (2007) Proc. R. Soc. B 274:599. Growth and generation intervals.",
     "Berman & Plemmons (1994) Nonnegative Matrices in the Mathematical Sciences. Bounds of Collatz and Wielandt, "
     "M-matrices.",
     "Grassmann, Taksar & Heyman (1985) Oper. Res. 33:1107. Elimination without subtraction.",

@@ -41,6 +41,8 @@ def companion(m: Material, document: Document) -> dict[str, Any]:
         "compare": None if m.comparison is None else m.comparison.to_json(),
         "sensitivity": None if m.sensitivity is None else m.sensitivity.to_json(),
         "allocate": None if m.allocation is None else m.allocation.to_json(),
+        "outbreak": None if m.outbreak is None else m.outbreak.to_json(),
+        "twin": None if m.twin is None else m.twin.to_json(),
         "units": None if m.units is None else m.units.to_json(),
         "splits": None if m.splits is None else m.splits.to_json(),
         "formula": None if m.formula is None else m.formula.to_json(),

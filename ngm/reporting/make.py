@@ -207,6 +207,12 @@ def compose(
         command=command,
         mixing=_mixing(scenario) if "groups" in wanted and small else {},
         supplied=allocation is not None or supply is not None,
+        outbreak=said.tried("outbreak", lambda: ngm.outbreak(scenario))
+        if wanted & {"pace", "chance", "final_size"} and small
+        else None,
+        twin=ngm.twin(scenario)
+        if "twin" in wanted and small and solution.discrete and solution.form == "flows"
+        else None,
         units=said.tried("units", lambda: ngm.units(scenario)) if "units" in wanted else None,
         splits=said.tried("splits", lambda: ngm.splits(scenario)) if "splits" in wanted and small else None,
         # What was asked for in so many words is refused in words, and not left out.

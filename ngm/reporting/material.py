@@ -16,6 +16,7 @@ from ngm.results import ControlResult, Matrix, Solution, TextMatrix
 from ngm.results_control import Allocation, Comparison
 from ngm.results_mixing import Mixing
 from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
+from ngm.results_outbreak import Outbreak, Twin
 from ngm.results_sensitivity import Sensitivity
 from ngm.scenario.model import Scenario
 
@@ -68,6 +69,8 @@ class Material:
     splits: Splits | None = None
     formula: FormulaOpinion | None = None
     difference: Difference | None = None
+    outbreak: Outbreak | None = None
+    twin: Twin | None = None
     why: Mapping[str, str] = field(default_factory=dict)
 
     @property
@@ -97,8 +100,11 @@ def inline(text: str, most: float = 34.0) -> Inline:
 
 
 def name_of(item: str) -> Inline:
-    """Return a name with its groups, typeset: an index is short enough for any line."""
-    return Maths(latex_of(item)) if len(item) <= 40 else Code(item)
+    """Return a name with its groups, typeset: an index is short enough for any line. A label in words stays as it is."""
+    try:
+        return Maths(latex_of(item)) if len(item) <= 40 else Code(item)
+    except ExpressionError:
+        return Code(item)
 
 
 def term(items: Sequence[str], most: int = 8) -> Line:

@@ -148,7 +148,7 @@ def _chance(chance: Chance, write: Write) -> None:
     rows = [[row.type, write(row.large_outbreak), write(row.dies_out)] for row in chance.rows]
     parts.table(["One case of", "starts a large outbreak", "dies out"], rows)
     st.caption(
-        f"From {plain(chance.how)}. Below 1 every outbreak dies out; above 1 many do all the same, by "
+        f"How: {plain(chance.how)}. Below 1 every outbreak dies out; above 1 many do all the same, by "
         "chance, while cases are few."
     )
 

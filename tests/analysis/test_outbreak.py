@@ -137,6 +137,47 @@ def test_where_it_does_not_apply_the_reason_is_given(model, said):
         assert words in size.why
 
 
+GIVEN = """
+[scenario]
+title = "Given"
+time_unit = "week"
+[next_generation]
+types = ["young", "old"]
+K = [[1.2, 0.8], [0.5, 0.9]]
+sizes = [400, 600]
+"""
+
+
+def test_a_given_matrix_and_sizes_are_enough():
+    # Published (second hand), as above; chances by hand: Poisson numbers with the means of K.
+    found = outbreak(GIVEN, introduce={"old": 1})
+    assert [row.attack_rate for row in found.final_size.rows] == pytest.approx([0.7926654955, 0.5185193597], abs=1e-10)
+    q = np.array([row.dies_out for row in found.chance.rows])
+    assert q == pytest.approx(np.exp(-np.array([[1.2, 0.8], [0.5, 0.9]]).T @ (1 - q)), abs=1e-14)
+    assert found.chance.large_outbreak == pytest.approx(1 - q[1])
+    assert "no time in it" in (found.pace.why or "")
+    assert "sizes" in (outbreak(GIVEN.replace("sizes = [400, 600]", "")).final_size.why or "")
+
+
+def test_a_projected_population():
+    # By hand: one stage, half of the members survive a step and have 0.8 young on average.
+    model = """
+[scenario]
+title = "Projected"
+time_unit = "year"
+[projection]
+stages = ["adult"]
+births = [[0.8]]
+transitions = [[0.5]]
+"""
+    found = outbreak(model)
+    q = found.chance.rows[0].dies_out
+    assert q == pytest.approx((0.5 + 0.5 * q) * math.exp(-0.8 * (1 - q)), abs=1e-14)
+    assert 0 < q < 1
+    assert found.pace.mean == pytest.approx(2, rel=1e-12)  # sum of a (1/2)^a over a
+    assert "births in every step" in (found.final_size.why or "")
+
+
 def test_two_strains_do_not_share_one_equation():
     model = text(
         [("S", False), ("A", True), ("B", True), ("R", False)],
