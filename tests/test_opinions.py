@@ -66,6 +66,23 @@ def test_text_and_json(arguments, words, keys, capsys):
     assert keys <= set(json.loads(capsys.readouterr().out))
 
 
+def test_the_readme_names_every_field():
+    """Every key of the four objects stands in the README's list."""
+    readme = (ROOT / "README.md").read_text(encoding="utf-8")
+    told = readme[readme.index("`--json` prints, beside `title` (`first`") :][:3500]
+    scenario = ngm.load(WATER)
+    results = [
+        ngm.units(scenario),
+        ngm.splits(scenario),
+        ngm.formula(scenario, "gamma"),
+        ngm.difference(scenario, scenario.with_values(gamma=0.2)),
+    ]
+    for result in results:
+        for key, value in result.to_json().items():
+            inner = value[0] if isinstance(value, list) and value and isinstance(value[0], dict) else {}
+            assert all(f"`{name}`" in told for name in (key, *inner)), key
+
+
 def test_a_rate_per_week_is_told_per_day_above_the_result(capsys, tmp_path):
     assert main(["solve", SEIR, "--set", "gamma=0.35"]) == 0
     lines = capsys.readouterr().out.splitlines()

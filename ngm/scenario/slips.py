@@ -184,7 +184,7 @@ def _mentions(words: str, plain: bool, power: int, home: Fraction) -> Iterator[_
         for found in _RATE.finditer(words):
             low, high = _number(found[1]), _number(found[2] or found[1])
             unit = float(home / SECONDS[str(time_unit_name(found[4]))]) / (100 if found[3] else 1)
-            if 0 < low <= high:
+            if 0 < low <= high < math.inf:
                 yield _Mention(found[0], low * unit, high * unit)
         for found in _OFTEN.finditer(words):
             rate = (2 if found[1].lower() == "twice" else 1) * float(home / SECONDS[str(time_unit_name(found[2]))])
@@ -194,7 +194,7 @@ def _mentions(words: str, plain: bool, power: int, home: Fraction) -> Iterator[_
     for found in _LENGTH.finditer(words):
         unit = float(SECONDS[str(time_unit_name(found[3]))] / home)
         low, high = _number(found[1]) * unit, _number(found[2] or found[1]) * unit
-        if 0 < low <= high:
+        if 1e-300 < low <= high < 1e300:
             yield _Mention(found[0], low, high) if power == 1 else _Mention(found[0], 1 / high, 1 / low)
 
 
@@ -203,7 +203,9 @@ def _number(text: str) -> float:
     if lower in _WORDS:
         return float(_WORDS[lower])
     above, _, below = lower.replace(",", "").partition("/")
-    return float(above) / float(below) if below and float(below) else float(above or 0)
+    if below:
+        return float(above) / float(below) if float(below) else 0.0
+    return float(above or 0)
 
 
 # --- what is converted ------------------------------------------------------------------------------------------------
