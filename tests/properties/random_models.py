@@ -79,7 +79,7 @@ class RandomModel:
             return spectral_radius(F * mpmath.inverse(V))
 
 
-def spectral_radius(K: mpmath.matrix) -> mpmath.mpf:
+def spectral_radius(K: mpmath.matrix, digits: int = DIGITS) -> mpmath.mpf:
     """Return the largest modulus of an eigenvalue, class by class so that nilpotent parts do no harm."""
     import networkx
 
@@ -88,7 +88,7 @@ def spectral_radius(K: mpmath.matrix) -> mpmath.mpf:
     graph.add_nodes_from(range(m))
     graph.add_edges_from((j, i) for i in range(m) for j in range(m) if abs(K[i, j]) > mpmath.mpf(10) ** -40)
     best = mpmath.mpf(0)
-    with mpmath.workdps(DIGITS):
+    with mpmath.workdps(digits):
         for members in networkx.strongly_connected_components(graph):
             kinds = sorted(members)
             block = mpmath.matrix([[K[i, j] for j in kinds] for i in kinds])
