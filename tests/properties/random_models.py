@@ -86,7 +86,7 @@ def spectral_radius(K: mpmath.matrix, digits: int = DIGITS) -> mpmath.mpf:
     m = K.rows
     graph = networkx.DiGraph()
     graph.add_nodes_from(range(m))
-    graph.add_edges_from((j, i) for i in range(m) for j in range(m) if abs(K[i, j]) > mpmath.mpf(10) ** -40)
+    graph.add_edges_from((j, i) for i in range(m) for j in range(m) if abs(K[i, j]) > mpmath.mpf(10) ** (20 - digits))
     best = mpmath.mpf(0)
     with mpmath.workdps(digits):
         for members in networkx.strongly_connected_components(graph):
