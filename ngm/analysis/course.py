@@ -35,6 +35,8 @@ DEPTH, MOST_GROWTH = 14.0, 40.0
 FEW, STILL_FEW = 1e-6, 1e-5
 #: Growth within this of what is expected (against the larger of it and 1/horizon), mix within this gap: settled.
 GROWTH_GAP, MIX_GAP = 2e-2, 1e-2
+#: Components that are followed side by side, and steps of progress that are told of them.
+TOGETHER, SHARES = 150, 40
 #: Periods of a season that are followed.
 PERIODS = 2
 
@@ -171,28 +173,43 @@ class _Follower:
 
     # --- one course -----------------------------------------------------------------------------------------------------
 
-    def _run(self, start: FloatArray, seed: int, cases: float, times: FloatArray) -> FloatArray:
-        x = start.copy()
-        x[seed] += cases
+    def _run(self, start: FloatArray, cases: FloatArray, seeds: Sequence[int], times: FloatArray) -> FloatArray:
+        """Return the states after each of some seeds, (seeds, times, n): they are followed side by side, at one cost."""
+        n, k = len(start), len(seeds)
+        first = np.tile(start, (k, 1))
+        first[np.arange(k), list(seeds)] += cases
         if self.discrete:
-            return stepped(lambda y: np.asarray(self.dynamics.net(y))[:, 0], x, len(times) - 1)
+            told = stepped(lambda y: np.asarray(self.dynamics.net(y.T)).T, first, len(times) - 1)
+            advance(SHARES)
+            return np.moveaxis(told, 1, 0)
         hosts = max(float(np.abs(start).max()), 1e-300)
-        sizes = np.where(np.arange(len(x)) < self.dynamics.infected, cases * 1e-3, hosts)
+        infected = np.arange(n) < self.dynamics.infected
+        sizes = np.where(infected[None, :], cases[:, None] * 1e-3, hosts)
+        done, end = 0, float(times[-1])
 
         def at(t: float) -> Mapping[str, float] | None:
             return None if self.year is None else self._multipliers(t)
 
+        def field(t: float, y: FloatArray) -> FloatArray:
+            nonlocal done
+            share = min(SHARES, int(SHARES * t / end))
+            if share > done:
+                advance(share - done)
+                done = share
+            return np.asarray(self.dynamics.net(y.reshape(k, n).T, multipliers=at(t))).T.ravel()
+
+        def slope(t: float, y: FloatArray) -> FloatArray:
+            out = np.zeros((k * n, k * n))
+            for j, state in enumerate(y.reshape(k, n)):
+                out[j * n : (j + 1) * n, j * n : (j + 1) * n] = self.dynamics.slope(state, multipliers=at(t))
+            return out
+
         try:
-            return followed(
-                lambda t, y: np.asarray(self.dynamics.net(y, multipliers=at(t)))[:, 0],
-                lambda t, y: np.asarray(self.dynamics.slope(y, multipliers=at(t))),
-                x,
-                times,
-                sizes,
-                self._breaks(float(times[-1])),
-            )
+            told = followed(field, slope, first.ravel(), times, sizes.ravel(), self._breaks(end))
         except CourseFailedError as failed:
-            raise DerivationError(Problem("course", f"from {self.types[seed]}, {failed}")) from None
+            named = ", ".join(self.types[seed] for seed in seeds)
+            raise DerivationError(Problem("course", f"from {named}, {failed}")) from None
+        return np.moveaxis(told.reshape(len(times), k, n), 1, 0)
 
     def _multipliers(self, t: float) -> dict[str, float]:
         from ngm.analysis.season import multiplier
@@ -208,7 +225,6 @@ class _Follower:
 
     def run(self) -> Course:
         found, dynamics = self.found, self.dynamics
-        expect(len(self.seeds))
         start = start_of(found, dynamics)
         if self.year is not None:
             first = self.year.state(np.zeros(1))[:, 0]
@@ -222,14 +238,18 @@ class _Follower:
         points = int(length) + 1 if self.discrete else POINTS
         times = np.arange(points, dtype=float) if self.discrete else np.linspace(0.0, length, points)
         courses, depleted = [], 0.0
-        for seed, (rate, _, mix) in zip(self.seeds, expected, strict=True):
-            if seasonal is not None:
-                rate, mix = seasonal.growth_rate, None
-            cases = self._few(start, rate, length)
-            states = self._run(start, seed, cases, times)
-            courses.append(self._seen(seed, cases, states, times, rate, mix))
-            depleted = max(depleted, self._depleted(start, states))
-            advance()
+        together = max(1, TOGETHER // len(start))
+        parts = [list(range(k, min(k + together, len(self.seeds)))) for k in range(0, len(self.seeds), together)]
+        expect(SHARES * len(parts))
+        for part in parts:
+            cases = np.array([self._few(start, expected[k][0], length) for k in part])
+            told = self._run(start, cases, [self.seeds[k] for k in part], times)
+            for j, k in enumerate(part):
+                rate, _, mix = expected[k]
+                if seasonal is not None:
+                    rate, mix = seasonal.growth_rate, None
+                courses.append(self._seen(self.seeds[k], float(cases[j]), told[j], times, rate, mix))
+                depleted = max(depleted, self._depleted(start, told[j]))
         _, _, stable = settling(self.matrix, np.ones(len(self.types), dtype=bool), DEPTH)
         doubling = None if growth is None else doubling_time(growth)
         return Course(

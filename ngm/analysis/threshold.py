@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -268,7 +269,8 @@ class _Search:
         m = len(self.found.template.types)
         if branch is not None and at_one is not None:
             points = [
-                BranchPoint(float(y[-1]) / along.factor, float(y[:m].sum()), self._stable(y)) for y in branch.points[1:]
+                BranchPoint(float(y[-1]) / along.factor, float(y[:m].sum()), self._stable(y))
+                for y in _with_turning(branch)
             ]
             points.insert(0, BranchPoint(at_one / along.factor, 0.0, False))
             below = [y for y in branch.turning if (y[-1] < at_one) == rising]
@@ -311,6 +313,16 @@ class _Search:
             reached="" if branch is None else branch.left,
             warnings=tuple(dict.fromkeys([*scenario.warnings, *self.warnings])),
         )
+
+
+def _with_turning(branch: Branch) -> list[FloatArray]:
+    """Return the points of a curve past its start, its turning points in their places."""
+    out = list(branch.points[1:])
+    for turn in branch.turning:
+        gaps = [np.linalg.norm(a - turn) + np.linalg.norm(b - turn) - np.linalg.norm(a - b) for a, b in pairwise(out)]
+        if gaps:
+            out.insert(int(np.argmin(gaps)) + 1, turn)
+    return out
 
 
 def is_backward(found: Numbers) -> bool | None:

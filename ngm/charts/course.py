@@ -103,7 +103,12 @@ def first_weeks(result: Course, seeded: SeedCourse, *, dark: bool = False) -> al
             if value > seeded.cases * 1e-6
         ]
     x = alt.X("time:Q", title=f"time ({result.time_unit}s)")
-    y = alt.Y("infected:Q", title="infected (individuals)", scale=alt.Scale(type="log"), axis=alt.Axis(format="~g"))
+    y = alt.Y(
+        "infected:Q",
+        title="infected (individuals)",
+        scale=alt.Scale(type="log"),
+        axis=alt.Axis(format="~g", tickCount=6),
+    )
     scale = alt.Scale(domain=names, range=list(PALETTE[: len(names)]))
     dashes = alt.Scale(domain=names, range=[list(dash) for dash in DASHES[: len(names)]])
     lines = (
@@ -174,7 +179,7 @@ def season(year: Seasonal, unit: str, *, dark: bool = False) -> alt.LayerChart |
             continue
         one = alt.Chart(alt.InlineData(values=[{"number": value, "shown": word}])).encode(y=y)
         layers.append(one.mark_rule(color=colours.strong if k == 0 else colours.text, strokeDash=dash, strokeWidth=1.6))
-        place = alt.value(4 if k != 1 else 120)
+        place = alt.value((4, 130, 280)[k])  # beside each other: the three may be close
         layers.append(one.mark_text(color=colours.text, align="left", dy=dy).encode(x=place, text="shown:N"))
     return alt.LayerChart(layer=layers).properties(
         height=HIGH,

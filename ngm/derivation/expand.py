@@ -86,7 +86,8 @@ def net_flow(
     values = [evaluator.value(arrow.rate.value) for arrow in arrows]
     width = max((value.shape[-1] for value in values), default=1)
     entering, leaving = blank(evaluator, n, width), blank(evaluator, n, width)
-    for arrow, value in zip(arrows, values, strict=True):
+    for arrow, one in zip(arrows, values, strict=True):
+        value = np.broadcast_to(one, (*one.shape[:-1], width))  # a rate that does not vary is the same in every column
         if arrow.source in at:
             _add_rows(template, evaluator, leaving, value, arrow, arrow.source, at[arrow.source], 0)
         if arrow.target in at:

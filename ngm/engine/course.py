@@ -133,7 +133,8 @@ def settling(matrix: FloatArray, start: FloatArray, depth: float) -> tuple[float
     values, vectors = np.linalg.eig(matrix[np.ix_(at, at)])
     order = np.argsort(-values.real)
     rate = float(values[order[0]].real)
-    gap = rate - float(values[order[1]].real) if len(values) > 1 else abs(rate) or 1.0
+    # One type alone has its mix from the start: what is waited for is growth or decline that can be seen.
+    gap = rate - float(values[order[1]].real) if len(values) > 1 else 2 * abs(rate) or 1.0
     size = max(1e-300, float(np.abs(values).max()))
     if gap <= 1e-9 * size:
         return rate, math.inf, None

@@ -63,6 +63,8 @@ REFERENCES = (
     "Andreasen (2011) Bull. Math. Biol. 73:2305. Final size.",
     "Allen & Lahodny (2012) J. Biol. Dyn. 6:590. Chance of a large outbreak.",
     "Wallinga & Lipsitch (2007) Proc. R. Soc. B 274:599. Growth and generation intervals.",
+    "Castillo-Chavez & Song (2004) Math. Biosci. Eng. 1:361. Endemic states at a number of 1.",
+    "Wang & Zhao (2008) J. Dyn. Differ. Equ. 20:699. R0 over a season.",
     "Berman & Plemmons (1994) Nonnegative Matrices in the Mathematical Sciences. Bounds of Collatz and Wielandt, "
     "M-matrices.",
     "Grassmann, Taksar & Heyman (1985) Oper. Res. 33:1107. Elimination without subtraction.",

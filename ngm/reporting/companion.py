@@ -43,6 +43,8 @@ def companion(m: Material, document: Document) -> dict[str, Any]:
         "allocate": None if m.allocation is None else m.allocation.to_json(),
         "outbreak": None if m.outbreak is None else m.outbreak.to_json(),
         "twin": None if m.twin is None else m.twin.to_json(),
+        "course": None if m.course is None else m.course.to_json(),
+        "threshold": [found.to_json() for found in m.thresholds],
         "units": None if m.units is None else m.units.to_json(),
         "splits": None if m.splits is None else m.splits.to_json(),
         "formula": None if m.formula is None else m.formula.to_json(),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
 from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
@@ -18,6 +19,7 @@ from ngm.reporting.material import Material
 from ngm.reporting.narrative import SECTIONS, narrate
 from ngm.results import Solution
 from ngm.results_control import Allocation
+from ngm.results_course import Threshold
 from ngm.results_mixing import Mixing
 from ngm.scenario.exact import evaluate
 from ngm.scenario.following import values_in_force
@@ -34,7 +36,10 @@ MOST_SHARED = 40
 #: Groups whose own matrix of contacts is looked at, where there is one for each.
 MOST_WITHIN = 3
 #: Parts that are absent for a reason that is no warning.
-_QUIET = frozenset({"allocation"})
+_QUIET = frozenset({"allocation", "first_weeks", "below_one"})
+#: Infected types up to which flows are followed in a report, and interventions looked at below a number of 1.
+MOST_FOLLOWED = 24
+MOST_THRESHOLDS = 3
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -180,6 +185,9 @@ def compose(
     solution = ngm.solve(scenario)
     said = _Said()
     small = len(solution.types) <= MOST_TYPES
+    if len(solution.types) > MOST_FOLLOWED:
+        for part in ("first_weeks", "below_one"):
+            said.why[part] = f"not computed for more than {MOST_FOLLOWED} infected types: ask for it by itself"
     shared = allocation
     if shared is None and "allocation" in wanted:
         if supply is not None:
@@ -215,6 +223,12 @@ def compose(
         else None,
         units=said.tried("units", lambda: ngm.units(scenario)) if "units" in wanted else None,
         splits=said.tried("splits", lambda: ngm.splits(scenario)) if "splits" in wanted and small else None,
+        course=said.tried("first_weeks", lambda: ngm.course(scenario))
+        if "first_weeks" in wanted and len(solution.types) <= MOST_FOLLOWED
+        else None,
+        thresholds=said.tried("below_one", lambda: _thresholds(scenario)) or ()
+        if "below_one" in wanted and len(solution.types) <= MOST_FOLLOWED
+        else (),
         # What was asked for in so many words is refused in words, and not left out.
         formula=ngm.formula(scenario, formula) if formula is not None and "formula" in wanted else None,
         difference=ngm.difference(before, scenario) if before is not None and "difference" in wanted else None,
@@ -259,6 +273,19 @@ def _least_supply(scenario: Scenario, solution: Solution, sharing: Mapping[str, 
             return ngm.allocate(scenario, least.supply, **sharing)
         said.why["allocation"] = f"no supply was given, and none is enough: {least.why}"
     return None
+
+
+def _thresholds(scenario: Scenario) -> tuple[Threshold, ...]:
+    """Return what lies below a number of 1 without interventions, and with the first of those that bring it there."""
+    found = [ngm.threshold(scenario)]
+    for intervention in scenario.interventions:
+        if len(found) > MOST_THRESHOLDS:
+            break
+        with contextlib.suppress(NgmError):  # the comparison of interventions tells why one cannot be evaluated
+            one = ngm.threshold(scenario, intervention=intervention)
+            if one.R_now is not None and one.R_now < 1 and one.direction is not None:
+                found.append(one)
+    return tuple(found)
 
 
 def _mixing(scenario: Scenario) -> dict[str, tuple[Mixing, ...]]:

@@ -14,6 +14,7 @@ from ngm.reporting.numbers import number
 from ngm.reporting.width import LINE, SIDE_LINE, columns, spaced, width
 from ngm.results import ControlResult, Matrix, Solution, TextMatrix
 from ngm.results_control import Allocation, Comparison
+from ngm.results_course import Course, Threshold
 from ngm.results_mixing import Mixing
 from ngm.results_opinion import Difference, FormulaOpinion, Splits, Units
 from ngm.results_outbreak import Outbreak, Twin
@@ -71,6 +72,8 @@ class Material:
     difference: Difference | None = None
     outbreak: Outbreak | None = None
     twin: Twin | None = None
+    course: Course | None = None
+    thresholds: tuple[Threshold, ...] = ()
     why: Mapping[str, str] = field(default_factory=dict)
 
     @property

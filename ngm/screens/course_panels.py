@@ -59,11 +59,11 @@ def below_one(shown: Shown, write: Write) -> None:
         parts.warnings_box(found.warnings)
         return
     first, second, third = st.columns(3)
-    unit = f" ({found.unit})" if found.unit else ""
+    unit = f" ({plain(found.unit)})" if found.unit else ""
     name = found.label[0].upper() + found.label[1:]
     first.metric(f"{name} now", write(found.R_now), border=True)
-    second.metric(f"{plain(found.along)}{plain(unit)} where the number is 1", write(found.at_one), border=True)
-    third.metric(f"{plain(found.along)}{plain(unit)} at the turning point", write(found.turning), border=True)
+    second.metric(f"{plain(found.along)}{unit} where the number is 1", write(found.at_one), border=True)
+    third.metric(f"{plain(found.along)}{unit} at the turning point", write(found.turning), border=True)
     if found.turning is not None:
         third.caption(f"The number there is {plain(write(found.R_turning))}.")
     chart = charts.endemic_curve(found, dark=parts.dark())
@@ -188,9 +188,11 @@ def _picture(found: Course, write: Write) -> None:
         name = asking.choice("Course after", [c.seed for c in found.courses], "first_weeks.shown")
         seeded = next(c for c in found.courses if c.seed == name)
     taking.picture(charts.first_weeks(found, seeded, dark=parts.dark()), "first-weeks", "the first weeks")
+    few = "with so few hardly anybody susceptible is used up, and the picture scales with their number. "
+    few = few if found.depleted < 0.01 else "they use up the susceptible, and growth slows down. "
     st.caption(
-        f"After {plain(write(seeded.cases))} of {plain(seeded.seed)}; each step up multiplies. Dotted: all infected together, "
-        "had they grown at the expected rate all the while. A straight line is exponential growth."
+        f"After {plain(write(seeded.cases))} of {plain(seeded.seed)}: {few}Each step up multiplies; a straight line is "
+        "exponential growth. Dotted: all infected together, had they grown at the expected rate all the while."
     )
     if len(found.types) > charts.MOST_LINES:
         st.caption(f"The first {charts.MOST_LINES} of {len(found.types)} types are drawn; the table has all.")
