@@ -79,7 +79,7 @@ def spread(found: Spread, *, dark: bool = False) -> alt.LayerChart | None:
     ]
     chance = "" if figures.above_one is None else f" Share above {at:g}: {short(figures.above_one)}."
     return alt.LayerChart(layer=layers).properties(
-        height=280,
+        height=340,
         description=f"Distribution of {name} over {figures.draws:,} draws: median {short(middle)}, middle 95 % from "
         f"{short(low)} to {short(high)}.{chance} The bar at the top spans the middle 95 %, the diamond is the median.",
     )
@@ -124,11 +124,11 @@ def assured(result: Assured, *, dark: bool = False) -> alt.LayerChart:
     if result.needed is not None:
         row = {"much": result.needed, "share": result.assurance, "shown": f"needed: {short(result.needed)}"}
         mark = alt.Chart(alt.InlineData(values=[row])).encode(x=x, y=y)
-        right = result.needed > 0.6
+        right = result.needed > 0.75
         layers += [
             mark.mark_point(shape="diamond", size=140, filled=True, opacity=1, color=colours.strong),
             mark.mark_text(
-                align="right" if right else "left", dx=-9 if right else 9, dy=14, color=colours.text, fontWeight="bold"
+                align="right" if right else "left", dx=-9 if right else 9, dy=22, color=colours.text, fontWeight="bold"
             ).encode(text="shown:N"),
         ]
         told += f"; the wanted {100 * result.assurance:g} % from {short(result.needed)} on"

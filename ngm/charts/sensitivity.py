@@ -16,8 +16,8 @@ __all__ = ["convergence", "histogram", "indices", "ranking", "tornado"]
 #: Bars at the most: past them a table is easier to read.
 MOST_BARS = 20
 BAR = 30
-#: Height of axis, title and legend together.
-AROUND = 100
+#: Height of axis and title together, and of a legend below them.
+AROUND, LEGEND = 100, 75
 
 
 def tornado(swings: Sequence[Swing], R0: float, *, over: str = "range", dark: bool = False) -> alt.LayerChart | None:
@@ -89,7 +89,7 @@ def tornado(swings: Sequence[Swing], R0: float, *, over: str = "range", dark: bo
         for swing in shown
     )
     return alt.LayerChart(layer=layers).properties(
-        height=BAR * len(names) + AROUND,
+        height=BAR * len(names) + AROUND + LEGEND,
         description=f"R0 with each parameter at either end, now {short(R0)}, widest first. {spoken}.",
     )
 
@@ -247,5 +247,5 @@ def convergence(found: Uncertainty, *, dark: bool = False) -> alt.LayerChart | N
     ]
     spoken = "; ".join(f"{p.draws:,} draws: mean {short(p.mean)}, above 1 {short(p.above_one)}" for p in known)
     return alt.LayerChart(layer=layers).properties(
-        height=240, description=f"Mean of R0 and share above 1 against the number of draws: {spoken}."
+        height=300, description=f"Mean of R0 and share above 1 against the number of draws: {spoken}."
     )

@@ -75,8 +75,8 @@ def _show(found: Assured, write: Write) -> None:
     (st.error if found.needed is None else st.success)(f"**{plain(assured_words(found))}**")
     taking.picture(charts.assured(found, dark=parts.dark()), "assurance", "the picture of the shares")
     st.caption(
-        "What is enough at the scenario's own values is too little in about half of the draws. The dashed line is the share "
-        "that is wanted; the draws are those above."
+        "What is enough at the scenario's own values can be too little for many draws. The dashed line is the share that is "
+        "wanted; the draws are those above."
     )
     with st.expander("This curve as a table"):
         heads = [found.what, f"share of draws below {found.target:g}"]

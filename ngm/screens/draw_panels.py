@@ -61,7 +61,7 @@ def _distribution(found: Uncertainty, write: Write) -> None:
     second.metric("R0, median of the draws", write(figures.quantiles["0.5"]), border=True)
     third.metric(
         "R0, middle 95 % of the draws",
-        f"{write(figures.quantiles['0.025'])} to {write(figures.quantiles['0.975'])}",
+        f"{short(figures.quantiles['0.025'])} to {short(figures.quantiles['0.975'])}",
         border=True,
     )
     interval = figures.above_one_interval
@@ -105,7 +105,7 @@ def _other(spread: Spread, write: Write) -> None:
     second.metric("Median of the draws", write(figures.quantiles["0.5"]), border=True)
     third.metric(
         "Middle 95 % of the draws",
-        f"{write(figures.quantiles['0.025'])} to {write(figures.quantiles['0.975'])}",
+        f"{short(figures.quantiles['0.025'], 3)} to {short(figures.quantiles['0.975'], 3)}",
         border=True,
     )
     for why, count in spread.missing.items():
