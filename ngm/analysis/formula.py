@@ -15,7 +15,7 @@ from ngm.analysis.solve import solve
 from ngm.analysis.splits import roots, with_kinds
 from ngm.analysis.steady import refuse_season
 from ngm.errors import ExpressionError, Problem, ScenarioError
-from ngm.expression.from_latex import from_latex, is_latex, right_side
+from ngm.expression.from_latex import from_latex, is_latex, left_power, right_side
 from ngm.expression.names import suggest
 from ngm.expression.parse import parse
 from ngm.expression.tree import Apply, Name, Node, Number, Total, walk
@@ -84,9 +84,21 @@ def _read(scenario: Scenario, solution: Solution, places: Places, text: str) -> 
     own = right_side(text)
     if not own:
         raise ExpressionError(Problem("formula", "is empty. Type R0 as it is printed, such as beta/(gamma + mu)."))
+    states = [*scenario.definitions, *uninfected]
     if is_latex(own):
-        own = from_latex(own, known)
-    tree = parse(own, where="formula", items="[" in own)
+        own = from_latex(own, known, states)
+    power = left_power(text)
+    root = f"sqrt({own})" if power == 2 else f"({own})^(1/{power})"
+    try:
+        tree = parse(own if power == 1 else root, where="formula", items="[" in own)
+    except ExpressionError as problem:
+        # Pasted from a page a product may have lost its signs: beta sigma/((sigma + mu)(gamma + mu)).
+        try:
+            tree = parse(from_latex(root if power != 1 else own, known, states), where="formula")
+        except ExpressionError:
+            raise problem from None
+        if not {node.item for node in walk(tree) if isinstance(node, Name)} <= set(known):
+            raise
     items = set(known) | set(solution.infection_free or {}) | set(places.entries)
     for name, parameter in scenario.parameters.items():
         items |= set(scenario.items(name, parameter.by))

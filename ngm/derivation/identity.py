@@ -44,7 +44,7 @@ def identical(
     made: dict[str, sympy.Expr] = {}
 
     def lookup(name: Name) -> sympy.Expr:
-        return made.get(name.item) or symbol(name.item, name.item in any_sign)
+        return made[name.item] if name.item in made else symbol(name.item, name.item in any_sign)
 
     for item in _in_order(meanings):
         made[item] = to_sympy(meanings[item], lookup)

@@ -13,7 +13,7 @@ from collections.abc import Iterable
 from ngm.errors import ExpressionError, Problem
 from ngm.expression.names import GREEK
 
-__all__ = ["from_latex", "is_latex", "right_side"]
+__all__ = ["from_latex", "is_latex", "left_power", "right_side"]
 
 _MOST_CHARACTERS = 10_000
 _MOST_LEVELS = 50
@@ -38,6 +38,14 @@ _NOTHING = {
 }
 _OPEN, _CLOSE = {"(": ")", "[": "]", r"\{": r"\}"}, {")", "]", r"\}"}
 _STYLES = {r"\mathrm", r"\mathcal", r"\mathit", r"\mathbf", r"\text", r"\textrm", r"\operatorname", r"\mathscr"}
+#: What stands around a printed formula and is no part of it.
+_FRAME = re.compile(
+    r"\\(?:begin|end|label|tag|ref|eqref)\s*\*?\{[^{}]*\}|\\(?:nonumber|notag|displaystyle)\b|\\[\[\]()]|\\\\\s*|\$|&"
+)
+_EQUALS = re.compile(r":?=|≈|≃|\\(?:approx|simeq|equiv|coloneqq)\b")
+_NO_FORMULA = re.compile(r"(?:\\?(?:rho|varrho)|ρ)\s*(?:\\left)?\s*\(|[0-9.\s\\,]*$")
+_POWER = re.compile(r"(?:\^|\*\*)\s*\{?\s*([2-9])\s*\}?$")
+_STAR = {"*", r"\ast", r"\star"}
 _LETTERS = {"\\" + spelt for spelt in GREEK.values()}
 _VARIANTS = {
     r"\varepsilon": "epsilon",
@@ -49,9 +57,21 @@ _VARIANTS = {
 
 
 def right_side(text: str) -> str:
-    """Return what stands right of ``R_0 =``; the whole text where no equals sign stands in it."""
-    head, sign, tail = text.partition("=")
-    return (tail if sign else head).strip().strip("$").strip().rstrip(".,;")
+    r"""Return the formula itself: what stands right of ``R_0 =``, without the signs around it.
+
+    Of several equals signs the first side is taken that is neither ``\rho(...)`` nor a number; the whole text where there is
+    none. Frames (``$``, ``\[``, ``equation``), labels and a full stop are left out.
+    """
+    first, *others = [_FRAME.sub("", side).strip().rstrip(".,;").strip() for side in _EQUALS.split(text)]
+    formulas = [side for side in others if side and not _NO_FORMULA.match(side)]
+    return next(iter([*formulas, *others, first]))
+
+
+def left_power(text: str) -> int:
+    r"""Return the power to which R0 stands left of the equals sign: 2 for ``R_0^2 = ...``, 1 as a rule."""
+    first, *others = _EQUALS.split(text)
+    found = _POWER.search(_FRAME.sub("", first).strip()) if others else None
+    return int(found[1]) if found is not None else 1
 
 
 def is_latex(text: str) -> bool:
@@ -59,7 +79,7 @@ def is_latex(text: str) -> bool:
     return "\\" in text or "{" in text or "}" in text
 
 
-def from_latex(text: str, known: Iterable[str]) -> str:
+def from_latex(text: str, known: Iterable[str], states: Iterable[str] = ()) -> str:
     r"""Return a formula in the expression syntax.
 
     Parameters
@@ -68,6 +88,8 @@ def from_latex(text: str, known: Iterable[str]) -> str:
         Simple LaTeX, at most 10,000 characters and 50 levels.
     known : iterable of str
         The names that may occur.
+    states : iterable of str
+        Those of numbers of hosts without infection: ``S_0``, ``S^0`` and ``S^*`` are S.
 
     Raises
     ------
@@ -81,7 +103,7 @@ def from_latex(text: str, known: Iterable[str]) -> str:
     """
     if len(text) > _MOST_CHARACTERS:
         raise _wrong(f"has {len(text):,} characters. At most {_MOST_CHARACTERS:,} are read.")
-    return _Reader(text, set(known)).run()
+    return _Reader(text, set(known), set(states)).run()
 
 
 def _wrong(message: str) -> ExpressionError:
@@ -89,10 +111,10 @@ def _wrong(message: str) -> ExpressionError:
 
 
 class _Reader:
-    def __init__(self, text: str, known: set[str]) -> None:
+    def __init__(self, text: str, known: set[str], states: set[str]) -> None:
         found = [match.group(1) for match in _TOKEN.finditer(text)]
         self.tokens = [token for token in found if token not in _NOTHING]
-        self.known = known
+        self.known, self.states = known, states
         self.at = 0
         self.level = 0
 
@@ -201,15 +223,31 @@ class _Reader:
         elif token in _LETTERS or token in _VARIANTS:
             base = _VARIANTS.get(token, token[1:])
         elif token.isalpha():
-            base = self.longest(token)
+            base = GREEK.get(token) or self.longest(token)
         else:
             raise _wrong(f"'{token[:30]}' is not read here. Write the formula in the scenario's own syntax instead.")
-        if self.peek() != "_":
-            return base
-        self.take()
-        below = self.word()
-        tries = (f"{base}_{below}", f"{base}{below}")
-        return next((name for name in tries if name in self.known), tries[0])
+        starred = self.is_starred(base)
+        if self.peek() == "_":
+            self.take()
+            below = self.word()
+            tries = (f"{base}_{below}", f"{base}{below}")
+            free = base if base in self.states and below in ("0", "*", "ast") else tries[0]
+            base = next((name for name in tries if name in self.known), free)
+        if not starred:
+            self.is_starred(base)
+        return base
+
+    def is_starred(self, base: str) -> bool:
+        """Take a raised star, or for a state a raised 0: it says at which state, and raises to no power."""
+        if self.peek() != "^":
+            return False
+        braces = self.tokens[self.at + 1 : self.at + 2] == ["{"]
+        raised = self.tokens[self.at + 1 + braces : self.at + 2 + braces]
+        closed = not braces or self.tokens[self.at + 3 : self.at + 4] == ["}"]
+        if closed and raised and (raised[0] in _STAR or (raised[0] == "0" and base in self.states)):
+            self.at += 4 if braces else 2
+            return True
+        return False
 
     def longest(self, first: str) -> str:
         letters, ahead = first, self.at

@@ -270,6 +270,33 @@ def test_other_splits_and_type_numbers_are_told():
     assert "flow 3 as transmission" in found.message
 
 
+@pytest.mark.parametrize(
+    "text",
+    [
+        r"\begin{equation} R_0 = \frac{\beta\sigma}{(\sigma+\mu)(\gamma+\mu)}. \label{eq:1} \end{equation}",
+        r"\begin{align} R_0 &= \frac{\beta\sigma}{(\sigma+\mu)(\gamma+\mu)} \nonumber \\ \end{align}",
+        r"\[ \mathcal{R}_0 = \rho\left(FV^{-1}\right) = \frac{\beta\sigma}{(\sigma+\mu)(\gamma+\mu)} \approx 3.97 \]",
+        r"\(R_0=\frac\beta{\gamma+\mu}\cdot\frac{\sigma}{\sigma+\mu}\)",
+        r"R_0 = \frac{\beta \sigma S_0}{N (\sigma+\mu)(\gamma+\mu)}",
+        r"R_0 = \frac{\beta \sigma S^*}{N^{*} (\sigma+\mu)(\gamma+\mu)}",
+        r"R_0 = \frac{\beta \sigma S^0}{N^{0} (\sigma+\mu)(\gamma+\mu)}",
+        r"R_0^2 = \left(\frac{\beta \sigma}{(\sigma+\mu)(\gamma+\mu)}\right)^2",
+        "beta sigma/((sigma + mu)(gamma + mu))",
+        "βσ/((σ+μ)(γ+μ))",
+        "R0 = beta*sigma/((sigma + mu)*(gamma + mu)) = 3.974",
+    ],
+)
+def test_as_papers_print_it(text):
+    """All of these are beta sigma/((sigma + mu)(gamma + mu)), since S = N without infection."""
+    assert (found := ngm.formula(SEIR.scenario, text)).verdict == "equal"
+    assert found.proof == "symbols"
+
+
+def test_a_square_on_the_left():
+    assert ngm.formula(MALARIA.scenario, r"R_0^2 = \frac{m a^2 b c}{\gamma g}").verdict == "equal"
+    assert ngm.formula(MALARIA.scenario, r"R_0 = \frac{m a^2 b c}{\gamma g}").verdict == "square"
+
+
 def test_type_and_target_numbers_of_a_given_matrix():
     found = ngm.formula(TWO_TYPES.scenario, "k11 + k12*k21/(1 - k22)")
     assert found.verdict == "type number"
