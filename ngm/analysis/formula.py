@@ -34,6 +34,8 @@ SAME_DIGITS = Decimal("1e-40")
 SAME_NUMBER = Decimal("1e-10")
 #: Numbers this near are worth a better look.
 NEAR = Decimal("1e-7")
+#: Seconds for a proof; without one the points speak for themselves.
+PROOF_LIMIT = 5.0
 MOST_FOR_SETS = 6
 MOST_FOR_TARGETS = 6
 #: Points at which other splits are computed anew.
@@ -182,7 +184,7 @@ class _Comparison:
                 items = scenario.items(parameter.name, parameter.by)
                 meanings |= {item: value.tree for item, value in zip(items, parameter.values, strict=True)}
         any_sign = [item for p in scenario.parameters.values() if p.any_sign for item in scenario.items(p.name, p.by)]
-        return identical(self.tree, closed, meanings, any_sign)
+        return identical(self.tree, closed, meanings, any_sign, PROOF_LIMIT)
 
     def _is_exact(self) -> bool:
         closed = self.places.closed

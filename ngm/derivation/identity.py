@@ -21,7 +21,8 @@ def identical(
     """Return True where first - second is proven to be 0; False where it is not, or where no proof was found.
 
     The difference is written as one fraction and its numerator expanded: for rational expressions that decides. Roots are
-    brought to one form first (common factors out of the radicand), and a power of a maximum becomes a maximum of powers.
+    brought to one form first (equal radicands, then common factors out of them), and a power of a maximum becomes a
+    maximum of powers.
 
     Parameters
     ----------
@@ -53,9 +54,13 @@ def identical(
         return True
     if sympy.count_ops(difference) > MOST_OPERATIONS:
         return False
-    if not difference.is_rational_function():
-        difference = _regular(difference)
-    numerator, _ = sympy.fraction(sympy.together(difference))
+    if difference.is_rational_function():
+        return _is_zero(difference)
+    return _is_zero(_joined(difference)) or _is_zero(_regular(difference))
+
+
+def _is_zero(expression: sympy.Expr) -> bool:
+    numerator, _ = sympy.fraction(sympy.together(expression))
     return bool(sympy.expand(numerator) == 0)
 
 
@@ -68,6 +73,39 @@ def _in_order(meanings: Mapping[str, Node]) -> list[str]:
         for item in ready:
             del waiting[item]
     return done
+
+
+def _joined(expression: sympy.Expr) -> sympy.Expr:
+    """Return the expression with roots of one radicand, or of a multiple of it, as one root."""
+    kept: list[sympy.Expr] = []
+    joined: dict[sympy.Expr, sympy.Expr] = {}
+    roots = [power for power in expression.atoms(sympy.Pow) if power.exp.is_Rational and not power.exp.is_Integer]
+    for root in sorted(roots, key=sympy.count_ops):
+        for other in kept:
+            times = _multiple(root.base, other)
+            if times is not None:
+                joined[root] = times**root.exp * other**root.exp
+                break
+        else:
+            kept.append(root.base)
+    return expression.xreplace(joined)
+
+
+def _multiple(first: sympy.Expr, second: sympy.Expr) -> sympy.Rational | None:
+    """Return the positive number that `first` is times `second`, for all values; None where there is none."""
+    if first == second:
+        return sympy.Integer(1)
+    names = sorted(first.free_symbols | second.free_symbols, key=str)
+    ratios = set()
+    for start in (2, 40):
+        # at whole numbers, so that a rational ratio is exact; different ones, so that nothing cancels by chance
+        point = {name: sympy.Integer(sympy.prime(start + place)) for place, name in enumerate(names)}
+        below = second.xreplace(point)
+        ratios.add(first.xreplace(point) / below if below != 0 else sympy.Integer(0))
+    ratio = ratios.pop()
+    if ratios or not (ratio.is_Rational and ratio > 0):
+        return None
+    return ratio if _is_zero(first - ratio * second) else None
 
 
 def _regular(expression: sympy.Expr) -> sympy.Expr:
