@@ -47,7 +47,7 @@ def units_text(result: Units) -> str:
     lines = _heading(result.title)
     if result.findings:
         lines += [
-            f"{len(result.findings)} findings",
+            f"{len(result.findings)} finding{'s' if len(result.findings) > 1 else ''}",
             *(f"  ! {note.where}: {note.message}" for note in result.findings),
         ]
     else:
