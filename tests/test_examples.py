@@ -43,6 +43,24 @@ def test_vector_borne():
     assert solve("vector-borne-ostrel-fever", mu_v=0.09).per_cycle == pytest.approx(by_midges(mu_v=0.09), rel=1e-12)
 
 
+def test_below_one_and_still_there():
+    # By hand: S = (mu + theta)/(mu + theta + phi) N without infection, R = beta (S + leak V)/((gamma + mu) N).
+    drive = solve("leaky-vaccine-fenmoor-itch", phi=0.05)
+    assert drive.R0 == pytest.approx(0.7 * (0.0025 + 0.15 * 0.05) / 0.0525 / 0.152, rel=1e-12)
+    assert solve("leaky-vaccine-fenmoor-itch").R0 == pytest.approx(0.7 / 0.152, rel=1e-12)
+
+
+def test_a_season():
+    # By hand, of the averaged season alone: midges emergence/mu_v, a and emergence at their means (both factors 1).
+    mu = 1 / (64 * YEAR)
+    people = 1.5 / mu
+    to_people = 0.21 * 0.4 * 0.1 / 0.17 / 0.07
+    to_midges = 0.21 * 0.4 * (7000 / 0.07) / people * 0.2 / (0.2 + mu) / (1 / 6 + mu)
+    assert solve("seasonal-midges-sallow-fever").season.averaged == pytest.approx(
+        math.sqrt(to_people * to_midges), rel=1e-12
+    )
+
+
 def test_two_strains():
     mu = 1 / (60 * YEAR)
     solution = solve("two-strains-brindle-cough")

@@ -92,7 +92,12 @@ def operators(monkeypatch: pytest.MonkeyPatch) -> None:
 
 
 TEXTS = [(f"random {k}", grouped(k)) for k in range(8)]
-TEXTS += [(path.stem, path.read_text(encoding="utf-8")) for path in sorted((ROOT / "scenarios").glob("*.toml"))]
+# A season is computed with matrices that are written out, whatever the model.
+TEXTS += [
+    (path.stem, path.read_text(encoding="utf-8"))
+    for path in sorted((ROOT / "scenarios").glob("*.toml"))
+    if not path.stem.startswith("seasonal")
+]
 EXPECTED: dict[str, Any] = {}
 
 
