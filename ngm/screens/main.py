@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import desk, finding, parts, signing, state
+from ngm.screens import desk, finding, keys, parts, signing, state
 from ngm.screens.registry import PAGES
 
 
@@ -23,6 +23,7 @@ def main() -> None:
     notices = st.container()
     page.run()
     finding.arrive()
+    keys.listen()
     parts.explanations(next((entry.explains for entry in PAGES if entry.title == page.title), ()))
     # After the page, so that both speak of the text as the page has just left it.
     with notices:
