@@ -9,9 +9,10 @@ from ngm.analysis.alignment import paired_flows, renamed, renames
 from ngm.analysis.between import MOST_IN_ORDER, Between, Step, contributions, root_of
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
+from ngm.analysis.stated_difference import stated_changes
+from ngm.analysis.stated_entries import form_of, is_stated
 from ngm.analysis.steady import refuse_season
 from ngm.derivation.terms import entry_terms
-from ngm.errors import Problem, ScenarioError
 from ngm.expression.write import write
 from ngm.results_opinion import Difference, EntryChange, ModelChange
 from ngm.scenario.exact import NoValueError, evaluate
@@ -39,16 +40,8 @@ def difference(first: Scenario, second: Scenario) -> Difference:
     """
     for version in (first, second):
         refuse_season(version, "what each difference does to R0")
-    forms = [(s.given is not None, s.projection is not None) for s in (first, second)]
-    if forms[0] != forms[1]:
-        raise ScenarioError(
-            Problem(
-                "difference",
-                "the two files are of different forms (flows, a K as given, a projected population). Compare two of one form; "
-                "of the others, compare the numbers that solve prints.",
-            )
-        )
-    mapping = renames(first, second)
+    forms = [form_of(version) for version in (first, second)]
+    mapping = {} if forms != ["flows", "flows"] else renames(first, second)
     before = renamed(first, mapping)
     one, two = decided_numbers(before), decided_numbers(second)
     warnings: list[str] = []
@@ -59,6 +52,10 @@ def difference(first: Scenario, second: Scenario) -> Difference:
     steps: list[Step] = []
     _parameters(before, second, changes, steps)
     _structure(before, second, changes, steps)
+    if forms[0] != forms[1]:
+        # Nothing stands between a model of flows and a matrix.
+        changes = [ModelChange("model", "changed", "form", *forms)]
+        steps = [Step(f"{forms[1]} in place of {forms[0]}", lambda _: second)]
     if before.dimensions != second.dimensions:
         # Nothing stands between two models that group their hosts differently.
         steps = [Step("groups, compartments, flows and values", lambda _: second)]
@@ -137,7 +134,8 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
             ]
             changes.append(ModelChange("compartment", "changed", name, *texts))
             apart = True
-    pairs = paired_flows(first, second)
+    stated_changes(first, second, changes, own)
+    pairs = [] if is_stated(first) else paired_flows(first, second)
     for place, (j, k) in enumerate(pairs):
         before = None if j is None else first.flows[j]
         after = None if k is None else second.flows[k]
@@ -188,6 +186,8 @@ def _structure(first: Scenario, second: Scenario, changes: list[ModelChange], st
                 compartments=second.compartments,
                 flows=second.flows,
                 definitions=second.definitions,
+                given=second.given,
+                projection=second.projection,
                 **{"infection_free": second.infection_free, **rest},
             )
 

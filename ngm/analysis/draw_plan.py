@@ -17,6 +17,7 @@ import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.point import Point
+from ngm.analysis.stated_entries import is_stated
 from ngm.analysis.steps_of_time import MORE_THAN_ALL
 from ngm.analysis.traced import Columns, CurvedBaseline, TracedPoint, TracedTemplate, opened
 from ngm.derivation.compile import Program, compiled
@@ -165,8 +166,9 @@ def _plan(scenario: Scenario, intervention: Intervention | None, columns: Column
     out = Plan(scenario, intervention, columns, inputs, len(point.template.at_infection))
     if len(point.template.types) > MOST_TRACED:
         return out
-    check_arrivals(point.template, point.plain_tables)
-    check_exits(point.template)
+    if not is_stated(scenario):
+        check_arrivals(point.template, point.plain_tables)
+        check_exits(point.template)
     state = point.infection_free.state
     trace = Trace()
     drawn = tuple(trace.input(nonnegative=not any_sign) for any_sign in _signs(scenario, columns, inputs))

@@ -58,8 +58,9 @@ class Numbers:
             self.point.infection_free = state
         template = self.template = self.point.template
         floats = self.point.plain_tables
-        check_arrivals(template, floats)
-        check_exits(template if self.point.exact else Template(thumbnail(scenario)))
+        if not is_stated(scenario):
+            check_arrivals(template, floats)
+            check_exits(template if self.point.exact else Template(thumbnail(scenario)))
         self.plain_matrices = floats
         self.at = np.array(template.at_infection, dtype=int)
         self.no_R0: str | None = None

@@ -16,6 +16,7 @@ from ngm.analysis.large import block_slopes, scaled
 from ngm.analysis.large_state import is_large_stable
 from ngm.analysis.matrices import as_floats, balanced, changed, reciprocity_warnings, tables
 from ngm.analysis.state import InfectionFree, infection_free
+from ngm.analysis.stated_entries import is_stated, matrices_of
 from ngm.derivation.evaluate import FLOATS, Algebra, Evaluator
 from ngm.derivation.expand import assemble, slopes
 from ngm.derivation.rest import choose_branches
@@ -146,6 +147,8 @@ class Point:
         """Everything in force at the infection-free state."""
         template = self.template
         evaluator = template.evaluator(self.algebra, self.state, matrices=self.matrices)
+        if is_stated(self.scenario):
+            return evaluator  # entries hold no compartments, so there is no side of a max or min to be chosen
         _ = template.arrows
         choose_branches(evaluator, template.at_rest.selectors)
         return evaluator
@@ -153,7 +156,7 @@ class Point:
     @cached_property
     def F_and_V(self) -> tuple[Array, Array]:
         """F and V of all infected types, (m, m) each."""
-        F, V = assemble(self.template, self.evaluator)
+        F, V = matrices_of(self.scenario, self.evaluator) or assemble(self.template, self.evaluator)
         F = self.scaled(F)
         if not (is_finite(F) and is_finite(V)):
             raise self._no_slope()

@@ -12,6 +12,7 @@ from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.analysis.season_results import solution_over_the_year, without_season
 from ngm.analysis.stated import as_stated, conditions_of, symbols_as_stated
+from ngm.analysis.stated_entries import is_stated
 from ngm.derivation.conditions import fifth_condition, first_conditions
 from ngm.derivation.outline import outline
 from ngm.derivation.terms import entry_terms
@@ -146,7 +147,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
         "conditions": tuple(conditions),
         "warnings": warnings,
         "eigenvalues": eigenvalues,
-        "terms": entry_terms(template),
+        "terms": () if is_stated(scenario) else entry_terms(template),
     }
 
 

@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
+
 import numpy as np
 
 from ngm.analysis.matrices import as_floats
 from ngm.derivation.evaluate import Evaluator
+from ngm.derivation.expand import blank
 from ngm.derivation.space import Array
 from ngm.derivation.template import Template
 from ngm.errors import DerivationError, Problem
-from ngm.scenario.model import Scenario
+from ngm.expression.tree import Number
+from ngm.scenario.model import Expression, Scenario
 
-__all__ = ["is_stated", "negative_entry", "refuse_negative_shares", "sizes_of", "without_end"]
+__all__ = ["form_of", "is_stated", "matrices_of", "negative_entry", "refuse_negative_shares", "sizes_of", "without_end"]
 
 MOST_TOLD = 5
 
@@ -21,11 +25,43 @@ def is_stated(scenario: Scenario) -> bool:
     return scenario.given is not None or scenario.projection is not None
 
 
+def form_of(scenario: Scenario) -> str:
+    """Return what a scenario is made of: "flows", "K as given" or "projection"."""
+    return "K as given" if scenario.given is not None else "flows" if scenario.projection is None else "projection"
+
+
 def sizes_of(scenario: Scenario, evaluator: Evaluator) -> tuple[float, ...] | None:
     """Return the members of each type of a K as given, None where the file does not say."""
     if scenario.given is None or not scenario.given.sizes:
         return None
     return tuple(float(as_floats(evaluator.value(size.tree)).ravel()[0]) for size in scenario.given.sizes)
+
+
+def matrices_of(scenario: Scenario, evaluator: Evaluator) -> tuple[Array, Array] | None:
+    """Return F and V of matrices that stand in the file, entry by entry as they are; None where flows make them.
+
+    They are those that the arrows of `ngm.scenario.stated` make, without a sum that has to be taken apart again.
+    """
+    n = len(scenario.compartments)
+    one = blank(evaluator, n, n)
+    np.fill_diagonal(one, evaluator.algebra.number(Fraction(1)))
+    if scenario.given is not None:
+        return _entries(scenario.given.K, evaluator), one
+    if scenario.projection is not None:
+        T = _entries(scenario.projection.transitions, evaluator)
+        return _entries(scenario.projection.births, evaluator), evaluator.algebra.subtract(one, T)
+    return None
+
+
+def _entries(rows: tuple[tuple[Expression, ...], ...], evaluator: Evaluator) -> Array:
+    out = blank(evaluator, len(rows), len(rows))
+    for i, row in enumerate(rows):
+        for j, entry in enumerate(row):
+            if isinstance(entry.tree, Number):
+                out[i, j] = evaluator.algebra.number(entry.tree.value)
+            else:
+                out[i, j] = evaluator.value(entry.tree).ravel()[0]
+    return out
 
 
 def refuse_negative_shares(template: Template, V: Array) -> None:

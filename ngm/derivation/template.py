@@ -29,6 +29,7 @@ from ngm.derivation.space import Array, Space
 from ngm.errors import DerivationError, Problem
 from ngm.expression.tree import Add, Apply, Name, Node, Total, children, names
 from ngm.scenario.model import Flow, Scenario
+from ngm.scenario.stated import is_large
 from ngm.scenario.values import converted
 
 __all__ = ["MOST_GROUPED", "MOST_PLAIN", "Arrow", "Template", "flow_name"]
@@ -394,6 +395,8 @@ class Template:
     def is_written_out(self) -> bool:
         """Whether the model is small enough for formulas copy by copy."""
         grouped = any(c.by for c in self.scenario.compartments.values())
+        if is_large(self.scenario):
+            return False
         return 0 < len(self.types) <= (MOST_GROUPED if grouped else MOST_PLAIN)
 
     @cached_property

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import replace
 
-from ngm.expression.tree import Apply, Name, Node, fold, names, walk
+from ngm.expression.tree import Apply, Name, Node, Number, fold, names, walk
 from ngm.scenario import exact
 from ngm.scenario.draft import ARTICLE, Draft, Placed
 from ngm.scenario.fields import Key, closest, short
@@ -73,10 +73,10 @@ def _used(draft: Draft) -> Iterator[Placed]:
 
 
 def _stated(draft: Draft) -> Iterator[Placed]:
-    """Yield every entry of the matrices that stand in the file."""
+    """Yield every entry of the matrices that stand in the file and is no plain number: those were looked at when read."""
     for rows in draft.stated.values():
         for row in rows:
-            yield from row
+            yield from (placed for placed in row if not isinstance(placed.expression.tree, Number))
 
 
 def _given(draft: Draft) -> Iterator[tuple[str, str, tuple[Placed, ...]]]:

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from decimal import Decimal
+from fractions import Fraction
 from typing import Any
 
 from ngm.scenario import exact
@@ -170,13 +172,16 @@ def _entry(table: Table, raw: object, name: str, path: Key) -> Placed | None:
     expression = table.found.quantity(raw, where, key)
     if expression is None:
         return None
-    if exact.is_closed(expression.tree):
+    value: Fraction | float | None = None
+    if isinstance(raw, int | Decimal):
+        value = Fraction(-1) if raw < 0 else None  # many thousands of them may stand in a file
+    elif exact.is_closed(expression.tree):
         value = table.found.value(expression, where, key)
         if value is None:
             return None
-        if value < 0:
-            table.found.add(where, f"{short(expression.text)} is negative. An entry is positive or zero.", key)
-            return None
+    if value is not None and value < 0:
+        table.found.add(where, f"{short(expression.text)} is negative. An entry is positive or zero.", key)
+        return None
     return Placed(expression, where, key)
 
 

@@ -14,17 +14,30 @@ from fractions import Fraction
 
 from ngm.expression.tree import Add, Multiply, Name, Node, Number
 from ngm.expression.write import write
-from ngm.scenario.model import Compartment, Expression, Flow, GivenMatrix, Kind, Projection
+from ngm.scenario.model import Compartment, Expression, Flow, GivenMatrix, Kind, Projection, Scenario
 
-__all__ = ["MOST_STATED", "TYPE_MARK", "compartments_of", "flows_of", "internal_names"]
+__all__ = ["MOST_STATED", "TYPE_MARK", "compartments_of", "flows_of", "internal_names", "is_large"]
 
 #: Rows of a matrix that stands in the file.
-MOST_STATED = 2_000
+MOST_STATED = 500
+#: Entries that are not 0 up to which formulas are written out.
+MOST_WRITTEN = 200
 #: Ends the internal name of a type that has the name of a parameter or definition: a quote stands in no name, no label.
 TYPE_MARK = "'"
 
 ONE = Number(Fraction(1), "1")
 Rows = Sequence[Sequence[Expression]]
+
+
+def is_large(scenario: Scenario) -> bool:
+    """Return whether a matrix that stands in the file has too many entries for its formulas to help anybody."""
+    if scenario.given is not None:
+        tables = [scenario.given.K]
+    elif scenario.projection is not None:
+        tables = [scenario.projection.births, scenario.projection.transitions]
+    else:
+        return False
+    return sum(not _is_zero(entry.tree) for rows in tables for row in rows for entry in row) > MOST_WRITTEN
 
 
 def internal_names(labels: Sequence[str], taken: Collection[str]) -> tuple[str, ...]:

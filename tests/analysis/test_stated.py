@@ -208,8 +208,15 @@ def test_second_opinions():
     assert "every entry of the matrices" in units.fits
     moved = ngm.difference(scenario, scenario.with_values(c=10))
     assert {(e.matrix, e.row, e.column, e.after) for e in moved.entries} == {("K", "tick", "mouse", 4.0)}
-    with pytest.raises(ScenarioError, match="different forms"):
-        ngm.difference(scenario, load(PEOPLE))
+    people = load(PEOPLE)
+    other = load(PEOPLE.replace('"s"', "0.5"))
+    moved = ngm.difference(people, other)
+    assert [change.words() for change in moved.changes] == ["entry transitions[adult, young] changed: s -> 0.5"]
+    assert moved.contributions[0].in_order == pytest.approx(2, rel=1e-12)  # from 3 to 5
+    # Two forms: the whole is one change, from 2 to 3.
+    moved = ngm.difference(scenario, people)
+    assert [change.words() for change in moved.changes] == ["model form changed: K as given -> projection"]
+    assert moved.contributions[0].in_order == pytest.approx(1, rel=1e-12)
 
 
 @pytest.mark.parametrize("verb", ["solve", "compare", "control", "sensitivity", "units", "splits", "outbreak"])
