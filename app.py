@@ -28,6 +28,7 @@ HEAVY = (
     "ngm.charts.control",
     "ngm.charts.graphs",
     "ngm.charts.mixing",
+    "ngm.charts.outbreak",
     "ngm.charts.plane",
     "ngm.charts.sensitivity",
     "ngm.charts.spectrum",

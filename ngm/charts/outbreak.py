@@ -68,7 +68,7 @@ def intervals(pace: PaceResult, unit: str, *, discrete: bool = False, dark: bool
         {"age": age, "density": value, "made": made}
         for age, value, made in zip(pace.ages, pace.density, pace.cumulative, strict=True)
     ]
-    what = f"share of infections made in that {unit}" if discrete else f"infections made, share per {unit}"
+    what = f"share made in a {unit}" if discrete else f"share made per {unit}"
     base = alt.Chart(alt.InlineData(values=rows)).encode(
         x=alt.X("age:Q", title=f"age of the infection, {unit}s", axis=alt.Axis(tickCount=8)),
         y=alt.Y("density:Q", title=what, axis=alt.Axis(tickCount=5)),

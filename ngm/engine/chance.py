@@ -16,6 +16,7 @@ from typing import Protocol
 import numpy as np
 import numpy.typing as npt
 
+from ngm.engine.sides import exceeds_one
 from ngm.engine.structure import classes, leading_to
 
 __all__ = ["Events", "Extinction", "Generations", "Offspring", "Steps", "extinction"]
@@ -23,8 +24,6 @@ __all__ = ["Events", "Extinction", "Generations", "Offspring", "Steps", "extinct
 FloatArray = npt.NDArray[np.float64]
 
 MOST_STEPS = 200
-#: A root above 1 by more than rounding.
-ABOVE_ONE = 1 + 1e-12
 
 
 class Offspring(Protocol):
@@ -166,6 +165,6 @@ def _can_grow(means: FloatArray) -> npt.NDArray[np.bool_]:
     growing = np.zeros(len(means), dtype=bool)
     for members in classes(pattern):
         block = means[np.ix_(members, members)]
-        if block.any() and np.max(np.abs(np.linalg.eigvals(block))) > ABOVE_ONE:
+        if block.any() and exceeds_one(block):
             growing[members] = True
     return leading_to(pattern, growing) if growing.any() else growing

@@ -20,6 +20,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from ngm.engine.sides import exceeds_one
 from ngm.engine.structure import classes, reachable
 
 __all__ = ["FinalSize", "Kinds", "final_size"]
@@ -27,8 +28,6 @@ __all__ = ["FinalSize", "Kinds", "final_size"]
 FloatArray = npt.NDArray[np.float64]
 
 MOST_STEPS = 200
-#: A root above 1 by more than rounding.
-ABOVE_ONE = 1 + 1e-12
 #: Steps of plain iteration from above before Newton's method takes over.
 PLAIN_STEPS = 3
 
@@ -138,7 +137,7 @@ def _reached(M: FloatArray) -> npt.NDArray[np.bool_]:
     start = np.zeros(len(M), dtype=bool)
     for members in classes(pattern):
         block = M[np.ix_(members, members)]
-        if block.any() and np.max(np.abs(np.linalg.eigvals(block))) > ABOVE_ONE:
+        if block.any() and exceeds_one(block):
             start[members] = True
     return reachable(pattern, start) if start.any() else start
 
@@ -160,6 +159,7 @@ class _Part:
 
     def solve(self) -> tuple[FloatArray, FloatArray, FloatArray, int]:
         """Return x, a point below it and one above it, and the steps taken."""
+        before = np.inf
         x = np.asarray(self.A @ self.weights.sum(axis=1))  # nothing is larger than the image of an infinite force
         for step in range(1, MOST_STEPS + 1):
             if step <= PLAIN_STEPS:
@@ -167,10 +167,12 @@ class _Part:
             else:
                 # x - image(x) is convex: from above, Newton's method stays above its largest zero.
                 new = x - np.linalg.solve(np.eye(len(x)) - self.slope(x), x - self.image(x))
-            done = np.max(np.abs(x - new)) <= 4e-16 * np.max(x)
+            change = float(np.max(np.abs(x - new)) / np.max(x))
             x = np.clip(new, 0.0, x)
-            if done:
+            # From where rounding rules, steps shrink no more.
+            if change <= 4e-16 or (step > PLAIN_STEPS and change < 1e-8 and change > before / 2):
                 break
+            before = change
         return x, self._below(x), self._above(x), step
 
     def _below(self, x: FloatArray) -> FloatArray:

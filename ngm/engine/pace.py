@@ -24,7 +24,8 @@ FloatArray = npt.NDArray[np.float64]
 POINTS = 161
 #: Ages up to which the density is shown leave this share of all infections to come.
 REST = 1e-3
-MOST_DOUBLINGS = 60
+#: Quarters of the mean after which the density is cut off in any case.
+MOST_QUARTERS = 4000
 
 
 @dataclass(frozen=True, eq=False)
@@ -148,14 +149,13 @@ def _density(
     V: FloatArray, weights: FloatArray, start: FloatArray, first: float
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Return ages, density and the share of infections up to each age, on an even grid that leaves a small rest."""
-    last = float(weights @ np.linalg.solve(V, np.linalg.solve(V, start))) / first
-    for _ in range(MOST_DOUBLINGS):
-        if _left_over(V, weights, start, first, last, False) <= REST:
-            break
-        last *= 1.25
-    ages = np.linspace(0.0, last, POINTS)
-    step = _survivors(V, float(ages[1]))
     worth = np.linalg.solve(V.T, weights)
+    quarter = float(worth @ np.linalg.solve(V, start)) / first / 4
+    step, state, count = _survivors(V, quarter), start, 0
+    while count < MOST_QUARTERS and float(worth @ state) > REST * first:
+        state, count = step @ state, count + 1
+    ages = np.linspace(0.0, count * quarter, POINTS)
+    step = _survivors(V, float(ages[1]))
     state, density, later = start, [], []
     for _ in ages:
         density.append(float(weights @ state) / first)

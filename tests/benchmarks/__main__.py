@@ -16,7 +16,7 @@ import scipy
 import sympy
 
 #: What runs where nothing is named.
-PARTS = ("derivation", "groups", "draws", "control", "opinions")
+PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak")
 
 
 def main(named: list[str]) -> None:

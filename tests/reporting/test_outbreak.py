@@ -32,7 +32,6 @@ def test_weekly_steps_say_which_number_to_report():
 def test_a_closed_population_has_a_final_size():
     report, sections = told(examples.shipped("age-groups"))
     assert "63.1 %" in words(report.document, "final_size")
-    assert "E" in words(report.document, "final_size")
     assert not sections["twin"].blocks
     tree = json.loads(report.companion_text())
     found = [item for _, item in report.document.numbers()]
