@@ -10,15 +10,13 @@ from typing import Any
 
 import numpy as np
 
+from ngm.analysis.formula_text import read_formula
 from ngm.analysis.points import CONTEXT, Place, Places, decimal_value, exact_value
 from ngm.analysis.solve import solve
 from ngm.analysis.splits import roots, with_kinds
 from ngm.analysis.steady import refuse_season
-from ngm.errors import ExpressionError, Problem, ScenarioError
-from ngm.expression.from_latex import from_latex, is_latex, left_power, right_side
-from ngm.expression.names import suggest
-from ngm.expression.parse import parse
-from ngm.expression.tree import Apply, Name, Node, Number, Total, walk
+from ngm.errors import Problem, ScenarioError
+from ngm.expression.tree import Node, Number
 from ngm.results import Solution
 from ngm.results_opinion import FormulaMatch, FormulaOpinion
 from ngm.scenario.model import Scenario
@@ -54,7 +52,7 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
     scenario : Scenario
     text : str
         In the expression syntax or in simple LaTeX; ``R_0 =`` before it is dropped. Names: parameters, definitions,
-        uninfected compartments (their value without infection).
+        uninfected compartments (their value without infection), entries of matrices; ``sum`` runs over groups.
     seed : int
         Of the random points.
 
@@ -70,7 +68,7 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
     if solution.R0 is None:
         raise ScenarioError(Problem("formula", f"the model has no R0 to compare with: {solution.no_R0}"))
     places = Places(scenario, solution, seed)
-    tree = _read(scenario, solution, places, text)
+    tree = read_formula(scenario, solution, places, text)
     found: list[tuple[Place, Decimal | None]] = []
     start = places.at(places.typed())
     wanted = POINTS if places.quick else POINTS // 2
@@ -78,40 +76,6 @@ def formula(scenario: Scenario, text: str, *, seed: int = 1) -> FormulaOpinion:
         if place is not None:
             found.append((place, decimal_value(tree, place.decimals)))
     return _Comparison(scenario, solution, text, tree, places, found).opinion()
-
-
-def _read(scenario: Scenario, solution: Solution, places: Places, text: str) -> Node:
-    uninfected = [name for name, compartment in scenario.compartments.items() if not compartment.infected]
-    known = [*scenario.parameters, *scenario.definitions, *uninfected]
-    own = right_side(text)
-    if not own:
-        raise ExpressionError(Problem("formula", "is empty. Type R0 as it is printed, such as beta/(gamma + mu)."))
-    states = [*scenario.definitions, *uninfected]
-    if is_latex(own):
-        own = from_latex(own, known, states)
-    power = left_power(text)
-    root = f"sqrt({own})" if power == 2 else f"({own})^(1/{power})"
-    try:
-        tree = parse(own if power == 1 else root, where="formula", items="[" in own)
-    except ExpressionError as problem:
-        # Pasted from a page a product may have lost its signs: beta sigma/((sigma + mu)(gamma + mu)).
-        try:
-            tree = parse(from_latex(root if power != 1 else own, known, states), where="formula")
-        except ExpressionError:
-            raise problem from None
-        if not {node.item for node in walk(tree) if isinstance(node, Name)} <= set(known):
-            raise
-    items = set(known) | set(solution.infection_free or {}) | set(places.entries)
-    for name, parameter in scenario.parameters.items():
-        items |= set(scenario.items(name, parameter.by))
-    for node in walk(tree):
-        if isinstance(node, Total | Apply):
-            raise ExpressionError(Problem("formula", "sums over groups and matrices are not read in a formula."))
-        if isinstance(node, Name) and node.item not in items:
-            guess = suggest(node.name, known)
-            hint = f" Did you mean '{guess}'?" if guess else f" Known: {', '.join(known[:12])}."
-            raise ExpressionError(Problem("formula", f"'{node.item}' is not defined.{hint}", own, node.position))
-    return tree
 
 
 class _Comparison:

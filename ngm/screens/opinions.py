@@ -66,12 +66,12 @@ def units_panel(shown: Shown) -> None:
         parts.problem_box(found, "with the units")
         return
     for note in found.findings:
-        if note.kind != "missing":
+        if note.kind not in ("missing", "slip"):  # slips stand above every result
             st.warning(f"**{plain(note.where)}**: {plain(note.message)}")
     missing = [f"- **{plain(note.where)}**: {plain(note.message)}" for note in found.findings if note.kind == "missing"]
     if missing:
         st.warning("\n".join(missing))
-    if not found.findings:
+    if all(note.kind == "slip" for note in found.findings):
         st.markdown(f"✓ {found.fits}")
     rows = [
         [

@@ -292,6 +292,26 @@ def test_as_papers_print_it(text):
     assert found.proof == "symbols"
 
 
+@pytest.mark.parametrize(
+    ("model", "text", "verdict"),
+    [
+        (PROPORTIONATE_CORE, "b*D*sum(c^2*n)/sum(c*n)", "equal"),
+        (PROPORTIONATE_CORE, "b*D*sum(c*n)/sum(n)", "different"),  # the mean, without the variance
+        (PROPORTIONATE, "sum(S*a*l/(d + g + e))", "equal"),
+        (TWO_SEXES, "sqrt(bfm*bmf*Dm*Df*sum(cm^2*nm)/sum(cm*nm)*sum(cf^2*nf)/sum(cf*nf))", "equal"),
+        (SEIR, "sum(beta)/(gamma + mu)*sigma/(sigma + mu)", "equal"),  # nothing is grouped: one term
+    ],
+    ids=lambda value: getattr(value, "name", value),
+)
+def test_sums_over_groups(model, text, verdict):
+    assert ngm.formula(model.scenario, text).verdict == verdict
+
+
+def test_a_grouped_name_needs_its_group():
+    with pytest.raises(ngm.ExpressionError, match=r"'c' has a value in each group. Name one, c\[rest\]"):
+        ngm.formula(PROPORTIONATE_CORE.scenario, "b*D*c")
+
+
 def test_a_square_on_the_left():
     assert ngm.formula(MALARIA.scenario, r"R_0^2 = \frac{m a^2 b c}{\gamma g}").verdict == "equal"
     assert ngm.formula(MALARIA.scenario, r"R_0 = \frac{m a^2 b c}{\gamma g}").verdict == "square"
