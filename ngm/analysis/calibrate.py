@@ -12,6 +12,7 @@ from ngm.engine.balls import PRECISION, nearest, precision
 from ngm.engine.roots import root_between
 from ngm.errors import NgmError, Problem, ScenarioError
 from ngm.expression.names import suggest
+from ngm.progress import advance, expect
 from ngm.results_sensitivity import Calibration
 from ngm.scenario.model import Scenario
 from ngm.scenario.values import with_values
@@ -60,6 +61,7 @@ def calibrate(
             raise ScenarioError(Problem("calibrate, growth rate", f"expected a number, not {wanted!r}."))
     search = _Search(scenario, parameter, growth=R0 is None)
     grid = _grid(scenario, parameter, search.value)
+    expect(len(grid))
     points = [(x, search.at(x)) for x in grid]
     found: list[float] = []
     for (a, fa), (b, fb) in pairwise(points):
@@ -110,6 +112,7 @@ class _Search:
         """Return the number at x, None where there is none."""
         if x not in self.known:
             self.known[x] = self._solve(x)
+            advance()
         return self.known[x]
 
     def times(self, sign: float) -> Callable[[float], float | None]:

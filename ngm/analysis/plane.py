@@ -15,6 +15,7 @@ from ngm.analysis.steady import refuse_season
 from ngm.analysis.uncertainty import inputs_of
 from ngm.engine.level import level_line
 from ngm.errors import Problem, ScenarioError
+from ngm.progress import expect
 from ngm.results_mixing import Scale
 from ngm.results_sensitivity import Plane, Swing, Swings
 from ngm.scenario.fields import closest, short
@@ -193,6 +194,7 @@ def plane(
     for one, values in zip(moved, (across.ravel(), upward.ravel()), strict=True):
         for item, own in one.items.items():
             columns[item] = values if one.single is not None else values * own
+    expect(across.size)
     found = draw_numbers(scenario, columns, passing=True)
     table = found.values.reshape(across.shape)
     here = {item: np.array([own]) for one in moved for item, own in one.items.items()}

@@ -21,6 +21,7 @@ from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import nearest, precision, to_floats
 from ngm.errors import DerivationError, NgmError, Problem
 from ngm.expression.tree import Add, Number
+from ngm.progress import advance, expect
 from ngm.results_sensitivity import LocalIndex, Sensitivity
 from ngm.scenario.model import Expression, Parameter, Scenario
 
@@ -78,7 +79,7 @@ def sensitivity(
     if formulas and R0 is not None and why is None and len(found.template.types) <= MOST_FOR_FORMULAS:
         from ngm.analysis.slopes import with_formulas
 
-        closed = _closed_form(scenario) if formulas is True else formulas
+        closed = _closed_form(scenario, warnings) if formulas is True else formulas
         local = local if closed is None else with_formulas(scenario, local, closed, R0)
     spread = None
     if draws is not None:
@@ -101,10 +102,14 @@ def sensitivity(
     )
 
 
-def _closed_form(scenario: Scenario) -> str | None:
+def _closed_form(scenario: Scenario, warnings: list[str]) -> str | None:
+    """Return R0 as a formula; None where it has none, or where the formulas took too long, which is told."""
     from ngm.analysis.solve import solve
 
-    return solve(scenario, limit=FORMULA_LIMIT).closed_form
+    found = solve(scenario, limit=FORMULA_LIMIT)
+    if found.closed_form is None:
+        warnings += [warning for warning in found.warnings if "formulas" in warning]
+    return found.closed_form
 
 
 def _root_with_slope(found: Numbers) -> tuple[float | None, str | None]:
@@ -197,9 +202,11 @@ def local_indices(scenario: Scenario, base: Numbers, warnings: list[str]) -> tup
         rows = [row for row in rows if not row[0].by]
     bits, share = (BITS, STEP) if exact else (base.bits, LARGE_STEP)
     out = []
+    expect(len(rows))
     with precision(bits):
         middle = Numbers(scenario)
         for parameter, place, item in rows:
+            advance()
             value = values[item]
             step = (Fraction(value) if value != 0 else Fraction(1)) * share
             try:

@@ -7,6 +7,7 @@ from typing import Any
 
 import streamlit as st
 
+import ngm
 from ngm.charts import sensitivity as charts
 from ngm.charts.plane import plane as plane_chart
 from ngm.charts.style import short
@@ -14,6 +15,7 @@ from ngm.results_mixing import Mixing
 from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swing, Swings
 from ngm.screens import asking, cache, forms, parts, slope_panel, state, taking
 from ngm.screens.parts import Shown, plain
+from ngm.screens.waiting import worked
 from ngm.spreadsheet import csv_text
 
 __all__ = ["calibration", "local", "plane", "save"]
@@ -46,9 +48,14 @@ def local(shown: Shown, write: Write) -> None:
         _tornado(moved, write)
     else:
         parts.problem_box(moved, "with parameters at their ends")
-    found = cache.sensitivity(shown.text, shown.folder)
+    found = worked(
+        "sensitivity.indices",
+        "Working out how R0 answers to each parameter",
+        ("sensitivity", shown.text, shown.folder),
+        lambda: ngm.sensitivity(ngm.loads(shown.text, folder=shown.folder)),
+        "with the indices",
+    )
     if not isinstance(found, Sensitivity):
-        parts.problem_box(found, "with the indices")
         return
     with st.expander("Local indices: derivative and elasticity"):
         unit = plain(found.time_unit)
@@ -171,9 +178,14 @@ def plane(shown: Shown, write: Write) -> None:
         (found for kind, name in pair if kind == "assortativity" and (found := _first_table(shown, name)) is not None),
         None,
     )
-    made = cache.plane(shown.text, shown.folder, pair[0], pair[1], levels, within)
+    made = worked(
+        "sensitivity.plane.work",
+        "Computing R0 over the plane",
+        ("plane", shown.text, shown.folder, pair, levels, within),
+        lambda: ngm.plane(ngm.loads(shown.text, folder=shown.folder), *pair, levels=levels, within=within),
+        "with this plane",
+    )
     if not isinstance(made, Plane):
-        parts.problem_box(made, "with this plane")
         return
     _show_plane(made, write)
 
@@ -237,9 +249,19 @@ def calibration(shown: Shown, write: Write) -> None:
     if not asking.asked("sensitivity.calibrate", "Find the value", (shown.text, shown.folder, parameter, kind, wanted)):
         return
     by_R0 = kind == BY_R0
-    found = cache.calibrate(shown.text, shown.folder, parameter, wanted if by_R0 else None, None if by_R0 else wanted)
+    found = worked(
+        "sensitivity.search",
+        "Searching for the value",
+        ("calibrate", shown.text, shown.folder, parameter, kind, wanted),
+        lambda: ngm.calibrate(
+            ngm.loads(shown.text, folder=shown.folder),
+            parameter,
+            wanted if by_R0 else None,
+            growth_rate=None if by_R0 else wanted,
+        ),
+        "with this wish",
+    )
     if not isinstance(found, Calibration):
-        parts.problem_box(found, "with this wish")
         return
     unit = {row[0]: row[2] for row in rows}[parameter]
     st.success(

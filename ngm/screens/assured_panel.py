@@ -13,8 +13,9 @@ from ngm.results_control import Coverage
 from ngm.results_draws import Assured
 from ngm.screens import asking, cache, forms, packages, parts, taking
 from ngm.screens.answers import save
-from ngm.screens.draw_questions import Question, worked
+from ngm.screens.draw_questions import Question
 from ngm.screens.parts import Shown, plain
+from ngm.screens.waiting import worked
 from ngm.wording import assured_words, share
 
 __all__ = ["panel"]
@@ -60,7 +61,7 @@ def panel(shown: Shown, question: Question, write: Write) -> None:
             return ngm.assured_coverage(scenario, source, groups or None, efficacy=efficacy, **settings)
         return ngm.assured_strength(scenario, measure, source, **settings)
 
-    found = worked("sensitivity.enough", "Trying how much is enough", ("assured", *asked), find)
+    found = worked("sensitivity.enough", "Trying how much is enough", ("assured", *asked), find, "with this question")
     if not isinstance(found, Assured):
         return
     _show(found, write)

@@ -15,14 +15,13 @@ from ngm.errors import NgmError, Problem
 from ngm.results import ControlResult, Solution
 from ngm.results_control import Allocation, Comparison, Coverage, Strength
 from ngm.results_mixing import Mixing, MixingMap, MixingResponses
-from ngm.results_sensitivity import Calibration, Plane, Sensitivity, Swings
+from ngm.results_sensitivity import Sensitivity, Swings
 from ngm.screens import jobs
 
 __all__ = [
     "ByGroup",
     "Outcome",
     "allocate",
-    "calibrate",
     "compare",
     "control",
     "conversions",
@@ -32,9 +31,7 @@ __all__ = [
     "mixing_map",
     "mixing_responses",
     "numbers",
-    "plane",
     "problems",
-    "sensitivity",
     "slopes",
     "solve",
     "strength",
@@ -209,15 +206,6 @@ def mixing_map(
         return error.problems
 
 
-@st.cache_resource(max_entries=64, show_spinner="Computing how R0 answers to each parameter …")
-def sensitivity(text: str, folder: str | None) -> Sensitivity | tuple[Problem, ...]:
-    """Return the local indices, or why there are none."""
-    try:
-        return ngm.sensitivity(ngm.loads(text, folder=folder))
-    except NgmError as error:
-        return error.problems
-
-
 @st.cache_resource(max_entries=64, show_spinner="Differentiating the closed form …")
 def slopes(text: str, folder: str | None, closed_form: str) -> Sensitivity | tuple[Problem, ...]:
     """Return the local indices with their formulas, made from the closed form of R0."""
@@ -232,28 +220,6 @@ def swings(text: str, folder: str | None) -> Swings | tuple[Problem, ...]:
     """Return R0 at the ends of each parameter's range, or why there is none."""
     try:
         return ngm.swings(ngm.loads(text, folder=folder))
-    except NgmError as error:
-        return error.problems
-
-
-@st.cache_resource(max_entries=64, show_spinner="Computing R0 over the plane …")
-def plane(
-    text: str, folder: str | None, x: tuple[str, str], y: tuple[str, str], levels: tuple[float, ...], within: str | None
-) -> Plane | tuple[Problem, ...]:
-    """Return R0 over two quantities with its lines, or why there is no such plane."""
-    try:
-        return ngm.plane(ngm.loads(text, folder=folder), x, y, levels=levels, within=within)
-    except NgmError as error:
-        return error.problems
-
-
-@st.cache_resource(max_entries=128, show_spinner="Searching for the value …")
-def calibrate(
-    text: str, folder: str | None, parameter: str, R0: float | None, growth_rate: float | None
-) -> Calibration | tuple[Problem, ...]:
-    """Return the value of a parameter for a wanted R0 or growth rate, or what can be attained."""
-    try:
-        return ngm.calibrate(ngm.loads(text, folder=folder), parameter, R0, growth_rate=growth_rate)
     except NgmError as error:
         return error.problems
 

@@ -14,9 +14,9 @@ from ngm.results_course import Course, Threshold
 from ngm.results_season import Seasonal
 from ngm.screens import asking, forms, packages, parts, state, taking
 from ngm.screens.asking import Entries
-from ngm.screens.draw_questions import worked
 from ngm.screens.forms import TABLES
 from ngm.screens.parts import Shown, plain
+from ngm.screens.waiting import worked
 from ngm.wording_course import course_words, threshold_words
 
 __all__ = ["below_one", "first_weeks", "season"]

@@ -13,8 +13,9 @@ from ngm.charts.style import short
 from ngm.results_draws import Spread, Uncertainty
 from ngm.screens import asking, assured_panel, parts, taking
 from ngm.screens.answers import save
-from ngm.screens.draw_questions import Question, asked_question, worked
+from ngm.screens.draw_questions import Question, asked_question
 from ngm.screens.parts import Shown, plain
+from ngm.screens.waiting import worked
 
 __all__ = ["draws"]
 
@@ -31,7 +32,11 @@ def draws(shown: Shown, write: Write) -> None:
     if question is None:
         return
     found = worked(
-        "sensitivity.work", "Drawing and computing", ("uncertainty", *question.key), lambda: _figures_of(question)
+        "sensitivity.work",
+        "Drawing and computing",
+        ("uncertainty", *question.key),
+        lambda: _figures_of(question),
+        "with these draws",
     )
     if not isinstance(found, Uncertainty):
         return

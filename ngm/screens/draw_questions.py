@@ -1,9 +1,8 @@
-"""What is asked of draws: where they come from, what is worked out at each; and the work on it, in the background."""
+"""What is asked of draws: where they come from, and what is worked out at each."""
 
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -11,11 +10,11 @@ import streamlit as st
 
 import ngm
 from ngm.errors import NgmError, Problem
-from ngm.screens import asking, long_work, parts, state
+from ngm.screens import asking, parts, state
 from ngm.screens.parts import Shown, plain
 from ngm.typed import pairs
 
-__all__ = ["Question", "asked_question", "worked"]
+__all__ = ["Question", "asked_question"]
 
 #: Draws at the most on the page; the command line and Python take more.
 MOST_DRAWS = 200_000
@@ -24,7 +23,6 @@ DESIGNS = {"Latin hypercube": "latin_hypercube", "Scrambled Sobol points": "sobo
 #: Types and entries of K of which a number is offered.
 MOST_OFFERED = 30
 GROWTH = "growth_rate"
-POLL = 0.5
 
 
 @dataclass(frozen=True)
@@ -183,41 +181,3 @@ def _numbers(shown: Shown) -> tuple[str, ...]:
         "sensitivity.of",
         "growth rate, numbers of types (T) and of who infects whom",
     )
-
-
-def worked(
-    field: str, what: str, question: tuple[object, ...], function: Callable[[], Any], title: str = "with these draws"
-) -> Any:
-    """Return the answer to a question, worked out in the background; None, with how far it is and a stop, until then.
-
-    `field`: of the widgets; `what`: what is under way, in words; `title`: above what is wrong with the question.
-    """
-    work = long_work.start(question, function)
-    if work.stopped and not work.abandoned:
-        st.info(f"Stopped: {what}.")
-        if st.button("Begin again", key=f"{field}.again"):
-            long_work.forget(question)
-            st.rerun()
-        return None
-    if not work.wait(long_work.GRACE):
-        _waiting(field, what, question, function)
-        return None
-    if work.failed is not None:
-        long_work.forget(question)
-        raise work.failed
-    if work.problems:
-        parts.problem_box(work.problems, title)
-        return None
-    return work.result
-
-
-@st.fragment(run_every=POLL)
-def _waiting(field: str, what: str, question: tuple[object, ...], function: Callable[[], Any]) -> None:
-    work = long_work.start(question, function)
-    if work.wait(0) or work.stopped:
-        st.rerun()
-    share = work.progress.share
-    st.progress(share, text=f"{what}: {share:.0%}")
-    if st.button("Stop", key=f"{field}.stop"):
-        work.stop()
-        st.rerun()
