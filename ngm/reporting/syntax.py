@@ -39,6 +39,8 @@ Node = dict[str, Any]
 _NO_ATTRIBUTES: list[Any] = ["", [], []]
 #: Columns with less text than this stay as wide as they are.
 NARROW = 76
+#: Letters of a formula that fit on the screen of a phone.
+PHONE = 20
 #: Letters of a listing on a line of TeX.
 LISTED = 86
 
@@ -117,7 +119,9 @@ def _block(block: Block, form: str, figure: Callable[[Figure], str]) -> list[Nod
             inside = [{"t": "Para", "c": _inlines(line, form)}]
             return [{"t": "BlockQuote", "c": inside}]
         case Formula(latex=latex):
-            return [{"t": "Para", "c": [{"t": "Math", "c": [{"t": "DisplayMath"}, _maths(latex)]}]}]
+            formula = {"t": "Para", "c": [{"t": "Math", "c": [{"t": "DisplayMath"}, _maths(latex)]}]}
+            wide = form == "html" and _letters(latex) > PHONE
+            return [_scrolling(formula, "A wide formula") if wide else formula]
         case Bullets(items=items):
             return [{"t": "BulletList", "c": [[{"t": "Plain", "c": _inlines(item, form)}] for item in items]}]
         case Listing(text=text):
@@ -126,13 +130,15 @@ def _block(block: Block, form: str, figure: Callable[[Figure], str]) -> list[Nod
         case Table():
             table = _table(block, form)
             if block.wide and form == "html":
-                # It scrolls where the screen is narrow; by keyboard, too.
-                told = " ".join(_text(block.caption).split())
-                named = [["role", "region"], ["tabindex", "0"], ["aria-label", _clean(told)]]
-                return [{"t": "Div", "c": [["", ["wide"], named], [table]]}]
+                return [_scrolling(table, _clean(" ".join(_text(block.caption).split())))]
             return [table]
         case Figure():
             return [_figure(block, form, figure(block))]
+
+
+def _scrolling(node: Node, name: str) -> Node:
+    """Return what scrolls where the screen is narrow; by keyboard, too."""
+    return {"t": "Div", "c": [["", ["wide"], [["role", "group"], ["tabindex", "0"], ["aria-label", name]]], [node]]}
 
 
 def _inlines(line: Line, form: str) -> list[Node]:
@@ -241,10 +247,14 @@ def _text(line: Line) -> str:
                 out += shown
             case Maths(latex=latex):
                 # A formula in a cell cannot be broken: it counts as one word.
-                out += "m" * max(1, round(0.8 * len(re.sub(r"\\[a-z]+|[{}^_\\,\s]", "", latex))))
+                out += "m" * max(1, round(0.8 * _letters(latex)))
             case Strong(text=text) | Code(text=text):
                 out += text
     return out
+
+
+def _letters(latex: str) -> int:
+    return len(re.sub(r"\\[a-z]+|[{}^_\\,\s]", "", latex))
 
 
 def _figure(block: Figure, form: str, path: str) -> Node:

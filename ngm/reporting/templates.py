@@ -32,7 +32,7 @@ nav ul { columns: 2; padding-left: 1.1rem; margin: .4rem 0; }
 nav p { margin: .2rem 0; font-weight: bold; }
 a { color: #0b4f8a; }
 table { border-collapse: collapse; min-width: min(100%, 32rem); margin: .8rem 0 1.2rem; font-size: .92rem; }
-.wide { overflow-x: auto; }
+.wide { overflow-x: auto; overflow-y: hidden; }
 .wide th, .wide td { overflow-wrap: normal; white-space: nowrap; }
 caption { text-align: left; caption-side: top; padding: .3rem 0; color: #3c4350; }
 th, td { border-bottom: 1px solid #d5dae1; padding: .28rem 1rem .28rem 0; vertical-align: top;
@@ -49,7 +49,9 @@ figcaption { color: #3c4350; font-size: .92rem; }
 math { font-family: "Report Math", math, "STIX Two Math", "Cambria Math", "Latin Modern Math"; }
 math, mtable { math-style: normal; }
 mtd { padding: .3em .5em; text-align: center !important; }
-math[display="block"] { overflow-x: auto; overflow-y: hidden; padding: .4rem 0; }
+math[display="block"] { padding: .4rem 0; }
+@media (max-width: 34rem) { main { padding: 1rem .6rem 3rem; } table { font-size: .78rem; }
+  th, td { padding-right: .5rem; } nav ul { columns: 1; } math[display="block"] { font-size: .9rem; } }
 @media print { nav { display: none; } main { max-width: none; } h2 { break-after: avoid; } tr, figure { break-inside: avoid; } }
 </style>
 </head>
