@@ -265,7 +265,8 @@ def compare_text(result: Comparison) -> str:
     base, unit = result.baseline, result.time_unit
     lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
     lines.append(f"No R0: {base.no_R0}" if base.R0 is None else f"R0 = {figure(base.R0)} with no intervention")
-    lines.append(f"growth rate = {figure(base.growth_rate)} per {unit}{_time(base, unit)}")
+    if base.growth_rate is not None:
+        lines.append(f"growth rate = {figure(base.growth_rate)} per {unit}{_time(base, unit)}")
     if result.interventions:
         lines += ["With an intervention in force the number is a control reproduction number; the smallest first.", ""]
     if base.effective is not None:
@@ -287,6 +288,9 @@ def compare_text(result: Comparison) -> str:
             ]
         )
     head += ["cost", *(["effective now"] if base.effective is not None else [])]
+    if all(row.growth_rate is None for row in (base, *result.interventions)):
+        # of a K as given: it has no time in it
+        head, rows = [*head[:4], *head[7:]], [[*row[:4], *row[7:]] for row in rows]
     lines += table(rows, head) if rows else []
     lines += _mixes(result)
     lines += closing(result.warnings)

@@ -17,7 +17,9 @@ def sensitivity_text(result: Sensitivity) -> str:
     unit = result.time_unit
     lines = [result.title, "=" * min(len(result.title), WIDTH), ""]
     lines.append("No R0" if result.R0 is None else f"R0 = {figure(result.R0)}")
-    lines.append(f"growth rate r = {figure(result.growth_rate)} per {unit}")
+    timeless = result.growth_rate is None and all(index.growth_derivative is None for index in result.local)
+    if not timeless:
+        lines.append(f"growth rate r = {figure(result.growth_rate)} per {unit}")
     lines.append("An elasticity e: 1 % more of the parameter moves the number by e %, all others held.")
     order = sorted(result.local, key=lambda index: -abs(index.elasticity or 0.0))
     rows = [
@@ -30,7 +32,8 @@ def sensitivity_text(result: Sensitivity) -> str:
         ]
         for index in order[:80]
     ]
-    lines += ["", *table(rows, ["parameter", "value", "elasticity of R0", "dR0/dp", "elasticity of r"])]
+    head = ["parameter", "value", "elasticity of R0", "dR0/dp", "elasticity of r"]
+    lines += ["", *(table([row[:4] for row in rows], head[:4]) if timeless else table(rows, head))]
     if len(order) > 80:
         lines.append(f"  … and {len(order) - 80} more; use --json.")
     names = result.types_at_infection

@@ -102,7 +102,11 @@ def _table(found: Comparison, rows: Sequence[Compared], write: Write) -> None:
         )
         for row in rows
     ]
-    parts.table([*heads, "cost", *(["effective number now"] if now else [])], cells)
+    heads += ["cost", *(["effective number now"] if now else [])]
+    if all(row.growth_rate is None for row in rows):
+        # of a K as given: it has no time in it
+        heads, cells = [*heads[:4], *heads[6:]], [(*cell[:4], *cell[6:]) for cell in cells]
+    parts.table(heads, cells)
     notes = [f"**{plain(row.name)}**: {plain(row.note)}" for row in rows if row.note]
     if notes:
         with st.expander("What each intervention is"):
