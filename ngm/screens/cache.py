@@ -6,6 +6,7 @@ the scenario and the folder that its matrix files lie in; nothing about a person
 
 from __future__ import annotations
 
+import functools
 from dataclasses import dataclass
 
 import streamlit as st
@@ -64,9 +65,15 @@ def problems(text: str, folder: str | None) -> tuple[Problem, ...]:
 def numbers(text: str, folder: str | None) -> Outcome:
     """Return the numbers of a scenario text without its formulas, or the problems found on the way."""
     try:
-        return Outcome(ngm.solve(ngm.loads(text, folder=folder), limit=0), ())
+        return Outcome(ngm.solve(_read(text, folder), limit=0), ())
     except NgmError as error:
         return Outcome(None, error.problems)
+
+
+@functools.lru_cache(maxsize=32)
+def _read(text: str, folder: str | None) -> ngm.Scenario:
+    """Return a scenario: one reading for all that is asked of a text just typed."""
+    return ngm.loads(text, folder=folder)
 
 
 def solve(text: str, folder: str | None) -> Outcome:
@@ -231,7 +238,7 @@ def conversions(text: str, folder: str | None) -> tuple[tuple[tuple[str, str], .
     Nothing of either where the text is no model.
     """
     try:
-        scenario = ngm.loads(text, folder=folder)
+        scenario = _read(text, folder)
     except NgmError:
         return (), ()
     return ngm.conversions(scenario), tuple((found.where, found.message) for found in ngm.slips(scenario))

@@ -93,7 +93,7 @@ def grid(
         height="auto" if spare is None else ROW * (min(len(st.session_state[base]) + spare, 25) + 2) + 2,
         alt=title,
     )
-    return [tuple(row) for row in frame.itertuples(index=False, name=None)]
+    return [tuple(row) for row in frame.to_numpy(dtype=object).tolist()]
 
 
 def _config(column: Column, before: Sequence[Row], k: int) -> Any:
