@@ -1,4 +1,4 @@
-"""Numbers of sets of types and of entries of K: every one of them, in a running process."""
+"""Numbers of sets of types and of entries of K, and a supply shared among groups, in a running process."""
 
 from __future__ import annotations
 
@@ -28,7 +28,7 @@ def grouped(n: int) -> ngm.Scenario:
 
 
 def rows() -> list[Row]:
-    """Return the shortest processor time of three for each."""
+    """Return processor times: of `control` the shortest of three, of `allocate` that of the first call."""
     out = []
     for n, what in ((6, "all 63 sets of 6 types, 36 entries, 6 states"), (10, "all 100 entries of K of 10 types")):
         scenario = grouped(n)
@@ -39,4 +39,9 @@ def rows() -> list[Row]:
             taken.append(time.process_time() - start)
         assert len(found.target_reproduction) == n * n
         out.append((f"`control`, {what}", f"{min(taken[1:]):.2f} s", "0.5 s"))
+    for n, bound in ((17, "2 s"), (300, "30 s")):
+        scenario = grouped(n)
+        start = time.process_time()
+        ngm.allocate(scenario, 20.0 * n, efficacy=0.9)
+        out.append((f"`allocate`, {n} groups", f"{time.process_time() - start:.1f} s", bound))
     return out
