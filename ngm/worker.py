@@ -208,6 +208,15 @@ def slope_forms(
     raise WorkerFailed(str(answer))
 
 
+def bifurcation_forms(*arguments: Any, limit: float = LIMIT) -> tuple[str | None, str | None]:
+    """Return `ngm.derivation.bifurcation_forms` of the same arguments, computed in a child; None twice where none came."""
+    try:
+        answer = _asked("bifurcation_forms", arguments, {}, limit)
+    except WorkerFailed:
+        return None, None
+    return answer if isinstance(answer, tuple) else (None, None)
+
+
 def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], limit: float) -> Any:
     """Return what a child answers; text where the job failed."""
     with _lock:
@@ -260,12 +269,18 @@ def serve() -> None:
         resource.setrlimit(resource.RLIMIT_AS, (MEMORY, MEMORY))
     with contextlib.suppress(OSError, AttributeError):
         os.nice(5)
+    from ngm.derivation.bifurcation_forms import bifurcation_forms as bifurcation
     from ngm.derivation.identity import identical as proven
     from ngm.derivation.slope_forms import slope_forms as slopes
     from ngm.derivation.symbols import derive_symbols
     from ngm.errors import NgmError
 
-    jobs: dict[str, Callable[..., object]] = {"symbols": derive_symbols, "identical": proven, "slope_forms": slopes}
+    jobs: dict[str, Callable[..., object]] = {
+        "symbols": derive_symbols,
+        "identical": proven,
+        "slope_forms": slopes,
+        "bifurcation_forms": bifurcation,
+    }
     while True:
         try:
             job, arguments, options = _receive(sys.stdin.buffer)

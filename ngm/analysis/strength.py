@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from ngm.analysis.caution import below_one_caution
 from ngm.analysis.groups import HostGroup, host_groups
 from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
@@ -17,7 +18,7 @@ from ngm.engine.control import critical_effort, type_reproduction_number
 from ngm.engine.roots import last_fall, respond, root_between
 from ngm.engine.vaccination import critical_coverage, lasting_share, overall_efficacy, scaled_number
 from ngm.errors import NgmError, Problem, ScenarioError
-from ngm.results_control import Coverage, Strength
+from ngm.results_control import CONTROL_LABEL, Coverage, Strength
 from ngm.scenario.fields import closest, listed, short
 from ngm.scenario.model import Intervention, Scenario
 from ngm.scenario.packages import find_intervention, scaled
@@ -109,6 +110,9 @@ def strength_needed(
         warnings.append(f"The number does not fall all the way as {package.name} gets stronger.{tail}")
     if strength == 0:
         warnings.append(f"The number is at or below {target:g} without {package.name}: none of it is needed.")
+    if strength is not None and target <= 1:
+        part = Intervention(package.name, (*before, *(scaled(package, strength).changes if strength > 0 else ())))
+        warnings += below_one_caution(decided_numbers(scenario, part if part.changes else None), CONTROL_LABEL)
     return Strength(
         title=scenario.title,
         digest=scenario.digest,
@@ -258,7 +262,11 @@ def _coverage(
         unattainable=number is not None and coverage is None,
         at_full=at_full,
         why=why,
-        warnings=tuple(dict.fromkeys([*scenario.warnings, *found.point.infection_free.warnings])),
+        warnings=tuple(
+            dict.fromkeys(
+                [*scenario.warnings, *found.point.infection_free.warnings, *below_one_caution(found, CONTROL_LABEL)]
+            )
+        ),
     )
 
 

@@ -10,6 +10,7 @@ import numpy as np
 
 from ngm.analysis.along import ALL_TRANSMISSION, Along, chosen
 from ngm.analysis.bifurcation import Coefficients, NotComputedError, coefficients, sums_kept
+from ngm.analysis.bifurcation_text import coefficients_in_words
 from ngm.analysis.motion import dynamics_of, no_flows, start_of
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.steady import refuse_season
@@ -22,6 +23,7 @@ from ngm.errors import Problem as Wrong
 from ngm.expression.tree import names
 from ngm.results_course import BranchPoint, Endemic, Threshold
 from ngm.scenario.model import Intervention, Scenario
+from ngm.worker import LIMIT
 
 __all__ = ["MOST_FOLLOWED", "is_backward", "lowest_number", "threshold"]
 
@@ -34,7 +36,9 @@ WHAT = "what lies below a number of 1"
 FloatArray = Any
 
 
-def threshold(scenario: Scenario, *, along: str | None = None, intervention: Intervention | None = None) -> Threshold:
+def threshold(
+    scenario: Scenario, *, along: str | None = None, intervention: Intervention | None = None, limit: float = LIMIT
+) -> Threshold:
     """Return whether infection can persist where the number is below 1, and from where on it cannot.
 
     Parameters
@@ -44,6 +48,8 @@ def threshold(scenario: Scenario, *, along: str | None = None, intervention: Int
         else all transmission.
     intervention : Intervention or None
         In force all the while; several together by `ngm.combined`.
+    limit : float
+        Seconds for a and b as formulas, which small models have; 0: none.
 
     Raises
     ------
@@ -66,12 +72,12 @@ def threshold(scenario: Scenario, *, along: str | None = None, intervention: Int
     found = decided_numbers(scenario, intervention)
     name = None if intervention is None else intervention.name
     with precision(found.bits):
-        return _Search(found, name, along).run()
+        return _Search(found, name, along, limit).run()
 
 
 class _Search:
-    def __init__(self, found: Numbers, intervention: str | None, along: str | None) -> None:
-        self.found, self.intervention = found, intervention
+    def __init__(self, found: Numbers, intervention: str | None, along: str | None, limit: float = 0.0) -> None:
+        self.found, self.intervention, self.limit = found, intervention, limit
         self.along: Along = chosen(found.point.scenario, along)
         self.warnings: list[str] = []
         spectrum = found.spectrum
@@ -89,6 +95,7 @@ class _Search:
             self.kept = sums_kept(dynamics, self.along.now or 1.0)
             self._check_given()
             at_one, state = self._at_one()
+            self.state = state
             parts = coefficients(dynamics, np.append(state, at_one), self.kept)
             branch = self._branch(state, at_one, parts)
         except (NotComputedError, NotLooseError) as error:
@@ -267,6 +274,9 @@ class _Search:
         endemic: list[Endemic] = []
         points: list[BranchPoint] = []
         m = len(self.found.template.types)
+        formulas: tuple[str | None, str | None] = None, None
+        if direction is not None and parts is not None and at_one is not None:
+            formulas = coefficients_in_words(self.dynamics, self.state, at_one, parts, self.limit)
         if branch is not None and at_one is not None:
             points = [
                 BranchPoint(float(y[-1]) / along.factor, float(y[:m].sum()), self._stable(y))
@@ -304,8 +314,8 @@ class _Search:
             why=why,
             a=a,
             b=b,
-            formula_a=None,
-            formula_b=None,
+            formula_a=formulas[0],
+            formula_b=formulas[1],
             turning=turning,
             R_turning=R_turning,
             endemic=tuple(sorted(endemic, key=lambda e: e.infected)),

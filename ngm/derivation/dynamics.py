@@ -191,6 +191,11 @@ class Dynamics:
             self._bases[key] = evaluator
         return self._bases[key]
 
+    def parameter_values(self) -> dict[str, float]:
+        """Return the values in force of the parameters of a model without groups."""
+        base = self._base(FLOATS)
+        return {name: float(np.ravel(base.name(name))[0]) for name in self.scenario.parameters}
+
     @cached_property
     def _bases(self) -> dict[int, Evaluator]:
         return {}

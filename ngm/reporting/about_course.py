@@ -5,7 +5,7 @@ from __future__ import annotations
 from ngm.charts import course as charts
 from ngm.reporting import figures
 from ngm.reporting.document import Block, Bullets, Line, Note, Paragraph, Section, Strong, Table
-from ngm.reporting.material import MOST_ROWS, Material, listed, name_of, term
+from ngm.reporting.material import MOST_ROWS, Material, equation, listed, name_of, term
 from ngm.reporting.numbers import number
 from ngm.results_course import Threshold
 from ngm.wording_course import course_words, threshold_words
@@ -149,6 +149,7 @@ def _figures(found: Threshold, k: int) -> list[Block]:
         kind = "stable" if state.stable else "unstable"
         items.append((f"Endemic state, {kind}: ", number(state.infected, f"{name}.endemic[{j}].infected"), " infected"))
     out: list[Block] = [Bullets(tuple(items))]
+    out += [equation(left, text) for left, text in (("a", found.formula_a), ("b", found.formula_b)) if text is not None]
     drawn = charts.endemic_curve(found)
     if drawn is not None:
         spec = drawn.to_dict()

@@ -79,6 +79,9 @@ def below_one(shown: Shown, write: Write) -> None:
             "it (backward) is decided by two coefficients on the centre manifold (Castillo-Chavez & Song 2004): "
             f"a = {plain(write(found.a))}, b = {plain(write(found.b))}; backward where a > 0 and b > 0."
         )
+        for name, formula in (("a", found.formula_a), ("b", found.formula_b)):
+            if formula is not None:
+                parts.display(f"{name} = {parts.latex(formula)}")
         rows = [(write(p.value), write(p.infected), "stable" if p.stable else "unstable") for p in found.branch]
         parts.grid([found.along, "infected", "state"], rows)
     parts.warnings_box(found.warnings)

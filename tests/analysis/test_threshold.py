@@ -9,6 +9,7 @@ import pytest
 from scipy.optimize import brentq
 
 import ngm
+from tests.published.models import evaluate
 
 FENMOOR = Path(__file__).parents[2] / "scenarios" / "leaky-vaccine-fenmoor-itch.toml"
 
@@ -288,3 +289,25 @@ def test_a_caution_wherever_below_one_is_told():
     rows = ngm.compare(ngm.load(FENMOOR)).interventions
     assert all(any(told in w for w in row.warnings) for row in rows)
     assert not any(told in w for w in ngm.solve(ngm.loads(SIR).with_values(beta=0.1), limit=0).warnings)
+
+
+def test_a_caution_beside_efforts_that_bring_the_number_to_one():
+    told = "Below one is not safe"
+    assert any(told in w for w in ngm.strength_needed(ngm.load(FENMOOR), "Vaccination drive").warnings)
+    assert any(told in w for w in ngm.coverage_needed(drive()).warnings)
+    assert not any(told in w for w in ngm.coverage_needed(ngm.loads(SIR)).warnings)
+
+
+def test_coefficients_as_formulas():
+    found = ngm.threshold(ngm.loads(SIR))
+    # By hand, as in the test of SIR: a = -2 (gamma + mu)^2/(1000 mu), b = 1.
+    assert found.formula_b == "1"
+    for gamma, mu in ((0.2, 0.02), (0.7, 0.01)):
+        value = evaluate(found.formula_a, {"gamma": gamma, "mu": mu})
+        assert value == pytest.approx(-2 * (gamma + mu) ** 2 / (1000 * mu), rel=1e-12)
+    # Second route: the numbers of the same model at other values, which know nothing of the formula.
+    leaky = ngm.threshold(drive())
+    values = {"leak": 0.3, "phi": 0.02, "theta": 0.001, "gamma": 0.2, "mu": 0.004, "births": 40.0}
+    other = ngm.threshold(ngm.load(FENMOOR).with_values(**(values | {"leak": 30})), along="beta", limit=0)
+    assert evaluate(leaky.formula_a, values) == pytest.approx(other.a, rel=1e-9)
+    assert evaluate(leaky.formula_b, values) == pytest.approx(other.b, rel=1e-9)
