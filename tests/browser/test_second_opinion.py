@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from playwright.sync_api import expect
 
+from tests.browser.visit import PATIENCE
 from tests.published.test_one_host import SEIR
 from tests.screens.texts import SIR
 
@@ -18,15 +19,15 @@ def test_a_reviewer_learns_whether_the_printed_formula_is_R0_and_where_not(visit
     printed = visit.field("R0 as printed, in the syntax of the rates or in simple LaTeX")
     printed.fill(r"R_0 = \frac{\beta}{\gamma + \mu}")  # the chance of surviving the latent period is forgotten
     printed.press("Enter")
-    expect(visit.page.get_by_text("✖ different")).to_be_visible()
+    expect(visit.page.get_by_text("✖ different")).to_be_visible(timeout=PATIENCE)
     expect(
         visit.page.get_by_text("They differ, for example, here: the model's R0 is 3.974, the formula 3.984.")
-    ).to_be_visible()
-    expect(visit.page.get_by_role("cell", name="sigma", exact=True).last).to_be_visible()
+    ).to_be_visible(timeout=PATIENCE)
+    expect(visit.page.get_by_role("cell", name="sigma", exact=True).last).to_be_visible(timeout=PATIENCE)
     printed.fill(r"R_0 = \frac{\beta\sigma}{(\sigma + \mu)(\gamma + \mu)}")
     printed.press("Enter")
-    expect(visit.page.get_by_text("✓ equal")).to_be_visible()
-    expect(visit.page.get_by_text("proven with symbols")).to_be_visible()
+    expect(visit.page.get_by_text("✓ equal")).to_be_visible(timeout=PATIENCE)
+    expect(visit.page.get_by_text("proven with symbols")).to_be_visible(timeout=PATIENCE)
     visit.at_rest()
 
 
@@ -41,9 +42,9 @@ def test_a_rate_per_week_is_seen_per_day_above_every_result(visit):
     for page in ("Model", "Reproduction numbers", "Second opinion"):
         visit.go(page)
         told = visit.page.get_by_text("gamma: 0.35 1/week = 0.05 1/day, once in 20 day").first
-        expect(told).to_be_visible()
+        expect(told).to_be_visible(timeout=PATIENCE)
         number = visit.page.get_by_test_id("stMetric").first
-        expect(number).to_be_visible()
+        expect(number).to_be_visible(timeout=PATIENCE)
         assert told.bounding_box()["y"] < number.bounding_box()["y"]
 
 
@@ -54,5 +55,5 @@ def test_a_new_name_in_a_table_goes_into_the_flows(visit):
     visit.go("Model")
     visit.type_into("Parameters", 1, 1, "recovery")
     visit.page.keyboard.press("Enter")
-    expect(visit.grid("Flows").locator("#glide-cell-3-1")).to_have_text("recovery * I")
+    expect(visit.grid("Flows").locator("#glide-cell-3-1")).to_have_text("recovery * I", timeout=PATIENCE)
     visit.R0_is("2.5")
