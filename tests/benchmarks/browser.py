@@ -21,6 +21,7 @@ from streamlit.proto.BackMsg_pb2 import BackMsg
 from streamlit.proto.ForwardMsg_pb2 import ForwardMsg
 from websockets.asyncio.client import ClientConnection, connect
 
+from ngm.charts.style import short
 from ngm.drafts import Store
 from tests.browser.conftest import CHROMIUM, OPTIONS
 from tests.browser.server import Server
@@ -95,20 +96,31 @@ class Light:
         self.taken: list[float] = []
         self.foreign = 0
 
+    async def __aenter__(self) -> Light:
+        self.line = await connect(self.url, subprotocols=["streamlit"], max_size=None, proxy=None)  # type: ignore[list-item]
+        await self._ask(self.line, None)
+        await self._answer(self.line, None)
+        return self
+
+    async def __aexit__(self, *_: object) -> None:
+        await self.line.close()
+
+    async def edit(self, value: str) -> None:
+        """Change the value of beta, and wait until the page has said the new R0."""
+        await self._ask(self.line, value)
+        await self._answer(self.line, short(float(value)))
+
     async def work(self, until: float) -> None:
-        async with connect(self.url, subprotocols=["streamlit"], max_size=None, proxy=None) as line:  # type: ignore[list-item]
-            await self._ask(line, None)
-            await self._answer(line, None)
+        async with self:
             step = 0
             await asyncio.sleep(self.number / VISITORS)
             while time.monotonic() < until:
                 due = time.monotonic() + 1
                 step += 1
                 # A value that no other visitor has: what comes back must be one's own.
-                value = f"{1 + self.number / 100 + step / 10000:.4f}"
+                value = f"{1.5 + self.number / 100 + step / 10000:.4f}"
                 start = time.perf_counter()
-                await self._ask(line, value)
-                await self._answer(line, f"{float(value):.4g}")
+                await self.edit(value)
                 self.taken.append(1000 * (time.perf_counter() - start))
                 await asyncio.sleep(max(due - time.monotonic(), 0))
 

@@ -125,3 +125,36 @@ def test_two_tabs_change_the_same_line(tab, choice, value):
     second.go("Versions")  # the other one is there still
     second.page.get_by_role("combobox").first.click()
     expect(second.page.get_by_role("option")).to_have_count(3)
+
+
+def test_a_lost_connection_comes_back_and_edits_count_again(visit):
+    lines = []
+    reachable = True
+
+    def through(line):
+        if not reachable:
+            line.close()
+            return
+        lines.append((line, line.connect_to_server()))
+
+    visit.page.route_web_socket("**/_stcore/stream", through)
+    visit.start()
+    visit.type_text(SIR)
+    visit.stored_as(2)
+    visit.go("Model")
+    # The server goes on; only this browser cannot reach it: what is open is cut, and what is tried meanwhile fails.
+    reachable = False
+    for line, server in lines:
+        server.close()
+        line.close()
+    expect(visit.page.get_by_test_id("stConnectionStatus")).to_be_visible(timeout=PATIENCE)
+    visit.page.wait_for_timeout(1500)
+    reachable = True
+    expect(visit.page.get_by_test_id("stConnectionStatus")).to_have_count(0, timeout=PATIENCE)
+    visit.page.wait_for_timeout(4000)
+    visit.settled()
+    assert len(lines) > 1
+    visit.cell("Parameters", 0, 2, "0.8")
+    visit.R0_is("4")
+    visit.stored_as(3)
+    visit.complaints = [c for c in visit.complaints if not c.startswith("console")]  # it could not reach the server

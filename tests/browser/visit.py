@@ -51,7 +51,8 @@ class Visit:
             """() => {
                 const busy = document.querySelector('[data-testid="stApp"]').dataset.testScriptState !== 'notRunning'
                     || document.querySelector('[data-stale="true"]') !== null
-                    || document.getAnimations().some(a => a.playState === 'running' && a.effect.getTiming().iterations !== Infinity);
+                    || document.getAnimations().some(
+                        a => a.playState === 'running' && a.effect.getTiming().iterations !== Infinity);
                 const now = performance.now();
                 if (busy || window.quietSince === undefined) window.quietSince = now;
                 return now - window.quietSince > 1000;
