@@ -173,6 +173,27 @@ MEANINGS: dict[str, Meaning] = {
         "share",
         "Saltelli et al. 2010, Comput. Phys. Commun. 181:259",
     ),
+    "final_size": Meaning(
+        "share infected in the end",
+        "The share z of the susceptible who are infected in an outbreak that takes off, nothing changing in its course.",
+        r"1 - z_i = \exp\big(-\textstyle\sum_j K_{ij} N_j z_j / N_i\big)",
+        "share",
+        "Andreasen 2011, Bull. Math. Biol. 73:2305",
+    ),
+    "large_outbreak": Meaning(
+        "probability of a large outbreak",
+        "The chance that one case does not die out by chance: q is the least root, f the chances of its offspring.",
+        r"1 - q,\quad q = f(q)",
+        "probability",
+        "Harris 1963, The Theory of Branching Processes",
+    ),
+    "generation_interval": Meaning(
+        "generation interval",
+        "The age of an infection at the moment when it infects, over new cases as they settle.",
+        r"g(a) \propto v F e^{-V a} w",
+        "time unit",
+        "Wallinga & Lipsitch 2007, Proc. R. Soc. B 274:599",
+    ),
     "reciprocity": Meaning(
         "reciprocity",
         "Contacts of group i with j are as many as those of j with i: N is the size of a group.",

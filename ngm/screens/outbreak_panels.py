@@ -10,7 +10,7 @@ import ngm
 from ngm.charts import outbreak as charts
 from ngm.errors import NgmError, Problem
 from ngm.results_outbreak import Chance, FinalSizeResult, Outbreak, PaceResult, Twin
-from ngm.screens import asking, forms, packages, parts
+from ngm.screens import asking, forms, packages, parts, taking
 from ngm.screens.asking import Entries
 from ngm.screens.parts import Shown, plain
 
@@ -124,7 +124,7 @@ def _final_size(size: FinalSizeResult, write: Write) -> None:
     )
     chart = charts.attack_rates(size, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "attack-rates", "the picture of the shares infected")
     vaccinated = any(row.vaccinated is not None for row in size.rows)
     heads = ["Type", "Susceptible", "Infected, share", "Infected", *(["Not vaccinated", "Vaccinated"] * vaccinated)]
     rows = []
@@ -144,7 +144,7 @@ def _chance(chance: Chance, write: Write) -> None:
         st.metric(f"Probability of a large outbreak from {named}", write(chance.large_outbreak), border=True)
     chart = charts.chances(chance, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "large-outbreaks", "the picture of the chances")
     rows = [[row.type, write(row.large_outbreak), write(row.dies_out)] for row in chance.rows]
     parts.table(["One case of", "starts a large outbreak", "dies out"], rows)
     st.caption(
@@ -164,7 +164,7 @@ def _pace(pace: PaceResult, write: Write, unit: str, discrete: bool) -> None:
     third.metric(f"Doubling time, {unit}s", write(pace.doubling_time), border=True)
     chart = charts.intervals(pace, unit, discrete=discrete, dark=parts.dark())
     if chart is not None:
-        st.altair_chart(chart)
+        taking.picture(chart, "generation-intervals", "the picture of the intervals")
     st.caption(
         "The age of an infection when it infects others, over new cases of "
         f"{plain(', '.join(pace.types[:12]))} as they settle; "

@@ -37,7 +37,7 @@ PAGES = (
             *("stable_distribution", "reproductive_value", "T", "critical_effort"),
         ),
     ),
-    Page("outbreak", "Outbreak", ("R0", "growth_rate", "doubling_time")),
+    Page("outbreak", "Outbreak", ("R0", "final_size", "large_outbreak", "generation_interval", "growth_rate")),
     Page("first_weeks", "First weeks", ("growth_rate", "doubling_time", "K")),
     Page("below_one", "Below one", ("R0", "control")),
     Page("mixing", "Mixing", ("R0", "reciprocity", "assortativity", "stable_distribution", "elasticity")),

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import csv
 import io
+import re
+from pathlib import Path
 
 import pytest
 
@@ -48,3 +50,10 @@ def test_what_a_picture_is_drawn_from_is_offered_as_csv(offered, monkeypatch):
 
 def test_text_that_a_spreadsheet_would_run_is_kept_from_it():
     assert taking.csv_rows([["=1+1", "@x", -2.0, "a"]]) == "'=1+1,'@x,-2.0,a\n"
+
+
+def test_every_picture_can_be_saved():
+    # One way to show a picture: the one with its buttons. The guide's sketch is drawn again on the page of the model.
+    folder = Path(taking.__file__).parent
+    others = [path for path in folder.rglob("*.py") if path.name not in {"taking.py", "start.py"}]
+    assert [path.name for path in others if re.search(r"(altair|graphviz|vega_lite)_chart\(", path.read_text())] == []
