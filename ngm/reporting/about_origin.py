@@ -30,7 +30,7 @@ __all__ = ["CAUTIONS", "checklist", "checks", "limits", "names", "provenance", "
 #: Characters of a scenario that are printed in full.
 MOST_TEXT = 60_000
 #: Lines of the table of names; matrices of large models are in the JSON result alone.
-MOST_NAMES = 150
+MOST_NAMES = 200
 
 CAUTIONS = (
     "Deterministic and mean-field: everybody of a type meets everybody alike, and chance plays no part. With few "
@@ -188,7 +188,7 @@ def names(document: Document) -> Section:
     for _, item in document.numbers():
         if item.value != 0 or "[" not in item.name:
             found.setdefault(item.name, item)
-    order = sorted(found.values(), key=lambda item: item.name.startswith("report."))
+    order = sorted(found.values(), key=lambda item: _weight(item.name))
     shown = order[:MOST_NAMES]
     rows: tuple[tuple[Line, ...], ...] = tuple(
         ((Code(item.name),), (Number(repr(float(item.value)), item.value, item.name),)) for item in shown
@@ -202,6 +202,15 @@ def names(document: Document) -> Section:
     if len(order) > len(shown):
         blocks.append(Paragraph((f"{len(order) - len(shown)} more are in the companion file.",)))
     return Section("names", "Numbers and their names", (Paragraph((told,)), *blocks))
+
+
+def _weight(name: str) -> int:
+    """Return how late a number comes in the list of names, which may be cut: what decisions rest on comes first."""
+    if name.startswith(("solve.F[", "solve.V[", "solve.K_large[", "report.")):
+        return 5
+    if name.startswith("solve.K["):
+        return 3
+    return {"solve": 0, "control": 1, "compare": 2, "allocate": 2}.get(name.partition(".")[0], 4)
 
 
 def checklist(sections: Sequence[Section], left_out: Sequence[tuple[str, str]]) -> Section:

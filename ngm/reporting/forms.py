@@ -6,6 +6,7 @@ native equations, LaTeX, Markdown, or typst for the PDF. Figures are converted f
 
 from __future__ import annotations
 
+import re
 import subprocess
 import tempfile
 from collections.abc import Mapping
@@ -31,7 +32,7 @@ FORMS: Mapping[str, str] = {
 #: A form takes well under a second; past this it is stuck.
 SECONDS = 120
 
-_ENDING = {".html": "svg", ".md": "svg", ".tex": "pdf", ".docx": "png", ".pdf": "pdf"}
+_ENDING = {".html": "svg", ".md": "svg", ".tex": "pdf", ".docx": "png", ".pdf": "svg"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,6 +75,9 @@ def _converted(figure: Figure, ending: str) -> bytes:
     import vl_convert
 
     match _ENDING[ending]:
+        case "svg" if ending == ".pdf":
+            # Typst has no sans of its own; with the letters of the text around it a picture stays text.
+            return re.sub(r"font-family=(\"[^\"]*\"|'[^']*')", 'font-family="Libertinus Serif"', figure.svg).encode()
         case "svg":
             return figure.svg.encode()
         case "png":
@@ -150,6 +154,12 @@ def _typst(folder: Path) -> bytes:
     import typst
 
     fonts = typst.Fonts(include_system_fonts=False)
-    made = typst.compile(str(folder / "report.typ"), root=str(folder), font_paths=fonts)
+    source, root = str(folder / "report.typ"), str(folder)
+    try:
+        # PDF/UA-1: tagged, with a text for every picture and formula.
+        made = typst.compile(source, root=root, font_paths=fonts, pdf_standards=["ua-1"])
+    except RuntimeError:
+        # A sign that no font here has keeps it from that standard, and from nothing else.
+        made = typst.compile(source, root=root, font_paths=fonts)
     assert isinstance(made, bytes)
     return made

@@ -119,7 +119,7 @@ def _block(block: Block, form: str, figure: Callable[[Figure], str]) -> list[Nod
             inside = [{"t": "Para", "c": _inlines(line, form)}]
             return [{"t": "BlockQuote", "c": inside}]
         case Formula(latex=latex):
-            formula = {"t": "Para", "c": [{"t": "Math", "c": [{"t": "DisplayMath"}, _maths(latex)]}]}
+            formula = {"t": "Para", "c": _formula("DisplayMath", latex, form)}
             wide = form == "html" and _letters(latex) > PHONE
             return [_scrolling(formula, "A wide formula") if wide else formula]
         case Bullets(items=items):
@@ -157,7 +157,7 @@ def _inline(piece: Inline, form: str) -> list[Node]:
         case Code(text=text):
             return [{"t": "Code", "c": [_NO_ATTRIBUTES, _clean(text)]}]
         case Maths(latex=latex):
-            return [{"t": "Math", "c": [{"t": "InlineMath"}, _maths(latex)]}]
+            return _formula("InlineMath", latex, form)
         case Number(shown=shown, name=name):
             return [{"t": "Span", "c": [["", ["number"], [["data-json", name]]], [{"t": "Str", "c": shown}]]}]
 
@@ -191,6 +191,19 @@ def _string(text: str) -> str:
 def _clean(text: str, keep: str = "") -> str:
     """Return text without control and direction signs, which no form may hold or which turn what stands beside them."""
     return "".join(c if unicodedata.category(c)[0] != "C" or c in keep else " " for c in text.replace("\t", "    "))
+
+
+def _formula(kind: str, latex: str, form: str) -> list[Node]:
+    """Return a formula; in the PDF with its text for those who listen to it, which the other forms carry by themselves."""
+    node = {"t": "Math", "c": [{"t": kind}, _maths(latex)]}
+    if form != "typst":
+        return [node]
+    plain = re.sub(r"\\(left|right|,|qquad|quad|mathrm|displaystyle)(?![a-z])", " ", _maths(latex)).replace(
+        "dfrac", "frac"
+    )
+    told = _string(" ".join(plain.split()))
+    before, after = (f"#[#set math.equation(alt: {told});", "]")
+    return [{"t": "RawInline", "c": ["typst", before]}, node, {"t": "RawInline", "c": ["typst", after]}]
 
 
 def _maths(latex: str) -> str:

@@ -122,7 +122,7 @@ TYPST = r"""#set document(title: [$title$])
 #let horizontalrule = line(length: 100%, stroke: 0.5pt)
 #let fitted(path, alt) = layout(s => { let it = image(path, alt: alt)
   let m = measure(it)
-  let f = calc.min(0.75, s.width / m.width, 170mm / m.height)
+  let f = calc.min(1, s.width / m.width, 170mm / m.height)
   image(path, alt: alt, width: m.width * f) })
 
 #text(size: 19pt, weight: "bold")[$title$]

@@ -230,7 +230,34 @@ def test_pdf(made):
     pages = len(reader.pages)
     assert f"1 / {pages}" in reader.pages[0].extract_text()
     assert reader.pages[-1].extract_text().count("Checklist") == 1
-    assert reader.trailer["/Root"]["/MarkInfo"]["/Marked"]
+    root = reader.trailer["/Root"]
+    assert root["/MarkInfo"]["/Marked"]
+    assert root["/Lang"] == "en"
+    # Every picture has its words and every formula its text for those who listen; rows and columns of tables have heads.
+    tagged = list(elements(root["/StructTreeRoot"]["/K"]))
+    pictures = [element.get("/Alt") for element in tagged if element.get("/S") == "/Figure"]
+    assert pictures == [figure.alt for figure in made.document.figures()]
+    formulas = [element.get("/Alt") for element in tagged if element.get("/S") == "/Formula"]
+    assert formulas
+    assert all(formulas)
+    kinds = [element.get("/S") for element in tagged]
+    assert kinds.count("/Table") == kinds.count("/THead") == kinds.count("/Caption") - len(pictures)
+    assert kinds.count("/H1") == len(made.sections)
+    # PDF/UA-1, as the file says of itself; a sign that no font has is the one thing that keeps a report from it.
+    assert ("pdfuaid" in root["/Metadata"].get_data().decode()) or "\u202e" in made.document.title
+
+
+def elements(node):
+    """Yield the elements of a tagged PDF in order."""
+    node = node.get_object() if hasattr(node, "get_object") else node
+    if isinstance(node, list):
+        for part in node:
+            yield from elements(part)
+    elif isinstance(node, dict):
+        if "/S" in node:
+            yield node
+        if "/K" in node:
+            yield from elements(node["/K"])
 
 
 @pytest.mark.skipif(shutil.which("pdftotext") is None, reason="no poppler here")
