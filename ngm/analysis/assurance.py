@@ -209,6 +209,9 @@ def assured_coverage(
     )
     columns, warnings = drawn_columns(scenario, draws, seed=seed, kind=kind, correlation=correlation)
     found = decided_numbers(scenario, intervention)
+    if found.K is None and found.spectrum is not None:
+        told = f"{len(found.template.types)} types: coverage is computed where K can be written out."
+        raise ScenarioError(Problem("coverage", told))
     chosen = chosen_groups(found, groups)
     effects = overall_efficacy(
         shares_of(efficacy, chosen, "efficacy"), shares_of(against_spread, chosen, "against_spread")

@@ -70,6 +70,11 @@ def read_numbers(scenario: Scenario, names: Sequence[str]) -> tuple[Drawn, ...]:
             if types is None:
                 found = decided_numbers(scenario)
                 types = [found.template.types[k] for k in found.at]
+                if found.K is None and found.spectrum is not None:
+                    told = (
+                        f"{len(found.template.types)} types: numbers of types are computed where K can be written out."
+                    )
+                    problems.append(Problem("numbers at draws", told))
             out.append(_target(name, types, problems))
         else:
             problems.append(

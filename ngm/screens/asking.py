@@ -16,6 +16,9 @@ from ngm.typed import number
 
 __all__ = ["Entries", "asked", "cautions", "choice", "command", "common", "option", "picked", "several"]
 
+#: What is said below a strength or a coverage.
+ASSURANCE = "This holds at the values of the scenario. Page Sensitivity finds how much is enough in most of the draws."
+
 
 class Entries:
     """Fields for numbers, and what is wrong with what is typed in them."""

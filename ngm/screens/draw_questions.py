@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from dataclasses import dataclass
+from itertools import combinations
 from typing import Any
 
 import streamlit as st
@@ -22,6 +23,8 @@ OWN, BROUGHT = "from the ranges and distributions of the scenario", "from a file
 DESIGNS = {"Latin hypercube": "latin_hypercube", "Scrambled Sobol points": "sobol"}
 #: Types and entries of K of which a number is offered.
 MOST_OFFERED = 30
+#: Types up to which sets of them are offered, too.
+MOST_IN_SETS = 5
 GROWTH = "growth_rate"
 
 
@@ -170,6 +173,9 @@ def _numbers(shown: Shown) -> tuple[str, ...]:
     types = solution.types_at_infection
     offered = [] if solution.growth_rate is None else [GROWTH]
     offered += [f"T({name})" for name in types[:MOST_OFFERED]]
+    if len(types) <= MOST_IN_SETS:
+        sets = [chosen for size in range(2, len(types)) for chosen in combinations(types, size)]
+        offered += [f"T({', '.join(chosen)})" for chosen in sets]
     if solution.K is not None:
         entries = [
             f"T({types[i]} <- {types[j]})" for i, row in enumerate(solution.K) for j, value in enumerate(row) if value

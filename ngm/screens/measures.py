@@ -268,6 +268,7 @@ def strengths(shown: Shown, write: Write) -> None:
     ]
     parts.table(["intervention", f"strength at which it is {target:g}", "number at full strength", "in words"], cells)
     if len(names) > len(asked_for) + len(besides):
+    st.caption(asking.ASSURANCE)
         st.caption(f"The first {MOST_STRENGTHS} interventions are shown.")
     name = asking.choice("Show the way of the number for", [one.name for one in found], "control.curve")
     one = next(one for one in found if one.name == name)

@@ -119,6 +119,7 @@ def coverage(shown: Shown, write: Write) -> None:
         "Coverage is the share of the whole group, immune or not. Whether a vaccine protects everybody in part or some "
         "wholly does not move the threshold; it does move the size of an epidemic above it."
     )
+    st.caption(asking.ASSURANCE)
     for one in together.waning:
         st.info(plain(waning_words(one)))
     if together.lasting != 1:

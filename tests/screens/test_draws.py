@@ -6,9 +6,10 @@ import numpy as np
 import pytest
 
 import ngm
-from ngm.screens import long_work
+from ngm.screens import long_work, shelf
+from ngm.screens.state import AppState, Version
 from ngm.wording import assured_words
-from tests.screens.test_pages import metrics, words
+from tests.screens.test_pages import metrics, start, words
 from tests.screens.test_sensitivity import RANGED, button, cells, csv_of, joint, page, success
 
 LESS = '\n[[intervention]]\nname = "Less contact"\n[[intervention.change]]\nparameter = "beta"\nmultiply = 0.2\n'
@@ -45,6 +46,15 @@ def test_other_numbers_get_a_distribution_of_their_own():
     assert float(rows["mean"]) == pytest.approx(0.3, abs=0.001)
     # the command that prints the same
     assert any("--of growth_rate 'T(I)'" in code.value for code in at.code)
+
+
+def test_sets_of_types_and_routes_are_offered():
+    text, folder = shelf.read("age-groups-ember-cough.toml")
+    at = start(AppState(now=Version(text, "age-groups-ember-cough.toml", folder, text)), "sensitivity")
+    offered = at.multiselect(key="sensitivity.of").options
+    # By hand: the growth rate, 4 types, 6 pairs and 4 triples, and up to 30 of the 16 entries.
+    assert len(offered) == 1 + 4 + 6 + 4 + 16
+    assert {"T(E[0-4], E[18-64])", "T(E[65+] <- E[0-4])"} <= set(offered)
 
 
 def test_correlations_are_typed_a_pair_a_line():
