@@ -69,8 +69,8 @@ def _stages(
     return _bars(rows, axis, title, dark)
 
 
-def efforts(result: ControlResult, *, dark: bool = False) -> alt.LayerChart | None:
-    """Draw the critical effort of each type, and of each state, acted on alone.
+def efforts(result: ControlResult, *, dark: bool = False, births: bool = False) -> alt.LayerChart | None:
+    """Draw the critical effort of each type, and of each state, acted on alone; `births`: of a projected population.
 
     The critical effort is the share to remove, 1 - 1/T, from 0 to 1. Where T does not exist no effort on this target
     is enough, and the bar is replaced by the words "not enough alone". None where no bar would be left, or too many.
@@ -78,9 +78,10 @@ def efforts(result: ControlResult, *, dark: bool = False) -> alt.LayerChart | No
     rows: list[dict[str, Any]] = []
     for single in result.type_reproduction:
         if len(single.types) == 1:
-            rows.append(_effort(f"infections of {single.types[0]}", single.critical_effort))
+            what = "births into" if births else "infections of"
+            rows.append(_effort(f"{what} {single.types[0]}", single.critical_effort))
     for state in result.state_reproduction:
-        rows.append(_effort(f"infectivity of {state.state}", state.critical_effort))
+        rows.append(_effort(f"{'births by' if births else 'infectivity of'} {state.state}", state.critical_effort))
     if len(rows) > MOST_BARS or not any(row["value"] for row in rows):
         return None
     return _bars(

@@ -91,9 +91,17 @@ def asked(field: str, label: str, question: object) -> bool:
     return held == token
 
 
-def cautions() -> None:
+def cautions(form: str = "flows") -> None:
     """Say what numbers about control are not. Stands below all of them."""
-    parts.cautions()
+    parts.cautions(form)
+    if form == "projection":
+        st.info(
+            "**Before anybody acts on these numbers**\n"
+            "- What each intervention does was typed in: it is an assumption of the scenario, and only as good as its source.\n"
+            "- An effort computed at point estimates is too small about half the time: leave a margin.\n"
+            "- Below 1 the population dies out in the end, while all stays as it is; how soon is not said here."
+        )
+        return
     st.info(
         "**Before anybody acts on these numbers**\n"
         "- What each intervention does was typed in: it is an assumption of the scenario, and only as good as its source.\n"

@@ -69,6 +69,7 @@ def grid(
     title: str,
     labels: Sequence[str] | None = None,
     spare: int | None = None,
+    corner: str = "from",
 ) -> list[tuple[object, ...]]:
     """Return the rows that the grid holds now.
 
@@ -80,7 +81,7 @@ def grid(
 
     base = f"{key}.base"
     if key not in st.session_state or base not in st.session_state:
-        index = pandas.Index(labels, name="from") if labels is not None else None
+        index = pandas.Index(labels, name=corner) if labels is not None else None
         names = [column.field for column in columns]
         st.session_state[base] = pandas.DataFrame(list(before), columns=names, index=index, dtype="object")
     frame = st.data_editor(

@@ -58,8 +58,9 @@ def side_by_side(shown: Shown, write: Write) -> None:
     chart = charts.interventions(rows, dark=parts.dark())
     if chart is not None:
         taking.picture(chart, "interventions", "the picture of the interventions")
+    dying = "population" if shown.solution.form == "projection" else "infection"
     st.caption(
-        "Dashed line: 1, below which the infection dies out. With an intervention in force the number is a control "
+        f"Dashed line: 1, below which the {dying} dies out. With an intervention in force the number is a control "
         "reproduction number; R0 is the baseline's alone."
     )
     _table(found, rows, write)
@@ -267,8 +268,8 @@ def strengths(shown: Shown, write: Write) -> None:
         for one in found
     ]
     parts.table(["intervention", f"strength at which it is {target:g}", "number at full strength", "in words"], cells)
-    if len(names) > len(asked_for) + len(besides):
     st.caption(asking.ASSURANCE)
+    if len(names) > len(asked_for) + len(besides):
         st.caption(f"The first {MOST_STRENGTHS} interventions are shown.")
     name = asking.choice("Show the way of the number for", [one.name for one in found], "control.curve")
     one = next(one for one in found if one.name == name)

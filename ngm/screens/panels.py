@@ -145,7 +145,8 @@ def who_infects_whom(solution: Solution, write: Write) -> None:
             )
     if solution.K is not None:
         taking.matrix("K", solution.K, solution.types_at_infection)
-        with st.expander("K in numbers: row infected, column infecting"):
+        sides = "row born into, column born in" if born else "row infected, column infecting"
+        with st.expander(f"K in numbers: {sides}"):
             parts.numbers_table(solution.K, solution.types_at_infection, write, "K")
 
 
@@ -199,7 +200,7 @@ def control(result: ControlResult, write: Write, form: str = "flows") -> None:
         f"is the share of them to prevent for the {'population' if born else 'infection'} to die out. It equals 1 - 1/R0 only "
         "where all types are treated alike. Where T does not exist, no effort on that target alone is enough."
     )
-    chart = bars.efforts(result, dark=parts.dark())
+    chart = bars.efforts(result, dark=parts.dark(), births=born)
     if chart is not None:
         taking.picture(chart, "efforts", "the picture of the efforts")
     heads = ["target", "T", "critical effort", "why there is none"]

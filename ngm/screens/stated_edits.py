@@ -75,7 +75,8 @@ def editor(section: str, document: Mapping[str, Any]) -> list[Edit]:
 def _grid(section: str, name: str, values: object, labels: list[str], columns: Sequence[Column]) -> list[Edit]:
     before = forms.matrix_rows(values, len(labels))
     key = f"model.{section}.{name}.{len(labels)}.{state.current().forms}"
-    after = _cells(editors.grid(key, before, columns, name, labels))
+    corner = {"K": "infected, by", "births": "born, by", "transitions": "later, now"}[name]
+    after = _cells(editors.grid(key, before, columns, name, labels, corner=corner))
     return [] if after == before else forms.matrix_edits((section, name), values, before, after, None, len(labels))
 
 
@@ -85,7 +86,9 @@ def _sizes(values: object, labels: list[str]) -> list[Edit]:
         held = values if isinstance(values, list) else []
         before = [(forms.shown(held[k], "value") if k < len(held) else "",) for k in range(len(labels))]
         key = f"model.next_generation.sizes.{len(labels)}.{state.current().forms}"
-        after = _cells(editors.grid(key, before, [Column("0", "Members", "value", width=120)], "Sizes", labels))
+        after = _cells(
+            editors.grid(key, before, [Column("0", "Members", "value", width=120)], "Sizes", labels, corner="type")
+        )
     if after == before:
         return []
     if not any(cell for (cell,) in after):

@@ -35,14 +35,16 @@ def page() -> None:
     )
     state.remember("control.question", question)
     top = st.container()
+    form = "flows"
     if question == COMPARE:
         measures.editor(now)
     with top:
         shown = parts.results()
         if shown is not None:
+            form = shown.solution.form
             parts.headline(shown.solution)
             QUESTIONS[question](shown, parts.digits("control"))
-    asking.cautions()
+    asking.cautions(form)
 
 
 page()
