@@ -218,5 +218,5 @@ def versions_panel(shown: Shown, write: Write) -> None:
         parts.table(["Entry", "Before", "After", "Because of"], rows)
     if found.contributions:
         rows = [[c.change, write(c.in_order), write(c.averaged)] for c in found.contributions]
-        parts.table(["Change", "Moves R0, in this order", "Mean over all orders"], rows)
+        parts.table(["Change", "Moves R0, in this order", "Mean over orders"], rows)
     parts.warnings_box(found.warnings)
