@@ -31,7 +31,7 @@ from ngm.engine.structure import classes
 from ngm.expression.tree import names
 from ngm.scenario.model import Intervention, Scenario
 
-__all__ = ["MOST_TRACED", "NO_STATE", "Check", "Plan", "plan"]
+__all__ = ["MOST_TRACED", "NO_STATE", "OVERDRAWN", "Check", "Plan", "plan"]
 
 #: Types up to which a model is traced; past them draws are done one by one.
 MOST_TRACED = 150

@@ -9,7 +9,7 @@ from fractions import Fraction
 import numpy as np
 import numpy.typing as npt
 
-from ngm.analysis.draw_plan import NEGATIVE_F, NO_STATE, POSITIVE_V, SINGULAR, Check, Plan
+from ngm.analysis.draw_plan import NEGATIVE_F, NO_STATE, OVERDRAWN, POSITIVE_V, SINGULAR, Check, Plan
 from ngm.analysis.numbers import decided_numbers
 from ngm.analysis.state import AT_REST
 from ngm.engine.balls import nearest, precision
@@ -268,6 +268,8 @@ class _Work:
                 found = decided_numbers(at_draw(self.plan, [float(a[place]) for a in self.arrays]), self._intervention)
             except NgmError as error:
                 why = NO_STATE if isinstance(error, DerivationError) else str(error.problems[0])
+                if error.problems[0].where.startswith("flows out of "):
+                    why = OVERDRAWN
                 self.codes[place] = self._code(why)
                 continue
             if self.what == "growth":

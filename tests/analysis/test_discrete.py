@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 import ngm
 from ngm.analysis.batch import draw_numbers
+from tests.analysis.packages import intervention
 from tests.derivation.models import text
 
 SEIR = text(
@@ -84,6 +85,24 @@ def test_draws_that_overdraw_have_no_number():
     assert "more leave" in next(iter(found.missing))
 
 
+def test_draws_done_one_by_one_tell_the_same_reason():
+    # The state without infection solves a quadratic, so each draw is done by itself.
+    model = text(
+        [("S", False), ("I", True)],
+        {"b": 2, "g": 0.5, "c": 0.5},
+        [("", "S", "b", "x"), ("S", "", "0.01*S*S", "x"), ("S", "I", "c*S*I/(S+I)", "t"), ("I", "", "g*I", "x")],
+    )
+    found = draw_numbers(discrete(model), {"g": np.array([0.2, 1.2])})
+    assert found.values[0] == pytest.approx(2.5, rel=1e-12)
+    assert list(found.missing) == ["more leave a compartment in one step than there are in it"]
+
+
+def test_an_intervention_that_overdraws_is_named():
+    model = SEIR + intervention("Cure", 'parameter = "g", set = 1.5')
+    with pytest.raises(ngm.ScenarioError, match=r'intervention "Cure", flows out of I: .* add up to 1\.5'):
+        ngm.compare(discrete(model))
+
+
 def test_a_share_per_another_unit_of_time_is_refused():
     weekly = SEIR.replace('time_unit = "day"', 'time_unit = "week"')
     assert weekly != SEIR
@@ -108,6 +127,45 @@ def test_stability_of_the_state_without_infection_is_decided_by_moduli():
     unstable = ngm.solve(discrete(model, m=2.5))
     assert not unstable.conditions[4].holds
     assert ngm.solve(ngm.loads(model).with_values(m=2.5)).conditions[4].holds
+
+
+def test_a_step_that_overshoots_is_unstable_also_in_large_models():
+    # By hand, as above: 600 places alike, deviations times 1 - m; unstable at m = 2.5, in continuous time never.
+    groups = 600
+    model = f"""
+[scenario]
+title = "Many places alike, invented"
+time_unit = "week"
+time = "discrete"
+[dimensions]
+place = {[f"p{k}" for k in range(groups)]}
+[compartments]
+S = {{ infected = false, by = ["place"] }}
+I = {{ infected = true, by = ["place"] }}
+[parameters]
+m = {{ value = 0.5 }}
+[[flow]]
+to = "S"
+rate = "10"
+kind = "transition"
+[[flow]]
+from = "S"
+rate = "m * S"
+kind = "transition"
+[[flow]]
+from = "S"
+to = "I"
+rate = "0.6 * S * I / (S + I)"
+kind = "transmission"
+[[flow]]
+from = "I"
+rate = "0.5 * I"
+kind = "transition"
+"""
+    scenario = ngm.loads(model)
+    assert ngm.solve(scenario, limit=0).conditions[4].holds
+    assert not ngm.solve(scenario.with_values(m=2.5), limit=0).conditions[4].holds
+    assert ngm.solve(ngm.loads(model.replace('time = "discrete"', "")).with_values(m=2.5), limit=0).conditions[4].holds
 
 
 shares = st.floats(0.05, 0.95)

@@ -7,8 +7,9 @@ import math
 import pytest
 
 from ngm.screens import shelf
+from ngm.screens.registry import PAGES
 from ngm.screens.state import AppState, Version
-from tests.screens.test_pages import STATES, metrics, start, words
+from tests.screens.test_pages import STATES, metrics, start, text_of, words
 
 PAGE = "outbreak"
 CLOSED = """
@@ -77,6 +78,34 @@ def test_cases_and_interventions_are_asked_for_and_kept():
     at = at.text_input(key="outbreak.introduce.I").set_value("some").run()
     assert "is no number" in words(at)
     assert not at.exception
+
+
+def test_time_is_chosen_on_the_page_of_the_scenario():
+    at = start(AppState(now=Version(CLOSED, "x.toml", None, CLOSED)), "scenario")
+    key = next(box.key for box in at.selectbox if box.label == "Time")
+    at = at.selectbox(key=key).select_index(1).run()
+    assert 'time = "discrete"' in text_of(at)
+    key = next(box.key for box in at.selectbox if box.label == "Time")
+    at = at.selectbox(key=key).select_index(0).run()
+    assert text_of(at) == CLOSED
+
+
+@pytest.mark.parametrize("page", [page.name for page in PAGES])
+def test_every_page_works_in_weekly_steps(page):
+    text, folder = shelf.read("weekly-steps-tarn-croup.toml")
+    at = start(AppState(now=Version(text, "x.toml", folder, text)), page)
+    assert not at.exception
+    assert not at.error
+    assert metrics(at)["R0: basic reproduction number"] == "1.431"
+
+
+@pytest.mark.parametrize("stem", ["ticks-and-mice-quill-fever", "mosquito-stages-saltings"])
+def test_matrices_in_place_of_flows(stem):
+    text, folder = shelf.read(f"{stem}.toml")
+    at = opened(text, folder)
+    assert not at.exception
+    assert "By chance" in [header.value for header in at.header]
+    assert "In steps or in continuous time" not in [header.value for header in at.header]
 
 
 def test_a_vaccine():

@@ -40,6 +40,10 @@ def choose() -> None:
         state.open_text(begun, "untitled.toml")
 
 
+#: How time goes, in the order of the choice.
+TIMES = ["continuous: rates per time unit", "discrete: one step is one time unit"]
+
+
 def heading(now: state.Version) -> None:
     """Place title, time unit and summary, and put what is typed there into the text."""
     document = forms.document(now.text)
@@ -54,10 +58,22 @@ def heading(now: state.Version) -> None:
         before = forms.shown(held.get(field), "text")
         after = place.text_input(label, value=before, key=f"scenario.{field}.{state.current().forms}")
         edits += forms.field_edit("scenario", field, before, after)
+    if "next_generation" not in document and "projection" not in document:
+        edits += _time(forms.shown(held.get("time"), "text"))
     before = forms.shown(held.get("summary"), "text")
     after = st.text_area("Summary", value=before, height=80, key=f"scenario.summary.{state.current().forms}")
     edits += forms.field_edit("scenario", "summary", before, after)
     state.edit(parts.applied(now.text, edits))
+
+
+def _time(before: str) -> list[Edit]:
+    """Ask whether time is continuous or goes in steps; a text that says neither is left as it is."""
+    index = {"": 0, "discrete": 1}.get(before)
+    if index is None:
+        return []
+    key = f"scenario.time.{state.current().forms}"
+    after = st.selectbox("Time", TIMES, index=index, key=key, help="In steps a rate is the number that moves in one.")
+    return forms.field_edit("scenario", "time", before, "discrete" if after == TIMES[1] else "")
 
 
 def source() -> None:
