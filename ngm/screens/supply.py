@@ -276,6 +276,12 @@ def _shares(found: Allocation, besides: Sequence[str], write: Write) -> None:
 
 def _groups(shown: Shown) -> list[str] | None:
     """Return the groups of hosts; None, with the reason told, where there are none to choose from."""
+    if shown.solution.form == "projection":
+        st.info(
+            "A projected population is not vaccinated: nobody in it is infected. Type what lowers births or survival as an "
+            "intervention, and ask for the **Strength needed**."
+        )
+        return None
     found = cache.coverage(shown.text, shown.folder)
     if not isinstance(found, Coverage):
         parts.problem_box(found, "with the groups of hosts")
