@@ -37,6 +37,8 @@ FEW, STILL_FEW = 1e-6, 1e-5
 GROWTH_GAP, MIX_GAP = 2e-2, 1e-2
 #: Components that are followed side by side, and steps of progress that are told of them.
 TOGETHER, SHARES = 150, 40
+#: How faint infection may become, against what was seeded, before errors count against this.
+FAINT = 1e-10
 #: Periods of a season that are followed.
 PERIODS = 2
 
@@ -184,7 +186,7 @@ class _Follower:
             return np.moveaxis(told, 1, 0)
         hosts = max(float(np.abs(start).max()), 1e-300)
         infected = np.arange(n) < self.dynamics.infected
-        sizes = np.where(infected[None, :], cases[:, None] * 1e-3, hosts)
+        sizes = np.where(infected[None, :], cases[:, None] * FAINT, hosts)
         done, end = 0, float(times[-1])
 
         def at(t: float) -> Mapping[str, float] | None:

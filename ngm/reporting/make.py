@@ -282,7 +282,7 @@ def _thresholds(scenario: Scenario) -> tuple[Threshold, ...]:
         if len(found) > MOST_THRESHOLDS:
             break
         with contextlib.suppress(NgmError):  # the comparison of interventions tells why one cannot be evaluated
-            one = ngm.threshold(scenario, intervention=intervention)
+            one = ngm.threshold(scenario, intervention=intervention, limit=0)
             if one.R_now is not None and one.R_now < 1 and one.direction is not None:
                 found.append(one)
     return tuple(found)

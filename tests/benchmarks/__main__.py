@@ -7,22 +7,32 @@ since its figures are seconds, which mean something on a quiet machine only.
 from __future__ import annotations
 
 import importlib
+import os
 import platform
 import sys
 from datetime import date
+from pathlib import Path
 
 import numpy
 import scipy
 import sympy
 
 #: What runs where nothing is named.
-PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak")
+PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak", "course", "processes", "hostile")
+
+
+def processor() -> str:
+    """Return what the machine calls its processor."""
+    about = Path("/proc/cpuinfo")
+    lines = about.read_text(encoding="utf-8").splitlines() if about.exists() else []
+    return next((line.partition(":")[2].strip() for line in lines if line.startswith("model name")), platform.machine())
 
 
 def main(named: list[str]) -> None:
     """Run every benchmark and print its rows."""
     versions = f"numpy {numpy.__version__}, scipy {scipy.__version__}, sympy {sympy.__version__}"
-    print(f"{date.today()}, Python {platform.python_version()}, {platform.machine()}, {versions}\n")
+    machine = f"{os.cpu_count()} cores of {processor()}, load {os.getloadavg()[0]:.1f} at the start"
+    print(f"{date.today()}, {machine}, Python {platform.python_version()}, {versions}\n")
     print("| what | measured | to keep |\n| --- | --- | --- |")
     for name in named or PARTS:
         if name not in (*PARTS, "browser"):
