@@ -92,7 +92,7 @@ class Point:
     @cached_property
     def exact(self) -> bool:
         """Whether numbers are enclosed."""
-        return len(self.template.types) <= MOST_EXACT
+        return is_stated(self.scenario) or len(self.template.types) <= MOST_EXACT
 
     @cached_property
     def algebra(self) -> Algebra:
@@ -267,7 +267,9 @@ class Point:
         """Return whether the uninfected block is stable; None where it is neutral (an eigenvalue 0)."""
         moving = tuple(name for name in self.template.uninfected if name in self.template.depended_on)
         if not self.exact and len(self.template.items_of(moving)) > MOST_EXACT:
-            return is_large_stable(self.template, self.evaluator, self.template.arrows, moving)
+            return is_large_stable(
+                self.template, self.evaluator, self.template.arrows, moving, discrete=self.scenario.discrete
+            )
         slope, discrete = self.uninfected_slope, self.scenario.discrete
         if is_stable(slope, discrete=discrete):
             return True
