@@ -334,6 +334,8 @@ def _frozen(F: FloatArray, V: FloatArray) -> FloatArray | None:
         K = np.linalg.solve(np.swapaxes(V, 1, 2), np.swapaxes(F, 1, 2))
     except np.linalg.LinAlgError:
         return None
+    if not np.all(np.isfinite(K)):
+        return None
     return np.asarray(np.max(np.abs(np.linalg.eigvals(K)), axis=1))
 
 

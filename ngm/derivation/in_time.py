@@ -18,7 +18,7 @@ from ngm.derivation.space import Array
 from ngm.derivation.template import Arrow, Template
 from ngm.expression.tree import Node, Total, names, rebuild
 from ngm.scenario.model import Dimension, Expression, Scenario
-from ngm.scenario.season import follows_a_season, seasonal_parameters
+from ngm.scenario.season import follows_a_season
 from ngm.scenario.values import converted
 
 __all__ = ["Moments"]
@@ -200,8 +200,3 @@ class Moments:
                 net[at[arrow.target] : at[arrow.target] + len(rows)] += rows
                 gross[at[arrow.target] : at[arrow.target] + len(rows)] += np.abs(rows)
         return net, gross
-
-
-def has_seasons(scenario: Scenario) -> bool:
-    """Return whether any parameter of a scenario has a season."""
-    return bool(seasonal_parameters(scenario))

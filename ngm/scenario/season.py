@@ -11,7 +11,7 @@ from collections.abc import Iterable
 from fractions import Fraction
 
 from ngm.expression.tree import names
-from ngm.scenario.model import Parameter, Scenario, Season
+from ngm.scenario.model import Scenario, Season
 
 __all__ = [
     "MOST_REPEATS",
@@ -94,8 +94,3 @@ def breaks(scenario: Scenario) -> tuple[Fraction, ...]:
             part = season.period / len(season.values)
             out |= {part * k for k in range(int(period / part) + 1)}
     return tuple(sorted(out))
-
-
-def has_season(parameters: Iterable[Parameter]) -> bool:
-    """Return whether any of these parameters has a season."""
-    return any(parameter.season is not None for parameter in parameters)

@@ -8,6 +8,9 @@ import numpy as np
 import pytest
 
 import ngm
+from ngm.analysis.numbers import decided_numbers
+from ngm.analysis.season import OverTheYear
+from ngm.engine.balls import to_floats
 from tests.engine.test_floquet import by_fourier
 
 SALLOW = Path(__file__).parents[2] / "scenarios" / "seasonal-midges-sallow-fever.toml"
@@ -215,3 +218,36 @@ def test_growth_without_transmission_has_no_number():
     assert solution.R0 is None
     assert "die out over a period" in solution.no_R0
     assert solution.growth_rate == pytest.approx(0.5, rel=1e-9)
+
+
+def test_groups_and_movements_at_single_moments():
+    # Second route: the scenario without the season, its values multiplied by the factor of the moment.
+    path = Path(__file__).parents[2] / "scenarios" / "three-towns-torvane-fever.toml"
+    text = path.read_text(encoding="utf-8")
+    line = next(line for line in text.splitlines() if line.startswith("beta = "))
+    seasonal = line[:-1].rstrip() + ", season = { amplitude = 0.5, peak = 4, period = 60 } }"
+    year = OverTheYear(decided_numbers(ngm.loads(text.replace(line, seasonal))))
+    times = np.array([0.0, 11.0, 34.0])
+    F, V = year.slopes(times)
+    plain = ngm.loads(text)
+    for k, t in enumerate(times):
+        factor = 1 + 0.5 * np.cos(2 * np.pi * (t - 4) / 60)
+        change = (
+            f'[[intervention]]\nname = "moment"\nchange = [{{ parameter = "beta", multiply = {float(factor)!r} }}]\n'
+        )
+        found = decided_numbers(plain, ngm.loads(text + change).interventions[-1])
+        assert F[k] == pytest.approx(to_floats(found.F), rel=1e-12)
+        assert V[k] == pytest.approx(to_floats(found.V), rel=1e-12)
+
+
+def test_a_rate_that_stops_at_a_moment():
+    # Recovery stands still once a year: that moment alone has no number, the year has.
+    text = SIR.replace("SEASON", "{ amplitude = 0.2, period = 10 }")
+    text = text.replace(
+        "gamma = { value = 0.2 }", "gamma = { value = 0.2, season = { amplitude = 1, peak = 5, period = 10 } }"
+    )
+    solution = solve(text)
+    assert solution.R0 == pytest.approx(2, rel=1e-9)  # one type: mean over mean
+    assert solution.season.worst is None
+    assert solution.season.frozen == ()
+    assert solution.to_json()["season"]["worst"] is None
