@@ -10,6 +10,7 @@ from ngm.derivation.rest import RestSystem, choose_branches
 from ngm.derivation.space import Array
 from ngm.derivation.template import Arrow, Template
 from ngm.engine.blocks import BlockMatrix
+from ngm.engine.large import step_modulus
 from ngm.engine.rest import FreeStates, RestStates
 from ngm.engine.transitions import SingularTransitions, Transitions
 
@@ -19,7 +20,7 @@ NEWTON_STEPS = 60
 STARTS = 6
 
 
-def find_large_rest(system: RestSystem) -> RestStates:
+def find_large_rest(system: RestSystem, *, discrete: bool = False) -> RestStates:
     """Return the states at rest of many free compartments, as doubles: an affine system at once, another by Newton's method.
 
     Raises
@@ -34,13 +35,13 @@ def find_large_rest(system: RestSystem) -> RestStates:
     if np.allclose(first @ trial, second @ trial, rtol=1e-11, atol=0):
         entering, leaving = system.flow(np.zeros(n))
         x = _solve(system, first, (entering - leaving)[:, 0])
-        return RestStates((x,), (bool(np.all(x >= 0)),), (_stable(first),))
+        return RestStates((x,), (bool(np.all(x >= 0)),), (_stable(first, discrete),))
     found: list[Array] = []
     for k in range(STARTS):
         reached = _newton(system, np.full(n, 10.0 ** (k - 1)))
         if reached is not None and not any(np.allclose(reached, other, rtol=1e-6) for other in found):
             found.append(reached)
-    stable = tuple(_stable(_losses(system, x)) for x in found)
+    stable = tuple(_stable(_losses(system, x), discrete) for x in found)
     return RestStates(tuple(found), tuple(bool(np.all(x >= 0)) for x in found), stable)
 
 
@@ -78,23 +79,32 @@ def _solve(system: RestSystem, matrix: BlockMatrix, right: Array) -> Array:
     return np.where(np.abs(solved) > 0, solved, 0.0)
 
 
-def _stable(matrix: BlockMatrix) -> bool:
-    """Return whether minus a slope with non-negative off-diagonal entries is a non-singular M-matrix."""
+def _stable(matrix: BlockMatrix, discrete: bool) -> bool:
+    """Return whether minus a slope with non-negative off-diagonal entries is a non-singular M-matrix.
+
+    In discrete time a step must not overshoot either: no eigenvalue of I + slope has a modulus of 1 or more.
+    """
     ones = np.ones(matrix.size)
     try:
         x = Transitions(matrix).solve(ones)
     except SingularTransitions:
         return False
-    return bool(np.all(np.isfinite(x)) and np.all(x > 0) and np.max(np.abs(matrix @ x - ones)) < 0.5)
+    regular = bool(np.all(np.isfinite(x)) and np.all(x > 0) and np.max(np.abs(matrix @ x - ones)) < 0.5)
+    return regular and not (discrete and step_modulus(matrix) >= 1)
 
 
 def is_large_stable(
-    template: Template, evaluator: Evaluator, arrows: tuple[Arrow, ...], compartments: tuple[str, ...]
+    template: Template,
+    evaluator: Evaluator,
+    arrows: tuple[Arrow, ...],
+    compartments: tuple[str, ...],
+    *,
+    discrete: bool = False,
 ) -> bool | None:
     """Return whether the uninfected compartments are stable without infection; None where they are neutral."""
     _, losses, gains = block_slopes(template, evaluator, arrows, compartments)
     matrix = difference(losses, gains)
-    if _stable(matrix):
+    if _stable(matrix, discrete):
         return True
     ones = np.ones(matrix.size)
     # Nothing enters or leaves (or what leaves one enters another): columns of the slope add up to 0.

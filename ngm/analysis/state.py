@@ -75,7 +75,7 @@ class _Finder:
             floats = RestSystem(template, FLOATS, {name: as_floats(table) for name, table in self.matrices.items()})
         try:
             if not exact and len(system.labels) > MOST_DENSE:
-                found = find_large_rest(system)
+                found = find_large_rest(system, discrete=self.scenario.discrete)
             else:
                 found = find_rest(
                     floats, system if exact else None, len(system.labels), discrete=self.scenario.discrete

@@ -378,6 +378,18 @@ class NextGeneration:
         return None
 
 
+def step_modulus(losses: BlockMatrix) -> float:
+    """Return the largest modulus of the eigenvalues of I - losses: what a step in discrete time leaves of a deviation."""
+    from scipy.sparse.linalg import LinearOperator, eigs
+
+    size = losses.size
+    if size <= 2:  # too few for Arnoldi steps
+        columns = np.column_stack([losses @ unit for unit in np.eye(size)])
+        return float(np.max(np.abs(np.linalg.eigvals(np.eye(size) - columns))))
+    operator: Any = LinearOperator((size, size), matvec=lambda x: x - losses @ x, dtype=float)
+    return float(abs(eigs(operator, k=1, which="LM", v0=np.ones(size), return_eigenvectors=False)[0]))
+
+
 def _absolute(matrix: BlockMatrix) -> BlockMatrix:
     """Return the matrix with every chain counted positive: |V| for chains that do not cancel within a block."""
     from ngm.engine.blocks import Chain
