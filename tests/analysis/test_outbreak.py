@@ -228,16 +228,19 @@ def test_published_chances():
     assert chance == pytest.approx({"E": 0.2534937656, "I": 0.2516275000}, abs=1e-10)
     malaria = text(
         [("Sv", False), ("Iv", True), ("Sh", False), ("Ih", True)],
-        {},
-        # K_hv = 25 human cases by one vector, K_vh = 1.2 vectors by one human case
-        [("Sh", "Ih", "25*Iv*Sh", "t"), ("Sv", "Iv", "1.2*Ih*Sv", "t"), ("Ih", "", "Ih", "x"), ("Iv", "", "Iv", "x")],
-        free={"Sv": 1, "Sh": 1},
+        {"a": 0.3, "b": 0.5, "c": 0.4, "gamma": 0.01, "g": 0.12},
+        [
+            ("Sh", "Ih", "a*b*Iv*Sh/100", "t"),
+            ("Sv", "Iv", "a*c*Ih*Sv/100", "t"),
+            ("Ih", "", "gamma*Ih", "x"),
+            ("Iv", "", "g*Iv", "x"),
+        ],
+        free={"Sv": 200, "Sh": 100},
     )
-    chance = {row.type: row.dies_out for row in outbreak(malaria).chance.rows}
-    v, h = chance["Iv"], chance["Ih"]
-    assert h == pytest.approx((1 + 25) / (25 * (1 + 1.2)), rel=1e-12)
-    assert v == pytest.approx((1 + 1.2) / (1.2 * (1 + 25)), rel=1e-12)
-    assert h * v == pytest.approx(1 / 30, rel=1e-12)
+    found = outbreak(malaria)
+    chance = {row.type: row.dies_out for row in found.chance.rows}
+    assert chance == pytest.approx({"Ih": 0.072, "Iv": 0.4629629630}, abs=1e-10)
+    assert chance["Ih"] * chance["Iv"] == pytest.approx(1 / found.R**2, rel=1e-12)
 
 
 def test_cases_introduced_are_independent():
