@@ -29,7 +29,7 @@ def chances(chance: Chance, *, dark: bool = False) -> alt.LayerChart | None:
     """Draw the probability that one case of each type starts a large outbreak (0 to 1)."""
     names = [row.type for row in chance.rows]
     values = [row.large_outbreak for row in chance.rows]
-    return _shares(names, values, "probability that one case starts a large outbreak (0 to 1)", dark)
+    return _shares(names, values, "probability of a large outbreak (0 to 1)", dark)
 
 
 def _shares(names: Sequence[str], values: Sequence[float], axis: str, dark: bool) -> alt.LayerChart | None:
