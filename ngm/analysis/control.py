@@ -13,6 +13,7 @@ from ngm.analysis.caution import below_one_caution
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.analysis.season_results import control_over_the_year
+from ngm.analysis.stated_entries import nothing_new
 from ngm.analysis.steady import refuse_season
 from ngm.engine.balls import nearest, precision
 from ngm.engine.control import (
@@ -108,7 +109,7 @@ def _control(found: Numbers) -> ControlResult:
         warnings.append(f"No R0: {found.no_R0}")
     elif found.spectrum is None:
         R0 = 0.0
-        warnings.append("No flow makes new infections near the infection-free state: there is nothing to control.")
+        warnings.append(f"{nothing_new(scenario)} There is nothing to control.")
     else:
         R0 = nearest(found.spectrum.root)
         if len(types) > MOST_WRITTEN:
@@ -116,10 +117,16 @@ def _control(found: Numbers) -> ControlResult:
         else:
             kinds = _types(found, at)
             targets = _targets(found, at, warnings)
-            states = [] if scenario.given is not None else [
-                StateNumber(types[k], number.T, number.critical_effort, _why(number, f"the infectivity of {types[k]}"))
-                for k, number in state_reproduction_numbers(found.F, found.V)
-            ]
+            states = (
+                []
+                if scenario.given is not None
+                else [
+                    StateNumber(
+                        types[k], number.T, number.critical_effort, _why(number, f"the infectivity of {types[k]}")
+                    )
+                    for k, number in state_reproduction_numbers(found.F, found.V)
+                ]
+            )
     return ControlResult(
         scenario.title, scenario.digest, R0, found.no_R0, tuple(kinds), tuple(targets), tuple(states), tuple(warnings)
     )

@@ -12,7 +12,7 @@ from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.point import MOST_WRITTEN
 from ngm.analysis.season_results import solution_over_the_year, without_season
 from ngm.analysis.stated import as_stated, conditions_of, symbols_as_stated
-from ngm.analysis.stated_entries import is_stated
+from ngm.analysis.stated_entries import is_stated, nothing_new
 from ngm.derivation.conditions import fifth_condition, first_conditions
 from ngm.derivation.outline import outline
 from ngm.derivation.terms import entry_terms
@@ -84,7 +84,7 @@ def _numbers(found: Numbers) -> dict[str, Any]:
             f"{len(template.types)} types: matrices are not written out, and the bounds are those of the matrix as rounded."
         )
     if len(found.at) == 0:
-        warnings.append("No flow makes new infections near the infection-free state: R0 is 0.")
+        warnings.append(nothing_new(scenario))
     r = found.growth
     doubling = None if r is None else doubling_time(r)
     spec = found.spectrum

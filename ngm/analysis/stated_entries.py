@@ -15,7 +15,16 @@ from ngm.errors import DerivationError, Problem
 from ngm.expression.tree import Number
 from ngm.scenario.model import Expression, Scenario
 
-__all__ = ["form_of", "is_stated", "matrices_of", "negative_entry", "refuse_negative_shares", "sizes_of", "without_end"]
+__all__ = [
+    "form_of",
+    "is_stated",
+    "matrices_of",
+    "negative_entry",
+    "nothing_new",
+    "refuse_negative_shares",
+    "sizes_of",
+    "without_end",
+]
 
 MOST_TOLD = 5
 
@@ -94,6 +103,13 @@ def negative_entry(scenario: Scenario, row: str, column: str) -> str:
     if scenario.given is not None:
         return f"K[{row}, {column}] is negative at these values. A number of new infections is positive or zero."
     return f"births[{row}, {column}] is negative at these values. A number of new members is positive or zero."
+
+
+def nothing_new(scenario: Scenario) -> str:
+    """Return what to say where nothing makes new infections, or no stage has births."""
+    if scenario.projection is not None:
+        return "No stage has births: R0 is 0."
+    return "No flow makes new infections near the infection-free state: R0 is 0."
 
 
 def without_end(members: list[str]) -> str:

@@ -238,3 +238,9 @@ def test_what_needs_flows_or_contacts_is_refused_in_a_sentence():
             ngm.mixing(load(text))
         with pytest.raises(ScenarioError, match="no dimension"):
             ngm.control(load(text), by="age")
+
+
+def test_a_population_without_births_says_so():
+    scenario = load(population([[0, 0], [0, 0]], [[0.5, 0], [0.2, 0.9]]))
+    assert ngm.solve(scenario, limit=0).warnings == ("No stage has births: R0 is 0.",)
+    assert ngm.control(scenario).warnings == ("No stage has births: R0 is 0. There is nothing to control.",)
