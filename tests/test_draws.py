@@ -9,9 +9,17 @@ import pytest
 
 import ngm
 from ngm.__main__ import main
+from ngm.analysis import slopes
 
 SEIR = "scenarios/seir-velmar-fever.toml"
 AGES = "scenarios/age-groups-ember-cough.toml"
+
+
+@pytest.fixture(autouse=True)
+def _patient(monkeypatch):
+    # Formulas take well under a second; a machine that does much else must not decide what is tested here.
+    monkeypatch.setattr(slopes, "LIMIT", 120.0)
+    monkeypatch.setattr("ngm.analysis.sensitivity.FORMULA_LIMIT", 120.0)
 
 
 def run(capsys, *arguments):

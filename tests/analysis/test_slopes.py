@@ -14,6 +14,13 @@ from ngm.expression.parse import parse
 from tests.properties.random_models import draw
 
 
+@pytest.fixture(autouse=True)
+def _patient(monkeypatch):
+    # Formulas take well under a second; a machine that does much else must not decide what is tested here.
+    monkeypatch.setattr(slopes, "LIMIT", 120.0)
+    monkeypatch.setattr("ngm.analysis.sensitivity.FORMULA_LIMIT", 120.0)
+
+
 def formulas_of(path):
     scenario = ngm.load(f"scenarios/{path}.toml")
     found = ngm.sensitivity(scenario, formulas=True)
