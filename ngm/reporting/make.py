@@ -37,8 +37,9 @@ MOST_SHARED = 40
 MOST_WITHIN = 3
 #: Parts that are absent for a reason that is no warning.
 _QUIET = frozenset({"allocation", "first_weeks", "below_one"})
-#: Infected types up to which flows are followed in a report, and interventions looked at below a number of 1.
-MOST_FOLLOWED = 24
+#: Infected types up to which flows are followed in a report, and interventions looked at below a number of 1: past it that
+#: takes most of the time of a report.
+MOST_FOLLOWED = 8
 MOST_THRESHOLDS = 3
 
 

@@ -18,7 +18,7 @@ import scipy
 import sympy
 
 #: What runs where nothing is named.
-PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak", "course", "processes", "hostile")
+PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak", "course", "processes", "reports", "hostile")
 
 
 def processor() -> str:
