@@ -88,7 +88,7 @@ def flows(m: Material) -> Section:
         (
             (str(k),),
             _ends(flow),
-            (inline(flow.rate.text, 26),),
+            (inline(flow.rate.text, 16),),
             (Strong("transmission") if flow.kind == "transmission" else "transition",),
             (_reason(scenario, flow),),
         )
