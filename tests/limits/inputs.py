@@ -7,7 +7,7 @@ from pathlib import Path
 
 from ngm.scenario.file import load, loads
 
-__all__ = ["LIMITS", "SMALL", "Limit"]
+__all__ = ["LIMITS", "SMALL", "Limit", "nodes"]
 
 SMALL = """[scenario]
 title = "Small"
@@ -56,7 +56,7 @@ def _definitions(depth: int) -> str:
     return _rate(f"d{depth}*I").replace('N = "S + I"', "\n".join(lines))
 
 
-def _nodes(terms: int) -> str:
+def nodes(terms: int) -> str:
     """Return a model with ten definitions of 999 nodes each (a sum of 998 terms), named in a rate of so many terms."""
     sums = "\n".join(f'd{k} = "{"+".join(["g"] * 998)}"' for k in range(10))
     rate = "(" + " + ".join(f"d{k % 10}" for k in range(terms)) + ")*I"
@@ -139,8 +139,8 @@ LIMITS: list[Limit] = [
     ),
     (
         "100,000 nodes when written out",
-        lambda f: loads(_nodes(100)),
-        lambda f: loads(_nodes(101)),
+        lambda f: loads(nodes(100)),
+        lambda f: loads(nodes(101)),
         "more than 100,000 names, numbers and operations",
     ),
     *(
