@@ -9,6 +9,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 from dataclasses import dataclass
+from decimal import Decimal, InvalidOperation
 from fractions import Fraction
 from functools import lru_cache
 
@@ -166,6 +167,14 @@ class _NoUnitError(Exception):
     """The text is no unit."""
 
 
+def _is_one(number: str) -> bool:
+    """Return whether a number is 1. Decimals work out no power: 1e-999999999 has that many digits as a fraction."""
+    try:
+        return Decimal(number) == 1
+    except InvalidOperation:
+        return False
+
+
 class _Reader:
     """Recursive descent over the few tokens of a unit; depth is bounded by the length of the text."""
 
@@ -229,7 +238,7 @@ class _Reader:
             inner = {"%": 1}
         elif token[:1].isdigit() or token[:1] == ".":
             # "day-1" and "day 1" mean 1/day where a raised -1 was lost: no unit, rather than the wrong one
-            if Fraction(token) != 1 or not first:
+            if not _is_one(token) or not first:
                 raise _NoUnitError
             inner = {}
         elif token[:1].isalpha() and token != "per":

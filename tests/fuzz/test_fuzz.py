@@ -22,6 +22,9 @@ from tests.fuzz.targets import TARGETS
 FOUND = [
     # decimal.Overflow: the absolute value of a cell was rounded
     ("matrix", b"\t\t\n from4from4,5,6\n 1e999999999,5,6"),
+    # a unit with a number in it was worked out as a fraction of a thousand million digits
+    ("scenario", TARGETS["scenario"].seeds[0].replace(b'"1/week"', b'"1e-999999999/week"')),
+    ("scenario", TARGETS["scenario"].seeds[0].replace(b'"1/week"', b'"1e99999999999999999999/week"')),
     ("matrix", b"group,value\n0-4,-1e999999999\n5+,2\nx,3\n"),
 ]
 
