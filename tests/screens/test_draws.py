@@ -19,7 +19,7 @@ LESS = '\n[[intervention]]\nname = "Less contact"\n[[intervention.change]]\npara
 @pytest.fixture(autouse=True)
 def _nothing_kept():
     yield
-    for question in list(long_work._kept):
+    for question in long_work._kept.subjects():
         long_work.forget(question)
 
 

@@ -30,7 +30,7 @@ def test_a_stop_ends_the_work_and_the_numbers_stand():
 
 
 def test_what_nobody_waits_for_is_stopped_and_begun_anew(monkeypatch):
-    monkeypatch.setattr(jobs, "PATIENCE", 0.2)
+    monkeypatch.setattr(jobs.Job, "patience", 0.2)
     text = endless(46)
     job = jobs.start(text, None)
     deadline = time.monotonic() + 30

@@ -25,7 +25,7 @@ def slow(steps=10_000):
 @pytest.fixture(autouse=True)
 def _nothing_kept():
     yield
-    for question in list(long_work._kept):
+    for question in long_work._kept.subjects():
         long_work.forget(question)
 
 
@@ -52,7 +52,7 @@ def test_it_says_how_far_it_is_and_stops():
 
 
 def test_what_nobody_waits_for_is_stopped_and_begun_anew(monkeypatch):
-    monkeypatch.setattr(long_work, "PATIENCE", 0.1)
+    monkeypatch.setattr(long_work.Work, "patience", 0.1)
     work = long_work.start("c", slow())
     deadline = time.monotonic() + 30
     while not work.abandoned and time.monotonic() < deadline:
@@ -81,7 +81,7 @@ def test_a_fault_is_handed_on():
 
 
 def test_only_so_many_are_kept(monkeypatch):
-    monkeypatch.setattr(long_work, "MOST_KEPT", 3)
+    monkeypatch.setattr(long_work._kept, "most", 3)
     for k in range(6):
         assert long_work.start(("f", k), lambda k=k: k).wait(30)
-    assert list(long_work._kept) == [("f", 3), ("f", 4), ("f", 5)]
+    assert long_work._kept.subjects() == [("f", 3), ("f", 4), ("f", 5)]
