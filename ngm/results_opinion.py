@@ -139,9 +139,7 @@ class Splits:
     differ: tuple[str, ...]
     warnings: tuple[str, ...] = ()
     #: what there is to say where there is no choice
-    none: str = (
-        "No flow's kind is a choice: nothing enters an infected compartment but by infection of the uninfected."
-    )
+    none: str = "No flow's kind is a choice: nothing enters an infected compartment but by infection of the uninfected."
 
     @property
     def shown_hosts(self) -> tuple[str, ...]:
@@ -175,8 +173,8 @@ class FormulaOpinion:
     """The result of `ngm.formula`.
 
     `verdict`: "equal", "square", "root", "type number", "target number", "other split", "threshold only",
-    "different" or "undecided" (too few points with an R0). `exact`: whether the agreement was shown without rounding; `proof`: how, as
-    "symbols" (the difference of the two is 0 as an expression) or "fractions" (at every point), else None.
+    "different" or "undecided" (too few points with an R0). `exact`: whether the agreement was shown without rounding;
+    `proof`: how, as "symbols" (the difference of the two is 0 as an expression) or "fractions" (at every point), else None.
     `counterexample`: values in force of the parameters at a point where the
     two differ, with both numbers; None where none was found. `responses`: parameters to which they respond
     differently there: name -> (elasticity of R0, elasticity of the formula).

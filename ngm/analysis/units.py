@@ -53,7 +53,9 @@ def units(scenario: Scenario) -> Units:
         scenario.title,
         scenario.time_unit,
         scenario.strict_units,
-        tuple(UnitNote(finding.kind, finding.where, finding.message) for finding in (*check.findings, *slips(scenario))),
+        tuple(
+            UnitNote(finding.kind, finding.where, finding.message) for finding in (*check.findings, *slips(scenario))
+        ),
         tuple(_parameter(scenario, p, check.implied.get(p.name)) for p in scenario.parameters.values()),
         {}
         if is_stated(scenario)

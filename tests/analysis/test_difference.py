@@ -82,7 +82,9 @@ def test_a_compartment_added():
 
 def test_two_different_models_are_compared_without_failing():
     paths = [
-        path for path in sorted(SCENARIOS.glob("*.toml")) if not {"sixteen", "by", "seasonal"} & set(path.stem.split("-")[:3])
+        path
+        for path in sorted(SCENARIOS.glob("*.toml"))
+        if not {"sixteen", "by", "seasonal"} & set(path.stem.split("-")[:3])
     ]
     for one, two in pairwise(paths):
         result = ngm.difference(ngm.load(one), ngm.load(two))

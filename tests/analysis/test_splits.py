@@ -70,7 +70,9 @@ def test_an_invalid_split_says_which_condition_fails():
     assert first.R0 == pytest.approx(max(0.5 / 0.3, 0.3 / 0.2))
     refused = [split for split in result.splits if split.refused is not None]
     assert refused
-    assert all("A5 fails: V is no M-matrix" in s.refused or "no flow makes new infections" in s.refused for s in refused)
+    assert all(
+        "A5 fails: V is no M-matrix" in s.refused or "no flow makes new infections" in s.refused for s in refused
+    )
 
 
 def test_up_to_sixteen():

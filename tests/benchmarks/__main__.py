@@ -18,7 +18,18 @@ import scipy
 import sympy
 
 #: What runs where nothing is named.
-PARTS = ("derivation", "groups", "draws", "control", "opinions", "outbreak", "course", "processes", "reports", "hostile")
+PARTS = (
+    "derivation",
+    "groups",
+    "draws",
+    "control",
+    "opinions",
+    "outbreak",
+    "course",
+    "processes",
+    "reports",
+    "hostile",
+)
 
 
 def processor() -> str:
