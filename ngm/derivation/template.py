@@ -334,6 +334,8 @@ class Template:
 
     def chain(self, terms: tuple[Term, ...], column: str, evaluator: Evaluator) -> Array | None:
         """Return the slope by the copies of `column`: an array over the space, last axis: those copies; None if zero."""
+        if not any(term.column == column for term in terms):
+            return None  # most rates depend on few compartments
         n = self.space.count(self.by(column))
         eye: Array = np.empty((n, n), dtype=evaluator.algebra.dtype)
         eye[...] = evaluator.algebra.number(Fraction(0))
