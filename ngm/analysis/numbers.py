@@ -18,7 +18,7 @@ from ngm.analysis.steps_of_time import refuse_overdrawn, refuse_overdrawn_blocks
 from ngm.derivation.conditions import check_arrivals, check_exits
 from ngm.derivation.outline import thumbnail
 from ngm.derivation.template import Template
-from ngm.engine.balls import PRECISION, interval, nearest, precision
+from ngm.engine.balls import PRECISION, contains_zero, interval, is_sharp, nearest, precision
 from ngm.engine.enclosure import MMatrix, inverse, m_matrix
 from ngm.engine.growth import class_growth_rate, growth_factor, growth_rate, logarithm
 from ngm.engine.large import NextGeneration
@@ -85,10 +85,13 @@ class Numbers:
 
     @property
     def decided(self) -> bool:
-        """False where more bits could change the classes, the vectors, or whether V is an M-matrix."""
+        """False where more bits could change the classes, the vectors, whether V is an M-matrix, or the digits of R0 and K."""
         if self.broken is not None:
             return self.broken.decided
-        return self.spectrum is None or self.spectrum.decided
+        if self.spectrum is None or self.operator is not None:
+            return True
+        printed = [self.spectrum.root, *self.K.ravel()]
+        return self.spectrum.decided and all(contains_zero(entry) or is_sharp(entry) for entry in printed)
 
     def _reproduce(self) -> None:
         types = self.template.types
@@ -275,7 +278,7 @@ def decided_numbers(scenario: Scenario, intervention: Intervention | None = None
         with precision(bits):
             found = Numbers(scenario, intervention)
         found.bits = bits
-        if found.decided or len(found.template.types) > MOST_REFINED:
+        if len(found.template.types) > MOST_REFINED or found.decided:
             break
     return found
 
