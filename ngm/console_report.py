@@ -51,7 +51,9 @@ def add_options(parser: argparse.ArgumentParser) -> None:
 def write_report(options: argparse.Namespace, scenario: Scenario) -> str:
     """Write a report, with the command that makes it again in it, and return what is printed."""
     import ngm
+    from ngm.worker import warm
 
+    warm()  # the child that writes formulas gets ready while the rest of the program is loaded
     made = ngm.report(
         scenario,
         options.to,

@@ -143,6 +143,7 @@ class _Child:
 
 
 _idle: list[_Child] = []
+_busy: set[_Child] = set()
 _lock = threading.Lock()
 
 
@@ -226,7 +227,13 @@ def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], lim
             child = _Child()
     except OSError as error:
         raise WorkerFailed(f"no process for the formulas could be started ({error.strerror}).") from None
-    answer, peak = child.ask((job, arguments, dict(options)), limit)
+    with _lock:
+        _busy.add(child)
+    try:
+        answer, peak = child.ask((job, arguments, dict(options)), limit)
+    finally:
+        with _lock:
+            _busy.discard(child)
     with _lock:
         if len(_idle) < 2 and peak <= MOST_KEPT:
             _idle.append(child)
@@ -240,6 +247,8 @@ def _asked(job: str, arguments: tuple[Any, ...], options: Mapping[str, Any], lim
 def _end() -> None:
     while _idle:
         _idle.pop().kill()
+    for child in list(_busy):  # asked by a thread for which nobody waits any more
+        child.process.kill()
 
 
 def _send(pipe: IO[bytes], thing: object) -> None:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from contextvars import copy_context
+from threading import Thread
 from typing import Any
 
 import numpy as np
@@ -23,7 +26,10 @@ from ngm.results import Class, Matrix, Solution, Structure, Symbolic, Vector
 from ngm.scenario.model import Scenario
 from ngm.worker import LIMIT, WorkerFailed, symbols, warm
 
-__all__ = ["nearest_of", "solve"]
+__all__ = ["Begun", "begin", "nearest_of", "solve"]
+
+#: Formulas, and what is to be said where there are none.
+Asked = tuple[Symbolic, list[str]]
 
 #: Types at infection up to which the eigenvalues of K are listed.
 MOST_EIGENVALUES = 500
@@ -49,6 +55,60 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
     Diekmann, Heesterbeek & Roberts (2010) J. R. Soc. Interface 7:873-885; van den Driessche & Watmough (2002) Math.
     Biosci. 180:29-48
     """
+    return _begun(scenario, limit).finished()
+
+
+def begin(scenario: Scenario, *, limit: float = LIMIT) -> Begun:
+    """Return the numbers of `solve` while its formulas are still being worked out beside; parameters as of `solve`."""
+    begun = _begun(scenario, limit)
+    begun.go_on()
+    return begun
+
+
+class Begun:
+    """A solution whose numbers are there and whose formulas may not be yet."""
+
+    def __init__(self, found: Numbers, out: dict[str, Any], formulas: Callable[[], Asked]) -> None:
+        self._found, self._out, self._formulas = found, out, formulas
+        self._thread: Thread | None = None
+        self._answer: Asked | None = None
+
+    def go_on(self) -> None:
+        """Wait for the formulas in a thread: it computes nothing itself, so the precision of balls is nobody else's."""
+        context = copy_context()  # whoever may stop the formulas still may
+        self._thread = Thread(target=lambda: context.run(self._ask), daemon=True)
+        self._thread.start()
+
+    def _ask(self) -> None:
+        self._answer = self._formulas()
+
+    @property
+    def numbers(self) -> Solution:
+        """The solution without formulas."""
+        out = {**self._out, "warnings": tuple(dict.fromkeys(self._out["warnings"]))}
+        return Solution(**out, closed_form=None, symbolic=Symbolic())
+
+    def finished(self) -> Solution:
+        """Return the whole solution, once its formulas are there."""
+        if self._thread is not None:
+            self._thread.join()
+        if self._answer is None:
+            self._ask()
+        assert self._answer is not None
+        found, out = self._found, self._out
+        symbolic = symbols_as_stated(found, self._answer[0])
+        warnings = tuple(dict.fromkeys([*out["warnings"], *self._answer[1]]))
+        closed = symbolic.closed_form if out["R0"] is not None and out.get("season") is None else None
+        if closed is not None and found.point.infection_free.among > 1:
+            warnings = (
+                *warnings,
+                "The closed form holds where the infection-free state is the one found here: of several states at rest it "
+                "is the one that is stable at these values.",
+            )
+        return Solution(**{**out, "warnings": warnings}, closed_form=closed, symbolic=symbolic)
+
+
+def _begun(scenario: Scenario, limit: float) -> Begun:
     if limit > 0:
         warm()  # the child gets ready while the numbers are computed
     found = decided_numbers(scenario)
@@ -61,18 +121,7 @@ def solve(scenario: Scenario, *, limit: float = LIMIT) -> Solution:
             out["effective"] = without_season(out["effective"])
         if out["effective"] is not None and out["effective"].no_R is not None:
             out["warnings"].append(f"No effective number: {out['effective'].no_R}")
-    symbolic, more = _symbols(found, limit)
-    symbolic = symbols_as_stated(found, symbolic)
-    out["warnings"] += more
-    out["warnings"] = tuple(dict.fromkeys(out["warnings"]))
-    closed = symbolic.closed_form if out["R0"] is not None and out.get("season") is None else None
-    if closed is not None and found.point.infection_free.among > 1:
-        out["warnings"] = (
-            *out["warnings"],
-            "The closed form holds where the infection-free state is the one found here: of several states at rest it is the "
-            "one that is stable at these values.",
-        )
-    return Solution(**out, closed_form=closed, symbolic=symbolic)
+    return Begun(found, out, _symbols(found, limit))
 
 
 def _numbers(found: Numbers) -> dict[str, Any]:
@@ -182,28 +231,33 @@ def _structure(found: Numbers, spec: Spectrum) -> Structure:
     return Structure(spec.irreducible, spec.period, tuple(out))
 
 
-def _symbols(found: Numbers, limit: float) -> tuple[Symbolic, list[str]]:
+def _symbols(found: Numbers, limit: float) -> Callable[[], Asked]:
+    """Return what asks for the formulas; all that it needs of the numbers is read here."""
+    nothing: Asked = (Symbolic(), [])
     if limit <= 0 or not len(found.template.types):
-        return Symbolic(), []
-    point, template = found.point, found.template
+        return lambda: nothing
+    point, template, scenario = found.point, found.template, found.scenario
     if not template.is_written_out:
-        if not found.scenario.dimensions:
-            return Symbolic(), []
-        free = found.scenario.infection_free
+        if not scenario.dimensions:
+            return lambda: nothing
+        free = scenario.infection_free
         alone = frozenset(name for name, given in free.items() if len({value.tree for value in given}) > 1)
-        try:
-            return symbols(outline(found.scenario), {}, {}, {}, limit, outlined=True, stand_alone=alone), []
-        except WorkerFailed as failed:
-            return Symbolic(), [f"No formulas: {failed}"]
+        plan = outline(scenario)
+        return lambda: _asked(plan, {}, {}, {}, limit, outlined=True, stand_alone=alone)
     values: dict[str, float] = {}
-    for name, parameter in found.scenario.parameters.items():
+    for name, parameter in scenario.parameters.items():
         flat = _plain(template.space.flatten(point.evaluator.name(name), parameter.by))[:, 0]
-        values.update(zip(found.scenario.items(name, parameter.by), flat.tolist(), strict=True))
+        values.update(zip(scenario.items(name, parameter.by), flat.tolist(), strict=True))
     branches = {
         s.name: [int(v) for v in _plain(point.evaluator.names[s.name]).ravel()] for s in template.at_rest.selectors
     }
+    state = _state(found)
+    return lambda: _asked(scenario, state, values, branches, limit)
+
+
+def _asked(*arguments: Any, **options: Any) -> Asked:
     try:
-        return symbols(found.scenario, _state(found), values, branches, limit), []
+        return symbols(*arguments, **options), []
     except WorkerFailed as failed:
         return Symbolic(), [f"No formulas: {failed}"]
 

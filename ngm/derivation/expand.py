@@ -118,13 +118,14 @@ def arrow_blocks(
     at = template.offsets(compartments)
     out = []
     for arrow in arrows:
-        rows = [
-            None if side not in at else at[side] + template.space.index_of(template.by(side), arrow.by)
-            for side in (arrow.source, arrow.target)
-        ]
+        rows: list[Array | None] | None = None
         for column in compartments:
             block = template.chain(arrow.rate.terms, column, evaluator)
             if block is not None:
+                rows = rows or [
+                    None if side not in at else at[side] + template.space.index_of(template.by(side), arrow.by)
+                    for side in (arrow.source, arrow.target)
+                ]
                 flat = template.space.flatten(block, arrow.by)
                 out.append(ArrowBlock(arrow, column, flat, rows[0], rows[1]))
     return out

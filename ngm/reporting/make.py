@@ -11,6 +11,7 @@ from pathlib import Path
 from typing import Any, TypeVar
 
 import ngm
+from ngm.analysis.solve import begin
 from ngm.errors import NgmError, Problem, ScenarioError
 from ngm.reporting.companion import companion as companion_of
 from ngm.reporting.document import Document
@@ -183,7 +184,8 @@ def compose(
     if unknown:
         raise ScenarioError([Problem("sections", f"{unknown[0][:80]!r} is none of {', '.join(SECTIONS)}.")])
     wanted = set(SECTIONS if sections is None else sections)
-    solution = ngm.solve(scenario)
+    begun = begin(scenario)  # its formulas take as long as much of the rest, in a process of their own
+    solution = begun.numbers
     said = _Said()
     small = len(solution.types) <= MOST_TYPES
     if len(solution.types) > MOST_FOLLOWED:
@@ -199,7 +201,6 @@ def compose(
             shared = said.tried("allocation", lambda: _least_supply(scenario, solution, {}, said))
     material = Material(
         scenario=scenario,
-        solution=solution,
         control=ngm.control(scenario) if wanted & {"summary", "control"} else None,
         comparison=said.tried("interventions", lambda: ngm.compare(scenario))
         if "interventions" in wanted and scenario.interventions
@@ -234,7 +235,9 @@ def compose(
         formula=ngm.formula(scenario, formula) if formula is not None and "formula" in wanted else None,
         difference=ngm.difference(before, scenario) if before is not None and "difference" in wanted else None,
         why=said.why,
+        solution=begun.finished(),
     )
+    solution = material.solution
     document = narrate(material, sections)
     warnings = tuple(dict.fromkeys([*scenario.warnings, *solution.warnings, *said.warnings]))
     return Report(document, companion_of(material, document), warnings=warnings)

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import os
+import subprocess
+import sys
 import time
 from pathlib import Path
 
@@ -10,6 +12,7 @@ import pytest
 
 import ngm
 from ngm import worker
+from ngm.analysis.solve import begin
 from tests.derivation.models import text
 
 
@@ -47,6 +50,38 @@ def test_work_past_its_limit_is_killed_and_the_numbers_stand() -> None:
     assert any("longer than 2 s" in warning for warning in solution.warnings)
     assert children() <= before
     assert ngm.solve(ngm.loads(endless(2)), limit=10).closed_form is not None
+
+
+def test_numbers_are_there_before_the_formulas_and_the_whole_is_what_solve_returns() -> None:
+    scenario = ngm.loads(endless(2))
+    begun = begin(scenario)
+    assert begun.numbers.closed_form is None
+    # By hand: d1 = 1/(1 + d0/2), d0 = 2/3, so d1 = 3/4 and R0 = 2 d1.
+    assert begun.numbers.R0 == pytest.approx(1.5, rel=1e-12)
+    # Second route: `solve`, which waits for the formulas.
+    assert begun.finished().to_json() == ngm.solve(scenario).to_json()
+    assert begun.finished().closed_form is not None
+
+
+@pytest.mark.skipif(not Path("/proc").is_dir(), reason="looks at processes under /proc")
+def test_a_process_that_ends_without_its_formulas_leaves_no_child() -> None:
+    program = (
+        "import sys, time, ngm; from ngm import worker; from ngm.analysis.solve import begin\n"
+        "begin(ngm.loads(sys.stdin.read()), limit=600)\n"
+        "while not worker._busy: time.sleep(0.01)\n"
+        "print(*[child.process.pid for child in worker._busy])"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", program], input=endless(), capture_output=True, text=True, check=True, timeout=60
+    )
+    (child,) = done.stdout.split()
+    for _ in range(500):  # a killed process is there until whoever inherits it has looked
+        status = Path(f"/proc/{child}/stat")
+        if not status.exists() or status.read_text().rsplit(")", 1)[1].split()[0] == "Z":
+            break
+        time.sleep(0.01)
+    else:
+        pytest.fail("the child still runs")
 
 
 def test_without_a_limit_of_time_there_are_no_formulas() -> None:
