@@ -62,7 +62,10 @@ def slopes(
     m = sum(template.space.count(template.by(name)) for name in compartments)
     F, losses, gains = (blank(evaluator, m, m) for _ in range(3))
     for arrow in arrows:
+        used = {term.column for term in (*arrow.rate.terms, *(arrow.arriving or ()))}
         for column in compartments:
+            if column not in used:
+                continue
             block = template.chain(arrow.rate.terms, column, evaluator)
             if block is not None:
                 if arrow.source in at:
@@ -119,7 +122,10 @@ def arrow_blocks(
     out = []
     for arrow in arrows:
         rows: list[Array | None] | None = None
+        used = {term.column for term in arrow.rate.terms}
         for column in compartments:
+            if column not in used:
+                continue
             block = template.chain(arrow.rate.terms, column, evaluator)
             if block is not None:
                 rows = rows or [

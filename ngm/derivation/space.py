@@ -7,6 +7,7 @@ thing does not vary has length 1, so that numpy's broadcasting is the contract's
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -36,6 +37,17 @@ class Space:
     def _axis(self) -> dict[str, int]:
         return {name: k for k, name in enumerate(self.dimensions)}
 
+    @cached_property
+    def _layouts(self) -> dict[tuple[str, ...], tuple[tuple[int, ...], int, bool]]:
+        return {}
+
+    def _layout(self, by: tuple[str, ...]) -> tuple[tuple[int, ...], int, bool]:
+        """Return the shape, the number of copies, and whether `by` is in the order of the file; asked for all the time."""
+        if by not in self._layouts:
+            shape = tuple(n if name in by else 1 for name, n in zip(self.dimensions, self.sizes, strict=True))
+            self._layouts[by] = shape, math.prod(self.size(name) for name in by), by == self.ordered(set(by))
+        return self._layouts[by]
+
     def axis(self, dimension: str) -> int:
         """Return the axis of a dimension."""
         return self._axis[dimension]
@@ -50,14 +62,11 @@ class Space:
 
     def shape(self, by: tuple[str, ...]) -> tuple[int, ...]:
         """Return the shape, without the last axis, of something that varies over `by`."""
-        return tuple(n if name in by else 1 for name, n in zip(self.dimensions, self.sizes, strict=True))
+        return self._layout(by)[0]
 
     def count(self, by: tuple[str, ...]) -> int:
         """Return the number of copies of something grouped `by` these dimensions."""
-        n = 1
-        for name in by:
-            n *= self.size(name)
-        return n
+        return self._layout(by)[1]
 
     def spread(self, flat: Array, by: tuple[str, ...]) -> Array:
         """Return copies listed in the order of `by` (first axis) as an array over the space; the last axis is kept."""
@@ -69,11 +78,14 @@ class Space:
 
     def flatten(self, array: Array, by: tuple[str, ...]) -> Array:
         """Return an array over the space as copies in the order of `by` (first axis); the last axis is kept."""
-        full = np.broadcast_to(array, (*self.shape(by), array.shape[-1]))
+        shape, count, in_order = self._layout(by)
+        if in_order and array.shape[:-1] == shape:
+            return array.reshape(count, array.shape[-1])
+        full = np.broadcast_to(array, (*shape, array.shape[-1]))
         axes = [self._axis[name] for name in by]
         rest = [k for k in range(len(self.sizes)) if k not in axes]
         moved = full.transpose(*axes, *rest, len(self.sizes))
-        return moved.reshape(self.count(by), array.shape[-1])
+        return moved.reshape(count, array.shape[-1])
 
     def index_of(self, inner: tuple[str, ...], outer: tuple[str, ...]) -> Array:
         """Return, for each copy of something grouped by `outer`, the copy of `inner` (a part of it) that it belongs to."""
