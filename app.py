@@ -1,6 +1,6 @@
 """Start the app: `streamlit run app.py`.
 
-The slow libraries are imported in a thread while the first page is on its way, and then taken out of the garbage
+The slow libraries are imported in a thread as soon as nobody is being served, and then taken out of the garbage
 collector's sight: Streamlit collects after every rerun, and walking through their objects each time costs more than
 most pages do.
 """
@@ -8,51 +8,28 @@ most pages do.
 from __future__ import annotations
 
 import contextlib
-import gc
-import importlib
 import logging
 import threading
 from collections.abc import AsyncIterator
 
 import streamlit as st
+from starlette.middleware import Middleware
+from starlette.types import ASGIApp, Receive, Scope, Send
 
-#: What the pages import when they first need it; a name that is missing is reported by the page that needs it.
-HEAVY = (
-    "numpy",
-    "pandas",
-    "altair",
-    "scipy.sparse.csgraph",
-    "sympy",
-    "ngm",
-    "ngm.charts.bars",
-    "ngm.charts.control",
-    "ngm.charts.graphs",
-    "ngm.charts.mixing",
-    "ngm.charts.outbreak",
-    "ngm.charts.plane",
-    "ngm.charts.sensitivity",
-    "ngm.charts.spectrum",
-    "ngm.expression.typeset",
-    "ngm.analysis.solve",
-    "ngm.analysis.control",
-    "ngm.analysis.compare",
-    "ngm.analysis.strength",
-    "ngm.analysis.allocation",
-    "ngm.analysis.mixing_scan",
-    "ngm.analysis.plane",
-    "ngm.analysis.uncertainty",
-)
+from ngm.screens import warm
 
 
-def warm_up() -> None:
-    """Import the slow libraries, then freeze what is in memory out of later collections."""
-    for name in HEAVY:
-        try:
-            importlib.import_module(name)
-        except ImportError:
-            logging.getLogger("ngm").exception("could not import %s ahead of time", name)
-    gc.collect()
-    gc.freeze()
+class Noted:
+    """Tell the thread that warms up of each request, so that it steps back."""
+
+    def __init__(self, inner: ASGIApp) -> None:
+        self.inner = inner
+
+    async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
+        """Note the request and pass it on; being asked whether the server is well is not a visit."""
+        if scope["type"] != "lifespan" and scope["path"] != "/_stcore/health":
+            warm.asked()
+        await self.inner(scope, receive, send)
 
 
 def report_error(error: Exception) -> bool:
@@ -68,8 +45,8 @@ def report_error(error: Exception) -> bool:
 @contextlib.asynccontextmanager
 async def lifespan(_app: st.App) -> AsyncIterator[None]:
     """Warm up in the background for as long as the server starts."""
-    threading.Thread(target=warm_up, name="warm-up", daemon=True).start()
+    threading.Thread(target=warm.warm_up, name="warm-up", daemon=True).start()
     yield
 
 
-app = st.App("ngm/screens/main.py", lifespan=lifespan, on_script_error=report_error)
+app = st.App("ngm/screens/main.py", lifespan=lifespan, middleware=[Middleware(Noted)], on_script_error=report_error)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import streamlit as st
 
-from ngm.screens import desk, finding, keys, parts, signing, state
+from ngm.screens import desk, finding, keys, parts, signing, state, warm
 from ngm.screens.registry import PAGES
 
 
@@ -32,4 +32,5 @@ def main() -> None:
         desk.status()
 
 
-main()
+with warm.served():
+    main()
