@@ -87,6 +87,7 @@ MAY_IMPORT: dict[str, set[str]] = {
         "scenario.exact",
         "scenario.following",
         "scenario.model",
+        "worker",
     },
     "screens": {
         "results_outbreak",

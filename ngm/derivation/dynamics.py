@@ -14,12 +14,14 @@ from functools import cached_property
 
 import numpy as np
 
+from ngm.derivation.compile import Program, compiled
 from ngm.derivation.evaluate import FLOATS, Algebra, Evaluator
 from ngm.derivation.expand import net_flow, slopes
 from ngm.derivation.linearise import ONE, Applied, Linear, Lineariser, product
 from ngm.derivation.rest import choose_branches
 from ngm.derivation.space import Array
 from ngm.derivation.template import Arrow, Template, flow_name
+from ngm.derivation.tracing import Trace, TracedArithmetic
 from ngm.expression.tree import Apply, Name, Node, Number, names
 from ngm.scenario.model import Compartment, Definition, Expression, Parameter, Scenario
 from ngm.scenario.values import converted
@@ -28,6 +30,8 @@ __all__ = ["LOOSE", "Dynamics", "NotLooseError", "loosened", "with_susceptibilit
 
 #: The name of the quantity that is let loose; no name of a file begins like this.
 LOOSE = "#along"
+#: Components up to which a model without groups is written out as a program; arrays of groups are quick as they are.
+MOST_TRACED = 60
 
 
 class NotLooseError(Exception):
@@ -249,6 +253,9 @@ class Dynamics:
 
         `multipliers`: what seasonal parameters are multiplied by at the moment looked at.
         """
+        if algebra is FLOATS and not multipliers and self._is_traced:
+            columns = x if x.ndim == 2 else x.reshape(-1, 1)
+            return self._net_program.run(list(np.ascontiguousarray(columns, dtype=float)))
         evaluator = self._evaluator(algebra, x, multipliers)
         entering, leaving = net_flow(self.template, evaluator, self.arrows, self.compartments)
         return algebra.subtract(entering, leaving)[: self.size]
@@ -261,11 +268,49 @@ class Dynamics:
         DerivationError
             A max or min is a tie at this state.
         """
+        if not multipliers and self._is_traced and self.arrows and not self._walker.selectors:
+            program, rows, columns = self._slope_program
+            out: Array = np.zeros((self.size, len(x)))
+            out[rows, columns] = program.run(list(np.asarray(x, dtype=float).reshape(-1, 1)))[:, 0]
+            return out
         evaluator = self._evaluator(FLOATS, x, multipliers)
-        arrows = self.arrows
+        _ = self.arrows  # the walk over them finds where a side is to be chosen
         choose_branches(evaluator, self._walker.selectors)
-        F, losses, gains = slopes(self.template, evaluator, arrows, self.compartments)
+        return self._slopes(evaluator)
+
+    def _slopes(self, evaluator: Evaluator) -> Array:
+        F, losses, gains = slopes(self.template, evaluator, self.arrows, self.compartments)
         return np.asarray(F - losses + gains)[: self.size]
+
+    # --- the same as programs: the walk over trees is done once, and not at every moment ------------------------------
+
+    @cached_property
+    def _is_traced(self) -> bool:
+        return not self.template.space.sizes and self.size <= MOST_TRACED
+
+    @cached_property
+    def _traced(self) -> tuple[TracedArithmetic, Array]:
+        """The arithmetic, and the state as inputs of its trace, (n, 1)."""
+        trace = Trace()
+        n = self.size + (LOOSE in self.scenario.compartments)
+        state: Array = np.empty((n, 1), dtype=object)
+        state[:, 0] = [trace.input(nonnegative=False) for _ in range(n)]
+        return TracedArithmetic(trace), state
+
+    @cached_property
+    def _net_program(self) -> Program:
+        arithmetic, state = self._traced
+        return compiled(arithmetic.trace, self.net(state, arithmetic).ravel().tolist())
+
+    @cached_property
+    def _slope_program(self) -> tuple[Program, Array, Array]:
+        """The program of the slopes that are not 0 by structure, and their rows and columns."""
+        arithmetic, state = self._traced
+        found = self._slopes(self._evaluator(arithmetic, state, None))
+        rows, columns = np.nonzero(
+            np.array([[entry.value != 0 for entry in row] for row in found.tolist()], dtype=bool)
+        )
+        return compiled(arithmetic.trace, found[rows, columns].tolist()), rows, columns
 
 
 def _exact(algebra: Algebra, table: Array) -> Array:

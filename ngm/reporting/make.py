@@ -25,6 +25,7 @@ from ngm.results_mixing import Mixing
 from ngm.scenario.exact import evaluate
 from ngm.scenario.following import values_in_force
 from ngm.scenario.model import Expression, Parameter, Scenario
+from ngm.worker import LIMIT
 
 __all__ = ["Report", "compose", "report"]
 
@@ -40,8 +41,10 @@ MOST_WITHIN = 3
 _QUIET = frozenset({"allocation", "first_weeks", "below_one"})
 #: Infected types up to which flows are followed in a report, and interventions looked at below a number of 1: past it that
 #: takes most of the time of a report.
-MOST_FOLLOWED = 8
+MOST_FOLLOWED = 12
 MOST_THRESHOLDS = 3
+#: Formulas have so many times the seconds that they have alone: while the numbers are computed they share the machine.
+BESIDE = 1.5
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -184,7 +187,8 @@ def compose(
     if unknown:
         raise ScenarioError([Problem("sections", f"{unknown[0][:80]!r} is none of {', '.join(SECTIONS)}.")])
     wanted = set(SECTIONS if sections is None else sections)
-    begun = begin(scenario)  # its formulas take as long as much of the rest, in a process of their own
+    # The formulas take as long as much of the rest: they are worked out beside it, and are given more time for that.
+    begun = begin(scenario, limit=BESIDE * LIMIT)
     solution = begun.numbers
     said = _Said()
     small = len(solution.types) <= MOST_TYPES

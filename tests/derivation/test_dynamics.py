@@ -10,6 +10,7 @@ import pytest
 import ngm
 from ngm.analysis.motion import dynamics_of, start_of
 from ngm.analysis.numbers import decided_numbers
+from ngm.derivation.dynamics import Dynamics
 from ngm.engine.series import SERIES, coefficient, lines
 
 SCENARIOS = Path(__file__).parents[2] / "scenarios"
@@ -36,6 +37,14 @@ def test_many_states_at_once_as_one_by_one(system):
     # Births do not vary with the state: they belong in every column.
     alone = np.stack([dynamics.net(x)[:, 0] for x in states.T], axis=1)
     assert np.asarray(dynamics.net(states)) == pytest.approx(alone, rel=1e-12, abs=1e-12)
+
+
+def test_a_program_gives_what_the_walk_over_the_trees_gives(system):
+    dynamics, state, states = system
+    other = Dynamics(dynamics.scenario, dynamics.matrices)
+    vars(other)["_is_traced"] = False  # second route: the trees are walked at every state
+    assert np.asarray(dynamics.net(states)) == pytest.approx(np.asarray(other.net(states)), rel=1e-12, abs=1e-12)
+    assert dynamics.slope(state) == pytest.approx(other.slope(state), rel=1e-12, abs=1e-12)
 
 
 def test_slopes_are_differences(system):
