@@ -30,8 +30,9 @@ __all__ = ["LOOSE", "Dynamics", "NotLooseError", "loosened", "with_susceptibilit
 
 #: The name of the quantity that is let loose; no name of a file begins like this.
 LOOSE = "#along"
-#: Components up to which a model without groups is written out as a program; arrays of groups are quick as they are.
-MOST_TRACED = 60
+#: Components up to which a model is written out as a program: without groups, and with them (arrays of many groups are
+#: quick as they are).
+MOST_TRACED, MOST_TRACED_GROUPED = 60, 32
 
 
 class NotLooseError(Exception):
@@ -286,7 +287,7 @@ class Dynamics:
 
     @cached_property
     def _is_traced(self) -> bool:
-        return not self.template.space.sizes and self.size <= MOST_TRACED
+        return self.size <= (MOST_TRACED_GROUPED if self.template.space.sizes else MOST_TRACED)
 
     @cached_property
     def _traced(self) -> tuple[TracedArithmetic, Array]:
