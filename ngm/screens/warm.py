@@ -17,17 +17,13 @@ from collections.abc import Iterator
 
 __all__ = ["HEAVY", "LIGHT", "asked", "served", "warm_up"]
 
-#: What stands around every page, and the page that comes first.
+#: What every page needs. No module that declares a component of the browser: that is for the first page to do.
 LIGHT = (
-    "streamlit.components.v2",
-    "ngm.screens.desk",
-    "ngm.screens.finding",
-    "ngm.screens.keys",
-    "ngm.screens.parts",
-    "ngm.screens.signing",
     "ngm.screens.state",
-    "ngm.screens.start",
-    "ngm.screens.stated_edits",
+    "ngm.screens.forms",
+    "ngm.screens.shelf",
+    "ngm.charts.graphs",
+    "ngm.meanings",
 )
 
 #: What the pages import when they first need it; a name that is missing is reported by the page that needs it.
