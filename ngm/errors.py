@@ -40,6 +40,8 @@ class Problem:
     key : tuple of (str or int)
         The path of the field in the scenario file (``("flow", 1, "rate")``), so that a form can show the problem
         beside the field; empty where the problem belongs to no single field.
+    applies : bool
+        False where nothing is wrong with the scenario: what was asked for does not apply to a model like this.
     """
 
     where: str
@@ -47,6 +49,7 @@ class Problem:
     text: str | None = None
     position: int | None = None
     key: tuple[str | int, ...] = ()
+    applies: bool = True
 
     def __str__(self) -> str:
         head = f"{self.where}: {self.message}" if self.where else self.message

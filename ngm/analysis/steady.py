@@ -27,5 +27,6 @@ def refuse_season(scenario: Scenario, what: str) -> None:
                 f"control, course and report take the season of {', '.join(seasons)} into account; without season it is that "
                 "of a steady year.",
                 key=("parameters", first, "season"),
+                applies=False,
             )
         )

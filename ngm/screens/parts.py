@@ -107,8 +107,14 @@ def switch(label: str, field: str) -> bool:
 
 
 def problem_box(problems: Sequence[Problem], title: str = "") -> None:
-    """List problems: where, what, what would be right, and a caret under the place where it helps."""
+    """List problems: where, what, what would be right, and a caret under the place where it helps.
+
+    What does not apply to a model like this is no problem of it, and looks like none.
+    """
     if not problems:
+        return
+    if not any(problem.applies for problem in problems):
+        st.info("\n".join(f"- {plain(problem.message)}" for problem in problems))
         return
     count = f"{len(problems)} problem" + ("s" if len(problems) > 1 else "")
     lines = [f"**{count}{' ' + plain(title) if title else ''}**"]

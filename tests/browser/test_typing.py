@@ -26,7 +26,8 @@ def clicked(visit, row):
     # Columns: mark 35, name 110, value 200 pixels wide; rows 35 high below the headings.
     x, y = box["x"] + 205, box["y"] + 35 * (row + 1) + 17
     visit.page.mouse.move(x, y, steps=6)
-    visit.page.mouse.click(x, y)
+    visit.page.wait_for_timeout(HAND)  # a grid finds out in a drawing of its own which cell the mouse is over
+    visit.page.mouse.click(x, y, delay=KEY)
     visit.page.wait_for_timeout(HAND)
 
 

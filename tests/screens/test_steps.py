@@ -39,5 +39,5 @@ def test_plain_text_escapes_every_sign_of_markdown():
 def test_converted_values_are_told_with_what_was_typed():
     text = SIR.replace('gamma = { value = 0.2, unit = "1/day" }', 'gamma = { value = 1.4, unit = "1/week" }')
     # 1.4 a week is 0.2 a day, by hand; beta is per day already.
-    assert cache.conversions(text, None) == (("gamma", "1.4 1/week = 0.2"),)
-    assert cache.conversions("no model", None) == ()
+    assert cache.conversions(text, None)[0] == (("gamma", "1.4 1/week = 0.2 1/day, once in 5 day"),)
+    assert cache.conversions("no model", None) == ((), ())
