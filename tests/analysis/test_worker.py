@@ -97,10 +97,14 @@ def test_a_child_that_dies_is_told_and_replaced() -> None:
 
 
 def test_a_child_that_has_grown_gives_its_memory_back(monkeypatch: pytest.MonkeyPatch) -> None:
-    ngm.solve(ngm.loads(endless(2)))
+    monkeypatch.setattr(worker, "MOST_KEPT", 10**12)  # whatever other tests have made of the children that are there
+    assert ngm.solve(ngm.loads(endless(2)), limit=60).closed_form is not None
+    deadline = time.monotonic() + 60
+    while not worker._idle and time.monotonic() < deadline:
+        time.sleep(0.05)
     kept = worker._idle[-1]
     monkeypatch.setattr(worker, "MOST_KEPT", 1_000_000)  # less than any child has
-    assert ngm.solve(ngm.loads(endless(2))).closed_form is not None
+    assert ngm.solve(ngm.loads(endless(2)), limit=60).closed_form is not None
     assert kept.process.poll() is not None
     assert kept not in worker._idle
 
