@@ -41,7 +41,7 @@ MOST_WITHIN = 3
 _QUIET = frozenset({"allocation", "first_weeks", "below_one"})
 #: Infected types up to which flows are followed in a report, and interventions looked at below a number of 1: past it that
 #: takes most of the time of a report.
-MOST_FOLLOWED = 12
+MOST_FOLLOWED = 10
 MOST_THRESHOLDS = 3
 #: Formulas have so many times the seconds that they have alone: while the numbers are computed they share the machine.
 BESIDE = 1.5
