@@ -12,8 +12,9 @@ from ngm.analysis.matrices import as_floats
 from ngm.analysis.numbers import Numbers, decided_numbers
 from ngm.analysis.steady import refuse_season
 from ngm.analysis.strength import check_target, chosen_groups, number_of, shares_of, values_of
-from ngm.engine.allocation import Problem, best_share, first_then_even, greedy, least_supply, same_multiple
+from ngm.engine.allocation import Problem, best_share, least_supply
 from ngm.engine.allocation_bounds import Bound, least_price_bound, lower_bound
+from ngm.engine.allocation_rules import first_then_even, greedy, same_multiple
 from ngm.engine.balls import precision
 from ngm.engine.vaccination import overall_efficacy
 from ngm.errors import Problem as Wrong

@@ -9,6 +9,7 @@ from typing import Any, Literal
 import altair as alt
 
 from ngm.charts.style import PALETTE, ink, short
+from ngm.charts.tiles import tiles
 from ngm.results import Matrix
 from ngm.results_mixing import Curve, Mixing, MixingMap, MixingResponses
 
@@ -291,14 +292,7 @@ def map_of_two(found: MixingMap) -> alt.LayerChart | None:
     Its cells have colours of their own, so what stands on them is the same on a dark background.
     """
     xs, ys = found.x.values, found.y.values
-    left, right = _edges(xs)
-    low, high = _edges(ys)
-    rows = [
-        {"x": left[j], "x2": right[j], "y": low[i], "y2": high[i], "R0": R0, "ax": xs[j], "ay": ys[i]}
-        for i, row in enumerate(found.R0)
-        for j, R0 in enumerate(row)
-        if R0 is not None
-    ]
+    rows = tiles(xs, ys, found.R0)
     if not rows:
         return None
     largest = max(1.0, *(row["R0"] for row in rows))
@@ -363,10 +357,3 @@ def map_of_two(found: MixingMap) -> alt.LayerChart | None:
 
 def _corner(found: MixingMap, i: int, j: int) -> str:
     return f"{short(found.R0[i][j])} at {short(found.x.values[j])}, {short(found.y.values[i])}"
-
-
-def _edges(values: Sequence[float]) -> tuple[list[float], list[float]]:
-    """Return where the cell of each value begins and ends."""
-    half = [(b - a) / 2 for a, b in pairwise(values)]
-    low = [values[0], *(value + step for value, step in zip(values, half, strict=False))]
-    return low, [*low[1:], values[-1]]

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from itertools import pairwise
 from typing import Any, Literal
 
 import altair as alt
 
 from ngm.charts.style import short
+from ngm.charts.tiles import tiles
 from ngm.results_sensitivity import Plane
 
 __all__ = ["plane"]
@@ -23,14 +23,7 @@ def plane(found: Plane) -> alt.LayerChart | None:
     Each line carries its value. Axes in the quantities' own units. None without a number.
     """
     xs, ys = found.x.values, found.y.values
-    left, right = _edges(xs)
-    low, high = _edges(ys)
-    rows = [
-        {"x": left[j], "x2": right[j], "y": low[i], "y2": high[i], "R0": R0, "ax": xs[j], "ay": ys[i]}
-        for i, row in enumerate(found.R0)
-        for j, R0 in enumerate(row)
-        if R0 is not None
-    ]
+    rows = tiles(xs, ys, found.R0)
     if not rows:
         return None
     # Near a rate of 0 the numbers have no end: past this they share the last colour.
@@ -123,10 +116,3 @@ def _here(found: Plane, x: alt.X, y: alt.Y) -> list[Any]:
         here.mark_text(align=align, dx=aside, stroke=WHITE, strokeWidth=3).encode(text="shown:N"),
         here.mark_text(align=align, dx=aside, color=BLACK).encode(text="shown:N"),
     ]
-
-
-def _edges(values: Sequence[float]) -> tuple[list[float], list[float]]:
-    """Return where the cell of each value begins and ends."""
-    half = [(b - a) / 2 for a, b in pairwise(values)]
-    low = [values[0], *(value + step for value, step in zip(values, half, strict=False))]
-    return low, [*low[1:], values[-1]]

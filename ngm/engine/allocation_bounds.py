@@ -28,7 +28,8 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from ngm.engine.allocation import Cut, Problem, best_share, cyclic_classes, in_order, perron
+from ngm.engine.allocation import Cut, Problem, best_share, cyclic_classes, perron
+from ngm.engine.allocation_rules import in_order
 
 __all__ = ["Bound", "least_price_bound", "lower_bound"]
 

@@ -7,16 +7,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from ngm.engine.allocation import (
-    Problem,
-    best_share,
-    first_then_even,
-    greedy,
-    in_order,
-    least_supply,
-    same_multiple,
-)
+from ngm.engine.allocation import Problem, best_share, least_supply
 from ngm.engine.allocation_bounds import least_price_bound, lower_bound
+from ngm.engine.allocation_rules import first_then_even, greedy, in_order, same_multiple
 from ngm.engine.symmetric import symmetric_form
 
 SHAPES = ["full", "contacts", "cycle", "triangular", "apart", "sparse"]
