@@ -327,7 +327,7 @@ def test_type_and_target_numbers_of_a_given_matrix():
     assert found.formula_there == pytest.approx(9)  # printed
 
 
-def test_equality_is_proven_with_symbols_where_there_is_a_closed_form():
+def test_equality_is_proven_where_there_is_a_closed_form():
     found = ngm.formula(SEIR.scenario, "sigma*beta/(gamma*sigma + gamma*mu + mu*sigma + mu^2)")
     assert (found.verdict, found.exact) == ("equal", True)
     assert (
